@@ -1,0 +1,1 @@
+"""Marks and printed grid to an invertible map between pixels and values."""

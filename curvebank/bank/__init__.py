@@ -1,0 +1,1 @@
+"""The store. Import its modules one by one: bank.reader is on the cold path."""

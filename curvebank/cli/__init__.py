@@ -1,0 +1,1 @@
+"""The command line: each command opens, calls one use case, prints."""

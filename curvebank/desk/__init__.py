@@ -1,0 +1,1 @@
+"""Use cases that join engine and bank: demo, save, export."""

@@ -1,0 +1,1 @@
+"""Recipe and sheet bytes to curves, fits and findings."""

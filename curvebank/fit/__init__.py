@@ -1,0 +1,1 @@
+"""Polynomials that stand for curves, with domain and uncertainty."""

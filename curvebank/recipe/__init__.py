@@ -1,0 +1,1 @@
+"""The recipe document: read, validated, hashed."""

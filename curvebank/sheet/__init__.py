@@ -1,0 +1,1 @@
+"""Scan files to arrays: decoding, identity, ink levelling, printed lines."""

@@ -1,0 +1,1 @@
+"""Clicks to the sub-pixel centreline of a printed curve."""
