@@ -1,1 +1,1 @@
-"""Pump laws as pure functions on numbers. Import its modules one by one: laws.family is on the cold path."""
+"""Pump laws as pure functions on numbers and arrays. Import the module you need: this package loads nothing by itself."""
