@@ -1,0 +1,115 @@
+"""What requests must look like. Documents stay open objects: an unfinished draft is allowed to be wrong."""
+
+from typing import Annotated, Any
+
+from flask_openapi import FileStorage
+from pydantic import BaseModel, ConfigDict, Field, StringConstraints, model_validator
+
+Sha = Annotated[str, StringConstraints(pattern=r"^[0-9a-f]{64}$")]
+Token = Annotated[str, StringConstraints(pattern=r"^[A-Za-z0-9_.:-]{1,100}$")]
+Label = Annotated[str, StringConstraints(max_length=200)]
+Line = Annotated[str, StringConstraints(strip_whitespace=True, min_length=1, max_length=500)]
+PumpKey = Annotated[str, StringConstraints(pattern=r"^[A-Z0-9][A-Z0-9-]{0,79}$")]
+Number = Annotated[float, Field(allow_inf_nan=False)]
+Count = Annotated[int, Field(ge=1, le=2**53)]
+Turn = Annotated[int, Field(json_schema_extra={"enum": [0, 90, 180, 270]})]
+Dpi = Annotated[float, Field(ge=36, le=1200, allow_inf_nan=False)]
+
+
+class Strict(BaseModel):
+    """Unknown keys are refused: a misspelt key is a fault, not a wish."""
+
+    model_config = ConfigDict(extra="forbid")
+
+
+class ProblemModel(BaseModel):
+    """RFC 9457 problem details; the only shape an error has under /api."""
+
+    type: str
+    title: str
+    status: int
+    detail: str
+    code: str
+    path: str | None = None
+
+
+class SheetForm(BaseModel):
+    """A sheet's file, as multipart/form-data."""
+
+    file: FileStorage
+
+
+class PagePath(BaseModel):
+    """A page of a sheet."""
+
+    sha256: Sha
+    page: Annotated[int, Field(ge=1, le=100_000)]
+
+
+class TilePath(PagePath):
+    """A tile: zoom, column, row."""
+
+    z: Annotated[int, Field(ge=0, le=30)]
+    x: Annotated[int, Field(ge=0, le=10**6)]
+    y: Annotated[int, Field(ge=0, le=10**6)]
+
+
+class PageQuery(BaseModel):
+    """How the page is decoded: resolution of a PDF [1/inch], turn clockwise [degrees]."""
+
+    dpi: Dpi = 300
+    turn: Turn = 0
+
+
+class DraftPath(BaseModel):
+    """A draft."""
+
+    draft: Token
+
+
+class SheetChoice(Strict):
+    """The sheet a new draft starts from."""
+
+    sha256: Sha
+    page: Annotated[int, Field(ge=1, le=100_000)] = 1
+    file: Annotated[str, StringConstraints(max_length=255)] | None = None
+    dpi: Dpi = 300
+    turn: Turn = 0
+
+
+class NewDraft(Strict):
+    """A draft starts from a sheet, from a document, or from a stored revision: exactly one of the three."""
+
+    sheet: SheetChoice | None = None
+    doc: dict[str, Any] | None = None
+    sheet_sha256: Sha | None = None
+    from_pump: PumpKey | None = None
+    revision: Count | None = None
+    action_id: Token | None = None
+
+    @model_validator(mode="after")
+    def _one_origin(self) -> "NewDraft":
+        if sum(x is not None for x in (self.sheet, self.doc, self.from_pump)) != 1:
+            raise ValueError("Give one of sheet, doc or from_pump")
+        return self
+
+
+class NewStep(Strict):
+    """One action: the whole document after it, and the step it was made on."""
+
+    doc: dict[str, Any]
+    base_step: Count
+    action_id: Token
+    label: Label = ""
+
+
+class Head(Strict):
+    """The step that undo, redo or a jump leads to."""
+
+    step: Count
+
+
+class JobPath(BaseModel):
+    """A job."""
+
+    job: Token

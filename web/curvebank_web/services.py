@@ -1,0 +1,88 @@
+"""What the views work with: paths, page store, jobs, and the desk connection of the current request."""
+
+import sqlite3
+import threading
+from collections import OrderedDict
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from flask import Flask, current_app, g
+
+from curvebank.errors import CurvebankError
+
+from . import desk_file, sources
+from .jobs import Registry
+from .page_store import PageKey, PageStore, prune
+from .problems import Problem
+
+CACHE_LIMIT_BYTES = 4_000_000_000
+
+
+@dataclass(eq=False)
+class Services:
+    """One per app."""
+
+    bank: Path
+    desk: Path
+    cache: Path
+    jobs: Registry
+    pages: PageStore = field(init=False)
+    tracing: threading.Lock = field(default_factory=threading.Lock)
+    prepared: OrderedDict[PageKey, Any] = field(default_factory=OrderedDict)
+
+    def __post_init__(self) -> None:
+        self.pages = PageStore(self.cache, self.sheet_bytes)
+
+    def sheet_bytes(self, sha256: str) -> bytes:
+        """The file of a sheet, or a 404 problem."""
+        data = sources.sheet_bytes(self.desk, self.bank, sha256)
+        if data is None:
+            raise Problem(
+                404, "no-such-sheet", "The sheet is not here", "Neither the desk nor the bank holds this sheet. Add its file again."
+            )
+        return data
+
+    def close(self) -> None:
+        """End background work."""
+        self.jobs.close()
+
+
+def start(app: Flask) -> Services:
+    """Build the services from the app's config: ``BANK``, ``DESK``, ``CACHE``, ``WORKERS``."""
+    bank = app.config.get("BANK")
+    if not bank:
+        raise CurvebankError("BANK is not set: name the bank file the app works on.", code="config")
+    bank = Path(bank).absolute()
+    desk = Path(app.config.get("DESK") or f"{bank}.desk").absolute()
+    cache = app.config.get("CACHE")
+    if cache is None:
+        import platformdirs
+
+        cache = platformdirs.user_cache_path("curvebank", appauthor=False)
+    desk_file.prepare(desk)
+    cache = Path(cache).absolute()
+    for part in ("pages", "prepared"):
+        prune(cache / part, CACHE_LIMIT_BYTES // 2)
+    services = Services(bank=bank, desk=desk, cache=cache, jobs=Registry(app.config.get("WORKERS", 1)))
+    app.extensions["curvebank"] = services
+
+    @app.teardown_appcontext
+    def close_desk(_error: BaseException | None) -> None:
+        db = g.pop("desk_db", None)
+        if db is not None:
+            db.close()
+
+    return services
+
+
+def services() -> Services:
+    """The services of the current app."""
+    return current_app.extensions["curvebank"]
+
+
+def desk_db() -> sqlite3.Connection:
+    """The desk connection of this request."""
+    if "desk_db" not in g:
+        g.desk_db = desk_file.connect(services().desk)
+    return g.desk_db
