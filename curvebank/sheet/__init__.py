@@ -1,1 +1,7 @@
-"""Scan files to arrays: decoding, identity, ink levelling, printed lines."""
+"""Scan files to arrays: decoding, ink levelling, printed lines, identity. Knows nothing of axes or curves."""
+
+from .lines import PrintedLine
+from .load import LIMITS, Limits, Sheet, load
+from .prepare import ALGORITHM, Prepared, prepare
+
+__all__ = ["ALGORITHM", "LIMITS", "Limits", "PrintedLine", "Prepared", "Sheet", "load", "prepare"]
