@@ -1,0 +1,87 @@
+"""A smooth axis in the plane with arc length and normals: what bands are laid along."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.interpolate import CubicSpline
+
+from ..records import FloatArray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Axis:
+    """A curve sampled finely: ``points`` [n, 2] px at arc lengths ``s`` [n], with unit tangents [n, 2]. A closed one repeats its first point at the end."""
+
+    points: FloatArray
+    s: FloatArray
+    tangents: FloatArray
+    closed: bool
+
+    @property
+    def length(self) -> float:
+        """Arc length [px]."""
+        return float(self.s[-1])
+
+    @property
+    def normals(self) -> FloatArray:
+        """Unit normals [n, 2]: the tangent turned so that a curve running right has its normal downwards (y grows down)."""
+        return np.stack([-self.tangents[:, 1], self.tangents[:, 0]], axis=1)
+
+    def at(self, s: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Points and unit normals at arc lengths ``s`` (wrapped when closed, continued straight when open)."""
+        s = np.asarray(s, dtype=np.float64)
+        t = np.mod(s, self.length) if self.closed else np.clip(s, 0.0, self.length)
+        xy = np.stack([np.interp(t, self.s, self.points[:, k]) for k in (0, 1)], axis=1)
+        tangent = np.stack([np.interp(t, self.s, self.tangents[:, k]) for k in (0, 1)], axis=1)
+        tangent /= np.maximum(np.hypot(*tangent.T), 1e-12)[:, None]
+        if not self.closed:
+            xy = xy + (s - t)[:, None] * tangent
+        return xy, np.stack([-tangent[:, 1], tangent[:, 0]], axis=1)
+
+    def arc_of(self, xy: FloatArray) -> FloatArray:
+        """Arc length of the nearest axis sample to each point [n, 2]."""
+        d = ((xy[:, None, :] - self.points[None, :, :]) ** 2).sum(axis=2)
+        return self.s[d.argmin(axis=1)]
+
+    def tightest_radius(self) -> float:
+        """Smallest radius of curvature [px], smoothed over a few samples."""
+        turn = np.hypot(*np.diff(self.tangents, axis=0).T)
+        step = np.maximum(np.diff(self.s), 1e-9)
+        bend = np.convolve(turn, np.ones(5), "same") / np.convolve(step, np.ones(5), "same")
+        return float(1.0 / max(bend.max(initial=0.0), 1e-6))
+
+
+def from_polyline(points: FloatArray, closed: bool, step: float = 1.0) -> Axis:
+    """An axis through dense points, resampled about ``step`` px apart."""
+    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(points, axis=0).T))]
+    count = max(int(round(s[-1] / step)), 8)
+    at = np.linspace(0.0, s[-1], count + 1)
+    xy = np.stack([np.interp(at, s, points[:, k]) for k in (0, 1)], axis=1)
+    if closed:
+        ring = xy[:-1]
+        tangents = np.roll(ring, -1, axis=0) - np.roll(ring, 1, axis=0)
+        tangents = np.vstack([tangents, tangents[:1]])
+    else:
+        tangents = np.gradient(xy, axis=0, edge_order=2)
+    tangents /= np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(xy, axis=0).T))]
+    return Axis(xy, s, tangents, closed)
+
+
+def through(points: FloatArray, closed: bool) -> tuple[Axis, FloatArray]:
+    """The first axis: a cubic spline through the clicks over their chord length; periodic when closed. Also the clicks' arc lengths."""
+    knots = np.vstack([points, points[:1]]) if closed else points
+    chord = np.hypot(*np.diff(knots, axis=0).T)
+    # A power a little below one (chord length) keeps unevenly spaced clicks from throwing loops.
+    t = np.r_[0.0, np.cumsum(chord**0.8)]
+    if len(knots) == 2:
+        dense = knots[0] + np.linspace(0, 1, max(int(chord[0]), 8) + 1)[:, None] * (knots[1] - knots[0])
+        axis = from_polyline(dense, False)
+        return axis, np.array([0.0, axis.length])
+    spline = CubicSpline(t, knots, bc_type="periodic" if closed else "not-a-knot" if len(knots) <= 4 else "natural")
+    fine = np.unique(np.concatenate([np.linspace(a, b, max(int(c), 4) + 1) for a, b, c in zip(t[:-1], t[1:], chord, strict=True)]))
+    dense = spline(fine)
+    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(dense, axis=0).T))]
+    axis = from_polyline(dense, closed)
+    at = np.interp(t, fine, s) * axis.length / s[-1]
+    return axis, at[:-1] if closed else at

@@ -1,0 +1,134 @@
+"""From clicks to a path within about a pixel: a wide band along a spline through the clicks, then narrower bands along the path."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..records import FloatArray
+from ..sheet import Prepared
+from . import smooth
+from .axis import Axis, from_polyline, through
+from .band import ridge, sample
+from .route import best_path, click_pull, segment_costs
+
+WIDE = {2: (0.42, 1.6), 3: (0.25, 1.1), 4: (0.2, 1.0)}
+"""Half width of the first band in parts of the longest gap between clicks, and its steepest slope, by number of clicks."""
+WIDE_MANY = (0.18, 0.9)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Followed:
+    """A path found: its axis, the mean cost of its segments (0 is a fully inked line) and the clicks' arc lengths."""
+
+    axis: Axis
+    cost: float
+    clicks_s: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Pass:
+    """One search: ``half`` width of the band [px], ``across`` and ``along`` steps [px], rows a segment, steepest slope, cost and limit of turning."""
+
+    half: float
+    across: float
+    along: float
+    rows: int
+    slope: float
+    bend: float
+    turn: int
+    spread: float
+
+
+def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
+    """The path of the line through the clicks [n, 2]."""
+    unit, width = prepared.unit, prepared.width_px
+    cap = contrast_cap(prepared, clicks)
+    axis, at = through(clicks, closed)
+    gaps = np.diff(np.r_[at, axis.length]) if closed else np.diff(at)
+    share, slope = WIDE.get(len(clicks), WIDE_MANY)
+    grain = float(np.clip(width / 1.5, 1.0, 5.0))
+    half = float(np.clip(share * gaps.max(), 12 * unit, 320 * unit))
+    if closed:
+        half = min(half, 0.75 * axis.tightest_radius())
+    rows = 16 if axis.length > 12 * 16 * grain and not closed else 8
+    first = Pass(half, grain, grain, rows, slope, 0.04, 6, 4.0 * max(unit, 0.75))
+    path, cost = _search(prepared, axis, at, clicks, first, grain, cap)
+    for reach in (30.0, 14.0):
+        axis, at = _smoothed(path, axis, clicks, unit, grain if reach > 20 else grain / 4)
+        step = grain / 4
+        narrow = Pass(reach * max(unit, 0.7), step, grain, 12 if axis.length > 300 * unit else 6, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
+        path, cost = _search(prepared, axis, at, clicks, narrow, max(grain / 3, 1.0), cap)
+    axis, at = _smoothed(path, axis, clicks, unit, grain / 4)
+    return Followed(axis, cost, at)
+
+
+def contrast_cap(prepared: Prepared, clicks: FloatArray) -> float:
+    """Contrast from which a spot counts as fully line-like: less for a faint curve than for a black one."""
+    reach = int(round(4 * max(prepared.unit, 0.75)))
+    tops = []
+    for x, y in np.rint(clicks).astype(int):
+        part = prepared.clean[max(y - reach, 0) : y + reach + 1, max(x - reach, 0) : x + reach + 1]
+        tops.append(float(part.max(initial=0)) / 255.0)
+    return float(np.clip(0.5 * np.median(tops), 0.06, 0.35))
+
+
+def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, how: Pass, shrink: float, cap: float) -> tuple[tuple[FloatArray, FloatArray], float]:
+    """Best path in one band: (arc lengths, offsets [px]) of its nodes, and the mean cost a segment."""
+    lead = 0.25 * axis.length if axis.closed else 0.0
+    marks = np.r_[at, axis.length] if axis.closed else at
+    nodes = [0.0]
+    pulls_at: list[tuple[int, int]] = [(0, 0)]
+    for i in range(len(marks) - 1):
+        count = max(int(round((marks[i + 1] - marks[i]) / (how.rows * how.along))), 1)
+        nodes += list(np.linspace(marks[i], marks[i + 1], count + 1)[1:])
+        pulls_at.append((len(nodes) - 1, (i + 1) % len(at) if axis.closed else i + 1))
+    s_nodes = np.array(nodes)
+    start = 0
+    if axis.closed:
+        before = s_nodes[(s_nodes > axis.length - lead) & (s_nodes < axis.length)] - axis.length
+        after = s_nodes[(s_nodes > 0) & (s_nodes < lead)] + axis.length
+        start = len(before)
+        s_nodes = np.r_[before, s_nodes, after]
+    segments = len(s_nodes) - 1
+    inner = (np.arange(how.rows) + 0.5) / how.rows
+    s_rows = (s_nodes[:-1, None] + np.diff(s_nodes)[:, None] * inner).ravel()
+    offsets = np.arange(-how.half, how.half + how.across / 2, how.across)
+    band = sample(prepared.clean, axis, s_rows, offsets, shrink)
+    flank = max(2, int(round(6.0 * max(prepared.unit, 0.6) / how.across)))
+    likeness = ridge(band, flank, cap)
+    step = how.along * how.rows
+    reach = max(int(np.ceil(how.slope * step / how.across)), 3)
+    costs = segment_costs(likeness, segments, reach)
+    pulls = {}
+    points, normals = axis.at(marks[: len(at)])
+    off = ((clicks - points) * normals).sum(axis=1)
+    for node, click in pulls_at:
+        pulls[node + start] = click_pull(offsets, off[click], how.spread)
+    path, moves, _ = best_path(costs, how.bend, how.turn, pulls)
+    chosen = costs[moves + reach, np.arange(segments), path[:-1]]
+    whole = slice(start, start + int(pulls_at[-1][0]) + 1)
+    return (s_nodes[whole], offsets[path[whole]]), float(chosen[whole.start : whole.stop - 1].mean())
+
+
+def _smoothed(path: tuple[FloatArray, FloatArray], axis: Axis, clicks: FloatArray, unit: float, grain: float) -> tuple[Axis, FloatArray]:
+    """A new axis: a robust penalised spline through the path's nodes, and where the clicks fall on it."""
+    s, offset = path
+    points, normals = axis.at(s)
+    xy = points + normals * offset[:, None]
+    t = s / axis.length
+    if axis.closed:
+        xy, t = xy[:-1], t[:-1]
+    pieces = int(np.clip(len(xy) // 2, 6 if axis.closed else 3, 40))
+    curve = smooth.fit(t, xy, pieces=pieces, periodic=axis.closed, floor=0.3 * grain)
+    dense = curve.value(np.linspace(0, 1, max(int(axis.length), 16) + 1))
+    fresh = from_polyline(dense, axis.closed)
+    at = fresh.arc_of(clicks)
+    if axis.closed:
+        at = np.where(at > fresh.length - 1.0, 0.0, at)
+        # The loop begins at its first click.
+        shift = at[0]
+        fresh = from_polyline(fresh.at(np.linspace(0, fresh.length, len(fresh.s)) + shift)[0], True)
+        at = np.mod(at - shift, fresh.length)
+    else:
+        at[0], at[-1] = 0.0, fresh.length
+    return fresh, np.maximum.accumulate(at)

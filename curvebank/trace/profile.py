@@ -1,0 +1,248 @@
+"""The sub-pixel step: where across the path the ink's middle lies, block by block along it.
+
+Every pixel near the path is given its arc length and its distance across the path; no resampling. One line width and one blur hold for
+the whole curve; in each block of a few pixels of length base, height and shift are fitted by Gauss-Newton with robust weights, all
+blocks at once. The shifts are then smoothed along the curve by a penalised spline that bridges gaps.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+from scipy.special import ndtr
+
+from ..records import FloatArray
+from ..sheet import Prepared
+from . import smooth
+from .axis import Axis, from_polyline
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Shape:
+    """Cross profile of a drawn line: a box of ``width`` px blurred by a Gaussian of ``blur`` px; ``noise`` is the scatter of single pixels about it."""
+
+    width: float
+    blur: float
+    noise: float
+    height: float
+
+    def value(self, d: FloatArray) -> FloatArray:
+        """Profile at distance ``d`` [px] from the middle, 1 at the middle."""
+        return (ndtr((d + self.width / 2) / self.blur) - ndtr((d - self.width / 2) / self.blur)) / self._peak
+
+    def slope(self, d: FloatArray) -> FloatArray:
+        """Derivative of the profile [1/px]."""
+        a, b = (d + self.width / 2) / self.blur, (d - self.width / 2) / self.blur
+        return (np.exp(-0.5 * a * a) - np.exp(-0.5 * b * b)) / (np.sqrt(2 * np.pi) * self.blur * self._peak)
+
+    @property
+    def _peak(self) -> float:
+        return max(float(2 * ndtr(self.width / 2 / self.blur) - 1), 1e-6)
+
+    @property
+    def half_extent(self) -> float:
+        """Distance [px] from the middle beyond which there is practically no ink."""
+        return self.width / 2 + 2.2 * self.blur
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Blocks:
+    """Readings along the curve: arc length, shift and its sigma [px], height, and whether each one is believed."""
+
+    s: FloatArray
+    shift: FloatArray
+    sigma: FloatArray
+    height: FloatArray
+    good: npt.NDArray[np.bool_]
+    masked: npt.NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Refined:
+    """A sub-pixel curve: its axis, sigma [px] at each axis sample, the readings behind it and the line's shape."""
+
+    axis: Axis
+    sigma: FloatArray
+    blocks: Blocks
+    shape: Shape
+    scatter: float
+
+
+@dataclass(slots=True, eq=False)
+class Pixels:
+    """Pixels near an axis: arc length, distance across, ink 0..1, weight 0..1 (low under printed lines)."""
+
+    s: FloatArray
+    d: FloatArray
+    ink: FloatArray
+    weight: FloatArray
+    printed: FloatArray
+
+
+def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
+    """All pixels within ``half`` px of the axis, each once."""
+    height, width = prepared.shape
+    s = np.arange(0.0, axis.length + 0.4, 0.8)
+    if axis.closed:
+        s = s[s < axis.length]
+    d = np.arange(-half, half + 0.4, 0.8)
+    points, normals = axis.at(s)
+    x = np.rint(points[:, :1] + normals[:, :1] * d).astype(np.int64)
+    y = np.rint(points[:, 1:] + normals[:, 1:] * d).astype(np.int64)
+    ok = ((x >= 0) & (x < width) & (y >= 0) & (y < height)).ravel()
+    flat = (y * width + x).ravel()[ok]
+    _, first = np.unique(flat, return_index=True)
+    at = np.repeat(s, len(d))[ok][first]
+    px = np.stack([x.ravel()[ok][first], y.ravel()[ok][first]], axis=1).astype(np.float64)
+    for _ in range(2):
+        base, normal = axis.at(at)
+        gap = px - base
+        at = at + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
+    base, normal = axis.at(at)
+    across = ((px - base) * normal).sum(axis=1)
+    if axis.closed:
+        at = np.mod(at, axis.length)
+    else:
+        keep = (at >= -1.0) & (at <= axis.length + 1.0)
+        at, across, first = at[keep], across[keep], first[keep]
+    pick = flat[first]
+    ink = prepared.clean.ravel()[pick] / 255.0
+    printed = prepared.printed.ravel()[pick] / 255.0
+    # A light line divides out well, a dark one hides what lies below: trust falls with its strength.
+    return Pixels(at, across, ink, 1.0 / (1.0 + (printed / 0.10) ** 2), printed)
+
+
+def first_shape(pixels: Pixels, width_px: float) -> Shape:
+    """Line width and blur from the median profile of all pixels."""
+    bins = np.rint(pixels.d * 3).astype(int)
+    low = bins.min()
+    order = np.argsort(bins, kind="stable")
+    sorted_bins, ink = bins[order] - low, pixels.ink[order]
+    heavy = pixels.weight[order] > 0.4
+    if heavy.sum() > 0.3 * len(heavy):
+        sorted_bins, ink = sorted_bins[heavy], ink[heavy]
+    edges = np.flatnonzero(np.diff(sorted_bins)) + 1
+    groups = np.split(ink, edges)
+    at = (sorted_bins[np.r_[0, edges]] + low) / 3.0
+    profile = np.array([np.median(g) for g in groups])
+    best = (np.inf, max(width_px, 1.0), 0.9, 1.0)
+    for width in np.clip(width_px * np.array([0.4, 0.55, 0.7, 0.85, 1.0, 1.15, 1.3, 1.5, 1.8]), 0.6, 30):
+        for blur in (0.45, 0.65, 0.85, 1.1, 1.4, 1.8, 2.4):
+            trial = Shape(float(width), blur, 0.0, 1.0)
+            g = trial.value(at)
+            basis = np.stack([np.ones_like(g), g], 1)
+            c, *_ = np.linalg.lstsq(basis, profile, rcond=None)
+            miss = float(np.abs(profile - basis @ c).sum())
+            if miss < best[0] and c[1] > 0.02:
+                best = (miss, float(width), blur, float(c[1]))
+    return Shape(best[1], best[2], 0.05, best[3])
+
+
+def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, block_px: float, rounds: int = 4) -> Blocks:
+    """Base, height and shift of each block by robust Gauss-Newton on all blocks at once; ``d`` are distances from the current middle."""
+    count = max(int(round(length / block_px)), 4)
+    block = np.clip((pixels.s * (count / length)).astype(int), 0, count - 1)
+    near = np.abs(d) <= shape.half_extent + 2.5
+    block, d, ink, given = block[near], d[near], pixels.ink[near], pixels.weight[near]
+    base, height, shift = np.zeros(count), np.full(count, shape.height), np.zeros(count)
+    robust = np.ones(len(d))
+    noise = max(shape.noise, 0.01)
+    eye = np.eye(3)
+    prior = np.array([0.15, 0.6 * shape.height, 1.5])
+    weight = given
+    miss = ink
+    inverse = np.repeat(eye[None], count, axis=0)
+    for turn in range(rounds):
+        local = d - shift[block]
+        g, dg = shape.value(local), -height[block] * shape.slope(local)
+        miss = ink - base[block] - height[block] * g
+        if turn:
+            robust = np.maximum(1 - (miss * np.sqrt(given) / (5.0 * noise)) ** 2, 0.0) ** 2
+        weight = given * robust / noise**2
+        terms = (np.ones_like(g), g, dg)
+        lhs = np.empty((count, 3, 3))
+        right = np.empty((count, 3))
+        for i in range(3):
+            wi = weight * terms[i]
+            right[:, i] = np.bincount(block, wi * miss, count)
+            for j in range(i, 3):
+                lhs[:, i, j] = lhs[:, j, i] = np.bincount(block, wi * terms[j], count)
+        now = np.stack([base, height - shape.height, shift], axis=1)
+        inverse = np.linalg.inv(lhs + np.diag(1 / prior**2))
+        change = np.einsum("nij,nj->ni", inverse, right - now / prior**2)
+        base = base + change[:, 0]
+        height = np.clip(height + change[:, 1], 0.02, 2.0)
+        shift = np.clip(shift + np.clip(change[:, 2], -1.0, 1.0), -4.0, 4.0)
+        core = np.abs(local) < shape.half_extent
+        spread = 1.4826 * float(np.median(np.abs(miss[core & (given > 0.3)]))) if (core & (given > 0.3)).any() else noise
+        noise = float(np.clip(spread, 0.01, 0.3))
+    total = np.bincount(block, given, count)
+    chi = np.sqrt(np.bincount(block, given * np.minimum(miss**2, 0.25), count) / np.maximum(total, 1e-9))
+    seen = np.bincount(block, minlength=count)
+    usual = float(np.median(height[height > 0.3 * shape.height])) if (height > 0.3 * shape.height).any() else shape.height
+    usual_chi = float(np.median(chi[height > 0.4 * usual])) if (height > 0.4 * usual).any() else 0.1
+    sigma = np.sqrt(inverse[:, 2, 2])
+    masked = total < 0.35 * np.maximum(seen, 1)
+    good = (height > 0.45 * usual) & (height < 1.7 * usual) & (np.abs(shift) < 3.0) & (chi < 2.5 * usual_chi + 0.02) & (sigma < 0.8) & (seen > 3)
+    return Blocks((np.arange(count) + 0.5) * length / count, shift, sigma, height, good, masked)
+
+
+def refine(prepared: Prepared, axis: Axis, rounds: int = 2) -> Refined:
+    """Move the axis onto the middle of its ink."""
+    unit = max(prepared.unit, 0.6)
+    half = 0.9 * prepared.width_px + 6.0 * unit
+    block = 3.0 * unit
+    blocks: Blocks | None = None
+    fitted: smooth.Smooth | None = None
+    shape: Shape | None = None
+    for turn in range(rounds):
+        pixels = pixels_near(prepared, axis, half)
+        if shape is None:
+            shape = first_shape(pixels, prepared.width_px)
+            blocks = read_blocks(pixels, pixels.d, shape, axis.length, block, rounds=3)
+            fitted = _along(blocks, axis, unit)
+            moved = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
+            shape = first_shape(Pixels(pixels.s, moved, pixels.ink, pixels.weight, pixels.printed), shape.width)
+        blocks = read_blocks(pixels, pixels.d, shape, axis.length, block)
+        fitted = _along(blocks, axis, unit)
+        t = axis.s / axis.length
+        moved_points = axis.points + axis.normals * fitted.value(t)
+        sigma = fitted.sigma(t)
+        if turn == rounds - 1:
+            break
+        axis = from_polyline(moved_points, axis.closed)
+    assert blocks is not None and fitted is not None and shape is not None
+    final = from_polyline(moved_points, axis.closed)
+    sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(sigma)), sigma)
+    return Refined(final, sigma, blocks, shape, fitted.scale)
+
+
+def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
+    """The shifts smoothed along the curve."""
+    t = blocks.s / axis.length
+    weight = np.where(blocks.good, 1.0 / (blocks.sigma**2 + 0.01**2), 0.0)
+    if blocks.good.sum() < 4:
+        weight = np.full(len(t), 1.0)
+    pieces = int(np.clip(axis.length / (18 * unit), 6 if axis.closed else 4, 80))
+    curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0)
+    count = _correlation(blocks, curve, t)
+    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count)
+
+
+def _correlation(blocks: Blocks, curve: smooth.Smooth, t: FloatArray) -> float:
+    """How many neighbouring readings count as one: 1 + 2 sum of the autocorrelation of the residuals, up to its first drop below 0.05."""
+    use = curve.weights > 0.05
+    if use.sum() < 20:
+        return 2.0
+    miss = np.where(use, blocks.shift - curve.value(t)[:, 0], 0.0)
+    power = float((miss**2).sum()) / use.sum()
+    total = 1.0
+    for lag in range(1, 12):
+        pairs = use[lag:] & use[:-lag]
+        if pairs.sum() < 10:
+            break
+        rho = float((miss[lag:] * miss[:-lag])[pairs].mean()) / max(power, 1e-12)
+        if rho < 0.05:
+            break
+        total += 2 * rho
+    return float(np.clip(total, 1.0, 8.0))
