@@ -46,9 +46,9 @@ def npshr_at_speed(npshr_m: npt.ArrayLike, ratio: npt.ArrayLike, *, exponent: fl
     if np.any(~(r > 0)) or not np.all(np.isfinite(r)):
         raise LawError("A ratio of speeds must be above zero.")
     if exponent is None:
-        x: npt.ArrayLike = np.where(r >= 1.0, SPEEDING_UP, SLOWING_DOWN)
+        x = np.where(r >= 1.0, SPEEDING_UP, SLOWING_DOWN)
     elif SLOWING_DOWN <= exponent <= SPEEDING_UP:
-        x = exponent
+        x = np.asarray(exponent)
     else:
         raise LawError(f"The NPSHr exponent must lie between {SLOWING_DOWN} and {SPEEDING_UP}, not {exponent}.")
     return np.asarray(npshr_m, dtype=np.float64) * r**x
