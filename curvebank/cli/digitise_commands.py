@@ -1,0 +1,123 @@
+"""``digitise`` and ``check``: recipes to results, and what the checks say of a recipe, a result or a stored pump."""
+
+import sys
+from pathlib import Path
+from typing import Any
+
+import click
+from tqdm import tqdm
+
+from .app import bank_option, default_bank, emit, json_option
+
+SIGNS = {"error": "Error.", "warning": "Warning.", "note": "Note."}
+
+
+class Bar:
+    """Progress on stderr where a person watches, silence elsewhere."""
+
+    def __init__(self, name: str) -> None:
+        self.bar = tqdm(
+            total=100, desc=name, leave=False, disable=not sys.stderr.isatty(), bar_format="{desc}: {percentage:3.0f} % {postfix}"
+        )
+
+    def __call__(self, share: float, text: str) -> None:
+        self.bar.n = round(100 * share)
+        self.bar.set_postfix_str(text)
+
+    def close(self) -> None:
+        self.bar.close()
+
+
+@click.command()
+@click.argument("recipes", nargs=-1, required=True, type=click.Path(path_type=Path))
+@click.option("--out", required=True, type=click.Path(path_type=Path, file_okay=False), help="Folder for NAME.result.json.")
+@bank_option
+@click.option("--save", is_flag=True, help="Store each result in the bank as a new revision.")
+@click.option("--who", help="Your name, for --save.")
+@click.option("--why", help="The reason, for --save.")
+@click.option("--release", is_flag=True, help="With --save: also release the new revision.")
+@click.option("--strict", is_flag=True, help="Exit 1 if any finding is an error.")
+@json_option
+def digitise(
+    recipes: tuple[Path, ...],
+    out: Path,
+    bank: Path | None,
+    save: bool,
+    who: str | None,
+    why: str | None,
+    release: bool,
+    strict: bool,
+    as_json: bool,
+) -> None:
+    """Digitise each RECIPE (NAME.recipe.json) to NAME.result.json in the --out folder.
+
+    A recipe that fails does not stop the others and still writes a result. Exit code: 0 all ran, 1 some result has an error, 2 usage.
+    """
+    from ..desk import files
+
+    if save and not (who and why):
+        raise click.UsageError("--save needs --who NAME and --why TEXT.")
+    if (release or who or why) and not save:
+        raise click.UsageError("--release, --who and --why go with --save.")
+    rows, bad, doubtful = [], False, False
+    for path in recipes:
+        bar = Bar(path.name)
+        done = files.digitise_file(path, progress=bar)
+        bar.close()
+        target = files.write_result(done, out)
+        made = done.made
+        row: dict[str, Any] = {
+            "recipe": str(path),
+            "result": str(target),
+            "curves": len(made.curves),
+            "failed": sum(c.error is not None for c in made.curves),
+            "flagged": sum(bool(c.trace and c.trace.flagged) for c in made.curves),
+            "findings": {s: sum(f.severity == s for f in made.findings) for s in SIGNS},
+            "error": made.error,
+        }
+        bad |= made.error is not None
+        doubtful |= row["findings"]["error"] > 0
+        if save and made.error is None:
+            from ..desk import storing
+
+            row["saved"] = storing.save_file(bank or default_bank(), done, who=who or "", why=why or "", release=release)
+        rows.append(row)
+        if not as_json:
+            click.echo(line_of(row))
+    if as_json:
+        emit(rows)
+    sys.exit(1 if bad or (strict and doubtful) else 0)
+
+
+def line_of(row: dict[str, Any]) -> str:
+    """One recipe's outcome in one line."""
+    name = Path(row["recipe"]).name
+    if row["error"]:
+        return f"{name}: not digitised. {row['error']['message']}"
+    good = row["curves"] - row["failed"]
+    said = ", ".join(f"{n} {s}{'s' if n != 1 else ''}" for s, n in row["findings"].items() if n) or "no findings"
+    stored = f"; saved as {row['saved']['key']} revision {row['saved']['revision']}, {row['saved']['state']}" if "saved" in row else ""
+    return f"{name}: {good} of {row['curves']} curves, {row['flagged']} to look at; {said}{stored}"
+
+
+@click.command()
+@click.argument("subject")
+@bank_option
+@click.option("--strict", is_flag=True, help="Exit 1 if any finding is an error.")
+@json_option
+def check(subject: str, bank: Path | None, strict: bool, as_json: bool) -> None:
+    """Say what the checks find in SUBJECT: a recipe file, a result file, or the key of a pump in the bank."""
+    from ..desk import checking
+
+    findings = checking.findings_of(subject, bank or default_bank())
+    if as_json:
+        emit(findings)
+    elif not findings:
+        click.echo("Nothing found.")
+    for f in findings if not as_json else []:
+        click.echo(f"{SIGNS[f['severity']]} {f['message']}")
+        click.echo(f"    {f['rule']}, {f['subject']}" + (f"; {f['source']}" if f.get("source") else ""))
+    sys.exit(1 if strict and any(f["severity"] == "error" for f in findings) else 0)
+
+
+COMMANDS = [digitise, check]

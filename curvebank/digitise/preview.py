@@ -1,0 +1,63 @@
+"""A quick look while the user still clicks: one panel's calibration and one curve, nothing stored, nothing judged."""
+
+from typing import Any
+
+from .. import axes, trace
+from ..errors import CurvebankError
+from ..recipe import CurveModel, PanelModel, Recipe, validate_part
+from ..records import PageInfo
+from . import curves as curve_maker
+from .result import clean, curve_json, panel_json
+from .run import clicks, pump_info
+
+
+def preview(
+    panel: dict[str, Any], curve: dict[str, Any] | None, prepared: Any, page: PageInfo | None, pump: dict[str, Any] | None = None
+) -> dict[str, Any]:
+    """Calibrate one panel and, if asked, trace one curve on it.
+
+    Parameters
+    ----------
+    panel, curve : dict
+        Parts of a recipe; ``curve`` may be None to see the axes alone.
+    prepared : Prepared
+        The prepared sheet.
+    pump : dict, optional
+        The recipe's pump, for stages and speed.
+
+    Returns
+    -------
+    dict
+        ``{panel, curve}`` in the form of the result document, the panel with ``mark_residuals`` {axis: [px, …]} and ``suspects``.
+
+    Raises
+    ------
+    RecipeError, CalibrationError
+        The panel cannot be used yet; the path is relative to the panel. Errors of the curve stay in the curve.
+    """
+    area = validate_part(PanelModel, panel, "$.panel")
+    panel_map = axes.calibrate(area, prepared)
+    out: dict[str, Any] = {
+        "panel": panel_json(panel_map.panel_result())
+        | {
+            "mark_residuals": {k: [float(r) for r in v] for k, v in panel_map.mark_residuals.items()},
+            "suspects": list(panel_map.suspects),
+        },
+        "curve": None,
+    }
+    if curve is None:
+        return clean(out)
+    line = validate_part(CurveModel, curve, "$.curve")
+    info = pump_info(Recipe.model_validate({"recipe": 1, "pump": {"maker": "-", "model": "-", **(pump or {})}}))
+    try:
+        for axis in (line.x, line.y):
+            if axis not in area.axes:
+                raise CurvebankError(f"Panel “{area.id}” has no axis “{axis}”.", code="recipe", path="$.curve")
+        got = trace.trace_panel(prepared, panel_map, [clicks(line)])[0]
+        if isinstance(got, CurvebankError):
+            raise got
+        made = curve_maker.from_trace(line, area.axes, got, panel_map, info, prepared.line_width_px)
+    except CurvebankError as e:
+        made = curve_maker.failed(line, info, e, "$.curve.clicks")
+    out["curve"] = curve_json(made)
+    return clean(out)
