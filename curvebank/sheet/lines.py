@@ -102,7 +102,9 @@ def _ridges(ink: Bytes, cell: int, sigma: float) -> tuple[npt.NDArray[np.float32
     return best, slope, float(max(0.012, 3.0 * np.median(best)))
 
 
-def _link(response: npt.NDArray[np.float32], slope: npt.NDArray[np.float32], floor: float, strip: int, unit: float) -> list[tuple[Floats, Floats, Floats]]:
+def _link(
+    response: npt.NDArray[np.float32], slope: npt.NDArray[np.float32], floor: float, strip: int, unit: float
+) -> list[tuple[Floats, Floats, Floats]]:
     height, strips = response.shape
     reach = max(1, round(3 * unit))
     peak = (response >= cv2.dilate(response, np.ones((2 * reach + 1, 1), np.uint8))) & (response > floor)
@@ -178,7 +180,9 @@ def _with_field(
     x = np.concatenate([t[0] for t in tracks])
     y = np.concatenate([t[1] for t in tracks])
     owner = np.repeat(np.arange(len(tracks)), [len(t[0]) for t in tracks])
-    slope = np.concatenate([np.polynomial.polynomial.polyval(2 * t[0] / width - 1, np.polynomial.polynomial.polyder(t[3])) * 2 / width for t in tracks])
+    slope = np.concatenate(
+        [np.polynomial.polynomial.polyval(2 * t[0] / width - 1, np.polynomial.polynomial.polyder(t[3])) * 2 / width for t in tracks]
+    )
     u, v = 2 * x / width - 1, 2 * y / height - 1
     terms = np.stack([np.ones_like(u), u, v, u * u, u * v, v * v], 1)
     if len(tracks) < 4:

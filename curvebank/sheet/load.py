@@ -61,7 +61,10 @@ def load(data: bytes, *, page: int = 1, dpi: float = 300, turn: int = 0, limits:
     if not data:
         raise SheetError("the file is empty; add the scan again", code="not-an-image")
     if len(data) > limits.file_bytes:
-        raise SheetError(f"the file has {len(data) / 1e6:.0f} MB, the limit is {limits.file_bytes / 1e6:.0f} MB; save a single page of it", code="too-large")
+        raise SheetError(
+            f"the file has {len(data) / 1e6:.0f} MB, the limit is {limits.file_bytes / 1e6:.0f} MB; save a single page of it",
+            code="too-large",
+        )
     if b"%PDF-" in data[:1024]:
         from .pdf import render_page
 
@@ -126,7 +129,8 @@ def _image(data: bytes, page: int, limits: Limits) -> tuple[Any, int, str, tuple
             raise
         except Image.DecompressionBombError:
             raise SheetError(
-                f"the page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). Scan at 300 dpi, or crop to the chart.", code="too-large"
+                f"the page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). Scan at 300 dpi, or crop to the chart.",
+                code="too-large",
             ) from None
         except UnidentifiedImageError:
             if data.startswith(MAGIC):

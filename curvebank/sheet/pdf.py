@@ -33,7 +33,9 @@ def render_page(data: bytes, page: int, dpi: float, limits: Limits) -> tuple[npt
         except pypdfium2.PdfiumError as fault:
             if "password" in str(fault).lower() or b"/Encrypt" in data:
                 raise SheetError("the PDF is encrypted; save a copy without a password and add that", code="encrypted") from None
-            raise SheetError(f"the PDF is damaged ({fault}); print it to a new PDF, or save the page as an image", code="truncated") from None
+            raise SheetError(
+                f"the PDF is damaged ({fault}); print it to a new PDF, or save the page as an image", code="truncated"
+            ) from None
         finally:
             if document is not None:
                 document.close()

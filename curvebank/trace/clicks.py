@@ -54,18 +54,27 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
         need = 1
     if len(points) < need:
         what = "A closed line" if clicks.closed else "A line drawn by hand" if clicks.kind == "hand" else "A line"
-        raise TraceError(f"{what} needs at least {need} clicks along it, there {'is one' if len(points) == 1 else f'are {len(points)}'}; add clicks", code="too-few-clicks")
+        raise TraceError(
+            f"{what} needs at least {need} clicks along it, there {'is one' if len(points) == 1 else f'are {len(points)}'}; add clicks",
+            code="too-few-clicks",
+        )
     if not np.isfinite(points).all():
         raise TraceError("A click is not a finite pair of numbers; set it again", code="bad-click")
     gaps = np.hypot(*np.diff(points, axis=0).T)
     for i in np.flatnonzero(gaps < 2.0):
-        raise TraceError(f"The {ordinal(int(i))} and {ordinal(int(i) + 1)} click are at one place; move one of them along the line", code="coincident-clicks")
+        raise TraceError(
+            f"The {ordinal(int(i))} and {ordinal(int(i) + 1)} click are at one place; move one of them along the line",
+            code="coincident-clicks",
+        )
     height, width = prepared.shape
     on_page = (points >= -0.5).all(axis=1) & (points[:, 0] <= width - 0.5) & (points[:, 1] <= height - 0.5)
     inside = np.asarray(panel.inside(points), dtype=bool) & on_page
     for i in np.flatnonzero(~inside):
         x, y = points[i]
-        raise TraceError(f"The {ordinal(int(i))} click ({x:.0f}, {y:.0f}) is off the panel; move it onto the curve or widen the panel's outline", code="off-panel")
+        raise TraceError(
+            f"The {ordinal(int(i))} click ({x:.0f}, {y:.0f}) is off the panel; move it onto the curve or widen the panel's outline",
+            code="off-panel",
+        )
     if clicks.kind == "line":
         for i, (x, y) in enumerate(points):
             if not _has_ink(prepared, x, y):

@@ -14,6 +14,7 @@ from .route import best_path, click_pull, segment_costs
 WIDE = {2: (0.42, 1.6), 3: (0.25, 1.1), 4: (0.2, 1.0)}
 """Half width of the first band in parts of the longest gap between clicks, and its steepest slope, by number of clicks."""
 WIDE_MANY = (0.18, 0.9)
+Path = tuple[FloatArray, FloatArray, FloatArray]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -72,8 +73,8 @@ def contrast_cap(prepared: Prepared, clicks: FloatArray) -> float:
     return float(np.clip(0.5 * np.median(tops), 0.06, 0.35))
 
 
-def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, how: Pass, shrink: float, cap: float) -> tuple[tuple[FloatArray, FloatArray], float]:
-    """Best path in one band: (arc lengths, offsets [px]) of its nodes, and the mean cost a segment."""
+def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, how: Pass, shrink: float, cap: float) -> tuple[Path, float]:
+    """Best path in one band: (arc lengths, offsets [px], weights) of its nodes, and the mean cost a segment."""
     lead = 0.25 * axis.length if axis.closed else 0.0
     marks = np.r_[at, axis.length] if axis.closed else at
     nodes = [0.0]
@@ -106,20 +107,30 @@ def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, 
         pulls[node + start] = click_pull(offsets, off[click], how.spread)
     path, moves, _ = best_path(costs, how.bend, how.turn, pulls)
     chosen = costs[moves + reach, np.arange(segments), path[:-1]]
+    columns = np.rint(path[:-1, None] + moves[:, None] * inner).astype(int).clip(0, len(offsets) - 1)
+    seen = likeness[np.arange(segments * how.rows), columns.ravel()].reshape(segments, how.rows).mean(axis=1)
+    trust = _trust(seen)
     whole = slice(start, start + int(pulls_at[-1][0]) + 1)
-    return (s_nodes[whole], offsets[path[whole]]), float(chosen[whole.start : whole.stop - 1].mean())
+    return (s_nodes[whole], offsets[path[whole]], trust[whole]), float(chosen[whole.start : whole.stop - 1].mean())
 
 
-def _smoothed(path: tuple[FloatArray, FloatArray], axis: Axis, clicks: FloatArray, unit: float, grain: float) -> tuple[Axis, FloatArray]:
+def _trust(seen: FloatArray) -> FloatArray:
+    """Weight of each node from the ink on its two segments, against what is usual on this line: letters in a label gap look half inked."""
+    usual = max(float(np.percentile(seen, 70)), 0.05)
+    share = np.clip((seen / usual - 0.45) / 0.35, 0.0, 1.0)
+    return np.maximum(np.minimum(np.r_[share[:1], share], np.r_[share, share[-1:]]), 0.003)
+
+
+def _smoothed(path: Path, axis: Axis, clicks: FloatArray, unit: float, grain: float) -> tuple[Axis, FloatArray]:
     """A new axis: a robust penalised spline through the path's nodes, and where the clicks fall on it."""
-    s, offset = path
+    s, offset, trust = path
     points, normals = axis.at(s)
     xy = points + normals * offset[:, None]
     t = s / axis.length
     if axis.closed:
-        xy, t = xy[:-1], t[:-1]
+        xy, t, trust = xy[:-1], t[:-1], trust[:-1]
     pieces = int(np.clip(len(xy) // 2, 6 if axis.closed else 3, 40))
-    curve = smooth.fit(t, xy, pieces=pieces, periodic=axis.closed, floor=0.3 * grain)
+    curve = smooth.fit(t, xy, trust, pieces=pieces, periodic=axis.closed, floor=0.3 * grain, correlation=2.0)
     dense = curve.value(np.linspace(0, 1, max(int(axis.length), 16) + 1))
     fresh = from_polyline(dense, axis.closed)
     at = fresh.arc_of(clicks)

@@ -142,6 +142,7 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
     """Base, height and shift of each block by robust Gauss-Newton on all blocks at once; ``d`` are distances from the current middle."""
     count = max(int(round(length / block_px)), 4)
     block = np.clip((pixels.s * (count / length)).astype(int), 0, count - 1)
+    cluttered = _clutter(block, d, pixels.ink, shape, count)
     near = np.abs(d) <= shape.half_extent + 2.5
     block, d, ink, given = block[near], d[near], pixels.ink[near], pixels.weight[near]
     base, height, shift = np.zeros(count), np.full(count, shape.height), np.zeros(count)
@@ -183,8 +184,35 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
     usual_chi = float(np.median(chi[height > 0.4 * usual])) if (height > 0.4 * usual).any() else 0.1
     sigma = np.sqrt(inverse[:, 2, 2])
     masked = total < 0.35 * np.maximum(seen, 1)
-    good = (height > 0.45 * usual) & (height < 1.7 * usual) & (np.abs(shift) < 3.0) & (chi < 2.5 * usual_chi + 0.02) & (sigma < 0.8) & (seen > 3)
+    good = (
+        (height > 0.45 * usual)
+        & (height < 1.7 * usual)
+        & (np.abs(shift) < 3.0)
+        & (chi < 2.5 * usual_chi + 0.02)
+        & (sigma < 0.8)
+        & (seen > 3)
+    )
+    good &= ~_text_zones(good | masked, cluttered)
     return Blocks((np.arange(count) + 0.5) * length / count, shift, sigma, height, good, masked)
+
+
+def _clutter(block: npt.NDArray[np.intp], d: FloatArray, ink: FloatArray, shape: Shape, count: int) -> npt.NDArray[np.bool_]:
+    """Blocks with ink on both flanks: letters, or a line that crosses."""
+    sides = []
+    for sign in (-1, 1):
+        flank = (sign * d > shape.half_extent + 0.5) & (sign * d < shape.half_extent + 6.0)
+        sides.append(np.bincount(block[flank], ink[flank], count) / np.maximum(np.bincount(block[flank], minlength=count), 1))
+    return np.minimum(*sides) > 0.12 * shape.height
+
+
+def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], window: int = 15) -> npt.NDArray[np.bool_]:
+    """Stretches where readings mostly fail amid clutter: a label stands in the line, and readings that happen to fit are strokes of letters."""
+    if len(fair) < window:
+        return np.zeros(len(fair), bool)
+    box = np.ones(window) / window
+    failing = np.convolve(~fair, box, "same")
+    crowded = np.convolve(cluttered, box, "same")
+    return (failing > 0.45) & (crowded > 0.15)
 
 
 def refine(prepared: Prepared, axis: Axis, rounds: int = 2) -> Refined:
@@ -224,6 +252,11 @@ def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
     if blocks.good.sum() < 4:
         weight = np.full(len(t), 1.0)
     pieces = int(np.clip(axis.length / (18 * unit), 6 if axis.closed else 4, 80))
+    # A stiff curve first: readings far off it (strokes of letters, other lines) are dropped before the supple one sees them.
+    stiff = smooth.fit(t, blocks.shift, weight, pieces=max(pieces // 4, 6 if axis.closed else 3), periodic=axis.closed, correlation=8.0)
+    miss = np.abs(blocks.shift - stiff.value(t)[:, 0])
+    if blocks.good.sum() >= 8:
+        weight = np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), 0.35), weight, 0.0)
     curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0)
     count = _correlation(blocks, curve, t)
     return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count)
