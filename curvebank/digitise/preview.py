@@ -56,7 +56,7 @@ def preview(
         got = trace.trace_panel(prepared, panel_map, [clicks(line)])[0]
         if isinstance(got, CurvebankError):
             raise got
-        made = curve_maker.from_trace(line, area.axes, got, panel_map, info, prepared.line_width_px)
+        made = curve_maker.from_trace(line, area.axes, got, panel_map, info, prepared.width_px)
     except CurvebankError as e:
         made = curve_maker.failed(line, info, e, "$.curve.clicks")
     out["curve"] = curve_json(made)

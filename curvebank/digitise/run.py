@@ -192,7 +192,7 @@ def finish(doc: Recipe, c: CurveModel, got: Any, panel_map: Any, pump: PumpInfo,
     panel = doc.panel(c.panel)
     assert panel is not None
     try:
-        return curve_maker.from_trace(c, panel.axes, got, panel_map, pump, prepared.line_width_px)
+        return curve_maker.from_trace(c, panel.axes, got, panel_map, pump, prepared.width_px)
     except CurvebankError as e:
         return curve_maker.failed(c, pump, e, f"$.curves[{i}]")
     except (ValueError, ArithmeticError) as e:
