@@ -138,7 +138,7 @@ class Fit:
     def uncertainty(self, flow_m3h: Any) -> FloatArray:
         """Standard uncertainty of the fitted value: sqrt(phi V phi'), JCGM 100 eq. 13."""
         t = (np.asarray(flow_m3h, dtype=np.float64) - self.mid) / self.half
-        phi = np.polynomial.polynomial.polyvander(t, self.order)
+        phi = np.polynomial.polynomial.polyvander(t.ravel(), self.order).reshape(*t.shape, self.order + 1)
         return np.sqrt(np.maximum(np.einsum("...i,ij,...j->...", phi, self.covariance, phi), 0.0))
 
 
