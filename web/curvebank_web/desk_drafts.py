@@ -10,6 +10,7 @@ import sqlite3
 from typing import Any
 
 from .desk_file import now, transaction
+from .documents import sheet_of, title_of
 from .problems import Problem
 
 
@@ -23,25 +24,6 @@ class Conflict(Problem):
 
 def _missing(draft_id: str) -> Problem:
     return Problem(404, "no-such-draft", "There is no such draft", f"No draft {draft_id} is on this desk. The start page lists them.")
-
-
-def _text(value: object) -> str:
-    """Text that SQLite can hold: a lone surrogate, which JSON can spell, becomes a question mark."""
-    return str(value or "").encode("utf-8", "replace").decode()
-
-
-def title_of(doc: dict[str, Any]) -> str:
-    """What a draft is called in lists: maker and model, else the file's name."""
-    pump, sheet = doc.get("pump"), doc.get("sheet")
-    name = " ".join(_text(pump.get(k)) for k in ("maker", "model") if pump.get(k)) if isinstance(pump, dict) else ""
-    return (name or (_text(sheet.get("file")) if isinstance(sheet, dict) else "") or "Untitled sheet")[:200]
-
-
-def sheet_of(doc: dict[str, Any]) -> str | None:
-    """SHA-256 of the sheet a document names, or None."""
-    sheet = doc.get("sheet")
-    sha = sheet.get("sha256") if isinstance(sheet, dict) else None
-    return sha if isinstance(sha, str) and len(sha) == 64 else None
 
 
 def create(

@@ -86,7 +86,7 @@ def prepare(path: Path) -> None:
     """
     try:
         path.parent.mkdir(parents=True, exist_ok=True)
-        db = connect(path)
+        db = sqlite3.connect(path, timeout=BUSY_MS / 1000, isolation_level=None)
     except (OSError, sqlite3.Error) as error:
         raise DeskError(f"The desk file {path} cannot be opened: {error}. Choose a folder you can write to.") from error
     try:

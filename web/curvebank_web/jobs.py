@@ -174,7 +174,7 @@ class Registry:
             process.end()
             if job.stop.is_set():
                 return ("cancelled",)
-            message = "The worker process ended, perhaps for want of memory. Nothing that was kept is lost. Run it again, or scan at a lower resolution."
+            message = "The worker process ended, perhaps for want of memory. Nothing that was kept is lost. Run it again, or scan coarser."
             return ("failed", {"code": "worker-died", "message": message, "path": None})
 
     def _finish(self, job: Job, outcome: tuple[Any, ...]) -> None:

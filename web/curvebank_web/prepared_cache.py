@@ -28,8 +28,8 @@ def read(cache: Path, key: PageKey) -> Any:
         return None
     arrays = {}
     for path in folder.glob("*.npy"):
-        mode = "r" if path.stat().st_size > SMALL_BYTES else None
-        arrays[path.stem] = np.load(path, mmap_mode=mode, allow_pickle=False)  # type: ignore[call-overload]
+        large = path.stat().st_size > SMALL_BYTES
+        arrays[path.stem] = np.load(path, mmap_mode="r" if large else None, allow_pickle=False)
     return sheet.Prepared.from_arrays(arrays)
 
 

@@ -1,7 +1,6 @@
 """Serving the app on this machine only: ``serve(bank)``, or ``python -m curvebank_web.server --bank FILE``."""
 
 import argparse
-import importlib.util
 import signal
 import socket
 import sys
@@ -65,14 +64,10 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
     """
     from waitress.server import create_server
 
-    import curvebank
-
     from . import create_app
 
     door = bind(port)
     try:
-        if importlib.util.find_spec("curvebank.bank.store"):
-            curvebank.open(bank, write=True).close()
         app = create_app({"BANK": str(bank)})
     except BaseException:
         door.close()

@@ -1,20 +1,21 @@
 """What the views work with: paths, page store, jobs, and the desk connection of the current request."""
 
 import sqlite3
-import threading
-from collections import OrderedDict
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING
 
 from flask import Flask, current_app, g
 
 from curvebank.errors import CurvebankError
 
-from . import desk_file, sources
+from . import bank_access, desk_file, sources
 from .jobs import Registry
-from .page_store import PageKey, PageStore, prune
+from .page_store import PageStore, prune
 from .problems import Problem
+
+if TYPE_CHECKING:
+    from .previews import Previews
 
 CACHE_LIMIT_BYTES = 4_000_000_000
 
@@ -28,11 +29,14 @@ class Services:
     cache: Path
     jobs: Registry
     pages: PageStore = field(init=False)
-    tracing: threading.Lock = field(default_factory=threading.Lock)
-    prepared: OrderedDict[PageKey, Any] = field(default_factory=OrderedDict)
+    previews: "Previews" = field(init=False)
+    prepare_ahead: bool = True
 
     def __post_init__(self) -> None:
+        from .previews import Previews
+
         self.pages = PageStore(self.cache, self.sheet_bytes)
+        self.previews = Previews(self)
 
     def sheet_bytes(self, sha256: str) -> bytes:
         """The file of a sheet, or a 404 problem."""
@@ -49,7 +53,7 @@ class Services:
 
 
 def start(app: Flask) -> Services:
-    """Build the services from the app's config: ``BANK``, ``DESK``, ``CACHE``, ``WORKERS``."""
+    """Build the services from the app's config: ``BANK``, ``DESK``, ``CACHE``, ``WORKERS``, ``PREPARE_AHEAD``."""
     bank = app.config.get("BANK")
     if not bank:
         raise CurvebankError("BANK is not set: name the bank file the app works on.", code="config")
@@ -60,11 +64,14 @@ def start(app: Flask) -> Services:
         import platformdirs
 
         cache = platformdirs.user_cache_path("curvebank", appauthor=False)
+    bank_access.make_if_missing(bank)
     desk_file.prepare(desk)
     cache = Path(cache).absolute()
     for part in ("pages", "prepared"):
         prune(cache / part, CACHE_LIMIT_BYTES // 2)
-    services = Services(bank=bank, desk=desk, cache=cache, jobs=Registry(app.config.get("WORKERS", 1)))
+    services = Services(
+        bank=bank, desk=desk, cache=cache, jobs=Registry(app.config.get("WORKERS", 1)), prepare_ahead=app.config.get("PREPARE_AHEAD", True)
+    )
     app.extensions["curvebank"] = services
 
     @app.teardown_appcontext

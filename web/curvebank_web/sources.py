@@ -1,9 +1,10 @@
 """Where a sheet's file comes from: parked on the desk, or stored in the bank with a revision."""
 
-import sqlite3
 from contextlib import closing
 from pathlib import Path
 from typing import Any
+
+from curvebank.bank.connect import open_read
 
 from . import desk_file, desk_sheets
 
@@ -16,15 +17,16 @@ def from_bank(bank: Path, sha256: str) -> bytes | None:
 
 def describe_in_bank(bank: Path, sha256: str) -> dict[str, Any] | None:
     """``{sha256, file_name, media, pages}`` of a stored sheet, or None."""
-    row = _bank_row(bank, "SELECT sha256, file_name, media, pages FROM sheet WHERE sha256 = ?", sha256)
-    return dict(zip(("sha256", "file_name", "media", "pages"), row, strict=True)) if row else None
+    row = _bank_row(bank, "SELECT file_name, media, pages FROM sheet WHERE sha256 = ?", sha256)
+    return {"sha256": sha256, "file_name": row[0], "media": row[1], "pages": row[2]} if row else None
 
 
 def _bank_row(bank: Path, sql: str, sha256: str) -> Any:
+    """One row of the bank's blob or sheet table, which are keyed by the 32 bytes of the digest."""
     if not bank.exists():
         return None
-    with closing(sqlite3.connect(f"{bank.absolute().as_uri()}?mode=ro", uri=True, timeout=30)) as db:
-        return db.execute(sql, (sha256,)).fetchone()
+    with closing(open_read(bank)) as db:
+        return db.execute(sql, (bytes.fromhex(sha256),)).fetchone()
 
 
 def sheet_bytes(desk: Path, bank: Path, sha256: str) -> bytes | None:

@@ -1,13 +1,19 @@
-"""The tasks a worker process knows. Each opens the files it needs itself; only small things pass through the pipe."""
+"""The tasks a worker process knows. Each opens the files it needs itself; what it returns is small or packed."""
 
+import json
+from functools import partial
 from pathlib import Path
 from typing import Any
 
-from curvebank import sheet
-from curvebank.errors import SheetError
+from curvebank import digitise, recipe, sheet
+from curvebank.digitise.result import clean
+from curvebank.errors import CurvebankError, SheetError
+from curvebank.records import PageInfo
 
-from . import prepared_cache, sources
+from . import ghosts, prepared_cache, record_pack, sources
 from .page_store import PageKey
+
+Progress = Any
 
 
 def _sheet(desk: str, bank: str, sha256: str) -> bytes:
@@ -17,16 +23,66 @@ def _sheet(desk: str, bank: str, sha256: str) -> bytes:
     return data
 
 
-def prepare(*, desk: str, bank: str, cache: str, page: tuple[Any, ...], progress: Any) -> None:
-    """Prepare a page and keep it in the cache."""
-    key = PageKey(*page)
-    if prepared_cache.folder_of(Path(cache), key).is_dir():
-        return
+def _part(progress: Progress, start: float, length: float, share: float, text: str = "") -> None:
+    """Progress of a part of the work, told as progress of the whole."""
+    progress(start + length * share, text)
+
+
+def _prepared(desk: str, bank: str, cache: str, key: PageKey, progress: Progress) -> tuple[Any, PageInfo | None]:
+    """The prepared page, from the cache or made now and kept; the page's facts where it was decoded now."""
+    found = prepared_cache.read(Path(cache), key)
+    if found is not None:
+        return found, None
     progress(0.0, "Reading the sheet")
     loaded = sheet.load(_sheet(desk, bank, key.sha256), page=key.page, dpi=key.dpi, turn=key.turn)
-    prepared = sheet.prepare(loaded, progress=lambda share, text="": progress(0.1 + 0.8 * share, text or "Levelling the ink"))
+    made = sheet.prepare(loaded, progress=partial(_part, progress, 0.1, 0.8))
     progress(0.95, "Keeping the levelled sheet")
-    prepared_cache.write(Path(cache), key, prepared)
+    prepared_cache.write(Path(cache), key, made)
+    return made, loaded.info
 
 
-TASKS = {"prepare": prepare}
+def prepare(*, desk: str, bank: str, cache: str, page: tuple[Any, ...], progress: Progress) -> None:
+    """Prepare a page and keep it in the cache."""
+    _prepared(desk, bank, cache, PageKey(*page), progress)
+
+
+def run(
+    *,
+    desk: str,
+    bank: str,
+    cache: str,
+    doc: bytes,
+    page: tuple[Any, ...] | None,
+    page_info: dict[str, Any] | None,
+    settings: dict[str, Any],
+    progress: Progress,
+) -> dict[str, Any]:
+    """Digitise a document as it stands; the result, its family picture and the packed records go back as text and bytes.
+
+    A recipe or sheet that cannot be used is a result too: it says why. Only a stop or a fault of the program ends without one.
+    """
+    prepared, info = None, None
+    early: CurvebankError | None = None
+    if page is not None:
+        try:
+            prepared, decoded = _prepared(desk, bank, cache, PageKey(*page), partial(_part, progress, 0.0, 0.35))
+            info = decoded or (PageInfo(**page_info) if page_info else None)
+        except SheetError as error:
+            early = error
+    if early is not None:
+        data = None if early.code == "no-such-sheet" else _sheet(desk, bank, PageKey(*page).sha256)  # type: ignore[misc]
+        made = digitise.run(doc, data, settings, progress=progress)  # says in the result what is wrong with the sheet
+    else:
+        made = digitise.run(doc, None, settings, progress=progress, prepared=prepared, page=info)
+    picture: dict[str, Any] = {}
+    if made.error is None:
+        progress(0.99, "Drawing the family")
+        picture = ghosts.family_picture(made, recipe.parse(doc), prepared, settings)
+    return {
+        "result": json.dumps(digitise.result_json(made), allow_nan=False),
+        "family": json.dumps(clean(picture), allow_nan=False),
+        "digitised": record_pack.pack(made),
+    }
+
+
+TASKS = {"prepare": prepare, "run": run}

@@ -28,7 +28,7 @@ class Reporter:
         if self.pipe.poll():
             try:
                 self.pipe.recv()
-            except EOFError:
+            except (EOFError, OSError):
                 raise SystemExit(0) from None
             raise Cancelled("Stopped. What was done before is kept.")
         now = time.monotonic()
@@ -45,7 +45,7 @@ def main(pipe: Connection, tasks: str) -> None:
     while True:
         try:
             message = pipe.recv()
-        except EOFError:
+        except (EOFError, OSError):  # the server is gone
             return
         if message[0] != "task":  # a stop that came after the task had ended
             continue

@@ -2,40 +2,34 @@
 
 from typing import Any
 
+from flask import Response
 from flask_openapi import APIBlueprint, Tag
 
 from curvebank.errors import SheetError
 
-from .. import desk_drafts
-from ..page_store import PageKey
+from .. import desk_drafts, documents, running, saving
+from ..jobs import Job
 from ..problems import Problem
 from ..services import desk_db, services
 from ..starting import starting_point
-from .models import DraftPath, Head, NewDraft, NewStep
+from .jobs import serialise
+from .models import DraftPath, Head, NewDraft, NewStep, PreviewQuestion, ResultQuery, SaveRequest
 
 blueprint = APIBlueprint("drafts", __name__, url_prefix="/api/drafts", abp_tags=[Tag(name="drafts")])
-
-
-def page_key(doc: dict[str, Any]) -> PageKey | None:
-    """The page a document works on, or None where it does not name one that could exist."""
-    sheet = doc.get("sheet")
-    sha = desk_drafts.sheet_of(doc)
-    if sha is None or not isinstance(sheet, dict):
-        return None
-    page, dpi, turn = sheet.get("page", 1), sheet.get("dpi", 300), sheet.get("turn", 0)
-    if not (isinstance(page, int) and isinstance(dpi, int | float) and turn in (0, 90, 180, 270) and page >= 1 and 36 <= dpi <= 1200):
-        return None
-    return PageKey(sha, page, float(dpi), int(turn))
 
 
 def full(draft_id: str) -> dict[str, Any]:
     """DRAFT of the API: the draft and the page it works on (null where that cannot be shown)."""
     draft = desk_drafts.read(desk_db(), draft_id)
-    key = page_key(draft["doc"])
-    try:
-        draft["page"] = services().pages.describe(key) if key else None
-    except (SheetError, Problem):
-        draft["page"] = None
+    key = documents.page_key(draft["doc"])
+    draft["page"] = None
+    if key is not None:
+        try:
+            draft["page"] = services().pages.describe(key)
+        except (SheetError, Problem):
+            return draft
+        if services().prepare_ahead:
+            services().previews.ahead(key)
     return draft
 
 
@@ -49,8 +43,9 @@ def listing() -> dict[str, Any]:
 def create(body: NewDraft) -> tuple[dict[str, Any], int]:
     """Start a draft from a sheet, a document, or a stored revision."""
     doc, label, origin = starting_point(body)
-    sha = desk_drafts.sheet_of(doc)
-    draft_id = desk_drafts.create(desk_db(), doc, label=label, sheet_sha256=sha, create_id=body.action_id, origin=origin)
+    draft_id = desk_drafts.create(
+        desk_db(), doc, label=label, sheet_sha256=documents.sheet_of(doc), create_id=body.action_id, origin=origin
+    )
     return full(draft_id), 201
 
 
@@ -79,3 +74,37 @@ def head(path: DraftPath, body: Head) -> dict[str, Any]:
     """Undo, redo, or jump to any step."""
     desk_drafts.move_head(desk_db(), path.draft, body.step)
     return full(path.draft)
+
+
+@blueprint.post("/<draft>/preview")
+def preview(path: DraftPath, body: PreviewQuestion) -> tuple[dict[str, Any], int]:
+    """A quick look at one panel and perhaps one curve; 202 with a job while the sheet is being prepared."""
+    db = desk_db()
+    doc = desk_drafts.doc_at(db, path.draft, desk_drafts.row_of(db, path.draft)["head"])
+    key = documents.page_key(doc)
+    if key is None:
+        raise Problem(422, "no-sheet", "The draft has no sheet", "Lay a sheet on the desk first.", path="$.sheet")
+    services().pages.info(key)
+    subject = (path.draft, str(body.panel.get("id")), str(body.curve.get("id")) if body.curve else "")
+    answer = services().previews.look(subject, key, doc, body.panel, body.curve)
+    if isinstance(answer, Job):
+        return {"seq": body.seq, "pending": True, "job": serialise(answer)}, 202
+    return {"seq": body.seq, **answer}, 200
+
+
+@blueprint.post("/<draft>/run")
+def run(path: DraftPath) -> tuple[dict[str, Any], int]:
+    """Digitise the draft as it stands at its head."""
+    return serialise(running.start(services(), desk_db(), path.draft)), 202
+
+
+@blueprint.get("/<draft>/result")
+def result(path: DraftPath, query: ResultQuery) -> Response:
+    """What the run of a step gave: the result document and the family picture."""
+    return Response(running.result_text(desk_db(), path.draft, query.step), mimetype="application/json")
+
+
+@blueprint.post("/<draft>/save")
+def save(path: DraftPath, body: SaveRequest) -> tuple[dict[str, Any], int]:
+    """Store the result of a step as a revision of its pump; the same save_key again answers what the first did."""
+    return saving.save(services(), desk_db(), path.draft, **body.model_dump()), 201

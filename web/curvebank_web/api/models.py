@@ -3,7 +3,15 @@
 from typing import Annotated, Any
 
 from flask_openapi import FileStorage
-from pydantic import BaseModel, ConfigDict, Field, StringConstraints, model_validator
+from pydantic import AfterValidator, BaseModel, ConfigDict, Field, StringConstraints, model_validator
+
+
+
+def _quarter(turn: int) -> int:
+    if turn not in (0, 90, 180, 270):
+        raise ValueError("turn is 0, 90, 180 or 270 degrees clockwise")
+    return turn
+
 
 Sha = Annotated[str, StringConstraints(pattern=r"^[0-9a-f]{64}$")]
 Token = Annotated[str, StringConstraints(pattern=r"^[A-Za-z0-9_.:-]{1,100}$")]
@@ -12,7 +20,7 @@ Line = Annotated[str, StringConstraints(strip_whitespace=True, min_length=1, max
 PumpKey = Annotated[str, StringConstraints(pattern=r"^[A-Z0-9][A-Z0-9-]{0,79}$")]
 Number = Annotated[float, Field(allow_inf_nan=False)]
 Count = Annotated[int, Field(ge=1, le=2**53)]
-Turn = Annotated[int, Field(json_schema_extra={"enum": [0, 90, 180, 270]})]
+Turn = Annotated[int, AfterValidator(_quarter), Field(json_schema_extra={"enum": [0, 90, 180, 270]})]
 Dpi = Annotated[float, Field(ge=36, le=1200, allow_inf_nan=False)]
 
 
@@ -113,3 +121,28 @@ class JobPath(BaseModel):
     """A job."""
 
     job: Token
+
+
+class PreviewQuestion(Strict):
+    """A panel and perhaps a curve, as a recipe has them; ``seq`` comes back, so that late answers can be dropped."""
+
+    panel: dict[str, Any]
+    curve: dict[str, Any] | None = None
+    seq: Annotated[int, Field(ge=0, le=2**53)] = 0
+
+
+class ResultQuery(BaseModel):
+    """The step whose result is wanted; the head where left out."""
+
+    step: Count | None = None
+
+
+class SaveRequest(Strict):
+    """Who saves what why. ``key`` defaults to the recipe's, ``step`` to the head."""
+
+    key: PumpKey | None = None
+    who: Line
+    why: Line
+    save_key: Token
+    release: bool = False
+    step: Count | None = None

@@ -22,7 +22,7 @@ UNNAMED = "sheet"
 def add(form: SheetForm) -> tuple[dict[str, Any], int]:
     """Add a scan: it is decoded at once, so that a bad file is refused here and nowhere later."""
     data = form.file.read()
-    name = _bare_name(form.file.filename or "")
+    name = bare_name(form.file.filename or "")
     info = sheet.load(data).info
     sha = desk_sheets.add(desk_db(), data, file_name=name, media=info.media, pages=info.pages)
     page = services().pages.describe(PageKey(sha, 1, 300, 0))
@@ -47,14 +47,15 @@ def tile(path: TilePath, query: PageQuery) -> Response:
     response = Response(data, mimetype="image/png")
     response.headers["Cache-Control"] = "private, max-age=31536000, immutable"
     response.set_etag(f"{key.name}-{FORM}-{path.z}-{path.x}-{path.y}")
-    return response.make_conditional(request)
+    response.make_conditional(request)
+    return response
 
 
 def _key(path: PagePath, query: PageQuery) -> PageKey:
     return PageKey(path.sha256, path.page, query.dpi, query.turn)
 
 
-def _bare_name(name: str) -> str:
+def bare_name(name: str) -> str:
     """The name of an uploaded file without any folder, as recipes want it."""
     bare = PurePosixPath(name.replace("\\", "/")).name.replace("\x00", "")
     return bare[:255] if bare not in ("", ".", "..") else UNNAMED
