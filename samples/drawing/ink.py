@@ -75,6 +75,13 @@ class Ink:
         part = cv2.warpAffine(mask, np.c_[m, move - [x0, y0]], (int(x1 - x0), int(y1 - y0)), flags=cv2.INTER_LINEAR)
         self.type[y0:y1, x0:x1] = np.maximum(self.type[y0:y1, x0:x1], part)
 
+    def fill(self, polygon_mm):
+        """Fill a polygon: a printed band or a tint block."""
+        p = np.rint(self.page.px(polygon_mm) * 16).astype(np.int32)
+        mask = np.zeros(self.field.shape, np.uint8)
+        cv2.fillPoly(mask, [p], 255, cv2.LINE_AA, 4)
+        self.type = np.maximum(self.type, mask.astype(np.float32) / 255)
+
     def wipe(self, polygon_mm):
         """Clear everything of this ink inside a polygon: a label's white ground over the grid."""
         p = np.rint(self.page.px(polygon_mm)).astype(np.int32)
