@@ -403,7 +403,7 @@ def _borrow(quantity, line, diameter_mm, speed_rpm, rule):
         "power": "carried by the trim law with exponents 1 and 3",
         "npshr": "taken at equal flow",
     }[quantity]
-    note = f"{named} is printed for Ø {line.diameter_mm:g} alone. For Ø {diameter_mm:g} it is borrowed ({how}), with a wider band."
+    note = f"{named} is printed for Ø {line.diameter_mm:g} alone. For Ø {diameter_mm:.4g} it is borrowed ({how}), with a wider band."
     note += " Confirm with the maker."
     offset = absolute = 0.0
     if quantity == "efficiency":
