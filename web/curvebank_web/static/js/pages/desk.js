@@ -1,0 +1,261 @@
+// The desk page: opens the draft, ties model, drawing, tools and keys together.
+import * as api from "../net/api.js";
+import { Session } from "../net/session.js";
+import { toScreen, panBy } from "../geometry/affine.js";
+import { curveId } from "../state/doc.js";
+import { plain } from "../geometry/number.js";
+import * as words from "../state/words.js";
+import { button, choice, watchTyping } from "../panels/blank.js";
+import { closeProblem, fromError, showProblem } from "../panels/problem.js";
+import { keepSetting, setting } from "../panels/keys.js";
+import { $, h } from "../view/dom.js";
+import { TileLayer } from "../view/tiles.js";
+import { Desk } from "./desk-model.js";
+import { DeskDraw, homeView, size } from "./desk-draw.js";
+import { DeskTools } from "./desk-tools.js";
+import { deskKeys } from "./desk-keys.js";
+
+const draftId = decodeURIComponent(location.pathname.split("/").filter(Boolean).pop());
+const problems = $("problems");
+
+function frameLoop(draw, desk) {
+  let stale = new Set();
+  let asked = false;
+  const frame = () => {
+    asked = false;
+    const now = stale;
+    stale = new Set();
+    if (now.has("doc") || now.has("all")) {
+      desk.derive();
+      desk.followPage();
+      if (now.has("all") || !desk.view) desk.view ??= homeView(desk);
+      return draw.all();
+    }
+    if (now.has("view") || now.has("paper")) {
+      draw.paper();
+      if (now.has("view")) draw.plot();
+    } else if (now.has("tiles")) {
+      const { width, height } = size("paper");
+      draw.tiles.draw($("tiles"), desk.view, width, height);
+      draw.loupe();
+    } else if (now.has("loupe")) draw.loupe();
+    if (now.has("view") || now.has("cursor")) draw.cursor();
+    if (now.has("slip")) draw.slip();
+    if (now.has("below")) draw.below();
+    if (now.has("bar")) draw.bar();
+    return undefined;
+  };
+  return (what) => {
+    stale.add(what);
+    if (!asked) {
+      asked = true;
+      requestAnimationFrame(frame);
+    }
+  };
+}
+
+function awayProblem(session) {
+  const n = session.outbox.size;
+  showProblem(problems, {
+    id: "away", title: "The program on this computer has stopped answering",
+    text: h("span", {}, `${n === 1 ? "Your last step is" : n ? `Your last ${n} steps are` : "Your work is"} safe in this browser. Start it again with `, h("code", {}, "curvebank serve"), "; this page notices by itself and hands them over."),
+    ways: [["Try now", () => session.outbox.nudge()], ...(n ? [[`Save the ${n} ${n === 1 ? "step" : "steps"} as a file`, () => saveSteps(session), true]] : [])],
+  });
+}
+
+function saveSteps(session) {
+  const link = h("a", { href: URL.createObjectURL(new Blob([JSON.stringify(session.outbox.entries, null, 1)], { type: "application/json" })), download: `curvebank-${session.id}-steps.json` });
+  link.click();
+}
+
+function conflictProblem(session) {
+  const { entry, theirs } = session.conflict;
+  const list = (doc) => h("p", {}, `${(doc?.panels ?? []).length} panels, ${(doc?.curves ?? []).length} curves.`);
+  showProblem(problems, {
+    id: "conflict", title: "Another window has gone on with this draft", text: "Nothing is lost: both versions are kept in the draft's history. Choose the one to go on with.",
+    extra: h("div", { class: "two" }, h("div", {}, h("b", {}, `Yours: ${entry.label ?? "undo"}`), list(session.doc)), h("div", {}, h("b", {}, `Theirs: step ${theirs?.step ?? "?"}`), list(theirs?.doc))),
+    ways: [["Lay mine on top", (close) => { close(); session.resolve(true); }], ["Go on with theirs", (close) => { close(); session.resolve(false); }, true]],
+  });
+}
+
+/** What the panels and tools may ask of the desk, beyond the model itself. */
+function abilities(desk, draw, tools, invalidate) {
+  const redo = (what = "all") => invalidate(what);
+  Object.assign(desk, {
+    form: { why: "", who: setting("who", "") },
+    set(change) { Object.assign(desk, change); redo("all"); },
+    say(text) { $("aloud").textContent = ""; requestAnimationFrame(() => ($("aloud").textContent = text)); flash(text); },
+    choosePanel(id) {
+      if (id === "+") desk.drawingPanel = true;
+      else { desk.drawingPanel = false; desk.panelId = id; desk.chosenMark = null; desk.cursor = null; }
+      if (desk.step !== "panel") desk.view = null;
+      tools.stepped(desk.step);
+      redo("all");
+    },
+    select(id) { desk.selected = id; desk.focusedGuide = null; redo("all"); },
+    chooseMark(mark) { desk.chosenMark = mark; $("paper").focus({ preventScroll: true }); redo("all"); },
+    removeChosenMark() { const { panel, axis, index } = desk.chosenMark; desk.chosenMark = null; desk.act({ type: "mark/remove", panel, axis, index }); },
+    keepMark(panel, mark, values) {
+      desk.act({ type: "mark/keep", panel: panel.id, at: mark.at, values });
+      $("paper").focus({ preventScroll: true });
+    },
+    keepCurve() {
+      const open = desk.openCurve;
+      if (!open || open.clicks.length < 2) return desk.say("Two clicks or more along the line.");
+      if (open.quantity.endsWith("_contour") && open.value === undefined) return desk.say("Give the line its level first.");
+      const id = curveId(open, (desk.doc.curves ?? []).map((c) => c.id));
+      const known = desk.previews.lastCurve.get(open.id);
+      if (known) desk.previews.lastCurve.set(id, known);
+      if (open.id !== id) desk.act({ type: "curve/change", change: { id } });
+      desk.act({ type: "curve/keep" });
+      $("paper").focus({ preventScroll: true });
+      return undefined;
+    },
+    enter() {
+      if (desk.step === "curves" && desk.openCurve) return desk.keepCurve();
+      if (desk.step === "curves" && desk.selected) return desk.select(null);
+      return $("slip").querySelector(".btn.main")?.click();
+    },
+    undoOrRedo(which) { const said = desk.session[which](); desk.say(said || `Nothing to ${which}.`); redo("all"); },
+    async checkAndGo(step) {
+      desk.go(step);
+      if (!desk.run?.fresh) await desk.startRun();
+      redo("all");
+    },
+    chooseFinding(number) {
+      desk.chosenFinding = number;
+      const f = desk.findings.find((k) => k.number === number);
+      if (f) travel(f);
+      redo("all");
+    },
+    nextFinding(by) {
+      const n = desk.findings.length;
+      if (!n) return desk.say("There is no finding.");
+      const at = desk.findings.findIndex((f) => f.number === desk.chosenFinding);
+      const next = desk.findings[(((at < 0 && by > 0 ? -1 : at) + by) % n + n) % n];
+      desk.chooseFinding(next.number);
+      return desk.say(`${next.severity}. ${next.text}`);
+    },
+    withWays(f) {
+      const ways = [];
+      const buttons = [];
+      if (f.where?.curve || f.where?.at) ways.push(["Show the place", () => desk.chooseFinding(f.number)]);
+      if (f.suspect) {
+        const axis = desk.doc.panels.find((p) => p.id === f.suspect.panel)?.axes[f.suspect.axis];
+        if (axis) {
+          const v = words.niceFit(axis, f.suspect);
+          ways.unshift([`Change it to ${plain(v)}`, () => desk.act({ type: "mark/set", panel: f.suspect.panel, axis: f.suspect.axis, index: f.suspect.index, change: { value: v } })]);
+        }
+      }
+      const curve = f.subject?.startsWith("curve:") && (desk.doc.curves ?? []).find((c) => c.id === f.subject.slice(6));
+      const agrees = curve && (f.agrees ?? agreesFromFamily(curve.id));
+      if (curve && agrees && desk.step === "family") {
+        const v = Number(agrees.toFixed(Math.abs(agrees - Math.round(agrees)) < 0.35 ? 0 : 1));
+        buttons.push(button(`File it as ${plain(v)} mm`, { onClick: () => { desk.act({ type: "curve/set", curve: curve.id, change: { diameter_mm: v, label: { by: "diameter", printed: plain(curve.diameter_mm) } } }); desk.checkAndGo("family"); } }));
+      }
+      if (curve && desk.step === "curves" && !desk.openCurve) ways.push(["draw a guide", () => { desk.select(curve.id); desk.chooseFinding(f.number); $("paper").focus(); }]);
+      return { ...f, ways, buttons };
+    },
+    fillForm(change) { Object.assign(desk.form, change); if (change.who !== undefined) keepSetting("who", change.who); redo("slip"); },
+    async save(release) {
+      const { who, why } = desk.form;
+      if (!who || !why || desk.saving) return;
+      desk.saving = true;
+      redo("slip");
+      desk.saveKey ??= `${draftId}-${crypto.randomUUID?.() ?? Date.now()}`;
+      try {
+        if (!(await desk.session.settled(15000))) throw Object.assign(new Error("away"), { title: "Nothing was saved", detail: "The last steps are not in the file yet. They are kept in this browser; save again when the program answers." });
+        const pump = desk.doc.pump ?? {};
+        desk.saved = { ...(await api.save(draftId, { key: pump.key, who, why, save_key: desk.saveKey, release })), released: release };
+        desk.saveKey = null;
+        closeProblem(problems, "save");
+      } catch (error) {
+        fromError(problems, "save", error, [["Save again", (close) => { close(); desk.save(release); }]]);
+      }
+      desk.saving = false;
+      redo("all");
+    },
+  });
+
+  function agreesFromFamily(id) {
+    for (const family of Object.values(desk.run?.family ?? {})) {
+      const c = family.curves?.find((k) => k.id === id);
+      if (c?.agrees_mm) return c.agrees_mm;
+    }
+    return null;
+  }
+
+  function travel(f) {
+    const item = desk.items.find((i) => i.id === f.where?.curve);
+    const at = f.where?.at ?? (item?.pixels.length ? item.pixels[Math.floor(f.where.stretch ? (f.where.stretch[0] + f.where.stretch[1]) / 2 : item.pixels.length * 0.35)] : null);
+    if (f.where?.panel && f.where.panel !== desk.panel?.id && desk.doc.panels.some((p) => p.id === f.where.panel)) { desk.panelId = f.where.panel; desk.view = null; return; }
+    if (!at || !desk.view) return;
+    const { width, height } = size("paper");
+    const [x, y] = toScreen(desk.view, at);
+    if (x < 20 || y < 20 || x > width - 20 || y > height - 60) desk.view = panBy(desk.view, width / 2 - x, height / 2 - y);
+  }
+}
+
+let flashTimer = null;
+function flash(text) {
+  const kept = $("said") ?? $("kept").insertAdjacentElement("beforebegin", h("span", { class: "kept", id: "said", "aria-hidden": "true" }));
+  kept.textContent = text.length > 80 ? `${text.slice(0, 78)} …` : text;
+  clearTimeout(flashTimer);
+  flashTimer = setTimeout(() => (kept.textContent = ""), 6000);
+}
+
+function paperStrength(value) {
+  $("tiles").style.opacity = String(Number(value) / 100);
+  keepSetting("paper", value);
+}
+
+async function start() {
+  let invalidate = () => {};
+  let session;
+  try {
+    session = await Session.open(draftId, {
+      onChange: () => invalidate("all"),
+      onNews: (event, entry, detail) => {
+        if (event === "away") awayProblem(session);
+        if (event === "back" || event === "kept") { closeProblem(problems, "away"); if (event === "back") desk?.previews.again(); }
+        if (event === "conflict") conflictProblem(session);
+        if (event === "refused") fromError(problems, "refused", detail, [["Go on with what the file has", (close) => { close(); session.resolve(false); }]]);
+        if (session?.outbox.away && event !== "away") awayProblem(session);
+        invalidate("bar");
+      },
+    });
+  } catch (error) {
+    return fromError(problems, "open", error, [["Try again", () => location.reload()]]);
+  }
+  const desk = new Desk(session, {
+    invalidate: (w) => invalidate(w),
+    problem: (id, error) => fromError(problems, id, error),
+    stepped: (step) => { tools?.stepped(step); if (["sheet", "panel"].includes(step) !== ["sheet", "panel"].includes(lastStep)) desk.view = null; lastStep = step; },
+  });
+  let lastStep = desk.step;
+  const tiles = new TileLayer(() => invalidate("tiles"));
+  const draw = new DeskDraw(desk, tiles);
+  invalidate = frameLoop(draw, desk);
+  desk.derive();
+  const tools = new DeskTools(desk, draw, tiles, (w) => invalidate(w));
+  abilities(desk, draw, tools, (w) => invalidate(w));
+  deskKeys(desk, draw, tools, (w) => invalidate(w), [h("span", {}, "; the paper is shown at"), choice({ name: "paper", label: "Paper strength", value: setting("paper", "100"), options: [["100", "full strength"], ["60", "60 %"], ["30", "30 %"]], onValue: paperStrength })]);
+  paperStrength(setting("paper", "100"));
+  watchTyping($("slip"));
+  $("undo").addEventListener("click", () => desk.undoOrRedo("undo"));
+  $("redo").addEventListener("click", () => desk.undoOrRedo("redo"));
+  let known = { ...size("paper"), plot: size("replot").width };
+  new ResizeObserver(() => {
+    const now = { ...size("paper"), plot: size("replot").width };
+    if (now.width !== known.width || now.height !== known.height) desk.view = null;
+    known = now;
+    invalidate("all");
+  }).observe($("work"));
+  window.addEventListener("curvebank-theme", () => invalidate("all"));
+  setInterval(() => session.outbox.away && awayProblem(session), 4000);
+  await desk.loadResult();
+  invalidate("all");
+  return desk;
+}
+
+start();

@@ -1,0 +1,103 @@
+// Right of the findings: what stands behind the numbers of this step.
+import { axisIds } from "../geometry/panelmap.js";
+import { linear } from "../geometry/scale.js";
+import { thin } from "../geometry/polyline.js";
+import { plain, withDoubt } from "../geometry/number.js";
+import { QUANTITY_WORDS, written } from "../geometry/units.js";
+import { drawChart } from "../view/chart.js";
+import { h, put, s } from "../view/dom.js";
+
+export function drawBeside(root, desk) {
+  if (desk.step === "marks" || desk.step === "panel") return marksTable(root, desk);
+  if (desk.step === "family") return exponents(root, desk);
+  if (desk.step === "fit") return residuals(root, desk);
+  if (desk.step === "curves" || desk.step === "submit") return doubt(root, desk);
+  put(root);
+}
+
+function marksTable(root, desk) {
+  const { panel } = desk;
+  if (!panel) return put(root);
+  const answer = desk.panelResult(panel);
+  const ids = axisIds(panel);
+  const rows = [...ids.flow, ...ids.value].map((id) => {
+    const axis = panel.axes[id];
+    const n = (axis.marks ?? []).length;
+    const res = answer?.mark_residuals?.[id];
+    const worst = res?.length && n > 0 ? `${plain(Math.max(...res.map(Math.abs)), 1)} px` : "";
+    return h("tr", {}, h("td", {}, `${QUANTITY_WORDS[axis.quantity]}, ${written(axis.unit)}`), h("td", { class: "num" }, String(n)), h("td", { class: "num" }, worst), h("td", {}, n < 2 ? `wants ${2 - n} more` : n === 2 ? "a third would find a slip" : axis.scale === "log10" ? "logarithmic" : "linear"));
+  });
+  const grid = answer?.grid ? h("p", { class: "small" }, answer.grid.used ? `The printed grid agrees: ${answer.grid.lines} lines, ${plain(answer.grid.residual_px, 2)} px.` : answer.grid.why) : null;
+  put(root, h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)), grid);
+}
+
+const FILL = { drawing: "hatched", reading: "solid", calibration: "ruled", fit: "dotted" };
+
+function doubt(root, desk) {
+  const item = desk.items.find((i) => i.id === (desk.selected ?? desk.openCurve?.id)) ?? desk.nearItem ?? desk.items.find((i) => i.result?.spread && Object.keys(i.result.spread).length);
+  const spread = item?.result?.spread;
+  const parts = Object.entries(spread ?? {}).filter(([, v]) => v > 0);
+  if (!parts.length) return put(root);
+  const total = parts.reduce((a, [, v]) => a + v * v, 0);
+  const u = Math.sqrt(total) / item.fy;
+  const unit = written(desk.panel.axes[item.curve.y].unit);
+  const shares = parts.map(([name, v]) => [name, (v * v) / total]).sort((a, b) => b[1] - a[1]);
+  const bar = h("div", { class: "doubt", role: "img", "aria-label": shares.map(([n, v]) => `${n} ${Math.round(v * 100)} per cent`).join(", ") }, shares.filter(([, v]) => v > 0.005).map(([n, v]) => h("i", { class: FILL[n] ?? "ruled", style: { flex: String(v) } })));
+  put(root, h("h2", {}, `Where the ± ${withDoubt(0, u).u} ${unit} of ${item.label} comes from`), bar,
+    h("p", { class: "shares" }, shares.map(([n, v]) => h("span", {}, `${n} ${Math.round(v * 100)} %`))),
+    h("p", { class: "small" }, "A delivered pump may differ far more; the pump page shows that band first."));
+}
+
+function exponents(root, desk) {
+  const families = Object.entries(desk.run?.family ?? {}).filter(([, f]) => f.exponents);
+  if (!families.length) return put(root);
+  const quantity = families.find(([q]) => desk.panel && Object.values(desk.panel.axes).some((a) => a.quantity === q)) ?? families[0];
+  const rows = exponentRows(quantity[1].exponents);
+  put(root, h("h2", {}, `Exponents of the ${QUANTITY_WORDS[quantity[0]] ?? quantity[0]} curves`), rows.map((r) => h("div", { class: "exponent" }, h("span", {}, r.words), scaleOf(r), h("b", {}, r.u ? `${plain(r.value, 2)} ± ${plain(r.u, 2)}` : plain(r.value, 2)))));
+}
+
+const EXPONENT_WORDS = { a: "flow over diameter", b: "value over diameter", flow: "flow over diameter", value: "value over diameter", head: "head over diameter", power: "power over diameter" };
+
+/** Exponents come as {name: {value, u, lo, hi}} or {name: number}. */
+export function exponentRows(exponents) {
+  return Object.entries(exponents).map(([name, e]) => {
+    const value = typeof e === "number" ? e : e?.value;
+    if (!Number.isFinite(value)) return null;
+    const limits = e?.limits ?? (e?.lo !== undefined ? [e.lo, e.hi] : null);
+    return { words: EXPONENT_WORDS[name] ?? name, value, u: e?.u ?? e?.sigma ?? null, lo: limits?.[0], hi: limits?.[1] };
+  }).filter(Boolean);
+}
+
+function scaleOf({ value, u, lo, hi }) {
+  const w = 290;
+  const [a, b] = [Math.min(lo ?? value - 0.5, value - 0.1), Math.max(hi ?? value + 0.5, value + 0.1)];
+  const pad = (b - a) * 0.45;
+  const x = linear(a - pad, b + pad, 0, w);
+  const g = s("svg", { class: "plot", viewBox: `0 0 ${w} 30`, width: w, height: 30, "aria-hidden": "true", focusable: "false" });
+  if (lo !== undefined && hi !== undefined) {
+    g.append(s("rect", { x: x.map(lo), y: 4, width: x.map(hi) - x.map(lo), height: 10, fill: "var(--band)" }));
+    for (const v of [lo, hi]) g.append(s("line", { x1: x.map(v), x2: x.map(v), y1: 3, y2: 15, class: "k-ink", "stroke-width": 1 }), s("text", { class: "tick", x: x.map(v), y: 28, "text-anchor": "middle", style: { "font-size": "11px" } }, plain(v, 2)));
+  }
+  g.append(s("line", { x1: 0, x2: w, y1: 9, y2: 9, class: "k-edge", "stroke-width": 1 }));
+  if (u) g.append(s("line", { x1: x.map(value - 2 * u), x2: x.map(value + 2 * u), y1: 9, y2: 9, class: "k-ink", "stroke-width": 3 }));
+  g.append(s("circle", { cx: x.map(value), cy: 9, r: 4.5, fill: "var(--sheet)", class: "dot k-ink", "stroke-width": 1.8 }));
+  return g;
+}
+
+function residuals(root, desk) {
+  const item = desk.items.find((i) => i.id === desk.selected && i.fit) ?? desk.items.find((i) => i.fit);
+  if (!item) return put(root);
+  const unit = written(desk.panel.axes[item.curve.y].unit);
+  const points = thin(item.points.map(([q, v]) => [q, v - item.fit.value(q * item.fx) / item.fy]), 0);
+  const inside = points.filter((_, i) => i % Math.max(1, Math.floor(points.length / 300)) === 0);
+  const big = Math.max(...inside.map((p) => Math.abs(p[1])), 1e-9);
+  const width = root.clientWidth || 540;
+  const svg = s("svg", { class: "plot", viewBox: `0 0 ${width} 88`, width, height: 88, role: "img", "aria-label": `Trace minus fit, largest ${plain(big, 3)} ${unit}` });
+  const frame = [52, 4, width - 10, 68];
+  const x = { ...linear(points[0][0], points[points.length - 1][0], frame[0], frame[2]), lo: Math.min(points[0][0], points[points.length - 1][0]), hi: Math.max(points[0][0], points[points.length - 1][0]) };
+  const y = { ...linear(-1.2 * big, 1.2 * big, frame[3], frame[1]), lo: -1.2 * big, hi: 1.2 * big, most: 3 };
+  const miss = item.fit.max_miss / item.fy;
+  drawChart(svg, { frame, x, ys: [y], lines: [{ points: inside, tone: "trace", width: 1.3 }] });
+  put(root, h("h2", {}, `${item.label}: trace less fit, ${unit}`), svg, h("p", { class: "small" }, `Order ${item.fit.order}. Largest miss ${plain(miss, 3)} ${unit} (${plain(item.fit.max_miss_pct, 2)} %); the band drawn is k = 2.`));
+}
+

@@ -1,0 +1,97 @@
+// The sentence of a curve: what the line is, what it belongs to, where it is read and where it ends.
+import { axisIds } from "../geometry/panelmap.js";
+import { CONTOURS, CONTOUR_WORDS, QUANTITY_SIGNS, QUANTITY_WORDS, written } from "../geometry/units.js";
+import { calibrated } from "../state/derive.js";
+import { sideOf } from "../state/words.js";
+import { h } from "../view/dom.js";
+import { button, choice, numberBlank } from "./blank.js";
+
+const t = (words) => h("span", {}, words);
+const stop = () => h("span", { class: "stop" }, ".");
+const hint = (key, words) => h("span", { class: "hint" }, "hold ", h("kbd", {}, key), ` ${words}`);
+
+/** Quantities that a line on this panel can be, as choices. */
+export function quantitiesOf(panel) {
+  const ids = axisIds(panel);
+  const onAxes = [...new Set(ids.value.map((id) => panel.axes[id].quantity))];
+  const contours = onAxes.includes("head") ? Object.keys(CONTOURS) : [];
+  return [...onAxes.map((q) => [q, QUANTITY_WORDS[q]]), ...contours.map((q) => [q, CONTOUR_WORDS[q]])];
+}
+
+/** The axis a quantity is read on: its own, or head for a contour. */
+export function axisFor(panel, quantity) {
+  const wanted = CONTOURS[quantity] ? "head" : quantity;
+  return axisIds(panel).value.find((id) => panel.axes[id].quantity === wanted) ?? axisIds(panel).value[0];
+}
+
+const ENDINGS = [
+  ["ink", "where the ink ends"],
+  ["click", "at the outer clicks"],
+  ["hand", "with my clicks: they are the curve"],
+  ["points", "with test points: I click each"],
+];
+
+const endingOf = (c) => (c.kind === "hand" || c.kind === "points" ? c.kind : c.ends ?? "ink");
+const endingChange = (v) => (v === "hand" || v === "points" ? { kind: v, ends: undefined } : { kind: undefined, ends: v === "ink" ? undefined : v });
+
+function curveParts(panel, curve, set, onEnter) {
+  const contour = curve.quantity in CONTOURS;
+  const parts = [t("This line is"), choice({ name: "quantity", label: "Quantity of this line", value: curve.quantity, options: quantitiesOf(panel), onValue: (q) => set({ quantity: q, y: axisFor(panel, q), ...(q in CONTOURS ? { diameter_mm: undefined } : { value: undefined, closed: undefined }) }) })];
+  const blanks = [];
+  if (contour) {
+    const percent = curve.quantity === "efficiency_contour";
+    const unit = percent ? "%" : curve.quantity === "power_contour" ? "kW" : "m";
+    const b = numberBlank({ name: "level", label: `Level of this line in ${unit}`, value: curve.value === undefined ? null : percent ? Math.round(curve.value * 1e6) / 1e4 : curve.value, example: "level", width: 48, onValue: (v) => set({ value: v === null ? undefined : percent ? v / 100 : v }), onEnter: (v) => onEnter({ value: v === null ? undefined : percent ? v / 100 : v }) });
+    blanks.push(b);
+    parts.push(t("of"), b, t(`${unit},`), choice({ name: "closed", label: "Open or closed line", value: curve.closed ? "closed" : "open", options: [["open", "an open line"], ["closed", "a closed loop"]], onValue: (v) => set({ closed: v === "closed" ? true : undefined }) }), t("at"));
+  } else {
+    const b = numberBlank({ name: "diameter", label: "Impeller diameter in mm", value: curve.diameter_mm, example: "all", width: 48, least: 1, onValue: (v) => set({ diameter_mm: v ?? undefined }), onEnter: (v) => onEnter({ diameter_mm: v ?? undefined }) });
+    blanks.push(b);
+    parts.push(t("for impeller"), b, t("mm at"));
+  }
+  const speed = numberBlank({ name: "rpm", label: "Speed in revolutions a minute", value: curve.speed_rpm, example: "1450", width: 52, least: 1, onValue: (v) => set({ speed_rpm: v ?? undefined }), onEnter: (v) => onEnter({ speed_rpm: v ?? undefined }) });
+  parts.push(speed, t("1/min, read on"));
+  const ids = axisIds(panel);
+  parts.push(choice({ name: "axis", label: "Axis this line is read on", value: curve.y, options: ids.value.map((id) => [id, [QUANTITY_SIGNS[panel.axes[id].quantity], sideOf(panel, id, panel.outline), written(panel.axes[id].unit)].filter(Boolean).join(", ")]), onValue: (y) => set({ y }) }));
+  if (!curve.closed) parts.push(t(". It ends"), choice({ name: "ends", label: "Where this line ends", value: endingOf(curve), options: ENDINGS, onValue: (v) => set(endingChange(v)) }));
+  parts.push(stop());
+  return parts;
+}
+
+export function curvesSentence(desk) {
+  const { doc, panel, openCurve } = desk;
+  if (!panel || !calibrated(panel)) {
+    return { sentence: [t("This panel has no scales yet: two marks on each will do.")], does: [button("Go to the marks", { main: true, onClick: () => desk.go("marks") })] };
+  }
+  if (openCurve) {
+    const own = doc.panels.find((p) => p.id === openCurve.panel) ?? panel;
+    const set = (change) => desk.act({ type: "curve/change", change });
+    const keep = (change = null) => {
+      if (change) set(change);
+      desk.keepCurve();
+    };
+    const few = openCurve.clicks.length < 2;
+    const item = desk.items.find((i) => i.id === openCurve.id);
+    const looking = !few && !item?.result;
+    return {
+      sentence: [curveParts(own, openCurve, set, keep), item?.failed ? null : looking ? h("small", { class: "held" }, "Following the ink …") : null],
+      does: [few ? h("span", { class: "hint" }, "Click once more along the line.") : null, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) }), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
+      focus: desk.focusBlank === "curve" ? (openCurve.quantity in CONTOURS ? "level" : "diameter") : null,
+    };
+  }
+  const chosen = (doc.curves ?? []).find((c) => c.id === desk.selected);
+  if (chosen) {
+    const own = doc.panels.find((p) => p.id === chosen.panel) ?? panel;
+    const set = (change) => desk.act({ type: "curve/set", curve: chosen.id, change });
+    return {
+      sentence: curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }),
+      does: [button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) })],
+    };
+  }
+  const n = (doc.curves ?? []).length;
+  const many = doc.panels.length > 1;
+  return {
+    sentence: [many ? [t("On panel"), choice({ name: "which", label: "Panel", value: panel.id, options: doc.panels.map((p, i) => [p.id, `${i + 1} of ${doc.panels.length}`]), onValue: (v) => desk.choosePanel(v) }), t("click")] : t("Click"), t(n ? "along the next line, or on a trace to change it." : "twice or more along a printed line; the desk follows the ink between.")],
+    does: [hint("Z", "magnify"), n ? button(desk.run?.fresh ? "Go on to the family" : "Check the curves", { main: true, onClick: () => desk.checkAndGo("family") }) : null],
+  };
+}

@@ -1,0 +1,96 @@
+// Sentences of the desk. Say what is, then what follows, then what to do.
+import { plain, withDoubt } from "../geometry/number.js";
+import { QUANTITY_WORDS, factor, written } from "../geometry/units.js";
+
+export function axisWords(axis) {
+  return `${QUANTITY_WORDS[axis.quantity] ?? axis.quantity}, ${written(axis.unit)}`;
+}
+
+export function suspect(axis, s) {
+  const word = QUANTITY_WORDS[axis.quantity] ?? axis.quantity;
+  const unit = written(axis.unit);
+  const fits = niceFit(axis, s);
+  return `The ${word} mark typed ${plain(s.typed)} sits where ${plain(s.fits, 3)} ${unit} belongs. Change it to ${plain(fits)}, or move the mark.`;
+}
+
+/** The value to offer instead of the typed one: the fitted one, rounded as the other marks of the axis are. */
+export function niceFit(axis, s) {
+  const others = axis.marks.map((m) => m.value).filter((v) => v !== s.typed);
+  const steps = others.map((v) => stepOf(v)).filter((v) => v > 0);
+  const step = steps.length ? Math.min(...steps) : stepOf(Number(s.fits.toPrecision(2)));
+  return Number((Math.round(s.fits / step) * step).toPrecision(8));
+}
+
+function stepOf(v) {
+  if (!v) return 0;
+  let step = 10 ** Math.floor(Math.log10(Math.abs(v)));
+  while (Math.abs(v / step - Math.round(v / step)) > 1e-9 && step > 1e-6) step /= 10;
+  return step;
+}
+
+/** "42.92 m" and "± 0.19": a reading in the printed unit of its axis. */
+export function reading(axis, value, u) {
+  const text = withDoubt(value, u);
+  return { value: `${text.value} ${written(axis.unit)}`, doubt: text.u ? `± ${text.u}` : "" };
+}
+
+export function kept(status) {
+  if (status.conflict) return "Another window has gone on with this draft";
+  if (status.away || status.waiting > 0) {
+    const n = status.waiting;
+    if (!status.away && n < 2) return "Keeping …";
+    return n ? `Kept in this browser, ${n} ${n === 1 ? "step" : "steps"} not yet in the file` : "Kept in this browser";
+  }
+  if (status.full) return "This browser has no room left to keep steps";
+  return status.at ? `Kept ${status.at}, step ${status.step}` : `Step ${status.step}`;
+}
+
+/** What an action is called in undo, redo and the history. */
+export function actionLabel(action, doc) {
+  const at = action.at ? ` at ${Math.round(action.at[0])}, ${Math.round(action.at[1])}` : "";
+  const axis = action.axis && doc.panels?.find((p) => p.id === action.panel)?.axes[action.axis];
+  const axisName = axis ? QUANTITY_WORDS[axis.quantity] : action.axis;
+  switch (action.type) {
+    case "sheet/set": return "sheet";
+    case "pump/set": return "pump's name";
+    case "panel/add": return "panel drawn";
+    case "panel/set": return "panel changed";
+    case "panel/remove": return "panel removed";
+    case "axis/set": return `${axisName ?? "axis"} axis`;
+    case "axis/remove": return `${axisName ?? "axis"} axis removed`;
+    case "mark/open": return `mark placed${at}`;
+    case "mark/drop": return "mark let go";
+    case "mark/keep": return `mark kept: ${Object.entries(action.values).map(([id, v]) => `${id} ${plain(v)}`).join(", ")}`;
+    case "mark/set": return `${axisName} mark changed`;
+    case "mark/remove": return `${axisName} mark removed`;
+    case "marks/copy": return `${axisName} marks taken over`;
+    case "curve/open": return "curve begun";
+    case "curve/change": return action.change.clicks ? "guide set" : "curve's sentence";
+    case "curve/drop": return "curve let go";
+    case "curve/keep": return "curve kept";
+    case "curve/set": return action.change.clicks ? "guide moved" : "curve's sentence";
+    case "curves/set": return "fit chosen";
+    case "curve/remove": return "curve removed";
+    default: return action.type;
+  }
+}
+
+/** "head and efficiency over flow". */
+export function panelWords(panel) {
+  const names = Object.values(panel.axes).filter((a) => a.quantity !== "flow").map((a) => QUANTITY_WORDS[a.quantity] ?? a.quantity);
+  const list = names.length > 1 ? `${names.slice(0, -1).join(", ")} and ${names[names.length - 1]}` : names[0] ?? "nothing yet";
+  return `${list} over flow`;
+}
+
+export function sideOf(panel, axisId, outline) {
+  const marks = panel.axes[axisId]?.marks ?? [];
+  if (!marks.length || !outline) return "";
+  const x = marks.reduce((a, m) => a + m.at[0], 0) / marks.length;
+  const xs = outline.map((p) => p[0]);
+  const middle = (Math.min(...xs) + Math.max(...xs)) / 2;
+  return x < middle ? "left" : "right";
+}
+
+export function canonicalSentence(axis, value) {
+  return `${plain(value * factor(axis), 4)}`;
+}

@@ -1,0 +1,33 @@
+// Take hold of a handle (guide, mark, corner of a panel) and move it.
+import { Tool } from "./tool.js";
+
+export class Grab extends Tool {
+  /** hooks: find(point) -> handle | null, drag(handle, point, event), drop(handle, point, event), choose(handle), back(handle) */
+  constructor(surface, at, hooks) {
+    super(surface, at);
+    this.hooks = hooks;
+  }
+
+  claims(e, here) {
+    if (e.button !== 0) return false;
+    this.handle = this.hooks.find(here);
+    return Boolean(this.handle);
+  }
+
+  start() {
+    this.hooks.choose(this.handle);
+  }
+
+  move(to, gesture, e) {
+    if (gesture.moved) this.hooks.drag(this.handle, to, e);
+  }
+
+  end(to, gesture, e) {
+    if (gesture.moved) this.hooks.drop(this.handle, to, e);
+    else this.hooks.chosen?.(this.handle);
+  }
+
+  cancelled() {
+    this.hooks.back(this.handle);
+  }
+}
