@@ -18,6 +18,11 @@ SAME_SCALE = (
 """Quantities that share units, so that one printed axis may serve either."""
 
 
+PEN_WANDER = 0.05
+"""How far a drawn line strays locally from the curve it stands for, as a share of its width (common practice, no source).
+A trace is often far better than the pen was: without this a fit would follow the pen's wander with a needless order."""
+
+
 def base(model: CurveModel, pump: PumpInfo | None, *, x_unit: str = "m3/h", y_unit: str = "m") -> dict[str, Any]:
     """The fields of a curve that the recipe alone decides."""
     return dict(
@@ -110,7 +115,7 @@ def from_trace(model: CurveModel, axes: dict[str, AxisModel], trace: Trace, pane
             fitted = fit.fit_curve(
                 points[:, 0],
                 points[:, 1],
-                reading,
+                np.hypot(reading, PEN_WANDER * (trace.line_width_px or line_width_px) * per_px),
                 uncertainty.stack(calibration, drawing),
                 order=model.fit.order,
                 through_zero=model.fit.through_zero,

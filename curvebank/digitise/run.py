@@ -91,6 +91,8 @@ def run(
     except CurvebankError as e:
         if e.code == "cancelled":
             raise
+        if isinstance(e, SheetError):
+            e.path = e.path or "$.sheet"
         made: tuple[Curve, ...] = ()
         if parsed is not None:
             made = tuple(curve_maker.failed(c, pump_info(parsed), e, f"$.curves[{i}]") for i, c in enumerate(parsed.curves))

@@ -1,0 +1,98 @@
+"""A small drawn chart with known geometry, for tests that need a whole sheet: two head curves and an efficiency curve on a grey grid."""
+
+import copy
+import io
+
+import numpy as np
+from PIL import Image, ImageDraw
+
+WIDTH, HEIGHT = 900, 700
+X0, X1, Y0, Y1 = 100.25, 800.5, 600.25, 80.75
+"""Pixel places of flow 0 and 200 m3/h and of the axes' lower and upper ends."""
+TOP_HEAD_M, TOP_ETA_PCT, TOP_FLOW = 60.0, 100.0, 200.0
+OVER = 6
+
+
+def head_m(flow, diameter_mm):
+    """Exact simple-law family: H = 50 - 0.0012 Q^2 at 320 mm, Q ~ D, H ~ D^2."""
+    r = diameter_mm / 320.0
+    return r**2 * 50.0 - 0.0012 * np.asarray(flow, dtype=float) ** 2
+
+
+def efficiency(flow):
+    """Fraction; peak 0.78 at 115 m3/h."""
+    q = np.asarray(flow, dtype=float)
+    return 0.78 * (2 * q / 115 - (q / 115) ** 2)
+
+
+def to_px(flow, share):
+    """Pixel of a flow and a share of the value axis."""
+    return np.stack([X0 + (X1 - X0) * np.asarray(flow, dtype=float) / TOP_FLOW, Y0 + (Y1 - Y0) * np.asarray(share, dtype=float)], -1)
+
+
+LINES = {
+    "H-320": (np.linspace(5, 170, 400), lambda q: head_m(q, 320) / TOP_HEAD_M),
+    "H-290": (np.linspace(5, 150, 400), lambda q: head_m(q, 290) / TOP_HEAD_M),
+    "E-320": (np.linspace(20, 170, 400), lambda q: efficiency(q) * 100 / TOP_ETA_PCT),
+}
+
+
+def png(noise=4.0, seed=3):
+    """The sheet as PNG bytes: super-sampled drawing, slight noise."""
+    big = Image.new("L", (WIDTH * OVER, HEIGHT * OVER), 244)
+    pen = ImageDraw.Draw(big)
+
+    def line(points, width, grey):
+        at = [tuple((p + 0.5) * OVER - 0.5) for p in np.asarray(points)]
+        pen.line(at, fill=grey, width=round(width * OVER), joint="curve")
+
+    for i in range(11):
+        line([to_px(20 * i, 0), to_px(20 * i, 1)], 1.2, 190)
+        line([to_px(0, i / 10), to_px(200, i / 10)], 1.2, 190)
+    line([to_px(0, 0), to_px(200, 0), to_px(200, 1), to_px(0, 1), to_px(0, 0)], 2.0, 60)
+    for q, share in LINES.values():
+        line(to_px(q, share(q)), 2.6, 35)
+    small = np.asarray(big.resize((WIDTH, HEIGHT), Image.Resampling.BOX), dtype=float)
+    small += np.random.default_rng(seed).normal(0, noise, small.shape)
+    out = io.BytesIO()
+    Image.fromarray(np.clip(np.round(small), 0, 255).astype(np.uint8)).save(out, "PNG")
+    return out.getvalue()
+
+
+def _mark(flow, share, value):
+    return {"at": [round(float(v), 2) for v in to_px(flow, share)], "value": value}
+
+
+_DOCUMENT = {
+    "recipe": 1,
+    "sheet": {"file": "chart.png"},
+    "pump": {"maker": "Fenwright", "model": "DP 80", "speed_rpm": 1450},
+    "panels": [
+        {
+            "id": "main",
+            "axes": {
+                "flow": {"quantity": "flow", "unit": "m3/h", "marks": [_mark(q, 0, q) for q in (0, 100, 200)]},
+                "head": {"quantity": "head", "unit": "m", "marks": [_mark(0, h / 60, h) for h in (0, 30, 60)]},
+                "eta": {"quantity": "efficiency", "unit": "%", "marks": [_mark(200, e / 100, e) for e in (0, 50, 100)]},
+            },
+        }
+    ],
+    "curves": [
+        {
+            "id": name,
+            "panel": "main",
+            "x": "flow",
+            "y": "eta" if name[0] == "E" else "head",
+            "quantity": "efficiency" if name[0] == "E" else "head",
+            "diameter_mm": float(name[2:]),
+            "speed_rpm": 1450.0,
+            "clicks": [[round(float(v), 1) for v in to_px(q[i], share(q[i]))] for i in (20, 200, 380)],
+        }
+        for name, (q, share) in LINES.items()
+    ],
+}
+
+
+def document():
+    """A fresh recipe for the chart."""
+    return copy.deepcopy(_DOCUMENT)
