@@ -3,12 +3,11 @@
 from collections.abc import Callable, Sequence
 from typing import Any
 
-import numpy as np
-
 from ..errors import TraceError
 from ..records import Trace, frozen
 from ..sheet import Prepared
 from .clicks import Clicks, PanelMap, checked
+from .ends import to_ink
 from .follow import follow
 from .profile import refine
 
@@ -33,5 +32,10 @@ def trace_panel(
 def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> Trace:
     points = checked(clicks, prepared, panel_map)
     found = follow(prepared, points, clicks.closed)
-    fine = refine(prepared, found.axis)
+    fine = refine(prepared, found.axis, rounds=1)
+    if not clicks.closed and clicks.ends == "ink":
+        axis = to_ink(prepared, panel_map, fine.axis, fine.shape)
+    else:
+        axis = fine.axis
+    fine = refine(prepared, axis, rounds=1, shape=fine.shape)
     return Trace(pixels=frozen(fine.axis.points), sigma_px=frozen(fine.sigma), closed=clicks.closed, line_width_px=fine.shape.width)

@@ -215,14 +215,13 @@ def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], w
     return (failing > 0.45) & (crowded > 0.15)
 
 
-def refine(prepared: Prepared, axis: Axis, rounds: int = 2) -> Refined:
+def refine(prepared: Prepared, axis: Axis, rounds: int = 2, shape: Shape | None = None) -> Refined:
     """Move the axis onto the middle of its ink."""
     unit = max(prepared.unit, 0.6)
     half = 0.9 * prepared.width_px + 6.0 * unit
     block = 3.0 * unit
     blocks: Blocks | None = None
     fitted: smooth.Smooth | None = None
-    shape: Shape | None = None
     for turn in range(rounds):
         pixels = pixels_near(prepared, axis, half)
         if shape is None:
