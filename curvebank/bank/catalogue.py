@@ -1,4 +1,7 @@
-"""What the web app and the command line list and show: plain dicts, ready for JSON. Functions take a `Bank` (a `Store` has one as ``bank``)."""
+"""What the web app and the command line list and show: plain dicts, ready for JSON.
+
+Every function takes a `Bank`; a `Store` has one as ``bank``.
+"""
 
 import json
 from typing import Any

@@ -1,11 +1,12 @@
-"""The chain of events: what is hashed for each, and how one is appended.
+"""The chains of events and of settings: what is hashed for each row, and how one is appended.
 
 ``sha256(previous hash, seq, at, who, kind, pump, revision, why, json)`` over the packed fields; a ``saved`` event carries the hash of its
-revision's body, so the head of the chain covers every saved number.
+revision's body, so the head of the chain covers every saved number. Settings form a chain of their own.
 """
 
 import datetime
 import sqlite3
+from typing import Any
 
 from . import pack
 
@@ -21,11 +22,33 @@ FIELDS = (
     ("json", pack.TEXT),
 )
 NAMES = ", ".join(name for name, _ in FIELDS)
+SETTING = (
+    ("previous_sha256", pack.HASH),
+    ("seq", pack.INTEGER),
+    ("name", pack.TEXT),
+    ("value", pack.TEXT),
+    ("who", pack.TEXT),
+    ("at", pack.TEXT),
+)
+SETTING_NAMES = ", ".join(name for name, _ in SETTING)
 
 
-def event_hash(row: dict) -> bytes:
+def event_hash(row: dict[str, Any]) -> bytes:
     """The hash of one event from its stored columns."""
     return pack.sha256(b"CVBK-event-1" + pack.pack_part(FIELDS, row))
+
+
+def setting_hash(row: dict[str, Any]) -> bytes:
+    """The hash of one setting from its stored columns."""
+    return pack.sha256(b"CVBK-setting-1" + pack.pack_part(SETTING, row))
+
+
+def append_setting(connection: sqlite3.Connection, *, name: str, value: str, who: str) -> None:
+    """Add one setting at the end of its chain, inside the caller's transaction."""
+    last = connection.execute("SELECT seq, sha256 FROM setting ORDER BY seq DESC LIMIT 1").fetchone() or (0, bytes(32))
+    row: dict[str, Any] = {"previous_sha256": last[1], "seq": last[0] + 1, "name": name, "value": value, "who": who, "at": utc_now()}
+    values = [row[part] for part, _ in SETTING]
+    connection.execute(f"INSERT INTO setting ({SETTING_NAMES}, sha256) VALUES (?, ?, ?, ?, ?, ?, ?)", [*values, setting_hash(row)])
 
 
 def utc_now() -> str:
@@ -45,7 +68,7 @@ def append(
 ) -> int:
     """Add one event at the end of the chain, inside the caller's transaction. Returns its seq."""
     last = connection.execute("SELECT seq, sha256 FROM event ORDER BY seq DESC LIMIT 1").fetchone() or (0, bytes(32))
-    row = {"previous_sha256": last[1], "seq": last[0] + 1, "at": at, "who": who, "kind": kind}
+    row: dict[str, Any] = {"previous_sha256": last[1], "seq": last[0] + 1, "at": at, "who": who, "kind": kind}
     row |= {"pump_id": pump_id, "revision_id": revision_id, "why": why, "json": json}
     values = [row[name] for name, _ in FIELDS]
     connection.execute(f"INSERT INTO event ({NAMES}, sha256) VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", [*values, event_hash(row)])

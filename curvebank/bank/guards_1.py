@@ -19,6 +19,7 @@ CREATE TRIGGER guard_setting_delete BEFORE DELETE ON setting
 BEGIN SELECT RAISE(ABORT, 'setting is append-only: no row is removed'); END;
 CREATE TRIGGER guard_setting_replace BEFORE INSERT ON setting
 WHEN EXISTS (SELECT 1 FROM setting WHERE seq = NEW.seq)
+  OR EXISTS (SELECT 1 FROM setting WHERE sha256 = NEW.sha256)
 BEGIN SELECT RAISE(ABORT, 'setting is append-only: this row exists'); END;
 CREATE TRIGGER guard_blob_update BEFORE UPDATE ON blob
 BEGIN SELECT RAISE(ABORT, 'blob is append-only: no row is changed'); END;
@@ -132,7 +133,7 @@ WHEN NOT EXISTS (SELECT 1 FROM maker WHERE id = NEW.maker_id)
 BEGIN SELECT RAISE(ABORT, 'pump: a row it refers to is not there'); END;
 CREATE TRIGGER guard_alias_parent BEFORE INSERT ON alias
 WHEN NOT EXISTS (SELECT 1 FROM pump WHERE id = NEW.pump_id)
-  OR EXISTS (SELECT 1 FROM pump WHERE key = NEW.key)
+  OR NOT EXISTS (SELECT 1 FROM event WHERE seq = NEW.seq AND pump_id = NEW.pump_id AND kind IN ('renamed', 'merged'))
 BEGIN SELECT RAISE(ABORT, 'alias: a row it refers to is not there'); END;
 CREATE TRIGGER guard_revision_parent BEFORE INSERT ON revision
 WHEN NOT EXISTS (SELECT 1 FROM pump WHERE id = NEW.pump_id)
@@ -180,6 +181,10 @@ BEGIN SELECT RAISE(ABORT, 'trace: this revision is saved and closed'); END;
 CREATE TRIGGER guard_revision_number BEFORE INSERT ON revision
 WHEN NEW.number <> (SELECT coalesce(max(number), 0) + 1 FROM revision WHERE pump_id = NEW.pump_id)
 BEGIN SELECT RAISE(ABORT, 'revision: the number must follow the last one'); END;
+CREATE TRIGGER guard_setting_chain BEFORE INSERT ON setting
+WHEN NEW.seq <> (SELECT coalesce(max(seq), 0) + 1 FROM setting)
+  OR NEW.previous_sha256 <> coalesce((SELECT sha256 FROM setting ORDER BY seq DESC LIMIT 1), zeroblob(32))
+BEGIN SELECT RAISE(ABORT, 'setting: it does not follow the last one'); END;
 CREATE TRIGGER guard_event_chain BEFORE INSERT ON event
 WHEN NEW.seq <> (SELECT coalesce(max(seq), 0) + 1 FROM event)
   OR NEW.previous_sha256 <> coalesce((SELECT sha256 FROM event ORDER BY seq DESC LIMIT 1), zeroblob(32))

@@ -6,7 +6,8 @@ CREATE TABLE meta (name TEXT PRIMARY KEY, value TEXT NOT NULL) STRICT;
 CREATE TABLE setting (
   seq INTEGER PRIMARY KEY CHECK (seq > 0), name TEXT NOT NULL CHECK (name <> ''), value TEXT NOT NULL CHECK (json_valid(value)),
   who TEXT NOT NULL CHECK (trim(who) <> ''), at TEXT NOT NULL CHECK (at GLOB
-    '[0-9][0-9][0-9][0-9]-[0-9][0-9]-[0-9][0-9]T[0-9][0-9]:[0-9][0-9]:[0-9][0-9].[0-9][0-9][0-9]Z')) STRICT;
+    '[0-9][0-9][0-9][0-9]-[0-9][0-9]-[0-9][0-9]T[0-9][0-9]:[0-9][0-9]:[0-9][0-9].[0-9][0-9][0-9]Z'),
+  previous_sha256 BLOB NOT NULL CHECK (length(previous_sha256) = 32), sha256 BLOB NOT NULL UNIQUE CHECK (length(sha256) = 32)) STRICT;
 
 CREATE TABLE blob (
   sha256 BLOB PRIMARY KEY CHECK (length(sha256) = 32), kind TEXT NOT NULL CHECK (kind IN ('sheet', 'recipe', 'body', 'trace')),

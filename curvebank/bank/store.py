@@ -425,8 +425,7 @@ class Store:
         who = _text(who, "The name")
         with self._writing() as db:
             for name, value in values.items():
-                row = (_text(name, "The setting's name"), rows.canonical_json(value), who, chain.utc_now())
-                db.execute("INSERT INTO setting (seq, name, value, who, at) SELECT coalesce(max(seq), 0) + 1, ?, ?, ?, ? FROM setting", row)
+                chain.append_setting(db, name=_text(name, "The setting's name"), value=rows.canonical_json(value), who=who)
 
 
 def _instead(kind: str, state: str) -> str:

@@ -36,8 +36,8 @@ def verify(
     path : str or path-like
     rederive : callable, optional
         ``rederive(recipe_bytes, sheet_bytes, settings) -> records.Digitised``: digitises the recipes of each pump's newest and released
-        revisions again and compares. A change over the common domain counts as the same up to 0.1 u + 1e-9 of the range, as a drift (a note)
-        up to 1 u, and as a fault beyond.
+        revisions again and compares. A change over the common domain counts as the same up to 0.1 u + 1e-9 of the range,
+        as a drift (a note) up to 1 u, and as a fault beyond.
     progress : callable, optional
         ``progress(share, text)``; it may raise `Cancelled`.
 
@@ -68,6 +68,7 @@ def _verify(db: sqlite3.Connection, rederive: Any, say: Progress) -> Report:
         ("Looking at the guards", lambda: (Fault("guards", "schema", f"{text}.") for text in guard_faults(db))),
         ("Hashing what is kept", lambda: _blobs(db)),
         ("Walking the events", lambda: _events(db)),
+        ("Walking the settings", lambda: _settings(db)),
         ("Comparing columns with bodies", lambda: _revisions(db)),
         ("Comparing releases with events", lambda: _spans(db)),
     ]
@@ -125,18 +126,32 @@ def _events(db: sqlite3.Connection) -> Iterator[Fault]:
         previous, seq, at = sha, row["seq"], row["at"]
 
 
+def _settings(db: sqlite3.Connection) -> Iterator[Fault]:
+    previous, seq = bytes(32), 0
+    names = [name for name, _ in chain.SETTING]
+    for values in db.execute(f"SELECT {chain.SETTING_NAMES}, sha256 FROM setting ORDER BY seq"):
+        row, sha = dict(zip(names, values, strict=False)), values[-1]
+        if row["seq"] != seq + 1 or row["previous_sha256"] != previous or chain.setting_hash(row) != sha:
+            yield Fault("settings", f"setting {row['seq']}", f"The setting {row['name']!r} was altered, or one before it is missing.")
+        previous, seq = sha, row["seq"]
+
+
+# columns that repeat what the body says
 REVISION_COLUMNS = ("saved_at", "who", "why", "save_key", "read_rule", "stages", "rated_rpm", "density_kgm3")
 
 
 def _revisions(db: sqlite3.Connection) -> Iterator[Fault]:
+    named = ", ".join(f"revision.{name}" for name in REVISION_COLUMNS)
     sql = (
-        f"SELECT revision.id, pump.key, number, body_sha256, rule_json, settings_json, made_by_json, {', '.join('revision.' + name for name in REVISION_COLUMNS)}, bytes,"
+        f"SELECT revision.id, pump.key, number, body_sha256, rule_json, settings_json, made_by_json, maker.name, model,"
+        f" {named}, bytes,"
         " (SELECT json FROM event WHERE revision_id = revision.id AND kind = 'saved'),"
         " (SELECT number FROM revision AS parent WHERE parent.id = revision.parent_id)"
-        " FROM revision JOIN pump ON pump.id = pump_id LEFT JOIN blob ON blob.sha256 = body_sha256 ORDER BY revision.id"
+        " FROM revision JOIN pump ON pump.id = pump_id JOIN maker ON maker.id = maker_id"
+        " LEFT JOIN blob ON blob.sha256 = body_sha256 ORDER BY revision.id"
     )
     for row in db.execute(sql):
-        revision_id, key, number, body_sha, rule, settings, made_by = row[:7]
+        revision_id, key, number, body_sha, rule, settings, made_by, maker, model = row[:9]
         raw, saved, parent = row[-3:]
         here = f"{key} revision {number}"
         if raw is None:
@@ -151,7 +166,9 @@ def _revisions(db: sqlite3.Connection) -> Iterator[Fault]:
             yield Fault("events", here, "It was never recorded as saved: it did not come from curvebank.")
         elif json.loads(saved).get("body_sha256") != body_sha.hex():
             yield Fault("events", here, "The body is not the one that was recorded when it was saved.")
-        columns = dict(zip(REVISION_COLUMNS, row[7:-3], strict=True)) | {"key": key, "number": number, "parent": parent}
+        if number == 1 and (maker, model) != (body["maker"], body["model"]):
+            yield Fault("columns", here, f"The pump is filed as {maker} {model}, but was saved as {body['maker']} {body['model']}.")
+        columns = dict(zip(REVISION_COLUMNS, row[9:-3], strict=True)) | {"key": key, "number": number, "parent": parent}
         yield from (
             Fault("columns", here, f"{name} is {columns[name]!r}, but {body[name]!r} was saved.")
             for name in columns
