@@ -22,7 +22,7 @@ SLOPES = np.arange(-0.075, 0.0751, 0.015)
 
 @dataclass(frozen=True, slots=True, eq=False)
 class PrintedLine:
-    """One printed line. ``along`` [n] runs in x for a horizontal line (in y for a vertical one), ``across`` [n] is its other pixel coordinate.
+    """One printed line. ``along`` [n] is x for a horizontal line (y for a vertical one), ``across`` [n] its other pixel coordinate.
 
     ``weight`` is the contrast of the line, 0..1 of full ink; ``width_px`` its full width at half height.
     """
@@ -109,7 +109,6 @@ def _link(
     reach = max(1, round(3 * unit))
     peak = (response >= cv2.dilate(response, np.ones((2 * reach + 1, 1), np.uint8))) & (response > floor)
     peak[:2] = peak[-2:] = False
-    open_y: list[float] = []
     open_tracks: list[list[tuple[int, float, float]]] = []
     done: list[list[tuple[int, float, float]]] = []
     last: list[int] = []

@@ -89,7 +89,8 @@ def check_size(width: float, height: float, limits: Limits) -> None:
     """Refuse a page before it is decoded."""
     if width * height > limits.pixels or max(width, height) > limits.side_px:
         raise SheetError(
-            f"the page is {width:.0f} x {height:.0f} pixels; at most {limits.pixels / 1e6:.0f} million pixels and {limits.side_px} a side are read. "
+            f"the page is {width:.0f} x {height:.0f} pixels; "
+            f"at most {limits.pixels / 1e6:.0f} million pixels and {limits.side_px} a side are read. "
             "Scan at 300 dpi, or crop to the chart.",
             code="too-large",
         )
@@ -129,7 +130,8 @@ def _image(data: bytes, page: int, limits: Limits) -> tuple[Any, int, str, tuple
             raise
         except Image.DecompressionBombError:
             raise SheetError(
-                f"the page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). Scan at 300 dpi, or crop to the chart.",
+                f"the page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). "
+                "Scan at 300 dpi, or crop to the chart.",
                 code="too-large",
             ) from None
         except UnidentifiedImageError:

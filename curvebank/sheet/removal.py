@@ -66,7 +66,7 @@ def _draw(page: Bytes, into: Bytes, line: PrintedLine, unit: float) -> PrintedLi
 
 
 def _amplitude(band: npt.NDArray[np.float32], base: float, profile: Floats, peak: float, count: int, stride: int) -> Floats:
-    """Strength of the line along itself, relative to its profile: block medians, median-filtered so that a curve lying on it does not count."""
+    """Strength of the line along itself, relative to its profile: block medians, filtered so that a curve lying on it does not count."""
     core = profile > 0.6 * peak
     level = (band[core].mean(axis=0) - base) / max(float(profile[core].mean()), 1e-6)
     block = max(BLOCK_PX // stride, 4)

@@ -10,7 +10,10 @@ from ..records import FloatArray
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Axis:
-    """A curve sampled finely: ``points`` [n, 2] px at arc lengths ``s`` [n], with unit tangents [n, 2]. A closed one repeats its first point at the end."""
+    """A curve sampled finely: ``points`` [n, 2] px at arc lengths ``s`` [n], with unit tangents [n, 2].
+
+    A closed one repeats its first point at the end.
+    """
 
     points: FloatArray
     s: FloatArray

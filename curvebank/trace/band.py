@@ -32,7 +32,7 @@ def sample(image: npt.NDArray[np.uint8], axis: Axis, s: FloatArray, offsets: Flo
 
 
 def ridge(band: Floats32, flank: int, cap: float) -> Floats32:
-    """Line-likeness 0..1 [rows, offsets]: the middle less the darker of two flanks ``flank`` columns away, capped at ``cap`` of full ink."""
+    """Line-likeness 0..1 [rows, offsets]: middle less the darker of two flanks ``flank`` columns away, full from ``cap`` of full ink on."""
     padded = np.pad(band, ((0, 0), (flank, flank)))
     n = band.shape[1]
     darker = np.maximum(padded[:, :n], padded[:, 2 * flank : 2 * flank + n])

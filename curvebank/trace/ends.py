@@ -77,7 +77,12 @@ def _one_chunk(prepared: Prepared, panel: PanelMap, points: FloatArray, shape: S
     predicted = np.polynomial.polynomial.polyvander(ahead / reach, degree) @ c
     predicted += (points[-1] - c[0])[None, :] * np.exp(-ahead / (0.3 * chunk))[:, None]
     height, width = prepared.shape
-    ok = np.asarray(panel.inside(predicted), bool) & (predicted > 1).all(axis=1) & (predicted[:, 0] < width - 2) & (predicted[:, 1] < height - 2)
+    ok = (
+        np.asarray(panel.inside(predicted), bool)
+        & (predicted > 1).all(axis=1)
+        & (predicted[:, 0] < width - 2)
+        & (predicted[:, 1] < height - 2)
+    )
     if not ok.all():
         predicted = predicted[: int(np.argmin(ok))]
     if len(predicted) < 4:

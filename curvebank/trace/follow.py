@@ -28,7 +28,8 @@ class Followed:
 
 @dataclass(frozen=True, slots=True)
 class Pass:
-    """One search: ``half`` width of the band [px], ``across`` and ``along`` steps [px], rows a segment, steepest slope, cost and limit of turning."""
+    """One search: ``half`` width of the band [px], steps ``across`` and ``along`` [px], rows a segment, steepest slope, cost and
+    limit of turning at a joint, and how far [px] a click may reasonably be off."""
 
     half: float
     across: float

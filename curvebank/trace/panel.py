@@ -4,38 +4,68 @@ from collections.abc import Callable, Sequence
 from typing import Any
 
 from ..errors import TraceError
-from ..records import Trace, frozen
+from ..records import Trace
 from ..sheet import Prepared
 from .clicks import Clicks, PanelMap, checked
 from .ends import to_ink
 from .follow import follow
+from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
+from .manual import by_hand, points_on_symbols
 from .profile import refine
 
 Progress = Callable[[float, str], Any]
+LOST = 0.25
+"""Share of readings that must show the line; with fewer there is no line to speak of between the clicks."""
 
 
 def trace_panel(
     prepared: Prepared, panel_map: PanelMap, wanted: Sequence[Clicks], *, fixed: Sequence[Trace] = (), progress: Progress | None = None
 ) -> list[Trace | TraceError]:
-    """Trace every wanted curve of a panel; a curve that cannot be followed gives its TraceError in its place."""
-    out: list[Trace | TraceError] = []
+    """Trace every wanted curve of a panel; a curve that cannot be followed gives its TraceError in its place.
+
+    ``panel_map`` needs ``inside(xy)``; ``fixed`` are traces that stay as they are and are only looked at for shared ink.
+    ``progress(share, text)`` may raise Cancelled, which ends the whole call.
+    """
+    tell = progress or (lambda share, text: None)
+    traces: list[Trace | None] = []
+    doubts: list[Doubt | None] = []
+    faults: list[TraceError | None] = []
     for i, clicks in enumerate(wanted):
-        if progress is not None:
-            progress(i / len(wanted), f"Tracing {clicks.id}")
+        tell(i / len(wanted), f"Tracing {clicks.id}")
+        trace, doubt, fault = None, None, None
         try:
-            out.append(_one(prepared, panel_map, clicks))
-        except TraceError as fault:
-            out.append(fault)
+            trace, doubt = _one(prepared, panel_map, clicks)
+        except TraceError as refused:
+            fault = refused
+        except (ValueError, ArithmeticError, IndexError) as broken:
+            # Numbers that no check foresaw must not cost the other curves of the sheet.
+            fault = TraceError(f"The line could not be followed ({broken}); add clicks along it", code="lost")
+        traces.append(trace)
+        doubts.append(doubt)
+        faults.append(fault)
+    pair_test([c.id for c in wanted], traces, doubts, list(fixed))
+    tell(1.0, "Traced")
+    out: list[Trace | TraceError] = []
+    for trace, doubt, fault in zip(traces, doubts, faults, strict=True):
+        if trace is None:
+            out.append(fault or TraceError("The line could not be followed; add clicks along it", code="lost"))
+        else:
+            out.append(trace if doubt is None else settle(trace, doubt))
     return out
 
 
-def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> Trace:
+def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace, Doubt | None]:
     points = checked(clicks, prepared, panel_map)
+    if clicks.kind == "hand":
+        return by_hand(prepared, points, clicks.closed), None
+    if clicks.kind == "points":
+        return points_on_symbols(prepared, points), None
     found = follow(prepared, points, clicks.closed)
     fine = refine(prepared, found.axis, rounds=1)
+    axis = fine.axis
     if not clicks.closed and clicks.ends == "ink":
-        axis = to_ink(prepared, panel_map, fine.axis, fine.shape)
-    else:
-        axis = fine.axis
+        axis = to_ink(prepared, panel_map, axis, fine.shape)
     fine = refine(prepared, axis, rounds=1, shape=fine.shape)
-    return Trace(pixels=frozen(fine.axis.points), sigma_px=frozen(fine.sigma), closed=clicks.closed, line_width_px=fine.shape.width)
+    if fine.blocks.good.mean() < LOST and found.cost > 0.5:
+        raise TraceError("No line was found between the clicks; check that they lie on one line, or add clicks along it", code="lost")
+    return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(prepared, found, fine)

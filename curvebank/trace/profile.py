@@ -19,7 +19,10 @@ from .axis import Axis, from_polyline
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Shape:
-    """Cross profile of a drawn line: a box of ``width`` px blurred by a Gaussian of ``blur`` px; ``noise`` is the scatter of single pixels about it."""
+    """Cross profile of a drawn line: a box of ``width`` px blurred by a Gaussian of ``blur`` px, ``height`` in ink.
+
+    ``noise`` is the scatter of single pixels about it.
+    """
 
     width: float
     blur: float
@@ -206,7 +209,7 @@ def _clutter(block: npt.NDArray[np.intp], d: FloatArray, ink: FloatArray, shape:
 
 
 def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], window: int = 15) -> npt.NDArray[np.bool_]:
-    """Stretches where readings mostly fail amid clutter: a label stands in the line, and readings that happen to fit are strokes of letters."""
+    """Stretches where readings mostly fail amid clutter: a label stands in the line, and what happens to fit are strokes of letters."""
     if len(fair) < window:
         return np.zeros(len(fair), bool)
     box = np.ones(window) / window

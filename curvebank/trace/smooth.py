@@ -42,7 +42,7 @@ def penalty(size: int, periodic: bool) -> FloatArray:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Smooth:
-    """A fitted penalised spline over t in 0..1: coefficients [k, d], their covariance [k, k] (per unit of each column), scale and robust weights."""
+    """A fitted penalised spline over t in 0..1: coefficients [k, d], covariance [k, k] of each column, residual scale, robust weights [n]."""
 
     coefficients: FloatArray
     covariance: FloatArray
