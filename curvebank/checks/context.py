@@ -142,9 +142,10 @@ class Context:
             if len(members) < 2:
                 continue
             members = sorted(members, key=lambda s: (-(s.diameter_mm or 0.0), -(s.speed_rpm or 0.0)))
+            largest = max(float(np.abs(s.value).max()) for s in members)
             try:
                 verdict = judge_family(
-                    [self.family_curve(s) for s in members],
+                    [self.family_curve(s, largest) for s in members],
                     quantity=quantity,
                     threshold=self.limits["family_threshold"],
                     margin=self.limits["family_margin"],
@@ -154,16 +155,27 @@ class Context:
             except LawError as e:
                 yield Family(quantity, group, tuple(members), None, e.message)
 
-    def family_curve(self, s: Series) -> FamilyCurve:
-        """The series with the part of its uncertainty that the sheet's curves do not share."""
+    def family_curve(self, s: Series, largest: float) -> FamilyCurve:
+        """The series with the part of its uncertainty that the sheet's curves do not share.
+
+        The hand that drew a small curve was no steadier than for a large one, so the floor is a share of ``largest``, the family's
+        largest value. Stretches that the trace itself doubts are left out as long as half the curve remains.
+        """
         spread = s.curve.spread
         own = float(np.sqrt(sum(spread.get(part, 0.0) ** 2 for part in ("reading", "drawing", "fit"))))
-        floor = self.limits["family_reading_pct"] / 100 * float(np.abs(s.value).max())
+        floor = self.limits["family_reading_pct"] / 100 * largest
+        keep = np.ones(len(s.flow), dtype=bool)
+        for i0, i1, _ in s.curve.trace.stretches if s.curve.trace else ():
+            q = s.curve.points[max(0, i0) : i1 + 1, 0]
+            if q.size:
+                keep &= (s.flow < q.min()) | (s.flow > q.max())
+        if keep.sum() < max(4, 0.5 * keep.size):
+            keep[:] = True
         typical = own if own > 0 else float(np.median(s.u))
         return FamilyCurve(
             id=s.curve.id,
-            flow=s.flow,
-            value=s.value,
+            flow=s.flow[keep],
+            value=s.value[keep],
             sigma=max(typical, floor),
             diameter_mm=s.diameter_mm,
             speed_rpm=s.speed_rpm,

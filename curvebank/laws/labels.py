@@ -7,7 +7,7 @@ each alternative, one label off by d, one curve displaced, two labels exchanged,
 gains more than a threshold.
 """
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -27,7 +27,7 @@ class Prior:
     value_sd: float
     flow_drift_sd: float = 0.0
     value_drift_sd: float = 0.0
-    flow_discrepancy: float = 0.008
+    flow_discrepancy: float = 0.005
     value_discrepancy: float = 0.004
 
 
@@ -51,6 +51,8 @@ SPEED_PRIOR = {
 
 THRESHOLD = 7.0
 MARGIN = 3.0
+DISPLACED_ODDS = 3.0
+"""Log prior odds of a wrong label against a displaced curve: labels are misread far more often than lines are drawn off their place."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -119,30 +121,24 @@ class _Model:
         self.base = self.fit_covariance + self.difference @ np.diag(d**2) @ self.difference.T
 
     def moments(self, labels: Sequence[FloatArray]) -> tuple[FloatArray, FloatArray]:
-        """Mean and covariance of the relative scales when the log labels (one array for each prior) are these."""
-        n = self.n
-        mean, cov = np.zeros(2 * n), np.zeros((2 * n, 2 * n))
+        """Mean [..., m] and covariance [..., m, m] of the relative scales under log labels [..., n], one array for each prior."""
+        shape, n = labels[0].shape[:-1], self.n
+        mean, cov = np.zeros((*shape, 2 * n)), np.zeros((*shape, 2 * n, 2 * n))
         for p, x in zip(self.priors, labels, strict=True):
-            f, v = np.concatenate([x, np.zeros(n)]), np.concatenate([np.zeros(n), x])
+            none = np.zeros_like(x)
+            f, v = np.concatenate([x, none], axis=-1), np.concatenate([none, x], axis=-1)
+            twice = np.concatenate([x, x], axis=-1)
             mean += p.flow * f + p.value * v
-            for column, sd in (
-                (f, p.flow_sd),
-                (v, p.value_sd),
-                (f * np.tile(x, 2), p.flow_drift_sd),
-                (v * np.tile(x, 2), p.value_drift_sd),
-            ):
-                cov += sd**2 * np.outer(column, column)
-        return self.difference @ mean, self.base + self.difference @ cov @ self.difference.T
+            for column, sd in ((f, p.flow_sd), (v, p.value_sd), (f * twice, p.flow_drift_sd), (v * twice, p.value_drift_sd)):
+                cov += sd**2 * column[..., :, None] * column[..., None, :]
+        return mean @ self.difference.T, self.base + self.difference @ cov @ self.difference.T
 
-    def score(self, labels: Sequence[FloatArray], displaced: tuple[int, float] | None = None) -> float:
-        """Log likelihood up to a constant."""
+    def score(self, labels: Sequence[FloatArray]) -> FloatArray:
+        """Log likelihood up to a constant, for every leading index of the labels."""
         mean, cov = self.moments(labels)
-        r = self.data - mean
-        if displaced is not None:
-            r = r - self.difference[:, displaced[0]] * displaced[1]
         factor = np.linalg.cholesky(cov)
-        z = np.linalg.solve(factor, r)
-        return float(-0.5 * z @ z - np.log(np.diag(factor)).sum())
+        z = np.linalg.solve(factor, (self.data - mean)[..., None])[..., 0]
+        return -0.5 * np.sum(z**2, axis=-1) - np.log(np.diagonal(factor, axis1=-2, axis2=-1)).sum(axis=-1)
 
     def distance(self, labels: Sequence[FloatArray], displaced: tuple[int, float] | None = None) -> float:
         """Mahalanobis distance squared of the data under these labels."""
@@ -151,6 +147,15 @@ class _Model:
         if displaced is not None:
             r = r - self.difference[:, displaced[0]] * displaced[1]
         return float(r @ np.linalg.solve(cov, r))
+
+    def displacement(self, labels: Sequence[FloatArray], column: int) -> tuple[float, float, float]:
+        """Best shift of one scale (column of q, h stacked), its standard deviation and the log likelihood gained; closed form."""
+        mean, cov = self.moments(labels)
+        j = self.difference[:, column]
+        weight = np.linalg.solve(cov, j)
+        information = float(j @ weight)
+        pull = float(weight @ (self.data - mean))
+        return pull / information, information**-0.5, 0.5 * pull**2 / information
 
     def information(self, labels: Sequence[FloatArray], which: int, curve: int) -> float:
         """Fisher information on a log error of one label."""
@@ -172,21 +177,21 @@ class _Model:
         return [(float(e[k]), float(s[k]), float(e[k + 1]), float(s[k + 1])) for k in range(0, len(columns), 2)]
 
 
-def _profile(score, grid: FloatArray) -> tuple[float, float, float, float]:
+def _profile(score: Callable[[FloatArray], FloatArray], grid: FloatArray) -> tuple[float, float, float, float]:
     """Best shift, 95 % limits (log likelihood 1.92 below the best) and the log likelihood there."""
-    values = np.array([score(d) for d in grid])
+    values = score(grid)
     i = int(np.argmax(values))
     step = float(np.diff(grid[max(0, i - 1) : i + 2]).max())
-    lo, hi = grid[i] - step, grid[i] + step
-    inner = np.linspace(lo, hi, 41)
-    fine = np.array([score(d) for d in inner])
-    j = int(np.argmax(fine))
-    best, top = float(inner[j]), float(fine[j])
-    # curvature from three points around the top: the profile is close to a parabola there
-    e = max(1e-4, (hi - lo) / 40)
-    bend = -(score(best + e) - 2 * top + score(best - e)) / e**2
-    reach = 1.96 / np.sqrt(bend) if bend > 0 else float(grid[-1] - grid[0])
-    return best, best - reach, best + reach, top
+    inner = grid[i] + step * np.linspace(-1, 1, 41)
+    fine = score(inner)
+    j = int(np.clip(np.argmax(fine), 1, 39))
+    e = step / 20
+    # vertex and curvature of the parabola through the three highest points: the profile is close to one there
+    bend = float(2 * fine[j] - fine[j - 1] - fine[j + 1]) / e**2
+    lean = float(fine[j + 1] - fine[j - 1]) / (2 * e)
+    best = float(inner[j]) + (float(np.clip(lean / bend, -e, e)) if bend > 0 else 0.0)
+    reach = 1.96 / np.sqrt(bend) if bend > 0 else float(np.ptp(grid))
+    return best, best - reach, best + reach, float(fine[j]) + (0.5 * lean**2 / bend if bend > 0 else 0.0)
 
 
 def _grid(reach: float) -> FloatArray:
@@ -266,7 +271,7 @@ def judge_family(
     start_value = np.sum([p.value * x for p, x in zip(priors, xs, strict=True)], axis=0)
     scales = joint_scales(curves, start_flow, start_value, order=order)
     model = _Model(scales, trim, speed)
-    sound = model.score(xs)
+    sound = float(model.score(xs))
     alternatives = _alternatives(model, curves, kinds, xs, sound)
     detectable = max(np.sqrt(2 * threshold / model.information(xs, 0, k)) for k in range(len(curves)))
     best = alternatives[0]
@@ -278,7 +283,7 @@ def judge_family(
     else:
         named = tuple(a for a in alternatives if a.gain > best.gain - margin)
         used = _labels_of(best, kinds, xs)
-        if len(curves) == 2 or len(named) > 1:
+        if len(curves) == 2 or len({frozenset((a.curve, a.other)) - {None} for a in named}) > 1:
             verdict = "one of these"
         else:
             verdict = {"diameter": "mislabelled", "speed": "mislabelled", "exchanged": "exchanged"}.get(best.kind, "displaced")
@@ -325,10 +330,10 @@ def _alternatives(model: _Model, curves: Sequence[FamilyCurve], kinds: list[str]
     for k in range(n):
         for which, kind in enumerate(kinds):
 
-            def moved(d: float, k: int = k, which: int = which) -> float:
-                x = xs[which].copy()
-                x[k] += d
-                return model.score([x if i == which else other for i, other in enumerate(xs)])
+            def moved(d: FloatArray, k: int = k, which: int = which) -> FloatArray:
+                many = [np.broadcast_to(x, (d.size, n)).copy() for x in xs]
+                many[which][:, k] += d
+                return model.score(many)
 
             shift, low, high, top = _profile(moved, _grid(0.8 if kind == "speed" else 0.3))
             c = curves[k]
@@ -349,13 +354,15 @@ def _alternatives(model: _Model, curves: Sequence[FamilyCurve], kinds: list[str]
                 )
             )
         for kind, column in (("value", n + k), ("flow", k)):
-            shift, low, high, top = _profile(lambda d, column=column: model.score(xs, (column, d)), _grid(0.3))
-            out.append(Alternative(kind=kind, curve=k, shift=shift, low=low, high=high, gain=top - sound))
+            shift, sd, gain = model.displacement(xs, column)
+            out.append(
+                Alternative(kind=kind, curve=k, shift=shift, low=shift - 1.96 * sd, high=shift + 1.96 * sd, gain=gain - DISPLACED_ODDS)
+            )
         for j in range(k + 1, n):
             swapped = [x.copy() for x in xs]
             for x in swapped:
                 x[[k, j]] = x[[j, k]]
-            gain = model.score(swapped) - sound
+            gain = float(model.score(swapped)) - sound
             if gain > 0:
                 out.append(Alternative(kind="exchanged", curve=k, other=j, shift=float(xs[0][j] - xs[0][k]), low=0.0, high=0.0, gain=gain))
     return sorted(out, key=lambda a: -a.gain)
