@@ -31,7 +31,9 @@ def test_this_machine_is_answered(client, host):
     assert client.get("/healthz", headers={"Host": host}).status_code == 200
 
 
-@pytest.mark.parametrize("host", ["example.org", "localhost.example.org", "127.0.0.1.example.org", "127.0.0.2", "", "a b", "[::2]", "localhost:x"])
+@pytest.mark.parametrize(
+    "host", ["example.org", "localhost.example.org", "127.0.0.1.example.org", "127.0.0.2", "", "a b", "[::2]", "localhost:x"]
+)
 def test_a_foreign_host_is_refused(client, is_problem, host):
     is_problem(client.get("/api/drafts", headers={"Host": host}), 400, "host")
     assert client.get("/", headers={"Host": host}).status_code == 400

@@ -201,7 +201,9 @@ def test_a_sheet_survives_a_lost_cache(app, client, sheet, gradient):
 class TestPyramid:
     """The arithmetic of levels."""
 
-    @pytest.mark.parametrize(("size", "zoom"), [((1, 1), 0), ((256, 256), 0), ((257, 1), 1), ((512, 512), 1), ((513, 10), 2), ((32000, 5), 7)])
+    @pytest.mark.parametrize(
+        ("size", "zoom"), [((1, 1), 0), ((256, 256), 0), ((257, 1), 1), ((512, 512), 1), ((513, 10), 2), ((32000, 5), 7)]
+    )
     def test_zoom_levels(self, size, zoom):
         assert max_zoom(*size) == zoom
 

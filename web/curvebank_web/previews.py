@@ -6,6 +6,8 @@ from collections import OrderedDict
 from collections.abc import Callable
 from typing import Any
 
+from curvebank.errors import CurvebankError
+
 from . import documents, prepared_cache
 from .jobs import Job
 from .page_store import PageKey
@@ -65,7 +67,12 @@ class Previews:
     def _digitise(self, key: PageKey, doc: dict[str, Any], panel: dict[str, Any], curve: dict[str, Any] | None, prepared: Any) -> Any:
         from curvebank import digitise
 
-        return digitise.preview(panel, curve, prepared, self.services.pages.info(key), documents.pump_facts(doc))
+        try:
+            return digitise.preview(panel, curve, prepared, self.services.pages.info(key), documents.pump_facts(doc))
+        except CurvebankError as error:
+            if error.path and not error.path.startswith(("$.panel", "$.curve")):
+                error.path = error.path.replace("$", "$.panel", 1)  # as the question has it
+            raise
 
     def _in_turn(self, subject: tuple[str, ...], work: Callable[[], Any]) -> Any:
         ticket = next(self._tickets)

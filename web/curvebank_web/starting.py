@@ -2,8 +2,9 @@
 
 from typing import Any
 
-from . import desk_sheets, sources
+from . import catalogue, desk_sheets, revisions, sources
 from .api.models import NewDraft
+from .bank_access import reading
 from .problems import Problem
 from .services import desk_db, services
 
@@ -14,6 +15,8 @@ def starting_point(body: NewDraft) -> tuple[dict[str, Any], str, Origin]:
     """Document, label of the first step, and the (key, revision) it came from, if any."""
     if body.sheet is not None:
         return _from_sheet(body), "Laid the sheet on the desk", None
+    if body.from_pump is not None:
+        return _from_pump(body)
     return _from_doc(body), "Opened a recipe", None
 
 
@@ -35,6 +38,14 @@ def _from_sheet(body: NewDraft) -> dict[str, Any]:
         "sha256": body.sheet.sha256,
     }
     return {"recipe": 1, "sheet": sheet, "pump": {"maker": "", "model": "", "stages": 1}, "panels": [], "curves": []}
+
+
+def _from_pump(body: NewDraft) -> tuple[dict[str, Any], str, Origin]:
+    assert body.from_pump is not None
+    with reading(services().bank) as bank:
+        key = bank.resolve(body.from_pump)[1]
+        number = body.revision or catalogue.history(bank, key)["revisions"][-1]["number"]
+        return revisions.recipe_of(bank, key, number, body.sheet_sha256), f"Took revision {number} of {key} back to the desk", (key, number)
 
 
 def _from_doc(body: NewDraft) -> dict[str, Any]:

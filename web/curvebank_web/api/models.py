@@ -1,10 +1,10 @@
 """What requests must look like. Documents stay open objects: an unfinished draft is allowed to be wrong."""
 
-from typing import Annotated, Any
+import math
+from typing import Annotated, Any, Literal
 
 from flask_openapi import FileStorage
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, StringConstraints, model_validator
-
+from pydantic import AfterValidator, BaseModel, ConfigDict, Field, StringConstraints, field_validator, model_validator
 
 
 def _quarter(turn: int) -> int:
@@ -146,3 +146,80 @@ class SaveRequest(Strict):
     save_key: Token
     release: bool = False
     step: Count | None = None
+
+
+class PumpsQuery(BaseModel):
+    """What the catalogue shows: a word of key, maker or model, a state, a page."""
+
+    q: Annotated[str, StringConstraints(max_length=200)] = ""
+    state: Literal["draft", "submitted", "released", "superseded", "withdrawn"] | None = None
+    cursor: Annotated[str, StringConstraints(max_length=100)] = ""
+    limit: Annotated[int, Field(ge=1, le=500)] = 50
+
+
+class PumpPath(BaseModel):
+    """A pump, by its key or a former key."""
+
+    key: PumpKey
+
+
+class RevisionPath(PumpPath):
+    """A revision of a pump."""
+
+    number: Count
+
+
+Quantity = Literal["head", "efficiency", "power", "npshr", "suction_lift", "input_power", "overall_efficiency"]
+Positive = Annotated[float, Field(gt=0, le=1e6, allow_inf_nan=False)]
+
+
+class ValuesQuery(BaseModel):
+    """Flows [m3/h] separated by commas; diameter [mm] and speed [1/min] as the quantity needs them."""
+
+    quantity: Quantity
+    flow_m3h: Annotated[str, StringConstraints(min_length=1, max_length=60_000)]
+    diameter_mm: Positive | None = None
+    speed_rpm: Positive | None = None
+    outside: Literal["nan", "extrapolate"] = "nan"
+
+    @field_validator("flow_m3h")
+    @classmethod
+    def _finite(cls, text: str) -> str:
+        try:
+            ok = all(math.isfinite(float(part)) for part in text.split(","))
+        except ValueError:
+            ok = False
+        if not ok:
+            raise ValueError("flow_m3h is numbers separated by commas, like 0,50,100.5")
+        return text
+
+    @property
+    def flows(self) -> list[float]:
+        """The flows as numbers [m3/h]."""
+        return [float(part) for part in self.flow_m3h.split(",")]
+
+
+class DutyQuery(BaseModel):
+    """A system curve: static head [m], friction [m/(m3/h)^exponent], and the wheel it meets."""
+
+    static_head_m: Number
+    friction_m_per_m3h2: Annotated[float, Field(ge=0, allow_inf_nan=False)]
+    diameter_mm: Positive | None = None
+    speed_rpm: Positive | None = None
+    exponent: Annotated[float, Field(ge=0.5, le=3, allow_inf_nan=False)] = 2.0
+
+
+class NewEvent(Strict):
+    """Who does what to a revision, and why; ``finding`` is the key of the finding that is waived."""
+
+    kind: Literal["submitted", "released", "withdrawn", "commented", "waived"]
+    who: Line
+    why: Line
+    finding: Annotated[str, StringConstraints(pattern=r"^[0-9a-f]{16}$")] | None = None
+
+
+class SettingsChange(Strict):
+    """Settings to change, by name, and who changes them."""
+
+    settings: dict[Token, bool | Number | str | None]
+    who: Line
