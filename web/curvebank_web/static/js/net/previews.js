@@ -103,9 +103,14 @@ export class Previews {
     let retry = false;
     try {
       const answer = await api.preview(this.id, { panel: usablePanel(q.panel), curve: q.curve ? curveAsked(q.curve) : null, seq }, abort.signal);
-      this.#store(q, answer.panel, answer.curve);
+      if (answer.pending) {
+        this.state = "preparing";
+        this.onAnswer("slow");
+        retry = true;
+        await new Promise((r) => setTimeout(r, 300));
+      } else this.#store(q, answer.panel, answer.curve);
     } catch (problem) {
-      if (problem.name === "AbortError") retry = true;
+      if (problem.name === "AbortError" || problem.code === "superseded") retry = true;
       else if (problem.away) {
         retry = true;
         await new Promise((r) => setTimeout(r, 1500));

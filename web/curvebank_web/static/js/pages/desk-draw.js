@@ -110,6 +110,7 @@ export class DeskDraw {
     const { desk } = this;
     const { width, height } = size("paper");
     if (!desk.view) return;
+    $("paper").dataset.view = [desk.view.scale, desk.view.turn, desk.view.x, desk.view.y].join(" ");
     this.tiles.setPage(desk.page);
     this.tiles.draw($("tiles"), desk.view, width, height);
     this.scene = sceneOf(desk);

@@ -138,6 +138,13 @@ export class Desk {
     }
   }
 
+  /** What still keeps the sheet from being checked, or null. */
+  missing() {
+    const pump = this.doc.pump ?? {};
+    const names = [!pump.maker && "the maker", !pump.model && "the model"].filter(Boolean);
+    return names.length ? names.join(" and ") : null;
+  }
+
   async startRun() {
     if (this.job && !["done", "failed", "cancelled"].includes(this.job.state)) return null;
     const recipe = JSON.stringify(recipeOf(this.doc));
@@ -145,12 +152,13 @@ export class Desk {
     this.hooks.invalidate("slip");
     try {
       if (!(await this.session.settled(15000))) throw Object.assign(new Error("away"), { title: "The check has not begun", detail: "The last steps are not in the file yet. They are kept in this browser; start the check again when the program answers." });
+      const step = this.session.step;
       const job = await api.run(this.session.id);
       const end = await follow(job, (state) => {
         this.job = state;
         this.hooks.invalidate("slip");
       });
-      if (end.state === "done") await this.fetchResult(recipe);
+      if (end.state === "done") await this.fetchResult(recipe, step);
       else if (end.state === "failed") this.hooks.problem("run", { title: end.problem?.title ?? "The check did not finish", detail: end.problem?.detail ?? end.problem?.message ?? end.text ?? "", code: end.problem?.code });
       return end.state;
     } catch (error) {
@@ -171,19 +179,34 @@ export class Desk {
     }
   }
 
-  async fetchResult(recipe = null) {
-    const answer = await api.result(this.session.id, this.session.step ?? undefined);
+  async fetchResult(recipe, step) {
+    const answer = await api.result(this.session.id, step);
     const doc = this.session.doc;
-    this.run = { ...answer, doc, recipe: recipe ?? JSON.stringify(recipeOf(doc)), findings: answer.result.findings ?? [] };
+    this.run = { ...answer, doc, recipe, findings: answer.result.findings ?? [] };
     this.previews.learn(doc, answer.result);
+    this.#remember();
     this.hooks.invalidate("doc");
   }
 
-  async loadResult() {
+  /** The browser remembers at which steps this draft was checked, so that it only asks for results that are there. */
+  #remember() {
     try {
-      await this.fetchResult();
+      localStorage.setItem(`curvebank.checked.${this.session.id}`, String(this.run.step));
     } catch {
-      // Not run yet: the family and fit steps ask for it.
+      // Without storage the check is asked for again after a reload.
+    }
+  }
+
+  async loadResult() {
+    const step = Number(localStorage.getItem(`curvebank.checked.${this.session.id}`) ?? 0);
+    if (!step) return;
+    try {
+      const answer = await api.result(this.session.id, step);
+      this.run = { ...answer, doc: this.session.doc, recipe: answer.step === this.session.step ? JSON.stringify(recipeOf(this.session.doc)) : "", findings: answer.result.findings ?? [] };
+      if (answer.step === this.session.step) this.previews.learn(this.session.doc, answer.result);
+      this.hooks.invalidate("doc");
+    } catch {
+      localStorage.removeItem(`curvebank.checked.${this.session.id}`);
     }
   }
 }

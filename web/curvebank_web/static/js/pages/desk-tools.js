@@ -2,7 +2,7 @@
 import { nudge, toScreen, toSheet, zoomAt } from "../geometry/affine.js";
 import { nearest } from "../geometry/polyline.js";
 import { snap } from "../geometry/snap.js";
-import { curveId, desk as deskPart, insertClick, newPanel, apply } from "../state/doc.js";
+import { desk as deskPart, insertClick, newPanel, apply } from "../state/doc.js";
 import { axisIds } from "../geometry/panelmap.js";
 import { axisFor } from "../panels/sentences-curves.js";
 import { calibrated } from "../state/derive.js";
@@ -160,7 +160,7 @@ export class DeskTools {
   action(handle, sheet) {
     const { desk } = this;
     const at = round(sheet);
-    if (handle.kind === "mark") return { type: "mark/set", panel: handle.panel, axis: handle.axis, index: handle.index, change: { at } };
+    if (handle.kind === "mark") return { type: "marks/move", panel: handle.panel, from: desk.session.doc.panels.find((p) => p.id === handle.panel).axes[handle.axis].marks[handle.index].at, at };
     if (handle.kind === "open") return { type: "mark/open", panel: desk.openMark.panel, at };
     if (handle.kind === "corner") {
       const outline = desk.session.doc.panels.find((p) => p.id === desk.panel.id).outline.map((p) => [...p]);
@@ -274,10 +274,10 @@ export class DeskTools {
     const last = [...(desk.doc.curves ?? [])].reverse().find((c) => c.panel === panel.id);
     const quantity = last?.quantity ?? panel.axes[ids.value[0]].quantity;
     const any = [...(desk.doc.curves ?? [])].reverse()[0];
-    const curve = { id: "open", panel: panel.id, x: ids.flow[0], y: last?.y && panel.axes[last.y] ? last.y : axisFor(panel, quantity), quantity, clicks };
+    const curve = { id: `open-${Date.now().toString(36)}`, panel: panel.id, x: ids.flow[0], y: last?.y && panel.axes[last.y] ? last.y : axisFor(panel, quantity), quantity, clicks };
     const speed = last?.speed_rpm ?? any?.speed_rpm ?? desk.doc.pump?.speed_rpm;
     if (speed) curve.speed_rpm = speed;
-    return { ...curve, id: curveId({ ...curve, diameter_mm: "open" }, (desk.doc.curves ?? []).map((c) => c.id)) };
+    return curve;
   }
 
   /** Arrow keys: the focused guide or chosen mark by 0.1 px (1 px with Shift), else the straightedge. */

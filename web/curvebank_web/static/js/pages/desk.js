@@ -119,7 +119,7 @@ function abilities(desk, draw, tools, invalidate) {
     undoOrRedo(which) { const said = desk.session[which](); desk.say(said || `Nothing to ${which}.`); redo("all"); },
     async checkAndGo(step) {
       desk.go(step);
-      if (!desk.run?.fresh) await desk.startRun();
+      if (!desk.run?.fresh && !desk.missing()) await desk.startRun();
       redo("all");
     },
     chooseFinding(number) {
@@ -159,14 +159,15 @@ function abilities(desk, draw, tools, invalidate) {
     fillForm(change) { Object.assign(desk.form, change); if (change.who !== undefined) keepSetting("who", change.who); redo("slip"); },
     async save(release) {
       const { who, why } = desk.form;
-      if (!who || !why || desk.saving) return;
+      if (!who || !why || desk.saving || desk.missing()) return;
       desk.saving = true;
       redo("slip");
       desk.saveKey ??= `${draftId}-${crypto.randomUUID?.() ?? Date.now()}`;
       try {
         if (!(await desk.session.settled(15000))) throw Object.assign(new Error("away"), { title: "Nothing was saved", detail: "The last steps are not in the file yet. They are kept in this browser; save again when the program answers." });
+        if (!desk.run?.fresh && (await desk.startRun()) !== "done") { desk.saving = false; return; }
         const pump = desk.doc.pump ?? {};
-        desk.saved = { ...(await api.save(draftId, { key: pump.key, who, why, save_key: desk.saveKey, release })), released: release };
+        desk.saved = await api.save(draftId, { ...(pump.key ? { key: pump.key } : {}), who, why, save_key: desk.saveKey, release, step: desk.run.step });
         desk.saveKey = null;
         closeProblem(problems, "save");
       } catch (error) {

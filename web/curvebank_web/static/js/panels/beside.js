@@ -53,18 +53,17 @@ function exponents(root, desk) {
   if (!families.length) return put(root);
   const quantity = families.find(([q]) => desk.panel && Object.values(desk.panel.axes).some((a) => a.quantity === q)) ?? families[0];
   const rows = exponentRows(quantity[1].exponents);
-  put(root, h("h2", {}, `Exponents of the ${QUANTITY_WORDS[quantity[0]] ?? quantity[0]} curves`), rows.map((r) => h("div", { class: "exponent" }, h("span", {}, r.words), scaleOf(r), h("b", {}, r.u ? `${plain(r.value, 2)} ± ${plain(r.u, 2)}` : plain(r.value, 2)))));
+  const measured = quantity[1].exponents.measured;
+  put(root, h("h2", {}, `${measured ? "Exponents" : "Published exponents"} of the ${QUANTITY_WORDS[quantity[0]] ?? quantity[0]} curves`), rows.map((r) => h("div", { class: "exponent" }, h("span", {}, r.words), scaleOf(r), h("b", {}, r.u ? `${plain(r.value, 2)} ± ${plain(r.u, 2)}` : plain(r.value, 2)))));
 }
 
-const EXPONENT_WORDS = { a: "flow over diameter", b: "value over diameter", flow: "flow over diameter", value: "value over diameter", head: "head over diameter", power: "power over diameter" };
+const EXPONENT_WORDS = { flow: "flow over diameter", value: "value over diameter" };
 
-/** Exponents come as {name: {value, u, lo, hi}} or {name: number}. */
+/** Exponents come as {name: [value, standard uncertainty]}. */
 export function exponentRows(exponents) {
   return Object.entries(exponents).map(([name, e]) => {
-    const value = typeof e === "number" ? e : e?.value;
-    if (!Number.isFinite(value)) return null;
-    const limits = e?.limits ?? (e?.lo !== undefined ? [e.lo, e.hi] : null);
-    return { words: EXPONENT_WORDS[name] ?? name, value, u: e?.u ?? e?.sigma ?? null, lo: limits?.[0], hi: limits?.[1] };
+    if (!Array.isArray(e) || !Number.isFinite(e[0])) return null;
+    return { words: EXPONENT_WORDS[name] ?? name, value: e[0], u: e[1] ?? null, lo: e[2], hi: e[3] };
   }).filter(Boolean);
 }
 

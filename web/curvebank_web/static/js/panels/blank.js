@@ -20,7 +20,9 @@ export function numberBlank({ name, label, value, example = "", offer = null, wi
     if (error) return undefined;
     return got.value;
   };
+  let done = false;
   const settle = () => {
+    if (done) return true;
     if (input.value === shown) {
       wrap.classList.remove("wrong");
       sayUnder(wrap, name, null);
@@ -40,10 +42,13 @@ export function numberBlank({ name, label, value, example = "", offer = null, wi
     } else if (e.key === "Enter") {
       e.preventDefault();
       const v = commit();
-      if (v === undefined) return;
-      if (onEnter) onEnter(v);
-      else settle();
+      if (v === undefined) return undefined;
+      if (!onEnter) return settle();
+      done = true;
+      onEnter(v);
+      setTimeout(() => (done = false), 0);
     }
+    return undefined;
   });
   wrap.read = () => commit();
   wrap.input = input;

@@ -9,8 +9,24 @@ import { button, choice, numberBlank, textBlank } from "./blank.js";
 const t = (words) => h("span", {}, words);
 const stop = () => h("span", { class: "stop" }, ".");
 
+/** The blanks that name the pump: the check needs them. */
+export function nameBlanks(desk) {
+  const pump = desk.doc.pump ?? {};
+  const set = (change) => desk.act({ type: "pump/set", change });
+  return [
+    textBlank({ name: "maker", label: "Maker of the pump", value: pump.maker, example: "maker", width: 110, onValue: (v) => set({ maker: v }) }),
+    textBlank({ name: "model", label: "Model of the pump", value: pump.model, example: "model", width: 120, onValue: (v) => set({ model: v }) }),
+  ];
+}
+
 function needsRun(desk, next) {
   if (desk.run?.fresh) return null;
+  if (desk.missing() && (desk.doc.curves ?? []).length) {
+    return {
+      sentence: [t("The check needs a name: this is the pump"), nameBlanks(desk), stop()],
+      does: [button("Check the curves", { waiting: `needs ${desk.missing()}`, onClick: () => {} })],
+    };
+  }
   const none = !(desk.doc.curves ?? []).length;
   return {
     sentence: [t(none ? "There is no curve to check yet." : desk.run ? "The curves have changed since the last check." : "The curves have not been checked yet.")],
@@ -68,17 +84,15 @@ export function submitSentence(desk) {
       does: [h("a", { class: "btn main", href: desk.saved.url, id: "pump-link" }, "Open the pump's page")],
     };
   }
-  const wait = needsRun(desk, "submit");
-  if (wait) return wait;
+  if (!(desk.doc.curves ?? []).length) return needsRun(desk, "submit");
   const pump = desk.doc.pump ?? {};
   const setPump = (change) => desk.act({ type: "pump/set", change });
   const form = desk.form;
   const missing = [!pump.maker && "the maker", !pump.model && "the model", !form.why && "why", !form.who && "who"].filter(Boolean);
-  const errors = desk.run.findings.filter((f) => f.severity === "error").length;
+  const errors = (desk.run?.findings ?? []).filter((f) => f.severity === "error").length;
   return {
     sentence: [
-      t("Submit as"), textBlank({ name: "maker", label: "Maker of the pump", value: pump.maker, example: "maker", width: 110, onValue: (v) => setPump({ maker: v || undefined }) }),
-      textBlank({ name: "model", label: "Model of the pump", value: pump.model, example: "model", width: 120, onValue: (v) => setPump({ model: v || undefined }) }),
+      t("Submit as"), nameBlanks(desk),
       t("with"), numberBlank({ name: "stages", label: "Number of stages", value: pump.stages ?? 1, width: 34, least: 1, whole: true, onValue: (v) => setPump({ stages: v ?? 1 }) }), t((pump.stages ?? 1) === 1 ? "stage, because" : "stages, because"),
       textBlank({ name: "why", label: "Why this revision is made", value: form.why, example: "why", width: 210, onValue: (v) => desk.fillForm({ why: v }) }),
       t(", signed"), textBlank({ name: "who", label: "Your name", value: form.who, example: "your name", width: 120, onValue: (v) => desk.fillForm({ who: v }) }), stop(),

@@ -4,8 +4,10 @@ import { nearestRound } from "../geometry/scale.js";
 import { QUANTITY_WORDS, UNITS, needsDensity, written } from "../geometry/units.js";
 import { boxOf } from "../geometry/polyline.js";
 import { calibrated } from "../state/derive.js";
+import { samePlace } from "../state/doc.js";
 import { h } from "../view/dom.js";
 import { button, choice, numberBlank, textBlank } from "./blank.js";
+import { nameBlanks } from "./sentences-end.js";
 
 const t = (words) => h("span", {}, words);
 const stop = () => h("span", { class: "stop" }, ".");
@@ -25,8 +27,7 @@ export function sheetSentence(desk) {
       t(`of ${pages}, turned`),
       choice({ name: "turn", label: "Turned clockwise by", value: sheet.turn ?? 0, options: [0, 90, 180, 270].map((v) => [v, `${v}°`]), onValue: (v) => set({ turn: v }) }),
       t(". It shows the"),
-      textBlank({ name: "maker", label: "Maker of the pump", value: pump.maker, example: "maker", width: 110, onValue: (v) => setPump({ maker: v || undefined }) }),
-      textBlank({ name: "model", label: "Model of the pump", value: pump.model, example: "model", width: 120, onValue: (v) => setPump({ model: v || undefined }) }),
+      nameBlanks(desk),
       t("with"),
       numberBlank({ name: "stages", label: "Number of stages", value: pump.stages ?? 1, width: 34, least: 1, whole: true, onValue: (v) => setPump({ stages: v ?? 1 }) }),
       t((pump.stages ?? 1) === 1 ? "stage at" : "stages at"),
@@ -109,6 +110,26 @@ function offered(desk, panel, axis, at) {
   return near && Math.abs(near.at[flow ? 0 : 1] - at[flow ? 0 : 1]) < 25 && !known.includes(near.value) ? near.value : null;
 }
 
+/** Blanks of every scale at a kept mark: those that stand on the same crossing show their value, an empty one adds a mark. */
+function chosenBlanks(desk, panel, first, mark) {
+  const ids = axisIds(panel);
+  const order = [first, ...[...ids.flow, ...ids.value].filter((id) => id !== first)];
+  return order.map((id, i) => {
+    const axis = panel.axes[id];
+    const index = (axis.marks ?? []).findIndex((m) => samePlace(m.at, mark.at));
+    const set = (v) => {
+      if (v === null) return index >= 0 && desk.act({ type: "mark/remove", panel: panel.id, axis: id, index });
+      if (index < 0) return desk.act({ type: "mark/keep", panel: panel.id, at: mark.at, values: { [id]: v } });
+      return v !== axis.marks[index].value && desk.act({ type: "mark/set", panel: panel.id, axis: id, index, change: { value: v } });
+    };
+    const enter = (v) => {
+      set(v);
+      desk.chooseMark(null);
+    };
+    return [numberBlank({ name: `mark-${id}`, label: `${QUANTITY_WORDS[axis.quantity]} at this mark, in ${written(axis.unit)}`, value: index >= 0 ? axis.marks[index].value : null, offer: index < 0 ? offered(desk, panel, id, mark.at) : null, width: 56, onValue: set, onEnter: enter }), t(`${written(axis.unit)} ${QUANTITY_WORDS[axis.quantity]}${i < order.length - 1 ? "," : ""}`)];
+  });
+}
+
 export function marksSentence(desk) {
   const { panel, openMark, doc } = desk;
   if (!panel) return { sentence: [t("There is no panel yet: draw round the plot first.")], does: [button("Go to the panel", { main: true, onClick: () => desk.go("panel") })] };
@@ -151,7 +172,7 @@ export function marksSentence(desk) {
     const mark = axis?.marks[index];
     if (mark) {
       return {
-        sentence: [t("This mark stands at"), numberBlank({ name: "chosen", label: "Value of this mark", value: mark.value, width: 56, onValue: (v) => v !== null && desk.act({ type: "mark/set", panel: pid, axis: id, index, change: { value: v } }) }), t(`${written(axis.unit)} on the ${QUANTITY_WORDS[axis.quantity]} axis`), stop()],
+        sentence: [t("This mark reads"), chosenBlanks(desk, own, id, mark), stop()],
         does: [h("span", { class: "hint" }, h("kbd", {}, "←"), h("kbd", {}, "→"), " 0.1 px"), button("Remove", { quiet: true, onClick: () => desk.removeChosenMark() }), button("Done", { main: true, onClick: () => desk.chooseMark(null) })],
       };
     }

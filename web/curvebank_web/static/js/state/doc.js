@@ -4,6 +4,11 @@
 const map = (list, id, change) => (list ?? []).map((item) => (item.id === id ? change(item) : item));
 const clean = (object) => Object.fromEntries(Object.entries(object).filter(([, v]) => v !== undefined));
 
+/** Marks of several scales may stand on one crossing; they move together. */
+export function samePlace(a, b) {
+  return Math.hypot(a[0] - b[0], a[1] - b[1]) < 0.02;
+}
+
 /** An id like "head-2" that no one in `taken` has. */
 export function freshId(stem, taken) {
   if (!taken.includes(stem)) return stem;
@@ -58,6 +63,11 @@ const HANDLERS = {
     return next;
   },
   "mark/set": (doc, a) => inAxis(doc, a, (axis) => ({ ...axis, marks: axis.marks.map((m, i) => (i === a.index ? { ...m, ...a.change } : m)) })),
+  "marks/move": (doc, a) =>
+    inPanel(doc, a.panel, (p) => ({
+      ...p,
+      axes: Object.fromEntries(Object.entries(p.axes).map(([id, x]) => [id, { ...x, marks: (x.marks ?? []).map((m) => (samePlace(m.at, a.from) ? { ...m, at: a.at } : m)) }])),
+    })),
   "mark/remove": (doc, a) => inAxis(doc, a, (axis) => ({ ...axis, marks: axis.marks.filter((_, i) => i !== a.index) })),
   "marks/copy": (doc, a) => {
     const from = doc.panels.find((p) => p.id === a.from).axes[a.axisFrom];
@@ -65,10 +75,11 @@ const HANDLERS = {
   },
 
   "curve/open": (doc, a) => withDesk(doc, { curve: a.curve }),
-  "curve/change": (doc, a) => withDesk(doc, { curve: clean({ ...desk(doc).curve, ...a.change }) }),
+  "curve/change": (doc, a) => !desk(doc).curve ? doc : withDesk(doc, { curve: clean({ ...desk(doc).curve, ...a.change }) }),
   "curve/drop": (doc) => withDesk(doc, { curve: undefined }),
   "curve/keep": (doc) => {
     const curve = desk(doc).curve;
+    if (!curve) return doc;
     return { ...withDesk(doc, { curve: undefined }), curves: [...(doc.curves ?? []), curve] };
   },
   "curve/set": (doc, a) => ({ ...doc, curves: map(doc.curves, a.curve, (c) => clean({ ...c, ...a.change })) }),

@@ -62,6 +62,7 @@ export function actionLabel(action, doc) {
     case "mark/drop": return "mark let go";
     case "mark/keep": return `mark kept: ${Object.entries(action.values).map(([id, v]) => `${id} ${plain(v)}`).join(", ")}`;
     case "mark/set": return `${axisName} mark changed`;
+    case "marks/move": return `mark moved${at}`;
     case "mark/remove": return `${axisName} mark removed`;
     case "marks/copy": return `${axisName} marks taken over`;
     case "curve/open": return "curve begun";
