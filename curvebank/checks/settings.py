@@ -25,7 +25,7 @@ SIMULATED = "set on simulated families with published exponents, tests/bench/fam
 LIMITS: dict[str, Limit] = {
     "family_threshold": Limit(7.0, "ln likelihood", SIMULATED, "gain an explanation needs before a label is doubted"),
     "family_margin": Limit(3.0, "ln likelihood", SIMULATED, "explanations this close to the best are named with it"),
-    "family_reading_pct": Limit(0.25, "%", DRAWING, "least standard uncertainty of a drawn curve, in % of the family's largest value"),
+    "family_reading_pct": Limit(0.3, "%", DRAWING, "least standard uncertainty of a drawn curve, in % of the family's largest value"),
     "family_order_pct": Limit(1.0, "%", DRAWING, "a smaller wheel's head may exceed a larger one's by this and its uncertainty"),
     "energy_warning_pct": Limit(4.0, "%", DRAWING, "least disagreement of P, Q, H and efficiency that is reported"),
     "energy_error_pct": Limit(8.0, "%", DRAWING, "least disagreement that is an error"),

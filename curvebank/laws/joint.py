@@ -15,7 +15,7 @@ from ..errors import LawError
 from ..records import FloatArray, frozen
 
 POINTS_PER_CURVE = 32
-READINGS_PER_CURVE = 5
+READINGS_PER_CURVE = 4
 """Independent readings a curve: neighbouring pixels of one drawn line are one reading of the draughtsman's hand."""
 _WEAK_PRIOR_SD = 0.5  # keeps the scales finite where a shape is nearly a power law; far wider than any published exponent allows
 _HUBER = 2.0

@@ -64,7 +64,7 @@ def chart(
     drop, power, droop = rng.uniform(0.25, 0.55), rng.uniform(1.5, 3.0), rng.choice([0.0, 0.0, 1.0]) * rng.uniform(0.0, 0.04)
 
     def shape(u: np.ndarray, stretch: float) -> np.ndarray:
-        return 1 - drop * stretch * np.abs(u) ** power + 4 * droop * np.clip(u, 0, 1) * (1 - np.clip(u, 0, 1))
+        return 1 - drop * stretch * np.abs(u) ** power + 4 * droop * u * (1 - u)
 
     axis_h, axis_q = h0 * rng.uniform(1.05, 1.3), q0 * 1.2
     k = int(rng.integers(count))
