@@ -9,6 +9,7 @@ from typing import Any
 
 import click
 import platformdirs
+from tqdm import tqdm
 
 from ..errors import CurvebankError
 
@@ -46,6 +47,22 @@ def bank_option(command: Command) -> Command:
 def json_option(command: Command) -> Command:
     """``--json``: the same facts for a program."""
     return click.option("--json", "as_json", is_flag=True, help="Print JSON instead of text.")(command)
+
+
+class Bar:
+    """Progress on stderr where a person watches, silence elsewhere."""
+
+    def __init__(self, name: str) -> None:
+        self.bar = tqdm(
+            total=100, desc=name, leave=False, disable=not sys.stderr.isatty(), bar_format="{desc}: {percentage:3.0f} % {postfix}"
+        )
+
+    def __call__(self, share: float, text: str) -> None:
+        self.bar.n = round(100 * share)
+        self.bar.set_postfix_str(text)
+
+    def close(self) -> None:
+        self.bar.close()
 
 
 def emit(data: Any) -> None:

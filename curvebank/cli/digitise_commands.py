@@ -5,27 +5,10 @@ from pathlib import Path
 from typing import Any
 
 import click
-from tqdm import tqdm
 
-from .app import bank_option, default_bank, emit, json_option
+from .app import Bar, bank_option, default_bank, emit, json_option
 
 SIGNS = {"error": "Error.", "warning": "Warning.", "note": "Note."}
-
-
-class Bar:
-    """Progress on stderr where a person watches, silence elsewhere."""
-
-    def __init__(self, name: str) -> None:
-        self.bar = tqdm(
-            total=100, desc=name, leave=False, disable=not sys.stderr.isatty(), bar_format="{desc}: {percentage:3.0f} % {postfix}"
-        )
-
-    def __call__(self, share: float, text: str) -> None:
-        self.bar.n = round(100 * share)
-        self.bar.set_postfix_str(text)
-
-    def close(self) -> None:
-        self.bar.close()
 
 
 @click.command()

@@ -29,10 +29,10 @@ class Done:
         """NAME of NAME.recipe.json."""
         return self.path.name.removesuffix(RECIPE_SUFFIX) if self.path.name.endswith(RECIPE_SUFFIX) else self.path.stem
 
-    @property
-    def save_key(self) -> str:
-        """The same files give the same key, so that saving twice stores once."""
-        return "file-" + hashlib.sha256(self.recipe_bytes + b"\0" + (self.sheet_bytes or b"")).hexdigest()[:40]
+    def save_key(self, who: str, why: str) -> str:
+        """The same files, person and reason give the same key, so that a repeated command stores once."""
+        parts = (self.recipe_bytes, self.sheet_bytes or b"", who.encode(), why.encode())
+        return "file-" + hashlib.sha256(b"".join(hashlib.sha256(p).digest() for p in parts)).hexdigest()[:40]
 
 
 def failed(error: CurvebankError, recipe_bytes: bytes = b"", file: str | None = None) -> Digitised:
