@@ -179,7 +179,7 @@ def _put(kind: Any, value: Any, out: list[bytes], where: str) -> None:
             raise ValueError(f"{where}: a SHA-256 has 32 bytes")
         out.append(value)
     elif kind is ARRAY:
-        a = np.ascontiguousarray(value, dtype="<f8")
+        a = np.asarray(value, dtype="<f8", order="C")
         if not np.isfinite(a).all():
             raise BankError(f"{where} holds a number that is not finite. Look at the curve it belongs to.", code="not-finite")
         out.append(struct.pack(f"<B{a.ndim}I", a.ndim, *np.shape(value)) + a.tobytes())

@@ -38,27 +38,36 @@ WHERE span.valid_to IS NULL;
 
 CREATE VIEW released_point AS
 WITH RECURSIVE step (i) AS (SELECT 0 UNION ALL SELECT i + 1 FROM step WHERE i < 199),
+up (e, f) AS (SELECT 150, 1.0 UNION ALL SELECT e + 1, f * 2.0 FROM up WHERE e < 254),
+down (e, f) AS (SELECT 149, 0.5 UNION ALL SELECT e - 1, f * 0.5 FROM down WHERE e > 1),
+scale (e, f) AS (SELECT e, f FROM up UNION ALL SELECT e, f FROM down UNION ALL SELECT 0, 0.0),
 word AS (
-  SELECT pump.key, curve.local_id AS curve, step.i, part.c AS part, hex(substr(trace.bytes, 4 * (part.c * trace.n + step.i) + 1, 4)) AS h
+  SELECT pump.key, curve.local_id AS curve, step.i, hex(substr(trace.bytes, 4 * (3 * trace.n + step.i) + 1, 4)) AS q,
+    hex(substr(trace.bytes, 4 * (4 * trace.n + step.i) + 1, 4)) AS v, hex(substr(trace.bytes, 4 * (5 * trace.n + step.i) + 1, 4)) AS u
   FROM release_span AS span JOIN pump ON pump.id = span.pump_id JOIN curve ON curve.revision_id = span.revision_id
-    JOIN trace ON trace.curve_id = curve.id JOIN step ON step.i < trace.n
-    JOIN (SELECT 3 AS c UNION ALL SELECT 4 UNION ALL SELECT 5) AS part
-  WHERE span.valid_to IS NULL),
-bits AS (
-  SELECT key, curve, i, part, ((instr('0123456789ABCDEF', substr(h, 1, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(h, 2, 1)) - 1)
-    + 256 * ((instr('0123456789ABCDEF', substr(h, 3, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(h, 4, 1)) - 1)
-    + 65536 * ((instr('0123456789ABCDEF', substr(h, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(h, 6, 1)) - 1)
-    + 16777216 * ((instr('0123456789ABCDEF', substr(h, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(h, 8, 1)) - 1) AS b FROM word),
-number AS (
-  SELECT key, curve, i, part, CASE WHEN b & 2139095040 = 0 THEN 0.0 ELSE
-    (CASE WHEN b >> 31 THEN -1.0 ELSE 1.0 END) * (8388608 | (b & 8388607))
-    * (CASE WHEN (b >> 23 & 255) >= 150 THEN 1.0 * (1 << min((b >> 23 & 255) - 150, 60)) ELSE 1.0 END)
-    * (CASE WHEN (b >> 23 & 255) >= 210 THEN 1.0 * (1 << ((b >> 23 & 255) - 210)) ELSE 1.0 END)
-    / (CASE WHEN (b >> 23 & 255) < 150 THEN 1.0 * (1 << min(150 - (b >> 23 & 255), 60)) ELSE 1.0 END)
-    / (CASE WHEN (b >> 23 & 255) < 90 THEN 1.0 * (1 << min(90 - (b >> 23 & 255), 60)) ELSE 1.0 END)
-    / (CASE WHEN (b >> 23 & 255) < 30 THEN 1.0 * (1 << (30 - (b >> 23 & 255))) ELSE 1.0 END) END AS v
-  FROM bits)
-SELECT key, curve, i, max(CASE part WHEN 3 THEN v END) AS flow_m3h, max(CASE part WHEN 4 THEN v END) AS value,
-  max(CASE part WHEN 5 THEN v END) AS sigma
-FROM number GROUP BY key, curve, i;
+    JOIN trace ON trace.curve_id = curve.id CROSS JOIN step ON step.i < trace.n
+  WHERE span.valid_to IS NULL)
+SELECT key, curve, i,
+  (1.0 - (((instr('0123456789ABCDEF', substr(q, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 8, 1)) - 1) >> 7) * 2) * (8388608 +
+    ((instr('0123456789ABCDEF', substr(q, 1, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 2, 1)) - 1)
+    + 256 * ((instr('0123456789ABCDEF', substr(q, 3, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 4, 1)) - 1)
+    + 65536 * (((instr('0123456789ABCDEF', substr(q, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 6, 1)) - 1) & 127)) * of_q.f
+    AS flow_m3h,
+  (1.0 - (((instr('0123456789ABCDEF', substr(v, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 8, 1)) - 1) >> 7) * 2) * (8388608 +
+    ((instr('0123456789ABCDEF', substr(v, 1, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 2, 1)) - 1)
+    + 256 * ((instr('0123456789ABCDEF', substr(v, 3, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 4, 1)) - 1)
+    + 65536 * (((instr('0123456789ABCDEF', substr(v, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 6, 1)) - 1) & 127)) * of_v.f
+    AS value,
+  (1.0 - (((instr('0123456789ABCDEF', substr(u, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 8, 1)) - 1) >> 7) * 2) * (8388608 +
+    ((instr('0123456789ABCDEF', substr(u, 1, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 2, 1)) - 1)
+    + 256 * ((instr('0123456789ABCDEF', substr(u, 3, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 4, 1)) - 1)
+    + 65536 * (((instr('0123456789ABCDEF', substr(u, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 6, 1)) - 1) & 127)) * of_u.f
+    AS sigma
+FROM word
+CROSS JOIN scale AS of_q ON of_q.e = (((instr('0123456789ABCDEF', substr(q, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 8, 1))
+    - 1) & 127) * 2 + (((instr('0123456789ABCDEF', substr(q, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(q, 6, 1)) - 1) >> 7)
+CROSS JOIN scale AS of_v ON of_v.e = (((instr('0123456789ABCDEF', substr(v, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 8, 1))
+    - 1) & 127) * 2 + (((instr('0123456789ABCDEF', substr(v, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(v, 6, 1)) - 1) >> 7)
+CROSS JOIN scale AS of_u ON of_u.e = (((instr('0123456789ABCDEF', substr(u, 7, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 8, 1))
+    - 1) & 127) * 2 + (((instr('0123456789ABCDEF', substr(u, 5, 1)) - 1) * 16 + instr('0123456789ABCDEF', substr(u, 6, 1)) - 1) >> 7);
 """

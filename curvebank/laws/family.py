@@ -122,7 +122,7 @@ class Plan:
         """The value over a float64 array, by Horner in place and in blocks that stay in cache."""
         import numpy as np
 
-        flow = np.ascontiguousarray(flow_m3h, dtype=np.float64)
+        flow = np.asarray(flow_m3h, dtype=np.float64, order="C")
         out = np.empty(flow.shape)
         q, v = flow.reshape(-1), out.reshape(-1)
         t = np.empty(min(BLOCK, q.size))

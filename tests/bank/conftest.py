@@ -1,5 +1,6 @@
 """Banks made by hand."""
 
+import shutil
 import sys
 from pathlib import Path
 
@@ -13,6 +14,14 @@ from curvebank.bank.reader import Bank  # noqa: E402
 from curvebank.bank.store import Store  # noqa: E402
 
 
+@pytest.fixture(scope="session")
+def empty_bank(tmp_path_factory):
+    """An empty bank to copy: making one takes longer than most tests."""
+    path = tmp_path_factory.mktemp("empty") / "bank.db"
+    Store.create(path).close()
+    return path
+
+
 @pytest.fixture
 def path(tmp_path):
     """Where the test's bank is."""
@@ -20,8 +29,9 @@ def path(tmp_path):
 
 
 @pytest.fixture
-def store(path):
+def store(path, empty_bank):
     """An empty bank, open for writing."""
+    shutil.copy(empty_bank, path)
     with Store.open(path) as opened:
         yield opened
 
