@@ -137,7 +137,8 @@ def from_canonical(value, quantity, unit, *, density_kgm3=None):
 
 
 _FRACTION = re.compile(r"(?:(?P<whole>\d+)[ -]+)?(?P<top>\d+)/(?P<bottom>\d+)")
-_THOUSANDS = re.compile(r"\d{1,3}(?:[  ]\d{3})+(?:[.,]\d+)?")
+_SPACES = r"[ \u00a0\u2009\u202f]"  # plain, no-break, thin and narrow no-break: all are typed or pasted
+_THOUSANDS = re.compile(rf"\d{{1,3}}(?:{_SPACES}\d{{3}})+(?:[.,]\d+)?")
 
 
 def parse_number(text):
@@ -158,12 +159,12 @@ def parse_number(text):
     raw = str(text).strip()
     s = raw.replace("−", "-").replace("″", "").replace('"', "").strip()
     sign = -1.0 if s.startswith("-") else 1.0
-    body = s.lstrip("+-").strip()
+    body = s[1:].strip() if s[:1] in ("+", "-") else s
     m = _FRACTION.fullmatch(body)
     if m and int(m["bottom"]) > 0:
         return sign * (int(m["whole"] or 0) + int(m["top"]) / int(m["bottom"]))
     if _THOUSANDS.fullmatch(body):
-        body = re.sub(r"[  ]", "", body)
+        body = re.sub(_SPACES, "", body)
     if re.fullmatch(r"[1-9]\d{0,2},\d{3}", body):
         whole, rest = body.split(",")
         raise UnitError(f"“{raw}” can mean {whole}.{rest} or {whole}{rest}. Type it without the comma.")
