@@ -12,13 +12,8 @@ from . import suspects as doubts
 from .layout import Layout, arrange
 from .marks import AxisMarks, get, read_axes
 from .panelmap import PanelMap, Scale
-from .solve import CLICK_SIGMA_PX, Solution, solve
+from .solve import Solution, solve
 from .ties import find_ties
-
-EVIDENCE_FOR_PROJECTIVE = 7.0
-"""Natural logarithm of the odds the projective plane must win by (about 1000 to 1): flat scans are the rule."""
-TILT_PRIOR = 0.15
-"""Expected size of the perspective terms of a hand-held photo: relative change of scale over half the panel."""
 
 
 def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page_size: tuple[int, int] | None = None) -> PanelMap:
@@ -31,7 +26,7 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
     prepared : curvebank.sheet.Prepared, optional
         The page; gives its size and the shape of its pixels.
     path : str, optional
-        JSON path of the panel for error messages.
+        JSON path of the panel for error messages; by default paths are relative to the panel.
     page_size : (int, int), optional
         Width and height of the page [px], where ``prepared`` is not at hand.
 
@@ -42,29 +37,25 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
 
     Notes
     -----
-    All marks of all axes are fitted together by least squares in pixels, see `curvebank.axes.solve`. The plane is
-    projective only where the marks speak for it by a Bayes factor (Laplace form; Kass and Raftery 1995,
-    doi:10.1080/01621459.1995.10476572), else affine. Lines that two axes share are found by `curvebank.axes.ties`.
+    All marks of all axes are fitted together by least squares in pixels (`curvebank.axes.solve`). Where they contradict each
+    other, a mistyped value, a photo and warped paper are weighed against each other (`curvebank.axes.suspects`); the plane is
+    projective only where the marks speak for it. Lines that two axes share tie them together (`curvebank.axes.ties`).
     """
     panel_id = str(get(panel, "id", "panel"))
-    path = path or f"$.panels[{panel_id}]"
+    path = path or "$"
     axes = read_axes(panel, path)
     aspect = _pixel_aspect(prepared)
 
-    def free(marks: dict[str, AxisMarks]) -> tuple[Layout, Solution]:
-        layout = arrange(marks, path)
-        return layout, _best_plane(layout, aspect)
-
-    found, used = doubts.find_suspects(axes, free, _level_at)
-    layout, solution = free(used)
-    ties = find_ties(layout, solution)
-    if ties:
-        tied = _again(layout, solution, ties, aspect)
-        if tied.chi2 - solution.chi2 <= 9 + 3 * len(ties):
-            solution = tied
-    residuals = _mark_residuals(axes, used, layout, solution)
-    notices = [Notice(code=c, message=m) for c, m in layout.notices + doubts.describe(found, axes)]
-    notices += _scatter_notice(used, residuals, found)
+    layout = arrange(axes, path)
+    verdict = doubts.judge(layout, axes, aspect)
+    layout = verdict.reading.layout
+    for name, mark, _ in verdict.reading.changes:
+        if not any(s.swapped_with is not None and s.axis == name for s in verdict.suspects):
+            layout = layout.with_open(name, mark)
+    solution = _final(layout, verdict.reading, aspect)
+    notices = [Notice(code=c, message=m) for c, m in (*layout.notices, *doubts.describe(verdict.suspects, axes))]
+    residuals = _mark_residuals(axes, layout, solution)
+    notices += _scatter_notices(axes, residuals, verdict)
     page = page_size or _page_size(prepared)
     given = get(panel, "outline")
     parameters, covariance, scales = _scales(layout, solution)
@@ -81,39 +72,19 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
         click_sigma_px=solution.sigma_px,
         grid=_grid_report(panel),
         notices=tuple(notices),
-        suspects=[s.as_dict() for s in found],
+        suspects=[s.as_dict() for s in verdict.suspects],
     )
 
 
-def _best_plane(layout: Layout, aspect: float) -> Solution:
-    flat = solve(layout, aspect=aspect)
-    if not _may_be_projective(layout):
-        return flat
-    loose = solve(layout, square=None)
-    tilted = solve(layout, projective=True, start=loose.x, square=None, tilt_sigma=TILT_PRIOR)
-    if not np.all(1 + _coordinates(layout, tilted) @ tilted.theta[6:8] > 0.2):
-        return flat
-    gain = (loose.chi2 - tilted.chi2) / 2 / max(1.0, (tilted.sigma_px / CLICK_SIGMA_PX) ** 2)
-    # Laplace evidence of the two extra parameters, prior N(0, TILT_PRIOR^2) each.
-    occam = -0.5 * (np.linalg.slogdet(tilted.information)[1] - np.linalg.slogdet(loose.information)[1]) - 2 * np.log(TILT_PRIOR)
-    return tilted if gain + occam > EVIDENCE_FOR_PROJECTIVE else flat
-
-
-def _may_be_projective(layout: Layout) -> bool:
-    """Whether converging lines could be told: two lines of marks in one direction, or four and more crossings."""
-    lines = [layout.open_direction[k] for k, lined in enumerate(layout.lined_up) if lined]
-    both = sum(layout.axis[0][i] is not None and layout.axis[1][i] is not None for i in range(len(layout.at)))
-    return lines.count(0) >= 2 or lines.count(1) >= 2 or both >= 4
-
-
-def _coordinates(layout: Layout, solution: Solution) -> FloatArray:
-    return plane.coordinates(solution.theta, (layout.at - layout.shift) / layout.size)
-
-
-def _again(layout: Layout, solution: Solution, ties: tuple, aspect: float) -> Solution:
-    if solution.plane_size == 8:
-        return solve(layout, projective=True, start=solution.x, ties=ties, square=None, tilt_sigma=TILT_PRIOR)
-    return solve(layout, start=solution.x, ties=ties, aspect=aspect)
+def _final(layout: Layout, reading: doubts.Reading, aspect: float) -> Solution:
+    """The plane with Huber's loss and with the ties that the marks support."""
+    same = len(reading.solution.x) == reading.solution.plane_size + layout.scales + len(layout.open_direction)
+    free = solve(layout, projective=reading.projective, start=reading.solution.x if same else None, aspect=aspect)
+    ties = find_ties(layout, free)
+    if not ties:
+        return free
+    tied = solve(layout, projective=reading.projective, start=free.x, ties=ties, aspect=aspect)
+    return tied if tied.chi2 - free.chi2 <= 9 + 3 * len(ties) else free
 
 
 def _scales(layout: Layout, solution: Solution) -> tuple[FloatArray, FloatArray, dict[str, Scale]]:
@@ -135,43 +106,40 @@ def _scales(layout: Layout, solution: Solution) -> tuple[FloatArray, FloatArray,
     return solution.x[:keep], solution.covariance[:keep, :keep], {name: scales[name] for name in layout.slots}
 
 
-def _level_at(layout: Layout, solution: Solution, name: str, place: np.ndarray) -> float:
+def _mark_residuals(axes: dict[str, AxisMarks], layout: Layout, solution: Solution) -> dict[str, FloatArray]:
+    """Distance [px] from each click to where the map puts its mark as typed; how far along its axis for a mark read otherwise."""
     parameters, _, scales = _scales(layout, solution)
-    scale = scales[name]
-    uv = plane.coordinates(solution.theta, ((place - layout.shift) / layout.size)[None])
-    return float(scale.level(uv[:, scale.direction], parameters)[0])
-
-
-def _mark_residuals(axes: dict[str, AxisMarks], used: dict[str, AxisMarks], layout: Layout, solution: Solution) -> dict[str, FloatArray]:
-    """Distance [px] from each click to where the map puts its mark; for a mark left out, along its axis only."""
-    p = solution.plane_size
     out: dict[str, FloatArray] = {}
-    scales = _scales(layout, solution)
     for name, marks in axes.items():
+        scale, rows = scales[name], list(layout.rows_of[name])
+        out[name] = np.hypot(*solution.misses_px[rows].T)
         uv = plane.coordinates(solution.theta, (marks.at - layout.shift) / layout.size)
-        if len(used[name].typed) == len(marks.typed) and np.array_equal(used[name].typed, marks.typed):
-            rows = layout.marks_of[name]
-            out[name] = np.hypot(*solution.residuals_px[rows].T)
-            continue
-        scale = scales[2][name]
-        wanted = uv.copy()
-        wanted[:, scale.direction] = scale.coordinate(marks.factor * marks.typed, scales[0])
-        there = plane.pixels(solution.x[:p], wanted) * layout.size + layout.shift
-        out[name] = np.hypot(*(there - marks.at).T)
+        uv[:, scale.direction] = scale.coordinate(marks.factor * marks.typed, parameters)
+        along = np.hypot(*(plane.pixels(solution.theta, uv) * layout.size + layout.shift - marks.at).T)
+        for i, row in enumerate(rows):
+            typed = (name, float((marks.level[i] - layout.slots[name].centre) / layout.slots[name].half))
+            if layout.slots[name].twin is None and layout.terms[row][scale.direction] != typed:
+                out[name][i] = along[i]
     return out
 
 
-def _scatter_notice(used: dict[str, AxisMarks], residuals: dict[str, FloatArray], found: list[doubts.Suspect]) -> list[Notice]:
-    named = {s.axis for s in found}
+def _scatter_notices(axes: dict[str, AxisMarks], residuals: dict[str, FloatArray], verdict: doubts.Verdict) -> list[Notice]:
+    named = {s.axis for s in verdict.suspects}
     out: list[Notice] = []
     for name, r in residuals.items():
         worst = float(r.max())
-        if name not in named and worst > max(4.0, doubts.limit_px(used[name]) / 2):
+        if name not in named and worst > max(4.0, 0.004 * float(np.hypot(*np.ptp(axes[name].at, axis=0)))):
             text = (
                 f"The {name} marks miss the map by up to {worst:.1f} px: a click is off, a value is wrong or the paper is warped. "
                 "Check them with the magnifier, or add marks."
             )
             out.append(Notice(code="calibration-scatter", message=text))
+    if verdict.photo_doubtful:
+        text = (
+            "The marks are spaced unevenly, as on a photo taken at an angle, and the map follows that. On a flat scan a value is mistyped. "
+            "Marks on the far side of the panel would settle it."
+        )
+        out.append(Notice(code="calibration-perspective", message=text))
     return out
 
 

@@ -5,27 +5,24 @@ of the lines of constant v, and the other way round. Marks scattered over grid c
 One click that serves two axes fixes both. A second value axis has its own scale ``v = alpha + beta z`` on the same plane.
 """
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ..errors import CalibrationError
 from ..records import FloatArray
-from .marks import ACROSS_FLOW, ALONG_FLOW, AxisMarks
+from .directions import LINED_UP_PX, LINED_UP_SHARE, check_advance, check_values, directions_of
+from .marks import AxisMarks
 
-LINED_UP_PX = 6.0
-LINED_UP_SHARE = 0.012
-"""Marks are on one printed line if none is further off than this many pixels, or this share of their extent (warped paper)."""
-LEAN_LIMIT_DEG = 25.0
-"""Axis lines that meet at less than 90 degrees minus this are not both axis lines: one set of marks is scattered."""
+Term = tuple[str, float]
+"""A coordinate: (axis id, z) for a typed value, or ("", number) for an open one."""
 
 
-@dataclass(slots=True, eq=False)
+@dataclass(frozen=True, slots=True, eq=False)
 class Slot:
-    """One axis on the plane: ``z = (level - centre) / half`` and, unless it is the first of its direction, ``v = alpha + beta z``.
+    """One axis on the plane: ``z = (level - centre) / half`` and, unless it is the first of its direction, ``c = alpha + beta z``.
 
     ``own`` is the index of alpha among the scale parameters, or None for the reference axis; ``twin`` names the axis whose
-    marks (the same clicks) this one shares, in which case ``level = twin_offset + twin_slope * level of the twin``.
+    marks (the same clicks) this one shares.
     """
 
     marks: AxisMarks
@@ -39,28 +36,86 @@ class Slot:
         return (self.marks.level - self.centre) / self.half
 
 
-@dataclass(slots=True, eq=False)
+@dataclass(frozen=True, slots=True, eq=False)
 class Layout:
-    """Observations of one panel. Arrays run over clicks: ``axis[d]`` is the slot that fixes coordinate d or None, ``z[d]`` its value
-    there, ``open[d]`` the number of the open coordinate. ``open_direction`` says for each open coordinate which it is."""
+    """Observations of one panel: clicks ``at`` [n, 2] px with ``terms[i] = (u term, v term)``.
+
+    ``position`` [n, 2] are the clicks in oblique coordinates along ``directions`` (rows), shifted and scaled like the plane's
+    pixels; ``open_direction`` and ``lined_up`` tell of each open coordinate its direction and whether several clicks share it;
+    ``rows_of`` gives the clicks of each axis's marks.
+    """
 
     slots: dict[str, Slot]
     at: FloatArray
-    axis: tuple[list[str | None], list[str | None]]
-    z: FloatArray
-    open: np.ndarray
-    open_direction: list[int]
-    lined_up: list[bool]
-    start: FloatArray
+    terms: tuple[tuple[Term, Term], ...]
+    open_direction: tuple[int, ...]
+    lined_up: tuple[bool, ...]
+    position: FloatArray
     directions: FloatArray
     shift: FloatArray
     size: float
-    marks_of: dict[str, list[int]] = field(default_factory=dict)
-    notices: list[tuple[str, str]] = field(default_factory=list)
+    rows_of: dict[str, tuple[int, ...]]
+    notices: tuple[tuple[str, str], ...] = ()
+
+    @property
+    def scales(self) -> int:
+        """Number of scale parameters."""
+        return sum(2 for s in self.slots.values() if s.own is not None)
+
+    def term_row(self, term: Term, plane_size: int, size: int) -> tuple[float, FloatArray]:
+        """A coordinate as constant + row @ x."""
+        name, z = term
+        row = np.zeros(size)
+        if not name:
+            row[plane_size + self.scales + int(z)] = 1.0
+            return 0.0, row
+        own = self.slots[name].own
+        if own is None:
+            return float(z), row
+        row[plane_size + own], row[plane_size + own + 1] = 1.0, z
+        return 0.0, row
+
+    def with_value(self, name: str, mark: int, level: float) -> "Layout":
+        """The same layout with another value at one mark."""
+        slot = self.slots[name]
+        return self._with_term(self.rows_of[name][mark], slot.marks.direction, (name, (level - slot.centre) / slot.half))
+
+    def with_open(self, name: str, mark: int) -> "Layout":
+        """The same layout with the value of one mark left open, as the last open coordinate."""
+        d = self.slots[name].marks.direction
+        out = self._with_term(self.rows_of[name][mark], d, ("", float(len(self.open_direction))))
+        return replace(out, open_direction=(*self.open_direction, d), lined_up=(*self.lined_up, False))
+
+    def _with_term(self, row: int, d: int, term: Term) -> "Layout":
+        pair = (term, self.terms[row][1]) if d == 0 else (self.terms[row][0], term)
+        return replace(self, terms=(*self.terms[:row], pair, *self.terms[row + 1 :]))
+
+    def first_guess(self) -> FloatArray:
+        """Affine start of all parameters, one direction at a time."""
+        theta, scales = np.zeros(6), np.zeros(self.scales)
+        opened = np.zeros(len(self.open_direction))
+        for d in (0, 1):
+            reference: tuple[float, float] | None = None
+            for name, slot in self.slots.items():
+                rows = [i for i, pair in enumerate(self.terms) if pair[d][0] == name]
+                if slot.marks.direction != d or slot.twin is not None:
+                    continue
+                zero, slope = _middle_line(np.array([self.terms[i][d][1] for i in rows]), self.position[rows, d])
+                if reference is None or slot.own is None:
+                    reference = (zero, slope)
+                    theta[2 + 2 * d : 4 + 2 * d] = slope * self.directions[d]
+                    theta[0:2] += zero * self.directions[d]
+                else:
+                    scales[slot.own : slot.own + 2] = (zero - reference[0]) / reference[1], slope / reference[1]
+            for k, e in enumerate(self.open_direction):
+                if e == d and reference is not None:
+                    rows = [i for i, pair in enumerate(self.terms) if pair[d] == ("", float(k))]
+                    opened[k] = (float(np.mean(self.position[rows, d])) - reference[0]) / reference[1]
+        return np.concatenate([theta, scales, opened])
 
 
 def arrange(axes: dict[str, AxisMarks], path: str) -> Layout:
-    """Sort the marks of a panel into observations and give a first affine guess.
+    """Sort the marks of a panel into observations.
 
     Raises
     ------
@@ -72,26 +127,21 @@ def arrange(axes: dict[str, AxisMarks], path: str) -> Layout:
     shift = everything.mean(0)
     size = float(np.hypot(*np.ptp(everything, axis=0)) / 2) or 1.0
     slots = _slots(axes)
-    directions, lined, notices = _directions(axes, path)
-    _check_equal(axes, lined)
-    start = _first_guess(axes, slots, directions, shift, size, path)
-    layout = _observations(axes, slots, lined, directions, start, shift, size)
-    layout.notices = notices
-    return layout
+    directions, lined, notices = directions_of(axes, path)
+    check_values(axes, lined)
+    check_advance(axes, np.linalg.inv(directions.T))
+    return _observations(axes, slots, lined, directions, shift, size, tuple(notices))
 
 
 def _slots(axes: dict[str, AxisMarks]) -> dict[str, Slot]:
     slots: dict[str, Slot] = {}
     own = 0
     for name, a in axes.items():
-        slot = Slot(a, float((a.level.max() + a.level.min()) / 2), float(np.ptp(a.level) / 2))
+        centre, half = float((a.level.max() + a.level.min()) / 2), float(np.ptp(a.level) / 2)
         peers = [s for s in slots.values() if s.marks.direction == a.direction and s.twin is None]
-        twin = next((s for s in peers if _same_clicks(s.marks, a)), None)
-        if twin is not None:
-            slot.twin = twin.marks.id
-        elif peers:
-            slot.own, own = own, own + 2
-        slots[name] = slot
+        twin = next((s.marks.id for s in peers if _same_clicks(s.marks, a)), None)
+        slots[name] = Slot(a, centre, half, own if peers and twin is None else None, twin)
+        own += 2 if peers and twin is None else 0
     return slots
 
 
@@ -107,131 +157,16 @@ def _same_clicks(a: AxisMarks, b: AxisMarks) -> bool:
     return bool(np.abs(miss).max() <= 1e-6 * np.ptp(lb))
 
 
-def _line(at: FloatArray) -> tuple[FloatArray, float, float]:
-    """Direction of the best line through points, their extent along it and the largest distance from it [px]."""
-    r = at - at.mean(0)
-    along = np.linalg.svd(r, full_matrices=False)[2][0]
-    return along, float(np.ptp(r @ along)), float(np.abs(r @ np.array([-along[1], along[0]])).max())
-
-
-def _gradient(a: AxisMarks) -> FloatArray:
-    """Direction in which the values of scattered marks rise: plane through (x, y, level)."""
-    r = a.at - a.at.mean(0)
-    g = np.linalg.lstsq(r, a.level - a.level.mean(), rcond=None)[0]
-    return g / (np.hypot(*g) or 1.0)
-
-
-def _directions(axes: dict[str, AxisMarks], path: str) -> tuple[FloatArray, dict[str, bool], list[tuple[str, str]]]:
-    """Unit vectors along which u and v grow (rows), and which axes have their marks on one line."""
-    lines = {name: _line(a.at) for name, a in axes.items()}
-    lined = {n: off <= max(LINED_UP_PX, LINED_UP_SHARE * extent) for n, (_, extent, off) in lines.items()}
-    notices: list[tuple[str, str]] = []
-    of = {d: [n for n, a in axes.items() if a.direction == d] for d in (ALONG_FLOW, ACROSS_FLOW)}
-    everything = np.concatenate([a.at for a in axes.values()])
-    along, extent, off = _line(everything)
-    if off <= max(LINED_UP_PX, LINED_UP_SHARE * extent):
-        first = axes[of[ALONG_FLOW][0]]
-        raise CalibrationError(
-            "All marks of the panel lie on one line, so they cannot place two axes. Put the marks of the other axis along its own line.",
-            path=f"{first.path}.marks",
-            code="collinear",
-        )
-
-    def best(d: int) -> FloatArray | None:
-        """Direction of growth in d: the longest set of lined-up marks."""
-        names = [n for n in of[d] if lined[n]]
-        return max(((lines[n][1], lines[n][0]) for n in names), key=lambda pair: pair[0])[1] if names else None
-
-    grow = [best(ALONG_FLOW), best(ACROSS_FLOW)]
-    if grow[0] is not None and grow[1] is not None:
-        turn = _angle_deg(grow[0], grow[1])
-        if turn < 90 - LEAN_LIMIT_DEG:
-            if turn < 5:
-                other = axes[of[ACROSS_FLOW][0]]
-                raise CalibrationError(
-                    f"The marks of the {other.id} axis run the same way as those of the {of[ALONG_FLOW][0]} axis. "
-                    "The two axes must cross: check which marks belong to which axis.",
-                    path=f"{other.path}.marks",
-                    code="parallel",
-                )
-            # One set runs obliquely over the panel: the one that fits the page worse is taken as scattered over crossings.
-            d = int(_off_page(grow[1]) > _off_page(grow[0]))
-            for n in of[d]:
-                lined[n] = False
-            grow[d] = None
-            notices.append(
-                ("calibration-direction", f"The {' and '.join(of[d])} marks do not run along one axis line; right angles are assumed.")
-            )
-    for d in (0, 1):
-        if grow[d] is None:
-            # Scattered marks of the other direction show it: lines of equal v are level where v does not change.
-            flat = [_gradient(axes[n]) for n in of[1 - d] if not lined[n] and len(axes[n].typed) >= 3 and lines[n][2] > 0.05 * lines[n][1]]
-            reference = grow[1 - d] if grow[1 - d] is not None else (_gradient(axes[of[1 - d][0]]))
-            base = flat[0] if flat else reference
-            grow[d] = np.array([-base[1], base[0]])
-    return np.array(grow), lined, notices
-
-
-def _angle_deg(a: FloatArray, b: FloatArray) -> float:
-    """Angle between two directions, 0 to 90 degrees."""
-    return float(np.degrees(np.arcsin(np.clip(abs(a[0] * b[1] - a[1] * b[0]), 0, 1))))
-
-
-def _off_page(a: FloatArray) -> float:
-    """How far a direction is from the page's own, 0 to 1."""
-    return float(np.abs(a).min() / np.abs(a).max())
-
-
-def _check_equal(axes: dict[str, AxisMarks], lined: dict[str, bool]) -> None:
-    for name, a in axes.items():
-        if not lined[name]:
-            continue
-        for i in range(len(a.typed)):
-            for j in range(i):
-                if a.typed[i] == a.typed[j] and np.hypot(*(a.at[i] - a.at[j])) > LINED_UP_PX:
-                    raise CalibrationError(
-                        f"Marks {j + 1} and {i + 1} of the {name} axis both say {a.typed[i]:g} at different places. Correct one.",
-                        path=f"{a.path}.marks[{i}].value",
-                        code="equal-values",
-                    )
-
-
-def _first_guess(
-    axes: dict[str, AxisMarks], slots: dict[str, Slot], directions: FloatArray, shift: FloatArray, size: float, path: str
-) -> FloatArray:
-    """Affine start in scaled pixels, from oblique coordinates along the two directions; also starts alpha and beta."""
-    oblique = np.linalg.inv(directions.T)
-    theta = np.zeros(6)
-    scales: list[float] = []
-    for d in (0, 1):
-        reference: tuple[float, float] | None = None
-        for name, slot in slots.items():
-            a = axes[name]
-            if a.direction != d or slot.twin is not None:
-                continue
-            position = ((a.at - shift) / size) @ oblique.T[:, d]
-            zero, slope = np.polynomial.polynomial.polyfit(slot.z, position, 1)
-            if abs(slope) * size < LINED_UP_PX:
-                raise CalibrationError(
-                    f"The marks of the {name} axis do not move along it as their values grow. Check values and axis.",
-                    path=f"{a.path}.marks",
-                    code="parallel",
-                )
-            if reference is None:
-                reference = (zero, slope)
-                theta[2 + 2 * d : 4 + 2 * d] = slope * directions[d]
-                theta[0:2] += zero * directions[d]
-            else:
-                scales += [(zero - reference[0]) / reference[1], slope / reference[1]]
-    own = sum(2 for s in slots.values() if s.own is not None)
-    ordered = np.zeros(own)
-    k = 0
-    for d in (0, 1):
-        for slot in slots.values():
-            if slot.own is not None and slot.marks.direction == d:
-                ordered[slot.own : slot.own + 2] = scales[k : k + 2]
-                k += 2
-    return np.concatenate([theta, ordered])
+def _middle_line(z: FloatArray, position: FloatArray) -> tuple[float, float]:
+    """Line through points by the median of pairwise slopes (Theil 1950, Sen 1968): a wrong value among several does not turn it."""
+    i, j = np.triu_indices(len(z), 1)
+    rise, run = position[j] - position[i], z[j] - z[i]
+    if not np.any(run):
+        return float(np.median(position)), 1.0
+    slope = float(np.median(rise[run != 0] / run[run != 0]))
+    if slope == 0:
+        slope = float(np.ptp(position) / np.ptp(z))
+    return float(np.median(position - slope * z)), slope
 
 
 def _observations(
@@ -239,65 +174,41 @@ def _observations(
     slots: dict[str, Slot],
     lined: dict[str, bool],
     directions: FloatArray,
-    start: FloatArray,
     shift: FloatArray,
     size: float,
+    notices: tuple[tuple[str, str], ...],
 ) -> Layout:
     at: list[FloatArray] = []
-    names: tuple[list[str | None], list[str | None]] = ([], [])
-    z: list[list[float]] = []
-    marks_of: dict[str, list[int]] = {}
+    terms: list[list[Term | None]] = []
+    rows_of: dict[str, tuple[int, ...]] = {}
     for name, a in axes.items():
-        d, marks_of[name] = a.direction, []
+        d, twin, rows = a.direction, slots[name].twin is not None, []
         for i, place in enumerate(a.at):
-            row = next((k for k, p in enumerate(at) if np.abs(p - place).max() < 0.01), None)
-            if row is not None and names[d][row] is not None and slots[name].twin is None:
-                row = None
+            row = next((k for k, p in enumerate(at) if np.abs(p - place).max() < 0.01 and (twin or terms[k][d] is None)), None)
             if row is None:
                 row = len(at)
                 at.append(place)
-                names[0].append(None)
-                names[1].append(None)
-                z.append([0.0, 0.0])
-            if slots[name].twin is None:
-                names[d][row] = name
-                z[row][d] = float(slots[name].z[i])
-            marks_of[name].append(row)
+                terms.append([None, None])
+            if not twin:
+                terms[row][d] = (name, float(slots[name].z[i]))
+            rows.append(row)
+        rows_of[name] = tuple(rows)
     points = np.array(at)
-    open_ = np.full((len(at), 2), -1)
-    open_direction: list[int] = []
-    lined_up: list[bool] = []
-    opened: list[float] = []
     oblique = np.linalg.inv(directions.T)
     position = ((points - shift) / size) @ oblique.T
-    steps = np.array([np.hypot(*start[2:4]), np.hypot(*start[4:6])]) * np.sign([start[2:4] @ directions[0], start[4:6] @ directions[1]])
-    zero = oblique @ start[0:2]
+    open_direction: list[int] = []
+    lined_up: list[bool] = []
     for name, a in axes.items():
-        if slots[name].twin is not None:
-            continue
         d = 1 - a.direction
-        rows = [r for r in dict.fromkeys(marks_of[name]) if names[d][r] is None and open_[r, d] < 0]
+        rows_open = [r for r in dict.fromkeys(rows_of[name]) if terms[r][d] is None]
         reach = max(LINED_UP_PX, 2 * LINED_UP_SHARE * size) / size
-        for group in [rows] if lined[name] and rows else _clusters(rows, position[:, d], reach):
+        for group in [rows_open] if lined[name] and rows_open else _clusters(rows_open, position[:, d], reach):
             for r in group:
-                open_[r, d] = len(opened)
-            opened.append(float((np.mean(position[group, d]) - zero[d]) / steps[d]))
+                terms[r][d] = ("", float(len(open_direction)))
             open_direction.append(d)
             lined_up.append(len(group) > 1)
-    return Layout(
-        slots,
-        points,
-        names,
-        np.array(z),
-        open_,
-        open_direction,
-        lined_up,
-        np.concatenate([start, opened]),
-        directions,
-        shift,
-        size,
-        marks_of,
-    )
+    pairs = tuple((u, v) for u, v in terms if u is not None and v is not None)
+    return Layout(slots, points, pairs, tuple(open_direction), tuple(lined_up), position, directions, shift, size, rows_of, notices)
 
 
 def _clusters(rows: list[int], position: FloatArray, reach: float) -> list[list[int]]:

@@ -8,7 +8,7 @@ from ..errors import CalibrationError
 from ..records import FloatArray
 from . import plane
 from .layout import Layout
-from .solve import Solution, coordinate
+from .solve import Solution
 
 MARGIN_SHARE = 0.12
 """Curves may run beyond the outer marks, and the outer marks need not be the outer ticks."""
@@ -23,7 +23,8 @@ def derive(layout: Layout, solution: Solution, page_size: tuple[int, int] | None
         if slot.twin is None:
             d = slot.marks.direction
             for z in slot.z:
-                c, _ = coordinate(layout, solution.x, p, (name, float(z)))
+                fixed, row = layout.term_row((name, float(z)), p, len(solution.x))
+                c = fixed + float(row @ solution.x)
                 low[d], high[d] = min(low[d], c), max(high[d], c)
     margin = MARGIN_SHARE * (high - low)
     for _ in range(8):

@@ -1,28 +1,37 @@
-"""Mistyped values: a mark whose value contradicts the others is named with the value that would fit.
+"""What the marks say when they contradict each other: a mistyped value, two swapped values, a photo, or warped paper.
 
-Each mark of a contradicting axis is left out in turn; where the rest then agree, the value at the left-out place is read.
-With four marks only one mark qualifies. With three, any one can be left out, and what decides is that printed ticks
-carry round numbers; where that does not decide, all are named. Values typed the wrong way round are tried as well.
+Each reading of the marks is scored like a model (log posterior up to a constant): how well the plane fits with it, how likely
+its values are as printed ticks (round numbers on a common step), and how rare such a slip is. The best reading is taken; a
+second one nearly as good is reported as well ("one of these").
 """
 
-from collections.abc import Callable
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 
+from ..records import FloatArray
 from .layout import Layout
 from .marks import AxisMarks
-from .solve import Solution
+from .solve import CLICK_SIGMA_PX, TILT_SIGMA, Solution, solve
 
-WORST_PX = 8.0
-WORST_SHARE = 0.008
-"""A mark this far off (pixels, and share of its axis) is no click noise and no ordinary paper warp."""
-CLEARLY_ROUNDER = 6.0
+LOG_PRIOR_TYPO = float(np.log(0.003))
+LOG_PRIOR_SWAP = float(np.log(0.001))
+LOG_PRIOR_PHOTO = float(np.log(0.02))
+"""How often a value is mistyped, two are swapped, a sheet is a photo taken at an angle (our own estimates, no source)."""
+WARP_SIGMAS_PX = ((CLICK_SIGMA_PX, float(np.log(0.88))), (2.0, float(np.log(0.08))), (4.0, float(np.log(0.03))), (8.0, float(np.log(0.01))))
+"""Scatter of marks about a flat plane, with log prior: good paper, and paper that is warped by so much."""
+NEARLY_AS_GOOD = 3.0
+"""Readings within this of the best (odds of 20 to 1) cannot be told apart."""
+LEAST_MISS_PX = 6.0
+"""A value that fits this well is not called mistyped."""
+MOST_TICKS = 400.0
+STEPS = (5.0, 2.5, 2.0, 1.0)
 
 
 @dataclass(frozen=True, slots=True)
 class Suspect:
-    """A mark that may be mistyped: ``typed`` sits where ``fits`` belongs; ``sure`` when no other mark would explain it as well."""
+    """A mark that may be mistyped: ``typed`` sits where ``fits`` belongs; ``sure`` when no other reading explains the marks as well."""
 
     axis: str
     mark: int
@@ -42,149 +51,261 @@ class Suspect:
         }
 
 
-Solver = Callable[[dict[str, AxisMarks]], tuple[Layout, Solution]]
-Reader = Callable[[Layout, Solution, str, np.ndarray], float]
+@dataclass(frozen=True, slots=True, eq=False)
+class Reading:
+    """One way to read the marks: the layout with its values, its plane, its score, and the values it changes [(axis, mark, value)]."""
+
+    layout: Layout
+    solution: Solution
+    score: float
+    changes: tuple[tuple[str, int, float], ...] = ()
+
+    @property
+    def projective(self) -> bool:
+        return self.solution.plane_size == 8
 
 
-def axis_misfit_px(layout: Layout, solution: Solution, name: str) -> float:
-    """Largest residual of an axis's marks [px]."""
-    return float(np.hypot(*solution.residuals_px[layout.marks_of[name]].T).max())
+@dataclass(frozen=True, slots=True, eq=False)
+class Verdict:
+    """The reading to use, with what to tell: suspects, and whether a photo is assumed from uneven spacing alone."""
+
+    reading: Reading
+    suspects: tuple[Suspect, ...]
+    photo_doubtful: bool
 
 
-def limit_px(marks: AxisMarks) -> float:
-    """How far a mark may be off before its value is doubted [px]."""
-    extent = float(np.hypot(*np.ptp(marks.at, axis=0)))
-    return max(WORST_PX, WORST_SHARE * extent)
+def judge(layout: Layout, axes: dict[str, AxisMarks], aspect: float) -> Verdict:
+    """Find the best reading of the marks; plain when nothing is wrong."""
+    plain = _read(layout, axes, (), False, aspect)
+    if plain.solution.chi2 <= max(plain.solution.dof, 0.0) + 3.5 * np.sqrt(2 * max(plain.solution.dof, 1.0)):
+        return Verdict(plain, (), False)
+    readings = [plain, _read(layout, axes, (), True, aspect)]
+    readings += _with_slips(readings[0], axes, aspect)
+    best = max(readings, key=lambda r: r.score)
+    if best.score < readings[1].score + 12 and best.changes:
+        readings += _with_slips(readings[1], axes, aspect)
+        best = max(readings, key=lambda r: r.score)
+    if not best.changes:
+        near = [r for r in readings if r.changes and r.score > best.score - NEARLY_AS_GOOD]
+        return Verdict(best, (), best.projective and (bool(near) or not _lines_converge(best.layout)))
+    rivals = [
+        r
+        for r in readings
+        if r.changes and r is not best and r.score > best.score - NEARLY_AS_GOOD and r.changes[0][0] == best.changes[0][0]
+    ]
+    suspects = _suspects(best, axes, sure=not rivals)
+    for r in rivals:
+        suspects += _suspects(r, axes, sure=False)
+    if not rivals:
+        # A second slip is looked for only where the first one is clear.
+        again = [best, *_with_slips(best, axes, aspect)]
+        second = max(again, key=lambda r: r.score)
+        if second is not best:
+            close = [r for r in again if r is not second and r is not best and r.score > second.score - NEARLY_AS_GOOD]
+            suspects += _suspects(second, axes, sure=not close)
+            best = best if close else second
+    return Verdict(best, tuple(dict.fromkeys(suspects)), False)
 
 
-def find_suspects(axes: dict[str, AxisMarks], solver: Solver, reader: Reader) -> tuple[list[Suspect], dict[str, AxisMarks]]:
-    """Doubtful marks of all axes, and the axes as they should be used: a sure suspect left out, a sure swap put right.
+def _read(
+    layout: Layout,
+    axes: dict[str, AxisMarks],
+    changes: tuple[tuple[str, int, float], ...],
+    projective: bool,
+    aspect: float,
+    x: FloatArray | None = None,
+) -> Reading:
+    if projective and x is None:
+        x = solve(layout, square=False, robust=False, aspect=aspect).x
+    solution = solve(layout, projective=projective, start=x, robust=False, aspect=aspect)
+    score = _fit_score(solution)
+    for name, a in axes.items():
+        level = a.level.copy()
+        for axis, mark, value in changes:
+            if axis == name:
+                level[mark] = np.log10(value) if a.log else value
+        score -= tick_cost(a.printed(level), a.log)
+    if projective:
+        score += LOG_PRIOR_PHOTO
+    if (
+        len(changes) == 2
+        and {changes[0][2], changes[1][2]} == {float(axes[c[0]].typed[c[1]]) for c in changes}
+        and changes[0][0] == changes[1][0]
+    ):
+        score += LOG_PRIOR_SWAP
+    else:
+        score += LOG_PRIOR_TYPO * len(changes)
+    return Reading(layout, solution, score, changes)
 
-    ``solver`` fits a set of axes; ``reader`` gives the level of an axis at a pixel from such a fit.
-    """
-    suspects: list[Suspect] = []
-    for name, marks in list(axes.items()):
-        if len(marks.typed) < 3:
+
+def _fit_score(solution: Solution) -> float:
+    """Log likelihood over the scatter levels; for a photo with the Laplace factor of its two extra parameters
+    (Kass and Raftery 1995, doi:10.1080/01621459.1995.10476572)."""
+    dof = max(solution.dof, 1.0)
+    levels = [
+        log_prior - 0.5 * solution.chi2 * (CLICK_SIGMA_PX / sigma) ** 2 - dof * np.log(sigma / CLICK_SIGMA_PX)
+        for sigma, log_prior in WARP_SIGMAS_PX
+    ]
+    score = float(np.logaddexp.reduce(levels))
+    if solution.plane_size == 8:
+        covariance = solution.known_covariance[6:8, 6:8]
+        score += 0.5 * float(np.linalg.slogdet(covariance)[1]) - 2 * float(np.log(TILT_SIGMA))
+    return score
+
+
+def _with_slips(base: Reading, axes: dict[str, AxisMarks], aspect: float) -> list[Reading]:
+    out: list[Reading] = []
+    layout = base.layout
+    done = {(axis, mark) for axis, mark, _ in base.changes}
+    for name, a in axes.items():
+        slot = layout.slots[name]
+        if len(a.typed) < 3 or slot.twin is not None:
             continue
-        layout, solution = solver(axes)
-        worst = axis_misfit_px(layout, solution, name)
-        # Least squares spreads one wrong value over its neighbours: a third of the miss is what the worst mark shows.
-        if worst < limit_px(marks) / 3:
+        for mark in range(len(a.typed)):
+            if (name, mark) not in done:
+                value, rest = _fitting_value(base, axes, name, mark, aspect)
+                if value is not None:
+                    changed = layout.with_value(name, mark, float(np.log10(value)) if a.log else value)
+                    out.append(_read(changed, axes, (*base.changes, (name, mark, value)), base.projective, aspect, rest))
+        for i in range(len(a.typed)):
+            for j in range(i):
+                if not base.changes and a.typed[i] != a.typed[j]:
+                    swapped = layout.with_value(name, i, float(a.level[j])).with_value(name, j, float(a.level[i]))
+                    changes = ((name, j, float(a.typed[i])), (name, i, float(a.typed[j])))
+                    out.append(_read(swapped, axes, changes, base.projective, aspect))
+    return out
+
+
+def _fitting_value(base: Reading, axes: dict[str, AxisMarks], name: str, mark: int, aspect: float) -> tuple[float | None, FloatArray]:
+    """The most tick-like printed value at a mark's place as the other marks see it (None where the typed one does), and their plane."""
+    a, slot = axes[name], base.layout.slots[name]
+    opened = base.layout.with_open(name, mark)
+    found = solve(opened, projective=base.projective, robust=False, aspect=aspect)
+    p, size = found.plane_size, len(found.x)
+    scale = np.zeros(size)
+    if slot.own is not None:
+        alpha, beta = found.x[p + slot.own], found.x[p + slot.own + 1]
+        z = float((found.x[-1] - alpha) / beta)
+        scale[-1], scale[p + slot.own], scale[p + slot.own + 1] = 1 / beta, -1 / beta, -z / beta
+    else:
+        z = float(found.x[-1])
+        scale[-1] = 1.0
+    level = slot.centre + slot.half * z
+    sigma = abs(slot.half) * np.sqrt(max(float(scale @ found.known_covariance @ scale), 0.0))
+    px = (
+        np.hypot(*found.x[2 + 2 * a.direction : 4 + 2 * a.direction])
+        * base.layout.size
+        * (abs(beta) if slot.own is not None else 1.0)
+        / abs(slot.half)
+    )
+    if abs(level - a.level[mark]) * px < LEAST_MISS_PX or abs(level - a.level[mark]) < 2.5 * sigma or not np.isfinite(sigma):
+        return None, found.x[:-1]
+    low, high = float(a.printed(level - 3 * sigma)), float(a.printed(level + 3 * sigma))
+    others = np.delete(a.typed, mark)
+    best, best_score = None, -np.inf
+    for value in round_values(low, high, float(a.printed(level))):
+        if value in others or (a.log and value <= 0):
             continue
-        found = _examine(axes, name, solver, reader)
-        suspects += found
-        if len({s.mark for s in found if s.swapped_with is None}) == 1 and found[0].sure:
-            axes = {**axes, name: marks.without(found[0].mark)}
-        elif found and found[0].sure and found[0].swapped_with is not None:
-            typed = marks.typed.copy()
-            i, j = found[0].mark, found[0].swapped_with
-            typed[[i, j]] = typed[[j, i]]
-            axes = {**axes, name: marks.retyped(typed)}
-    return suspects, axes
+        at = np.log10(value) if a.log else value
+        score = -0.5 * ((at - level) / sigma) ** 2 - tick_cost(np.append(others, value), a.log)
+        if score > best_score:
+            best, best_score = value, score
+    return best, found.x[:-1]
 
 
-def _examine(axes: dict[str, AxisMarks], name: str, solver: Solver, reader: Reader) -> list[Suspect]:
-    marks = axes[name]
-    limit = limit_px(marks)
-    candidates: list[tuple[float, Suspect]] = []
-    for i in range(len(marks.typed)):
-        rest = marks.without(i)
-        if np.ptp(rest.typed) == 0:
-            continue
-        layout, solution = solver({**axes, name: rest})
-        level = reader(layout, solution, name, marks.at[i])
-        per_px = np.ptp(rest.level) / max(float(np.hypot(*np.ptp(rest.at, axis=0))), 1.0)
-        miss_px = abs(level - marks.level[i]) / per_px
-        lever = 1.0 + 2.0 * _outside(marks.at[i], rest.at)
-        if axis_misfit_px(layout, solution, name) > limit / 3 or miss_px < limit * lever:
-            continue
-        tolerance = 2.5 * per_px * lever
-        low, high = float(marks.printed(level - tolerance)), float(marks.printed(level + tolerance))
-        value, step = roundest(low, high, float(marks.printed(level)))
-        candidates.append((step / (high - low), Suspect(name, i, float(marks.typed[i]), value, False)))
-    swaps: list[Suspect] = []
-    for i in range(len(marks.typed)):
-        for j in range(i):
-            typed = marks.typed.copy()
-            typed[[i, j]] = typed[[j, i]]
-            if typed[i] == typed[j]:
-                continue
-            layout, solution = solver({**axes, name: marks.retyped(typed)})
-            if axis_misfit_px(layout, solution, name) < limit / 3:
-                swaps.append(Suspect(name, j, float(marks.typed[j]), float(marks.typed[i]), True, i))
-    if len(swaps) == 1:
-        return swaps
-    candidates.sort(key=lambda c: -c[0])
-    if not candidates:
-        return []
-    if len(candidates) == 1 or candidates[0][0] > CLEARLY_ROUNDER * candidates[1][0]:
-        best = candidates[0][1]
-        return [Suspect(best.axis, best.mark, best.typed, best.fits, True)]
-    floor = candidates[0][0] / CLEARLY_ROUNDER
-    return [s for score, s in candidates if score >= floor]
-
-
-def _outside(place: np.ndarray, rest: np.ndarray) -> float:
-    """How far a place lies beyond the others, in their extents: 0 between them."""
-    reach = float(np.hypot(*np.ptp(rest, axis=0))) or 1.0
-    far = float(np.hypot(*(rest - place).T).max())
-    return max(far / reach - 1.0, 0.0)
-
-
-def roundest(low: float, high: float, value: float) -> tuple[float, float]:
-    """The number in [low, high] that is a multiple of the largest 1, 2, 2.5 or 5 x 10^k, and that step.
+def round_values(low: float, high: float, value: float) -> list[float]:
+    """Numbers in [low, high] from the roundest down: multiples of 5, 2.5, 2 and 1 x 10^k near ``value``.
 
     Examples
     --------
-    >>> roundest(19.7, 20.4, 20.1)
-    (20.0, 20.0)
-    >>> roundest(62.2, 62.8, 62.6)
-    (62.5, 2.5)
+    >>> round_values(19.7, 20.4, 20.1)
+    [20.0, 20.1]
+    >>> round_values(62.2, 62.8, 62.6)
+    [62.5, 62.6]
     """
-    if low <= 0 <= high:
-        return 0.0, max(abs(low), abs(high)) * 10
-    top = int(np.ceil(np.log10(max(abs(low), abs(high))))) + 1
-    for power in range(top, top - 12, -1):
-        for head in (5.0, 2.5, 2.0, 1.0):
+    top = int(np.ceil(np.log10(max(abs(low), abs(high), 1e-300)))) + 1
+    bottom = int(np.floor(np.log10(max(high - low, 1e-300))))
+    out: list[float] = [0.0] if low <= 0 <= high else []
+    for power in range(top, bottom - 1, -1):
+        for head in STEPS:
             step = head * 10.0**power
-            k = round(value / step)
-            for multiple in (k, k - 1, k + 1):
-                if low <= multiple * step <= high and multiple != 0:
-                    return float(f"{multiple * step:.12g}"), step
-    return value, high - low
+            number = float(f"{round(value / step) * step:.12g}")
+            if low <= number <= high and number not in out:
+                out.append(number)
+    return out
 
 
-def describe(suspects: list[Suspect], axes: dict[str, AxisMarks]) -> list[tuple[str, str]]:
+def tick_cost(values: Sequence[float] | np.ndarray, log: bool) -> float:
+    """Minus log probability that an axis's printed ticks are these: k ln(number of ticks of the coarsest common step).
+
+    On a log scale ticks have one leading digit, some two.
+    """
+    values = np.asarray(values, dtype=np.float64)
+    if log:
+        cost = 0.0
+        for v in values:
+            lead = v / 10.0 ** np.floor(np.log10(v) + 1e-12)
+            cost += np.log(15.0 if _whole(lead) else 60.0 if _whole(lead * 10) or _whole(lead * 4) else MOST_TICKS)
+        return float(cost)
+    span = float(np.ptp(values)) or 1.0
+    for power in range(int(np.ceil(np.log10(span))), int(np.floor(np.log10(span))) - 5, -1):
+        for head in STEPS:
+            step = head * 10.0**power
+            if step <= span * (1 + 1e-9) and all(_whole(v / step) for v in values):
+                return float(len(values) * np.log(min(max(span / step, 2.0), MOST_TICKS)))
+    return float(len(values) * np.log(MOST_TICKS))
+
+
+def _whole(x: float) -> bool:
+    return bool(abs(x - round(x)) <= 1e-6 * max(1.0, abs(x)))
+
+
+def _lines_converge(layout: Layout) -> bool:
+    """Whether two lines of marks in one direction, or many crossings, speak for a photo beside the spacing of values."""
+    directions = [d for d, lined in zip(layout.open_direction, layout.lined_up, strict=True) if lined]
+    both = sum(bool(u[0]) and bool(v[0]) for u, v in layout.terms)
+    return directions.count(0) >= 2 or directions.count(1) >= 2 or both >= 4
+
+
+def _suspects(reading: Reading, axes: dict[str, AxisMarks], *, sure: bool) -> list[Suspect]:
+    changes = reading.changes
+    if len(changes) >= 2 and changes[-1][0] == changes[-2][0]:
+        (name, i, fits), (_, j, other) = changes[-2:]
+        if fits == axes[name].typed[j] and other == axes[name].typed[i]:
+            return [Suspect(name, i, float(axes[name].typed[i]), fits, sure, j)]
+    name, mark, fits = changes[-1]
+    return [Suspect(name, mark, float(axes[name].typed[mark]), fits, sure)]
+
+
+def describe(suspects: Sequence[Suspect], axes: dict[str, AxisMarks]) -> list[tuple[str, str]]:
     """One sentence (code, message) for each axis that has suspects."""
     out: list[tuple[str, str]] = []
     for name in dict.fromkeys(s.axis for s in suspects):
         mine = [s for s in suspects if s.axis == name]
-        first = mine[0]
         unit = "" if axes[name].unit == "1" else f" {axes[name].unit}"
-        if first.swapped_with is not None:
-            code, text = (
-                "calibration-swapped",
-                (
-                    f"The {name} marks typed {first.typed:g} and {first.fits:g} have each other's place. "
-                    "The map reads them the other way round until you correct them."
-                ),
-            )
-        elif first.sure:
-            code, text = (
-                "calibration-mistyped",
-                (
-                    f"The {name} mark typed {first.typed:g} sits where {_shown(first.fits)}{unit} belongs. "
-                    "Correct it; the map leaves this mark out until then."
-                ),
-            )
+        if all(s.sure for s in mine):
+            out += [_sure_message(s, name, unit) for s in mine]
         else:
-            each = " or ".join(f"{s.typed:g} (would fit as {_shown(s.fits)}{unit})" for s in mine)
-            code, text = (
-                "calibration-mistyped",
-                (f"The {name} marks contradict each other. One of these is mistyped: {each}. Check them, or add a fourth mark."),
+            each = " or ".join(
+                f"{s.typed:g} and {s.fits:g} swapped"
+                if s.swapped_with is not None
+                else f"{s.typed:g} (would fit as {_shown(s.fits)}{unit})"
+                for s in mine
             )
-        out.append((code, text))
+            text = f"The {name} marks contradict each other. One of these is mistyped: {each}. Check them, or add a fourth mark."
+            out.append(("calibration-mistyped", text))
     return out
+
+
+def _sure_message(s: Suspect, name: str, unit: str) -> tuple[str, str]:
+    if s.swapped_with is not None:
+        return "calibration-swapped", (
+            f"The {name} marks typed {s.typed:g} and {s.fits:g} have each other's place. "
+            "The map reads them the other way round until you correct them."
+        )
+    return "calibration-mistyped", (
+        f"The {name} mark typed {s.typed:g} sits where {_shown(s.fits)}{unit} belongs. Correct it; the map leaves this mark out until then."
+    )
 
 
 def _shown(value: float) -> str:

@@ -7,8 +7,8 @@ unlikely (a few pixels in a thousand), and a wrong one moves the map by no more 
 
 import numpy as np
 
-from .layout import Layout
-from .solve import Solution, Tie, coordinate
+from .layout import Layout, Term
+from .solve import Solution, Tie
 
 REACH_PX = 4.0
 REACH_SIGMAS = 3.0
@@ -18,45 +18,41 @@ PROJECTIVE_REACH_SHARE = 0.02
 
 def find_ties(layout: Layout, solution: Solution) -> tuple[Tie, ...]:
     """Ties that the free solution supports."""
+    covariance = solution.covariance
     ties: list[Tie] = []
     for d in (0, 1):
-        ticks = {
+        ticks: dict[str, list[Term]] = {
             name: [(name, float(z)) for z in slot.z]
             for name, slot in layout.slots.items()
             if slot.marks.direction == d and slot.twin is None
         }
-        opened = [("open", float(k)) for k, e in enumerate(layout.open_direction) if e == d and layout.lined_up[k]]
+        opened: list[Term] = [("", float(k)) for k, e in enumerate(layout.open_direction) if e == d and layout.lined_up[k]]
         for i, line in enumerate(opened):
             for candidates in [*ticks.values(), opened[:i]]:
-                near = _nearest(layout, solution, d, line, candidates)
+                near = _nearest(layout, solution, covariance, d, line, candidates)
                 if near is not None:
                     ties.append(Tie(d, line, near))
         names = list(ticks)
         for i, name in enumerate(names):
             for other in names[:i]:
-                pairs = [(t, _nearest(layout, solution, d, t, ticks[other])) for t in ticks[name]]
+                pairs = [(t, _nearest(layout, solution, covariance, d, t, ticks[other])) for t in ticks[name]]
                 found = [Tie(d, t, n) for t, n in pairs if n is not None]
                 if len({tie.second for tie in found}) >= 2:
                     ties += found
     return tuple(ties)
 
 
-def _nearest(
-    layout: Layout, solution: Solution, d: int, term: tuple[str, float], candidates: list[tuple[str, float]]
-) -> tuple[str, float] | None:
+def _nearest(layout: Layout, solution: Solution, covariance: np.ndarray, d: int, term: Term, candidates: list[Term]) -> Term | None:
     best, best_gap = None, np.inf
-    p = solution.plane_size
+    p, size = solution.plane_size, len(solution.x)
+    scale = np.hypot(*solution.x[2 + 2 * d : 4 + 2 * d]) * layout.size
+    reach = max(REACH_PX, PROJECTIVE_REACH_SHARE * layout.size) if p == 8 else REACH_PX
+    a, row_a = layout.term_row(term, p, size)
     for other in candidates:
-        a, da = coordinate(layout, solution.x, p, term)
-        b, db = coordinate(layout, solution.x, p, other)
-        row = np.zeros(len(solution.x))
-        for slopes, sign in ((da, 1.0), (db, -1.0)):
-            for k, s in slopes.items():
-                row[k] += sign * s
-        scale = np.hypot(*solution.x[2 + 2 * d : 4 + 2 * d]) * layout.size
-        gap = abs(a - b) * scale
-        sigma = scale * np.sqrt(max(float(row @ solution.covariance @ row), 0.0))
-        reach = max(REACH_PX, PROJECTIVE_REACH_SHARE * layout.size) if p == 8 else REACH_PX
+        b, row_b = layout.term_row(other, p, size)
+        row = row_a - row_b
+        gap = abs(a - b + float(row @ solution.x)) * scale
+        sigma = scale * np.sqrt(max(float(row @ covariance @ row), 0.0))
         if gap <= min(reach, REACH_SIGMAS * sigma) and gap < best_gap:
             best, best_gap = other, gap
     return best
