@@ -154,7 +154,8 @@ def _meeting(seen: Presence, last: int, unit: float) -> float | None:
     so the point lies half way between the middles of the two dark runs, whatever the angle.
     """
     low, high = max(last - int(45 * unit), 0), min(last + int(30 * unit), len(seen.s))
-    middles = []
+    middles: list[float] = []
+    reach = 0.0
     for side in (seen.left, seen.right):
         dark = side[low:high] > 0.4
         edge = np.flatnonzero(np.diff(np.r_[0, dark.astype(np.int8), 0])).reshape(-1, 2)
@@ -162,9 +163,12 @@ def _meeting(seen: Presence, last: int, unit: float) -> float | None:
         if not len(edge):
             return None
         centre = edge.mean(axis=1) - 0.5 + low
-        middles.append(float(centre[np.argmin(np.abs(centre - last))]))
+        nearest = int(np.argmin(np.abs(centre - last)))
+        middles.append(float(centre[nearest]))
+        reach = max(reach, 0.5 * float(edge[nearest, 1] - edge[nearest, 0]))
     point = 0.5 * (middles[0] + middles[1])
-    if not last - 25 * unit <= point <= last + 3 * unit:
+    # Ink goes on behind the meeting point as far as the other line is cut by the path, no further; else the lines cross.
+    if not -3.0 * unit <= last - point <= 1.15 * reach + 1.5 * unit:
         return None
     # The line must stop there: no ink of its own beyond the other line's.
     beyond = int(max(max(middles), last)) + int(8 * unit)

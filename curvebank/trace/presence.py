@@ -2,6 +2,7 @@
 
 from dataclasses import dataclass
 
+import cv2
 import numpy as np
 import numpy.typing as npt
 
@@ -49,6 +50,7 @@ def presence(prepared: Prepared, axis: Axis, shape: Shape, s: FloatArray) -> Pre
     reach = shape.half_extent + 4.0
     offsets = np.arange(-reach, reach + 0.25, 0.5)
     band = sample(prepared.clean, axis, s, offsets, 1.0)
+    band = cv2.blur(band, (1, 3), borderType=cv2.BORDER_REPLICATE)  # single noisy rows do not break a line
     under = sample(prepared.printed, axis, s, np.array([-0.5, 0.0, 0.5]), 1.0).max(axis=1)
     core = np.abs(offsets) <= max(0.5 * shape.width - 0.3, 0.5)
     near = (np.abs(offsets) > shape.half_extent) & (np.abs(offsets) <= shape.half_extent + 3.0)
@@ -79,4 +81,5 @@ def rhythm(seen: Presence, unit: float) -> Rhythm:
         usual = float(np.median(real))
         regular = real[real < 2.5 * usual + 3]
         return Rhythm(True, float(np.percentile(regular, 90)) * 1.4 + 3.0 * unit, 0.6 * float(np.percentile(inked, 15)))
-    return Rhythm(False, 4.0 * unit, 14.0 * unit)
+    # A solid line may fade for a while; what resumes it must be long and straight, so letters behind its end do not.
+    return Rhythm(False, 10.0 * unit, 14.0 * unit)
