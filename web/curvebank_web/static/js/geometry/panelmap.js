@@ -79,8 +79,8 @@ export function fromMarks(panel, flowAxis, valueAxis) {
   // pixel = P + (q - q0) f.step + (v - v0) v.step; P is where the flow isoline q0 meets the value isoline v0
   const dx = v.at[0] - f.at[0];
   const dy = v.at[1] - f.at[1];
-  const s = (dx * d - dy * b) / det;
-  const P = [f.at[0] + s * a, f.at[1] + s * c];
+  const t = (a * dy - c * dx) / det;
+  const P = [f.at[0] + t * b, f.at[1] + t * d];
   const back = [a, b, P[0] - f.value * a - v.value * b, c, d, P[1] - f.value * c - v.value * d, 0, 0, 1];
   const forward = invert(back);
   return forward && new PairMap(forward, [f.kind, v.kind]);

@@ -2,7 +2,7 @@
 import { axisIds } from "../geometry/panelmap.js";
 import { linear } from "../geometry/scale.js";
 import { thin } from "../geometry/polyline.js";
-import { plain, withDoubt } from "../geometry/number.js";
+import { fixed, plain, withDoubt } from "../geometry/number.js";
 import { QUANTITY_WORDS, written } from "../geometry/units.js";
 import { drawChart } from "../view/chart.js";
 import { h, put, s } from "../view/dom.js";
@@ -54,7 +54,7 @@ function exponents(root, desk) {
   const quantity = families.find(([q]) => desk.panel && Object.values(desk.panel.axes).some((a) => a.quantity === q)) ?? families[0];
   const rows = exponentRows(quantity[1].exponents);
   const measured = quantity[1].exponents.measured;
-  put(root, h("h2", {}, `${measured ? "Exponents" : "Published exponents"} of the ${QUANTITY_WORDS[quantity[0]] ?? quantity[0]} curves`), rows.map((r) => h("div", { class: "exponent" }, h("span", {}, r.words), scaleOf(r), h("b", {}, r.u ? `${plain(r.value, 2)} ± ${plain(r.u, 2)}` : plain(r.value, 2)))));
+  put(root, h("h2", {}, `${measured ? "Exponents" : "Published exponents"} of the ${QUANTITY_WORDS[quantity[0]] ?? quantity[0]} curves`), rows.map((r) => h("div", { class: "exponent" }, h("span", {}, r.words), scaleOf(r), h("b", {}, r.u ? `${fixed(r.value, 2)} ± ${fixed(r.u, 2)}` : fixed(r.value, 2)))));
 }
 
 const EXPONENT_WORDS = { flow: "flow over diameter", value: "value over diameter" };
@@ -91,9 +91,9 @@ function residuals(root, desk) {
   const inside = points.filter((_, i) => i % Math.max(1, Math.floor(points.length / 300)) === 0);
   const big = Math.max(...inside.map((p) => Math.abs(p[1])), 1e-9);
   const width = root.clientWidth || 540;
-  const svg = s("svg", { class: "plot", viewBox: `0 0 ${width} 88`, width, height: 88, role: "img", "aria-label": `Trace minus fit, largest ${plain(big, 3)} ${unit}` });
-  const frame = [52, 4, width - 10, 68];
-  const x = { ...linear(points[0][0], points[points.length - 1][0], frame[0], frame[2]), lo: Math.min(points[0][0], points[points.length - 1][0]), hi: Math.max(points[0][0], points[points.length - 1][0]) };
+  const svg = s("svg", { class: "plot", viewBox: `0 0 ${width} 74`, width, height: 74, role: "img", "aria-label": `Trace minus fit, largest ${plain(big, 3)} ${unit}` });
+  const frame = [52, 4, width - 10, 66];
+  const x = { ...linear(points[0][0], points[points.length - 1][0], frame[0], frame[2]), lo: Math.min(points[0][0], points[points.length - 1][0]), hi: Math.max(points[0][0], points[points.length - 1][0]), labels: false };
   const y = { ...linear(-1.2 * big, 1.2 * big, frame[3], frame[1]), lo: -1.2 * big, hi: 1.2 * big, most: 3 };
   const miss = item.fit.max_miss / item.fy;
   drawChart(svg, { frame, x, ys: [y], lines: [{ points: inside, tone: "trace", width: 1.3 }] });

@@ -27,7 +27,7 @@ export function drawAnswer(root, m) {
   };
   const known = new Set(m.detail.quantities);
   put(root, h("h2", {}, head), h("table", {}, h("caption", { class: "unseen" }, head),
-    h("thead", {}, h("tr", {}, h("td", {}), th("value"), th("± machine"), th("± print", "num print"))),
+    h("thead", {}, h("tr", {}, th(h("span", { class: "unseen" }, "what"), ""), th("value"), th("± machine"), th("± print", "num print"))),
     h("tbody", {}, m.flow === null ? null : flowRow(m, fUnit, fk),
       SHOWN.map((q) => row(WORDS[q], m.units[q][0], ...scaled(q), known.has(q) ? "outside what was traced" : "not known")))),
   h("p", { class: "band-note" }, `k = 1. The machine band follows from “${m.basis}”. `, m.note));

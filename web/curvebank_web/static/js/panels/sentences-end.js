@@ -114,8 +114,9 @@ export function jobSentence(desk) {
   for (let k = 0; k <= 80; k++) ruler.append(s("line", { x1: (k * w) / 80 + 0.5, x2: (k * w) / 80 + 0.5, y1: k % 8 ? 8 : 2, y2: 13, class: "k-edge", "stroke-width": 1 }));
   ruler.append(s("line", { x1: 0, x2: w, y1: 14, y2: 14, class: "k-edge", "stroke-width": 1 }), s("line", { x1: 0, x2: share * w, y1: 15, y2: 15, class: "k-ink", "stroke-width": 4 }));
   const words = job.state === "queued" && !job.id ? job.text : job.state === "queued" ? "Waiting for its turn; you can go on working" : `${job.text || "Working"}; you can go on working`;
+  const said = words.charAt(0).toUpperCase() + words.slice(1);
   return {
-    sentence: [h("span", { role: "status" }, `${words}.`)],
+    sentence: [h("span", { role: "status" }, `${said}.`)],
     does: [ruler, h("span", { class: "hint" }, `${Math.round(share * 100)} %`), button("Stop", { key: "Esc", onClick: () => desk.stopRun() })],
   };
 }

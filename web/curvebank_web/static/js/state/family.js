@@ -27,24 +27,29 @@ export function agreesWith(f) {
 
 /**
  * Ghost curves of one panel: each diameter's curve carried to its neighbours.
- * carry: "all" or "FROM>TO" (curve ids). A gap is drawn where the ghost misses the curve it should meet.
+ * carry: "all" or "FROM>TO" (curve ids). A gap is drawn where the ghost misses the curve it should meet. With "all", a curve whose
+ * label is doubted is not carried itself (it would accuse its neighbours), and the first ghost that misses it carries the words.
  */
 export function ghostsOf(run, doc, panel, carry) {
   const out = [];
   for (const family of Object.values(run.family ?? {})) {
+    const doubted = new Set((family.curves ?? []).filter((c) => c.agrees_mm).map((c) => c.id));
+    const hatched = new Set();
     for (const c of family.curves ?? []) {
       const own = doc.curves.find((k) => k.id === c.id);
       if (!own || own.panel !== panel.id) continue;
       for (const g of c.ghosts ?? []) {
         const id = `${c.id}>${g.to_id}`;
-        if (carry !== "all" && carry !== id) continue;
+        if (carry === "all" ? doubted.has(c.id) : carry !== id) continue;
         const target = doc.curves.find((k) => k.id === g.to_id);
         const [kx, ky] = [factor(panel.axes[own.x]), factor(panel.axes[own.y])];
         const result = run.result.curves.find((k) => k.id === g.to_id);
-        const gap = gapOf(g, result);
+        const accused = doubted.has(g.to_id) && !hatched.has(g.to_id);
+        if (accused) hatched.add(g.to_id);
+        const gap = carry !== "all" || accused ? gapOf(g, result) : null;
         out.push({
           id, y: own.y, pixels: g.pixels ?? [], points: (g.points ?? []).map(([q, v]) => [q / kx, v / ky]),
-          words: carry === "all" ? null : `dashed: ${plain(c.diameter_mm, 1)} carried to ${plain(g.to_diameter_mm ?? target?.diameter_mm, 1)}`,
+          words: carry === "all" && !accused ? null : `dashed: ${plain(c.diameter_mm, 1)} carried to ${plain(g.to_diameter_mm ?? target?.diameter_mm, 1)}`,
           gap: gap?.pixels ?? null,
           gapPoints: gap?.points.map((pair) => pair.map(([q, v]) => [q / kx, v / ky])) ?? null,
         });
@@ -57,7 +62,8 @@ export function ghostsOf(run, doc, panel, carry) {
 /** Strokes between a ghost and the curve it should meet, where they differ by more than the doubt of both (k = 2). */
 export function gapOf(ghost, target) {
   if (!ghost.points?.length || !target?.points?.length) return null;
-  const doubt = 2 * Math.SQRT2 * (target.sigma?.length ? target.sigma.reduce((a, b) => a + b, 0) / target.sigma.length : 0);
+  const mean = target.sigma?.length ? target.sigma.reduce((a, b) => a + b, 0) / target.sigma.length : 0;
+  const doubt = 2 * (ghost.doubt ?? Math.SQRT2 * mean);
   const n = 26;
   const points = [];
   const pixels = [];

@@ -13,19 +13,18 @@ export function suspect(axis, s) {
   return `The ${word} mark typed ${plain(s.typed)} sits where ${plain(s.fits, 3)} ${unit} belongs. Change it to ${plain(fits)}, or move the mark.`;
 }
 
-/** The value to offer instead of the typed one: the fitted one, rounded as the other marks of the axis are. */
+/** The value to offer instead of the typed one: the roundest number within 0.4 % of the axis's range of what would fit. */
 export function niceFit(axis, s) {
-  const others = axis.marks.map((m) => m.value).filter((v) => v !== s.typed);
-  const steps = others.map((v) => stepOf(v)).filter((v) => v > 0);
-  const step = steps.length ? Math.min(...steps) : stepOf(Number(s.fits.toPrecision(2)));
-  return Number((Math.round(s.fits / step) * step).toPrecision(8));
-}
-
-function stepOf(v) {
-  if (!v) return 0;
-  let step = 10 ** Math.floor(Math.log10(Math.abs(v)));
-  while (Math.abs(v / step - Math.round(v / step)) > 1e-9 && step > 1e-6) step /= 10;
-  return step;
+  const values = [...axis.marks.map((m) => m.value).filter((v) => v !== s.typed), s.fits];
+  const reach = 0.004 * (Math.max(...values) - Math.min(...values)) || Math.abs(s.fits) * 0.004;
+  for (let e = Math.ceil(Math.log10(Math.abs(s.fits) || 1)); e > -6; e--) {
+    for (const k of [1, 0.5, 0.2]) {
+      const step = k * 10 ** e;
+      const near = Math.round(s.fits / step) * step;
+      if (Math.abs(near - s.fits) <= reach) return Number(near.toPrecision(8));
+    }
+  }
+  return Number(s.fits.toPrecision(4));
 }
 
 /** "42.92 m" and "± 0.19": a reading in the printed unit of its axis. */

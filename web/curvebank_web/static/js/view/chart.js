@@ -91,7 +91,7 @@ export function drawChart(svg, chart) {
     const y = ys[line.y ?? 0];
     const pts = line.points.map(([q, v]) => [x.map(q), y.map(v)]);
     if (pts.length < 2) continue;
-    inside.append(s("path", { d: path(pts), class: `k-${line.tone ?? "ink"} ${line.form ?? ""}`, "stroke-width": line.width ?? 1.6, "stroke-linejoin": "round", "data-line": line.id ?? null }));
+    inside.append(s("path", { d: path(pts), class: `k-${line.tone ?? "ink"} ${line.form ?? ""}`, "stroke-width": line.width ?? 1.6, "stroke-opacity": line.faint ? 0.42 : null, "stroke-linejoin": "round", "data-line": line.id ?? null }));
     if (line.label) {
       const seen = pts.filter(([px, py]) => px >= x0 - 1 && px <= x1 + 1 && py >= y0 - 1 && py <= y1 + 1);
       if (!seen.length) continue;

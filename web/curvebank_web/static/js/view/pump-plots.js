@@ -7,12 +7,21 @@ import { flowRange, lineWeights, SHOWN, SIGN, valueRange } from "../state/pump.j
 import { drawChart } from "./chart.js";
 import { h, put, s } from "./dom.js";
 
-const HEIGHT = { head: [474, 330], efficiency: [118, 96], power: [118, 96], npshr: [80, 80] };
+const ROW = 106;
+const EMPTY = 50;
+
+/** Heights of the four plots: what is not printed takes one line, head takes what the window leaves. */
+function heights(root, has) {
+  const small = Object.fromEntries(SHOWN.map((q) => [q, has(q) ? (q === "npshr" ? 90 : ROW) : EMPTY]));
+  const others = SHOWN.filter((q) => q !== "head").reduce((a, q) => a + small[q] + 8, 0);
+  const room = innerHeight - (root.getBoundingClientRect().top + scrollY) - others - 110;
+  return { ...small, head: Math.max(300, Math.min(474, room)) };
+}
+
 const NOT_PRINTED = { efficiency: "Efficiency is not printed on any sheet kept here.", power: "Shaft power is not printed on any sheet kept here. Ask the maker.", npshr: "NPSH required is not printed on any sheet kept here. Ask the maker, or search the paper register." };
 
 /** model = {detail, asked, values: {quantity: values}, duties, system, units, flow} ; onPoint(flow | null) */
 export function drawPumpPlots(root, model, onPoint) {
-  const small = innerWidth < 1200;
   const figures = SHOWN.map((q) => root.querySelector(`[data-quantity="${q}"]`) ?? makeFigure(root, q));
   const width = figures[0].clientWidth;
   const [, qHi] = flowRange(model.detail.curves);
@@ -21,7 +30,9 @@ export function drawPumpPlots(root, model, onPoint) {
   const x1 = width - 70;
   const scaleX = linear(0, qHi * fu, x0, x1);
   const weight = lineWeights(model.detail.curves);
-  figures.forEach((figure, k) => drawOne(figure, SHOWN[k], { ...model, scaleX, qHi, fu, x0, x1, width, weight, small }));
+  const printed = (q) => q === "head" || model.detail.curves.some((c) => c.quantity === q && c.points.length) || Boolean(model.values[q]);
+  const height = heights(root, printed);
+  figures.forEach((figure, k) => drawOne(figure, SHOWN[k], { ...model, scaleX, qHi, fu, x0, x1, width, weight, height: height[SHOWN[k]] }));
   model.invert = (px) => scaleX.invert(Math.min(x1, Math.max(x0, px))) / fu;
   for (const figure of figures) {
     figure.onpointermove = (e) => onPoint(model.invert(e.clientX - figure.getBoundingClientRect().left));
@@ -36,7 +47,7 @@ function makeFigure(root, q) {
 }
 
 function drawOne(figure, q, m) {
-  const height = HEIGHT[q][m.small ? 1 : 0];
+  const { height } = m;
   const [unit, k] = m.units[q];
   const curves = m.detail.curves.filter((c) => c.quantity === q && c.points.length);
   const contours = q === "head" ? m.detail.curves.filter((c) => c.quantity in CONTOURS && c.points.length) : [];

@@ -74,11 +74,11 @@ export function drawReplot(svg, scales, scene) {
     if (y < 0 || item.points.length < 2) continue;
     const preview = !item.kept;
     lines.push({
-      id: item.id, y, points: item.points, tone: preview ? "trace" : "ink", form: preview ? "preview" : "", width: scene.selected === item.id ? item.weight + 0.9 : item.weight,
+      id: item.id, y, points: item.points, tone: preview || item.fitLine ? "trace" : "ink", form: preview ? "preview" : "", faint: Boolean(item.fitLine), width: item.fitLine ? 4 : scene.selected === item.id ? item.weight + 0.9 : item.weight,
       label: item.label, labelTone: item.wrong ? "finding" : preview ? "trace" : "ink", arrow: y > 0, labelAt: item.contour ? "top" : undefined, small: item.contour,
     });
     if (item.band) bands.push({ ...item.band, y, edges: true });
-    if (item.fitLine) lines.push({ id: `${item.id}-fit`, y, points: item.fitLine, tone: "construct", width: 1.2 });
+    if (item.fitLine) lines.push({ id: `${item.id}-fit`, y, points: item.fitLine, tone: "ink", width: 1.2 });
   }
   if (scene.showGhosts) for (const g of scene.ghosts) lines.push({ points: g.points, tone: "construct", form: "ghost", width: 1.6, y: Math.max(0, scene.axes.findIndex((a) => a.id === g.y)) });
   const { clip } = drawChart(svg, { frame: scales.frame, x: scales.x, ys: scales.ys, lines, bands });
