@@ -1,15 +1,15 @@
-"""A blueprint: white lines on blue, one impeller at three speeds, flow in l/s, scanned sideways."""
+"""A blueprint: white lines on blue, one impeller at three speeds, scanned sideways."""
 
 import numpy as np
 
 from . import ageing, letters, parts
-from .chart import Axis, Curve, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
+from .chart import Axis, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
 from .geometry import PageMap
 from .ink import Ink
 from .parts import Sheet
 from .pumps import Pump
 
-LITRE = 3.6
+WHITE = (222, 230, 236)
 
 
 def speeds():
@@ -36,48 +36,26 @@ def speeds():
     )
 
     def flow(numbers):
-        return Axis(
-            id="flow",
-            quantity="flow",
-            title="Q",
-            unit="l/s",
-            lo=0,
-            hi=700,
-            major=100,
-            minor=50,
-            fine=10,
-            numbers=numbers,
-            caption="Q   LITRES PER SECOND",
-        )
+        caption = "Q   CUBIC METRES PER HOUR"
+        steps = {"lo": 0, "hi": 2500, "major": 500, "minor": 100, "fine": 50}
+        return Axis(id="flow", quantity="flow", title="Q", unit="m3/h", numbers=numbers, caption=caption, **steps)
 
     head_axis = Axis(id="head", quantity="head", title="H", unit="m", lo=0, hi=16, major=2, minor=1, fine=0.5, caption="HEAD  H   METRES")
     power_axis = Axis(id="power", quantity="power", title="P", unit="kW", lo=0, hi=60, major=20, minor=10, fine=5, caption="P   KW")
     main = Panel(id="main", left=36, top=32, width=212, height=88, x=flow(False), y=[head_axis])
     lower = Panel(id="power", left=36, top=126, width=212, height=36, x=flow(True), y=[power_axis])
     curves = []
-    for panel, quantity, letter_ in ((main, "head", "H"), (lower, "power", "P")):
+    for panel, letter, quantity in ((main, "H", "head"), (lower, "P", "power")):
         for n in (585, 485, 415):
-            q = pump.flow(np.linspace(0.12, 1.3, 400), 480, n)
-            value = pump.head(q, 480, n) if quantity == "head" else pump.power(q, 480, n)
+            extra = {"label": {"by": "speed", "printed": str(n)}, "colour": WHITE}
             curves.append(
-                Curve(
-                    id=f"{letter_}-{n}",
-                    panel=panel,
-                    quantity=quantity,
-                    flow=q / LITRE,
-                    value=value,
-                    diameter_mm=480,
-                    speed_rpm=n,
-                    width_mm=0.5,
-                    label=f"{n}",
-                    extra={"label": {"by": "speed", "printed": str(n)}, "colour": (222, 230, 236)},
-                )
+                parts.plot(pump, panel, letter, quantity, 480, (0.12, 1.3), speed_rpm=n, name=n, width_mm=0.5, label=f"{n}", extra=extra)
             )
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)
         shape = page.size[::-1]
-        grid, line, pencil = (Ink(page, c) for c in ((176, 196, 218), (222, 230, 236), (226, 196, 90)))
+        grid, line, pencil = (Ink(page, c) for c in ((176, 196, 218), WHITE, (226, 196, 90)))
         manner = Manner(frame=0.5, major=0.2, minor=0.14, fine=0.08, numbers=2.6, titles=2.6, pen=0.34)
         for p in (main, lower):
             draw_grid(grid, p, manner)

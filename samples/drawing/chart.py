@@ -76,7 +76,6 @@ class Curve:
     value: np.ndarray
     y_axis: int = 0
     diameter_mm: float | None = None
-    true_diameter_mm: float | None = None
     speed_rpm: float = 0.0
     level: float | None = None
     closed: bool = False

@@ -3,13 +3,14 @@
 import numpy as np
 
 from . import ageing, letters, parts
-from .chart import Axis, Curve, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label, letter
+from .chart import Axis, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label, letter
 from .geometry import PageMap
 from .ink import Ink
 from .parts import Sheet
 from .pumps import Pump
 
 BLUE, GREEN, RED, VIOLET, TEAL = (28, 62, 138), (24, 112, 66), (182, 38, 40), (112, 50, 128), (20, 104, 112)
+INK, MADDER = (30, 30, 52), (138, 34, 30)
 
 
 def printed():
@@ -58,30 +59,16 @@ def printed():
     diameters = (209, 196, 182, 169)
     curves = []
 
-    def line(name, panel, quantity, d, share, value, colour, k=0, **more):
-        q = pump.flow(np.linspace(share, 1.42, 400), d)
-        curves.append(
-            Curve(
-                id=f"{name}-{d}",
-                panel=panel,
-                y_axis=k,
-                quantity=quantity,
-                flow=q,
-                value=value(q, d),
-                diameter_mm=d,
-                speed_rpm=2900,
-                extra={"colour": colour},
-                **more,
-            )
-        )
+    def line(letter, panel, quantity, d, share, colour, **more):
+        curves.append(parts.plot(pump, panel, letter, quantity, d, (share, 1.42), extra={"colour": colour}, **more))
 
     for d in diameters:
-        line("H", main, "head", d, 0.03, pump.head, BLUE, width_mm=0.5, label=f"Ø {d}")
+        line("H", main, "head", d, 0.03, BLUE, width_mm=0.5, label=f"Ø {d}")
     for d in (209, 169):
-        line("E", main, "efficiency", d, 0.1, lambda q, d: 100 * pump.efficiency(q, d), GREEN, 1, width_mm=0.4, label=f"Ø {d}")
+        line("E", main, "efficiency", d, 0.1, GREEN, k=1, width_mm=0.4, label=f"Ø {d}")
     for d in diameters:
-        line("P", lower, "power", d, 0.03, pump.power, RED, width_mm=0.4, label=f"{d}")
-    line("N", lower, "npshr", 209, 0.3, lambda q, d: pump.npshr(q), VIOLET, 1, width_mm=0.4, style="dashed", label="NPSHr Ø 209")
+        line("P", lower, "power", d, 0.03, RED, width_mm=0.4, label=f"{d}")
+    line("N", lower, "npshr", 209, 0.3, VIOLET, k=1, width_mm=0.4, style="dashed", label="NPSHr Ø 209")
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)
@@ -195,46 +182,19 @@ def millimetre():
         id="eta", quantity="efficiency", title="eta", unit="%", lo=0, hi=90, major=5, side="right", caption="Efficiency  η  in  %"
     )
     main = Panel(id="main", left=35, top=56, width=140, height=180, x=flow, y=[head_axis, eta_axis])
-    curves = []
-    for d, style in ((440, "solid"), (415, "dashed"), (390, "chain")):
-        q = pump.flow(np.linspace(0.06, 1.38, 400), d)
-        curves.append(
-            Curve(
-                id=f"H-{d}",
-                panel=main,
-                quantity="head",
-                flow=q,
-                value=pump.head(q, d),
-                diameter_mm=d,
-                speed_rpm=980,
-                style=style,
-                label=f"D = {d}",
-                extra={"basis": "works test", "colour": (30, 30, 52)},
-            )
-        )
-    q = pump.flow(np.linspace(0.1, 1.38, 400), 440)
-    curves.append(
-        Curve(
-            id="E-440",
-            panel=main,
-            y_axis=1,
-            quantity="efficiency",
-            flow=q,
-            value=100 * pump.efficiency(q, 440),
-            diameter_mm=440,
-            speed_rpm=980,
-            style="long dashed",
-            width_mm=0.4,
-            label="η 440",
-            gap_at=0.3,
-            extra={"basis": "works test", "colour": (138, 34, 30)},
-        )
-    )
+    test = {"basis": "works test"}
+    curves = [
+        parts.plot(pump, main, "H", "head", d, (0.06, 1.38), style=style, label=f"D = {d}", extra=test | {"colour": INK})
+        for d, style in ((440, "solid"), (415, "dashed"), (390, "chain"))
+    ]
+    extra = test | {"colour": MADDER}
+    eta = {"k": 1, "style": "long dashed", "width_mm": 0.4, "label": "η 440", "gap_at": 0.3}
+    curves.append(parts.plot(pump, main, "E", "efficiency", 440, (0.1, 1.38), extra=extra, **eta))
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)
         shape = page.size[::-1]
-        print_, frame, ink, red, pencil = (Ink(page, c) for c in ((170, 98, 44), (38, 36, 46), (30, 30, 52), (138, 34, 30), (84, 84, 92)))
+        print_, frame, ink, red, pencil = (Ink(page, c) for c in ((170, 98, 44), (38, 36, 46), INK, MADDER, (84, 84, 92)))
         x0, x1, y0, y1 = 15, 195, 26, 276
         for i in range(x1 - x0 + 1):
             heavy = 0.26 if (i - 20) % 10 == 0 else 0.17 if (i - 20) % 5 == 0 else 0.085

@@ -9,7 +9,7 @@ from .ink import Ink
 from .parts import Sheet
 from .pumps import Pump
 
-LEVELS = {0.60: (0.375,), 0.70: (0.375,), 0.76: (0.36,), 0.80: (0.36, 0.4), 0.825: (0.2,), 0.84: (0.71,), 0.85: (0.27,)}
+LEVELS = {0.60: (0.375,), 0.70: (0.375,), 0.76: (0.36,), 0.80: (0.36, 0.4), 0.82: (0.375,), 0.84: (0.71,), 0.85: (0.27,)}
 
 
 def composite():
@@ -41,22 +41,7 @@ def composite():
     head_axis = Axis(id="head", quantity="head", title="H", unit="m", lo=10, hi=70, major=10, minor=2, caption="Total head  H   m")
     main = Panel(id="main", left=36, top=38, width=220, height=126, x=flow, y=[head_axis])
     diameters = (410, 390, 370, 350, 330)
-    curves = []
-    for d in diameters:
-        q = pump.flow(np.linspace(0.06, 1.4, 400), d)
-        curves.append(
-            Curve(
-                id=f"H-{d}",
-                panel=main,
-                quantity="head",
-                flow=q,
-                value=pump.head(q, d),
-                diameter_mm=d,
-                speed_rpm=1480,
-                width_mm=0.5,
-                label=f"Ø {d}",
-            )
-        )
+    curves = [parts.plot(pump, main, "H", "head", d, (0.06, 1.4), width_mm=0.5, label=f"Ø {d}") for d in diameters]
     for level, places in LEVELS.items():
         for k, (q, h, closed) in enumerate(pump.contour(level, 330)):
             curves.append(

@@ -7,13 +7,11 @@ import numpy as np
 from PIL import Image
 
 from . import ageing, letters, parts
-from .chart import Axis, Curve, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
+from .chart import Axis, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
 from .geometry import PageMap
 from .ink import Ink
 from .parts import Sheet
 from .pumps import Pump
-
-FOOT_M, HP_KW, GPM_M3H = 0.3048, 0.7456998715822702, 0.22712470704
 
 
 def outside(page, shape, inset_mm):
@@ -73,43 +71,9 @@ def photocopy():
     main = Panel(id="main", left=37, top=58, width=144, height=120, x=flow(False), y=[head_axis, eta_axis])
     lower = Panel(id="power", left=37, top=184, width=144, height=48, x=flow(True), y=[power_axis])
     diameters = (400, 380, 360, 340)
-    curves = []
-    for d in diameters:
-        q = pump.flow(np.linspace(0.0, 1.38, 400), d)
-        curves.append(
-            Curve(id=f"H-{d}", panel=main, quantity="head", flow=q, value=pump.head(q, d), diameter_mm=d, speed_rpm=1450, label=f"{d} Ø")
-        )
-    q = pump.flow(np.linspace(0.1, 1.38, 400), 400)
-    curves.append(
-        Curve(
-            id="E-400",
-            panel=main,
-            y_axis=1,
-            quantity="efficiency",
-            flow=q,
-            value=100 * pump.efficiency(q, 400),
-            diameter_mm=400,
-            speed_rpm=1450,
-            width_mm=0.4,
-            label="η",
-            gap_at=0.28,
-        )
-    )
-    for d in (400, 340):
-        q = pump.flow(np.linspace(0.0, 1.38, 400), d)
-        curves.append(
-            Curve(
-                id=f"P-{d}",
-                panel=lower,
-                quantity="power",
-                flow=q,
-                value=pump.power(q, d),
-                diameter_mm=d,
-                speed_rpm=1450,
-                width_mm=0.4,
-                label=f"{d} Ø",
-            )
-        )
+    curves = [parts.plot(pump, main, "H", "head", d, (0.0, 1.38), label=f"{d} Ø") for d in diameters]
+    curves.append(parts.plot(pump, main, "E", "efficiency", 400, (0.1, 1.38), k=1, width_mm=0.4, label="η", gap_at=0.28))
+    curves += [parts.plot(pump, lower, "P", "power", d, (0.0, 1.38), width_mm=0.4, label=f"{d} Ø") for d in (400, 340)]
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)
@@ -190,7 +154,7 @@ def fax():
     pump = Pump(
         diameter_mm=330.2,
         speed_rpm=1770,
-        best_flow_m3h=1400 * GPM_M3H,
+        best_flow_m3h=1400 * parts.CANONICAL["gal/min(US)"],
         psi=0.565,
         best_efficiency=0.815,
         best_npshr_m=4.4,
@@ -229,56 +193,29 @@ def fax():
     main = Panel(id="main", left=35, top=64, width=146, height=120, x=flow(False), y=[head_axis, eta_axis])
     lower = Panel(id="power", left=35, top=190, width=146, height=44, x=flow(True), y=[power_axis])
     curves = []
-    for d, text in inches.items():
-        q = pump.flow(np.linspace(0.04, 1.36, 400), d)
-        curves.append(
-            Curve(
-                id=f"H-{text[:-1].replace(' ', '-').replace('/', '.')}",
-                panel=main,
-                quantity="head",
-                flow=q / GPM_M3H,
-                value=pump.head(q, d) / FOOT_M,
-                diameter_mm=d,
-                speed_rpm=1770,
-                width_mm=0.5,
-                label=text,
-                extra={"label": {"by": "diameter", "printed": text}},
+    for panel, letter, quantity, diameters in ((main, "H", "head", inches), (lower, "P", "power", (330.2, 273.05))):
+        for d in diameters:
+            text = inches[d]
+            name = text[:-1].replace(" ", "-").replace("/", ".")
+            label = {"by": "diameter", "printed": text}
+            curves.append(
+                parts.plot(pump, panel, letter, quantity, d, (0.04, 1.36), name=name, width_mm=0.5, label=text, extra={"label": label})
             )
-        )
-    q = pump.flow(np.linspace(0.1, 1.36, 400), 330.2)
-    curves.append(
-        Curve(
-            id="E-13",
-            panel=main,
-            y_axis=1,
-            quantity="efficiency",
-            flow=q / GPM_M3H,
-            value=100 * pump.efficiency(q, 330.2),
-            diameter_mm=330.2,
-            speed_rpm=1770,
-            width_mm=0.45,
-            style="long dashed",
-            label='EFF. 13"',
-            gap_at=0.27,
-        )
+    eff = parts.plot(
+        pump,
+        main,
+        "E",
+        "efficiency",
+        330.2,
+        (0.1, 1.36),
+        k=1,
+        name="13",
+        width_mm=0.45,
+        style="long dashed",
+        label='EFF. 13"',
+        gap_at=0.27,
     )
-    for d in (330.2, 273.05):
-        q = pump.flow(np.linspace(0.04, 1.36, 400), d)
-        text = inches[d]
-        curves.append(
-            Curve(
-                id=f"P-{text[:-1].replace(' ', '-').replace('/', '.')}",
-                panel=lower,
-                quantity="power",
-                flow=q / GPM_M3H,
-                value=pump.power(q, d) / HP_KW,
-                diameter_mm=d,
-                speed_rpm=1770,
-                width_mm=0.5,
-                label=text,
-                extra={"label": {"by": "diameter", "printed": text}},
-            )
-        )
+    curves.insert(4, eff)
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)
@@ -347,9 +284,7 @@ def _machine_line(black):
     """The sending machine's own line along the top edge: put on after scanning, so it is square to the page."""
     flat = PageMap(width_mm=black.shape[1] / 204 * 25.4, height_mm=12, dpi_x=204, dpi_y=196)
     ink = Ink(flat)
-    ink.strokes(
-        letters.write("NOV 08 '88 10:42   STAVERING SALES OFFICE                         P.02/03", (12, 7.5), 2.2, hand="typed"), 0.3
-    )
+    ink.strokes(letters.write("NOV 08 '88 10:42   STAVERING SALES OFFICE" + 25 * " " + "P.02/03", (12, 7.5), 2.2, hand="typed"), 0.3)
     cover = ink.coverage() > 0.5
     black[: cover.shape[0]] = np.where(cover.any(1)[:, None], cover, black[: cover.shape[0]])
     return black

@@ -3,7 +3,7 @@
 import numpy as np
 
 from . import ageing, parts
-from .chart import Axis, Curve, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
+from .chart import Axis, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
 from .geometry import PageMap
 from .ink import Ink
 from .parts import Sheet
@@ -50,58 +50,11 @@ def stacked():
         Axis(id="npshr", quantity="npshr", title="NPSHr", unit="m", lo=0, hi=12, major=4, minor=1, caption="NPSHr  m"),
         last=True,
     )
-    diameters = (330, 311, 290, 270)
-    curves = []
-    for d in diameters:
-        q = pump.flow(np.linspace(0.05, 1.36, 400), d)
-        curves.append(
-            Curve(id=f"H-{d}", panel=head, quantity="head", flow=q, value=pump.head(q, d), diameter_mm=d, speed_rpm=1480, label=f"Ø {d}")
-        )
-    for d in (330, 270):
-        q = pump.flow(np.linspace(0.12, 1.36, 400), d)
-        value = 100 * pump.efficiency(q, d)
-        curves.append(
-            Curve(
-                id=f"E-{d}",
-                panel=eta,
-                quantity="efficiency",
-                flow=q,
-                value=value,
-                diameter_mm=d,
-                speed_rpm=1480,
-                width_mm=0.4,
-                label=f"Ø {d}",
-            )
-        )
-    for d in diameters:
-        q = pump.flow(np.linspace(0.05, 1.36, 400), d)
-        curves.append(
-            Curve(
-                id=f"P-{d}",
-                panel=power,
-                quantity="power",
-                flow=q,
-                value=pump.power(q, d, density_kgm3=999.1),
-                diameter_mm=d,
-                speed_rpm=1480,
-                width_mm=0.4,
-                label=f"Ø {d}",
-            )
-        )
-    q = pump.flow(np.linspace(0.3, 1.36, 300), 330)
-    curves.append(
-        Curve(
-            id="N-330",
-            panel=npsh,
-            quantity="npshr",
-            flow=q,
-            value=pump.npshr(q),
-            diameter_mm=330,
-            speed_rpm=1480,
-            width_mm=0.4,
-            label="Ø 330",
-        )
-    )
+    diameters = (330, 310, 290, 270)
+    curves = [parts.plot(pump, head, "H", "head", d, (0.05, 1.36), label=f"Ø {d}") for d in diameters]
+    curves += [parts.plot(pump, eta, "E", "efficiency", d, (0.12, 1.36), width_mm=0.4, label=f"Ø {d}") for d in (330, 270)]
+    curves += [parts.plot(pump, power, "P", "power", d, (0.05, 1.36), density_kgm3=999.1, width_mm=0.4, label=f"Ø {d}") for d in diameters]
+    curves.append(parts.plot(pump, npsh, "N", "npshr", 330, (0.3, 1.36), width_mm=0.4, label="Ø 330"))
     panels = [head, eta, power, npsh]
 
     def paint(sheet):
@@ -213,41 +166,23 @@ def mislabelled():
     )
     main = Panel(id="main", left=36, top=62, width=144, height=150, x=flow, y=[head_axis, eta_axis])
     printed = {264: 264, 250: 250, 236: 243, 222: 222, 208: 208}
-    curves = []
-    for d, shown in printed.items():
-        q = pump.flow(np.linspace(0.04, 1.42, 400), d)
-        curves.append(
-            Curve(
-                id=f"H-{shown}",
-                panel=main,
-                quantity="head",
-                flow=q,
-                value=pump.head(q, d),
-                diameter_mm=shown,
-                true_diameter_mm=d,
-                speed_rpm=2900,
-                label=f"{shown}",
-                gap_at=0.12 + 0.012 * (264 - d) / 14,
-                gap_mm=9.0,
-                note="" if d == shown else f"printed {shown}, drawn for {d}",
-            )
+    curves = [
+        parts.plot(
+            pump,
+            main,
+            "H",
+            "head",
+            d,
+            (0.04, 1.42),
+            shown=shown,
+            label=f"{shown}",
+            gap_at=0.12 + 0.012 * (264 - d) / 14,
+            gap_mm=9.0,
+            note="" if d == shown else f"printed {shown}, drawn for {d}",
         )
-    q = pump.flow(np.linspace(0.08, 1.42, 400), 264)
-    curves.append(
-        Curve(
-            id="E-264",
-            panel=main,
-            y_axis=1,
-            quantity="efficiency",
-            flow=q,
-            value=100 * pump.efficiency(q, 264),
-            diameter_mm=264,
-            speed_rpm=2900,
-            style="long dashed",
-            width_mm=0.4,
-            label="η 264",
-        )
-    )
+        for d, shown in printed.items()
+    ]
+    curves.append(parts.plot(pump, main, "E", "efficiency", 264, (0.08, 1.42), k=1, style="long dashed", width_mm=0.4, label="η 264"))
 
     def paint(sheet):
         rng = np.random.default_rng(sheet.seed)

@@ -9,8 +9,10 @@ from PIL import Image
 
 from . import letters, record
 from .ageing import smooth_noise, to_bytes
+from .chart import Curve
 
-STATION = "Quernlode Fen Drainage & Town Water Works"
+CANONICAL = {"m3/h": 1.0, "gal/min(US)": 0.22712470704, "m": 1.0, "ft": 0.3048, "kW": 1.0, "hp": 0.7456998715822702, "%": 0.01}
+"""Canonical value of one printed unit (NIST SP 811)."""
 
 
 @dataclass(kw_only=True)
@@ -38,6 +40,32 @@ class Sheet:
         """The recipe document for a scan with this SHA-256."""
         sheet = {"file": self.file, "page": 1, "sha256": sha256} | self.sheet
         return record.recipe(truth_doc, sheet, self.pump, self.panels, self.curves)
+
+
+def plot(pump, panel, letter, quantity, d, share, *, k=0, speed_rpm=None, shown=None, name=None, density_kgm3=998.2, **more):
+    """A curve of a pump in the printed units of its panel.
+
+    ``d`` is the wheel that is drawn [mm], ``shown`` the diameter that is printed, ``share`` the ends as shares of best flow.
+    """
+    n = speed_rpm or pump.speed_rpm
+    q = pump.flow(np.linspace(*share, 400), d, n)
+    value = {
+        "head": lambda: pump.head(q, d, n),
+        "efficiency": lambda: pump.efficiency(q, d, n),
+        "power": lambda: pump.power(q, d, n, density_kgm3),
+        "npshr": lambda: pump.npshr(q),
+    }[quantity]()
+    return Curve(
+        id=f"{letter}-{name or shown or d}",
+        panel=panel,
+        y_axis=k,
+        quantity=quantity,
+        flow=q / CANONICAL[panel.x.unit],
+        value=value / CANONICAL[panel.y[k].unit],
+        diameter_mm=shown or d,
+        speed_rpm=n,
+        **more,
+    )
 
 
 def family(pump, *, mislabelled=None):

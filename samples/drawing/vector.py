@@ -5,7 +5,7 @@ import zlib
 import numpy as np
 
 from . import letters, parts
-from .chart import Axis, Curve, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
+from .chart import Axis, Manner, Panel, draw_curve, draw_frame, draw_grid, end_label
 from .geometry import PageMap, arc_mm, cut, dash, resample
 from .parts import Sheet
 from .pumps import Pump
@@ -141,42 +141,10 @@ def plotted():
     npsh = panel(
         "npshr", 208, 32, True, id="npshr", quantity="npshr", title="NPSHr", unit="m", lo=0, hi=8, major=2, minor=1, caption="NPSHr  [m]"
     )
-    curves = []
-    for d in (345, 325, 305, 285):
-        q = pump.flow(np.linspace(0.05, 1.34, 300), d)
-        curves.append(
-            Curve(id=f"H-{d}", panel=head, quantity="head", flow=q, value=pump.head(q, d), diameter_mm=d, speed_rpm=1470, label=f"Ø{d}")
-        )
+    curves = [parts.plot(pump, head, "H", "head", d, (0.05, 1.34), label=f"Ø{d}") for d in (345, 325, 305, 285)]
     for d, style in ((345, "solid"), (325, "dashed"), (305, "chain"), (285, "dotted")):
-        q = pump.flow(np.linspace(0.05, 1.34, 300), d)
-        curves.append(
-            Curve(
-                id=f"P-{d}",
-                panel=power,
-                quantity="power",
-                flow=q,
-                value=pump.power(q, d),
-                diameter_mm=d,
-                speed_rpm=1470,
-                width_mm=0.35,
-                style=style,
-                label=f"Ø{d}",
-            )
-        )
-    q = pump.flow(np.linspace(0.3, 1.34, 300), 345)
-    curves.append(
-        Curve(
-            id="N-345",
-            panel=npsh,
-            quantity="npshr",
-            flow=q,
-            value=pump.npshr(q),
-            diameter_mm=345,
-            speed_rpm=1470,
-            width_mm=0.35,
-            label="Ø345",
-        )
-    )
+        curves.append(parts.plot(pump, power, "P", "power", d, (0.05, 1.34), width_mm=0.35, style=style, label=f"Ø{d}"))
+    curves.append(parts.plot(pump, npsh, "N", "npshr", 345, (0.3, 1.34), width_mm=0.35, label="Ø345"))
     panels = [head, power, npsh]
 
     def paint(sheet):
