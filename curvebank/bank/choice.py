@@ -219,20 +219,20 @@ def find(bank: Any, flow: float, wanted: float, npsha_m: float | None, limit: in
         "   WHERE curve.revision_id = revision.id AND quantity = 'head') ORDER BY pump.key",
         (flow,),
     )
-    hits = []
+    able = []
     for row in rows:
         pump = Pump(bank, row)
         for speed in pump.head.speeds() or [None]:
-            hit = _hit(pump, flow, wanted, speed, npsha_m)
-            if hit is not None:
-                hits.append(hit)
-    hits.sort(key=lambda h: (h.efficiency is None, -(h.efficiency or 0.0), h.key))
-    return hits[:limit]
+            found = _able(pump, flow, wanted, speed, npsha_m)
+            if found is not None:
+                able.append((found, pump))
+    able.sort(key=lambda pair: (pair[0].efficiency is None, -(pair[0].efficiency or 0.0), pair[0].key))
+    return [hit._replace(cautions=_hit_cautions(hit, pump, wanted, npsha_m)) for hit, pump in able[:limit]]
 
 
-def _hit(pump: Any, flow: float, wanted: float, speed: float | None, npsha_m: float | None) -> Hit | None:
+def _able(pump: Any, flow: float, wanted: float, speed: float | None, npsha_m: float | None) -> Hit | None:
+    """The hit, still without its cautions, or None."""
     head = pump.head
-    extra: tuple[str, ...] = ()
     at_this = [li for li in head.lines if li.speed_rpm == speed]
     if not at_this:
         return None
@@ -244,13 +244,19 @@ def _hit(pump: Any, flow: float, wanted: float, speed: float | None, npsha_m: fl
     given = known(head, flow, diameter, speed)
     if given is None or not wanted * (1 - 1e-6) <= given <= wanted * THROTTLE:
         return None
-    if given > wanted * (1 + 1e-6):
-        extra = (f"No smaller diameter is traced. The pump gives {given:.4g} m here; throttle, trim or slow it down for {wanted:g} m.",)
-    npshr = known(pump.npshr, flow, diameter, speed)
     if npsha_m is not None:
+        npshr = known(pump.npshr, flow, diameter, speed)
         if npshr is not None and npshr > npsha_m:
             return None
-        if npshr is None:
-            extra += (f"NPSH required is not known here: whether {npsha_m:g} m is enough is not known either.",)
-    notes = cautions.at_duty(pump, flow, diameter, speed)
-    return Hit(pump.key, diameter, speed, flow, given, known(pump.efficiency, flow, diameter, speed), tuple(dict.fromkeys(extra + notes)))
+    return Hit(pump.key, diameter, speed, flow, given, known(pump.efficiency, flow, diameter, speed), ())
+
+
+def _hit_cautions(hit: Hit, pump: Any, wanted: float, npsha_m: float | None) -> tuple[str, ...]:
+    out = []
+    if hit.head_m > wanted * (1 + 1e-6):
+        out.append(
+            f"No smaller diameter is traced. The pump gives {hit.head_m:.4g} m here; throttle, trim or slow it down for {wanted:g} m."
+        )
+    if npsha_m is not None and known(pump.npshr, hit.flow_m3h, hit.diameter_mm, hit.speed_rpm) is None:
+        out.append(f"NPSH required is not known here: whether {npsha_m:g} m is enough is not known either.")
+    return tuple(dict.fromkeys([*out, *cautions.at_duty(pump, hit.flow_m3h, hit.diameter_mm, hit.speed_rpm)]))

@@ -35,7 +35,7 @@ def explain(error, path, *, writing, timeout_s=TIMEOUT_S):
             f"{lost}{path} cannot be written. Ask for write access to the file and its folder, or work on a copy.", code="read-only"
         )
     if name.startswith("SQLITE_FULL") or "disk is full" in text:
-        return BankError(f"{lost}the disk is full. Free some space, then save again.", code="disk-full")
+        return BankError(f"{lost or 'Refused: '}the disk is full. Free some space, then save again.", code="disk-full")
     if name.startswith("SQLITE_NOTADB") or "not a database" in text:
         return BankError(f"{path} is not a bank: it is not an SQLite file. Check the path.", code="not-a-bank")
     if name.startswith(("SQLITE_CORRUPT", "SQLITE_IOERR")) or "malformed" in text:

@@ -16,19 +16,27 @@ TOUCH = 1e-10
 
 
 def bisect(f: Callable[[float], float], a: float, b: float) -> float:
-    """The root of a continuous function between two points where it differs in sign, to the last bits."""
-    fa = f(a)
-    for _ in range(200):
-        m = 0.5 * (a + b)
-        if not a < m < b and not b < m < a:
-            break
-        fm = f(m)
+    """The root of a continuous function between two points where it differs in sign, to the last bits.
+
+    Regula falsi in its Illinois form (the end that stays has its value halved), with a plain halving every third step so that it never stalls.
+    """
+    fa, fb = f(a), f(b)
+    if fa == 0.0 or fb == 0.0:
+        return a if fa == 0.0 else b
+    last = math.inf
+    for k in range(300):
+        m = 0.5 * (a + b) if k % 3 == 2 else (a * fb - b * fa) / (fb - fa)
+        if not min(a, b) < m < max(a, b):
+            m = 0.5 * (a + b)
+        if abs(m - last) <= 2 * math.ulp(m) or not min(a, b) < m < max(a, b):
+            return m
+        fm, last = f(m), m
         if fm == 0.0:
             return m
-        if (fm > 0) == (fa > 0):
-            a, fa = m, fm
+        if (fm > 0) == (fb > 0):
+            b, fb, fa = m, fm, fa / 2
         else:
-            b = m
+            a, fa, b, fb = b, fb, m, fm
     return 0.5 * (a + b)
 
 

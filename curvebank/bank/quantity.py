@@ -37,6 +37,8 @@ class Quantity:
         self.lines = lines
         self.basis = basis
         self._plans = {}
+        self._diameters = sorted({li.diameter_mm for li in lines if li.diameter_mm is not None})
+        self._speeds = sorted({li.speed_rpm for li in lines if li.speed_rpm is not None})
 
     def __repr__(self):
         return f"<{self.quantity} of {self.pump.key} revision {self.pump.revision}>"
@@ -119,11 +121,11 @@ class Quantity:
 
     def diameters(self):
         """Traced diameters of this quantity [mm], ascending."""
-        return sorted({li.diameter_mm for li in self.lines if li.diameter_mm is not None})
+        return list(self._diameters)
 
     def speeds(self):
         """Printed speeds of this quantity [1/min], ascending."""
-        return sorted({li.speed_rpm for li in self.lines if li.speed_rpm is not None})
+        return list(self._speeds)
 
     def _pick_diameter(self, diameter_mm):
         if diameter_mm is not None:
@@ -138,12 +140,12 @@ class Quantity:
 
     def _pick_speed(self, speed_rpm, diameter_mm):
         if speed_rpm is not None:
-            if not self.speeds():
+            if not self._speeds:
                 raise LawError(
                     f"The sheet states no speed for {NAMES[self.quantity]}, so it cannot be carried to another. Leave speed_rpm out."
                 )
             return float(speed_rpm)
-        known = self.speeds()
+        known = self._speeds
         if len(known) <= 1:
             return known[0] if known else None
         if self.pump.rated_rpm in known:
