@@ -203,6 +203,7 @@ class _Process:
     """A spawned worker and its pipe. Spawned, not forked: this process has threads."""
 
     def __init__(self, tasks: str) -> None:
+        worker.one_thread()
         context = multiprocessing.get_context("spawn")
         self.pipe, theirs = context.Pipe()
         self.process = context.Process(target=worker.main, args=(theirs, tasks), name="curvebank-worker", daemon=True)

@@ -7,8 +7,6 @@ from typing import Any
 
 import numpy as np
 
-from curvebank import sheet
-
 from .page_store import PageKey, publish
 
 SMALL_BYTES = 65_536
@@ -17,12 +15,16 @@ SMALL_BYTES = 65_536
 
 def folder_of(cache: Path, key: PageKey) -> Path:
     """Where a prepared page lives; the name changes with the algorithm."""
+    from curvebank import sheet
+
     algorithm = "".join(c if c.isalnum() or c in "._-" else "-" for c in sheet.ALGORITHM)
     return cache / "prepared" / f"{key.name}-{algorithm}"
 
 
 def read(cache: Path, key: PageKey) -> Any:
     """The prepared page, or None where it is not made yet."""
+    from curvebank import sheet
+
     folder = folder_of(cache, key)
     if not folder.is_dir():
         return None

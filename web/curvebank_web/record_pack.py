@@ -7,6 +7,7 @@ numbers, but no program. Only records of ``curvebank.records`` are made again.
 import dataclasses
 import io
 import json
+import zipfile
 from typing import Any
 
 import numpy as np
@@ -55,7 +56,7 @@ def unpack(data: bytes) -> Any:
             if tree["form"] != FORM:
                 raise ValueError(f"form {tree['form']}")
             return _record(tree["root"], file)
-    except (ValueError, KeyError, TypeError, OSError) as error:
+    except (ValueError, KeyError, TypeError, OSError, EOFError, zipfile.BadZipFile) as error:
         raise PackError(f"This result was kept by another version of curvebank ({error}). Run the sheet again, then save.") from error
 
 

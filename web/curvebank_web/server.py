@@ -9,6 +9,8 @@ from pathlib import Path
 
 from curvebank.errors import CurvebankError
 
+from . import worker
+
 HOST = "127.0.0.1"
 DEFAULT_PORT = 8470
 TRIED = 50
@@ -62,6 +64,7 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
     curvebank.errors.CurvebankError
         The port is taken, or the bank or desk file cannot be used.
     """
+    worker.one_thread()
     from waitress.server import create_server
 
     from . import create_app
@@ -80,6 +83,7 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
     if threading.current_thread() is threading.main_thread():
         signal.signal(signal.SIGTERM, _leave)
     services.jobs.start()
+    threading.Thread(target=_load_engine, daemon=True).start()
     print(address, flush=True)
     if open_browser:
         import webbrowser
@@ -90,6 +94,11 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
     finally:
         services.close()
         server.close()
+
+
+def _load_engine() -> None:
+    """Import what previews need, so that the first one need not wait for it."""
+    import curvebank.digitise  # noqa: F401
 
 
 def _leave(_number: int, _frame: object) -> None:

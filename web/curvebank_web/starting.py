@@ -2,7 +2,7 @@
 
 from typing import Any
 
-from . import catalogue, desk_sheets, revisions, sources
+from . import catalogue, desk_sheets, sources
 from .api.models import NewDraft
 from .bank_access import reading
 from .problems import Problem
@@ -41,6 +41,8 @@ def _from_sheet(body: NewDraft) -> dict[str, Any]:
 
 
 def _from_pump(body: NewDraft) -> tuple[dict[str, Any], str, Origin]:
+    from . import revisions
+
     assert body.from_pump is not None
     with reading(services().bank) as bank:
         key = bank.resolve(body.from_pump)[1]

@@ -4,6 +4,7 @@ A task is ``(name, arguments)``; the answers are ``("progress", share, text)`` a
 ``("failed", {code, message, path})`` or ``("cancelled",)``. Anything the server sends during a task means: stop.
 """
 
+import os
 import signal
 import time
 import traceback
@@ -13,8 +14,16 @@ from typing import Any
 
 from curvebank.errors import Cancelled, CurvebankError
 
+ONE_THREAD = ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS")
+"""Linear algebra on one thread: repeats to the bit, and small matrices gain nothing from more. Read when numpy is first imported."""
 REPORT_S = 0.1
 """Progress is sent at most this often."""
+
+
+def one_thread() -> None:
+    """Ask numpy, in this process if it is not loaded yet and in the ones it starts, for one thread. What the user set stays."""
+    for name in ONE_THREAD:
+        os.environ.setdefault(name, "1")
 
 
 class Reporter:

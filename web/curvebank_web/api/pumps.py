@@ -1,10 +1,13 @@
-"""Pumps: the catalogue, one pump's revisions, readings, duty points, events."""
+"""Pumps: the catalogue, one pump's revisions, readings, duty points, events.
+
+``revisions`` is imported where it is used: it brings the engine along, which the first page need not wait for.
+"""
 
 from typing import Any
 
 from flask_openapi import APIBlueprint, Tag
 
-from .. import catalogue, revisions
+from .. import catalogue
 from ..bank_access import reading, writing
 from ..problems import Problem
 from ..services import services
@@ -30,6 +33,8 @@ def pump(path: PumpPath) -> dict[str, Any]:
 @blueprint.get("/<key>/revisions/<int:number>")
 def revision(path: RevisionPath) -> dict[str, Any]:
     """One revision with its curves, findings and sheets."""
+    from .. import revisions
+
     with reading(services().bank) as bank:
         return revisions.detail(bank, path.key, path.number)
 
@@ -37,6 +42,8 @@ def revision(path: RevisionPath) -> dict[str, Any]:
 @blueprint.get("/<key>/revisions/<int:number>/values")
 def values(path: RevisionPath, query: ValuesQuery) -> dict[str, Any]:
     """A quantity at many flows, with both uncertainties."""
+    from .. import revisions
+
     with reading(services().bank) as bank:
         return revisions.values(
             bank,

@@ -4,8 +4,6 @@ from typing import Any
 
 from flask_openapi import APIBlueprint, Tag
 
-from curvebank import checks
-
 from ..bank_access import reading, writing
 from ..services import services
 from .models import SettingsChange
@@ -14,6 +12,8 @@ blueprint = APIBlueprint("settings", __name__, url_prefix="/api/settings", abp_t
 
 
 def _shown(bank: Any) -> dict[str, Any]:
+    from curvebank import checks
+
     limits = {name: {"default": x.value, "unit": x.unit, "source": x.source, "meaning": x.meaning} for name, x in checks.LIMITS.items()}
     return {"settings": bank.settings(), "limits": limits}
 
@@ -28,6 +28,8 @@ def read() -> dict[str, Any]:
 @blueprint.put("")
 def change(body: SettingsChange) -> dict[str, Any]:
     """Change settings; the last value of a name counts, older ones stay in the history."""
+    from curvebank import checks
+
     checks.resolve(body.settings)
     with writing(services().bank) as bank:
         bank.set_settings(body.settings, who=body.who)

@@ -6,8 +6,6 @@ from typing import Any
 from flask import Response, request
 from flask_openapi import APIBlueprint, Tag
 
-from curvebank import sheet
-
 from .. import desk_sheets
 from ..page_store import FORM, PageKey
 from ..problems import Problem
@@ -21,6 +19,8 @@ UNNAMED = "sheet"
 @blueprint.post("")
 def add(form: SheetForm) -> tuple[dict[str, Any], int]:
     """Add a scan: it is decoded at once, so that a bad file is refused here and nowhere later."""
+    from curvebank import sheet
+
     data = form.file.read()
     name = bare_name(form.file.filename or "")
     info = sheet.load(data).info
