@@ -39,6 +39,7 @@ ALL: tuple[Rule, ...] = (
     complete.largest_only,
     complete.letter_without_mm,
     complete.applies_unknown,
+    complete.flow_unit_unchecked,
     provenance.speed_missing,
     provenance.speed_differs,
 )
@@ -60,7 +61,8 @@ def run(digitised: Digitised, settings: Mapping[str, Any] | None = None, *, rule
     Returns
     -------
     list of Finding
-        Errors first, then warnings, then notes; within one severity in the order of the rules. The same input gives the same list.
+        Errors first, then warnings, then notes; within one severity in the order of the rules; one finding for each rule and
+        subject. The same input gives the same list.
 
     Raises
     ------
@@ -70,8 +72,9 @@ def run(digitised: Digitised, settings: Mapping[str, Any] | None = None, *, rule
     if digitised.error is not None:
         return []
     context = Context(digitised, resolve(settings))
-    found = [f for rule in rules for f in rule(context)]
-    return sorted(found, key=lambda f: _RANK[f.severity])
+    found = sorted((f for rule in rules for f in rule(context)), key=lambda f: _RANK[f.severity])
+    # a waiver binds to the key, so one rule speaks once of one subject: its gravest finding
+    return list({f.key: f for f in reversed(found)}.values())[::-1]
 
 
 __all__ = ["ALL", "DEFAULTS", "LIMITS", "Context", "Rule", "family_picture", "resolve", "run"]

@@ -4,7 +4,7 @@ from collections.abc import Iterator
 
 from ..records import Finding
 from .context import Context
-from .words import listed, name_of, panel_of, printed_mm
+from .words import listed, name_of, panel_of, printed_mm, unit_word
 
 PRACTICE = "common practice, no source"
 
@@ -120,3 +120,25 @@ def applies_unknown(context: Context) -> Iterator[Finding]:
             action=action,
             where={"panel": c.panel, "curves": [c.id]},
         )
+
+
+def flow_unit_unchecked(context: Context) -> Iterator[Finding]:
+    """complete-flow-unit-unchecked: without power and efficiency nothing on the sheet shows a wrong flow unit."""
+    usable = {s.curve.quantity for s in context.series}
+    if "head" not in usable or {"power", "efficiency"} <= usable:
+        return
+    typed = sorted({s.curve.printed_x_unit for s in context.of("head")})
+    if len(typed) != 1:
+        return
+    other = "US gal/min" if typed[0] != "gal/min(US)" else "m³/h"
+    lacking = "head alone does not show it" if usable == {"head"} else "that would take power and efficiency together"
+    action = "Look for the unit on the paper."
+    yield Finding(
+        rule="complete-flow-unit-unchecked",
+        severity="note",
+        subject="pump",
+        message=f"This sheet cannot tell {unit_word(typed[0])} from {other}: {lacking}. {action}",
+        source="affinity: a constant factor on all flows changes no exponent",
+        action=action,
+        where={"panel": panel_of([s.curve for s in context.of("head")]), "curves": [s.curve.id for s in context.of("head")]},
+    )

@@ -116,6 +116,13 @@ def explanations(context: Context, ratio: float, tolerance: float, head: Series,
     return [text for _, text in sorted(nearest.values())][:3]
 
 
+def _drawn_at(ratio: float) -> float | None:
+    """The round factor, 2 or more, at which one line may be drawn on another's scale; None where the ratio is near none."""
+    size = max(ratio, 1 / ratio)
+    near = [k for k in (2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0, 20.0, 25.0, 50.0, 100.0) if abs(size / k - 1) < 0.03]
+    return near[0] if near else None
+
+
 def balance(context: Context) -> Iterator[Finding]:
     """energy-balance: traced power, head and efficiency of one diameter do not agree."""
     limits = context.limits
@@ -138,6 +145,10 @@ def balance(context: Context) -> Iterator[Finding]:
         if names:
             cure = f"They would agree with {listed(names, 'or')}. "
             action = "Look at the paper, then say which unit it is."
+        elif (times := _drawn_at(b.ratio)) is not None:
+            drawn = f"{number(times)} times" if b.ratio > 1 else f"1/{number(times)} of"
+            cure = f"They would agree if the power or the efficiency line were drawn at {drawn} its value. "
+            action = "Look for a factor printed at the axis or on the line, and give the line its factor."
         elif 0.8 <= 1 / b.ratio <= 0.95 and b.uneven < 0.05:
             cure = "The ratio is nearly even, as where motor input power is filed as shaft power. "
             action = "Look whether the power axis is shaft power or motor input, and at the marks of all three axes."

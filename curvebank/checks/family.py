@@ -49,6 +49,11 @@ def _where(family: Family, members: list[int]) -> dict[str, object]:
     return {"panel": panel_of(chosen), "curves": [c.id for c in chosen]}
 
 
+def _subject(family: Family) -> str:
+    """The family's name; castings are told apart by their group."""
+    return f"family:{family.quantity}" + (f"/{family.group}" if family.group else "")
+
+
 def _best(family: Family) -> Alternative | None:
     return family.verdict.best if family.verdict is not None else None
 
@@ -99,7 +104,7 @@ def diameter_label(context: Context) -> Iterator[Finding]:
             yield Finding(
                 rule="family-diameter-label",
                 severity="warning",
-                subject=f"family:{f.quantity}",
+                subject=_subject(f),
                 message=f"The {what} curves and their labels do not agree, and the sheet cannot tell which is off. "
                 f"One of these: {one_of}. {action}",
                 measured=round(best.gain, 1),
@@ -143,7 +148,7 @@ def unexplained(context: Context) -> Iterator[Finding]:
         yield Finding(
             rule="family-unexplained",
             severity="warning",
-            subject=f"family:{f.quantity}",
+            subject=_subject(f),
             message=f"The {what} curves do not belong to one family even when one label is doubted: more than one may be off. {action}",
             source=SOURCE,
             action=action,
@@ -171,7 +176,7 @@ def exponents(context: Context) -> Iterator[Finding]:
             yield Finding(
                 rule="family-exponents",
                 severity="warning",
-                subject=f"family:{f.quantity}",
+                subject=_subject(f),
                 message=f"{base}; published trims of one casting lie near D^{prior.value:.2f} ± {prior.value_sd:.2f}. {action}",
                 measured=round(b, 4),
                 limit=prior.value,
@@ -185,7 +190,7 @@ def exponents(context: Context) -> Iterator[Finding]:
             yield Finding(
                 rule="family-exponents",
                 severity="note",
-                subject=f"family:{f.quantity}",
+                subject=_subject(f),
                 message=f"{base}. Two curves cannot tell a wrong label from an unusual wheel. {action}",
                 measured=round(b, 4),
                 limit=prior.value,
