@@ -57,9 +57,9 @@ class Panel:
         u, v = np.broadcast_arrays(u, v)
         return np.stack([self.left + u * self.width, self.top + (1 - v) * self.height], -1).reshape(-1, 2)
 
-    def rectangle(self, *, grow=0.0, n=21):
+    def rectangle(self, *, n=21):
         """Outline in mm, clockwise from the top left, n points a side."""
-        x0, y0, x1, y1 = self.left - grow, self.top - grow, self.left + self.width + grow, self.top + self.height + grow
+        x0, y0, x1, y1 = self.left, self.top, self.left + self.width, self.top + self.height
         t = np.linspace(0, 1, n)[:-1]
         corners = np.array([[x0, y0], [x1, y0], [x1, y1], [x0, y1], [x0, y0]])
         return np.vstack([a + t[:, None] * (b - a) for a, b in zip(corners[:-1], corners[1:], strict=True)])

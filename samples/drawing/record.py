@@ -4,7 +4,7 @@ import json
 
 import numpy as np
 
-from .geometry import arc_mm, resample
+from .geometry import arc_mm
 
 PRINTED = {"m3/h": "m³/h", "gal/min(US)": "gal/min (US)"}
 
@@ -162,8 +162,3 @@ def _compact(value, indent=1, depth=0):
 def dump(document):
     """Text of a recipe or truth document."""
     return _compact(document) + "\n"
-
-
-def even(line, step=0.25):
-    """Resampled polyline in mm, re-exported for the sheets' own ornaments."""
-    return resample(line, step)
