@@ -202,7 +202,7 @@ class Quantity:
     def _machine(self, reading, flow, value, u_print):
         from .machine import machine_uncertainty
 
-        inside = min(max(flow, reading.lo), reading.hi)
+        inside = min(max(flow, reading.lo), reading.hi) if plain(flow) else flow.clip(reading.lo, reading.hi)
         return machine_uncertainty(self.quantity, self.basis, flow, value, reading.slope(inside), u_print, self.pump.settings)
 
 
