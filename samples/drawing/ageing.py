@@ -168,6 +168,18 @@ def copy_curve(gray, rng, *, blur=0.8, dark=96.0, light=176.0, floor=22.0, roof=
     return floor + (roof - floor) * (t * t * (3 - 2 * t))
 
 
+def outside(page, shape, inset_mm):
+    """How far [px] each pixel lies beyond the paper's own edges (negative on the paper)."""
+    left, top, right, bottom = inset_mm
+    x0, y0, x1, y1 = left, top, page.width_mm - right, page.height_mm - bottom
+    t = np.linspace(0, 1, 12)[:, None]
+    corners = np.array([[x0, y0], [x1, y0], [x1, y1], [x0, y1], [x0, y0]], float)
+    rim = np.vstack([a + t * (b - a) for a, b in zip(corners[:-1], corners[1:], strict=True)])
+    mask = np.zeros(shape, np.uint8)
+    cv2.fillPoly(mask, [np.rint(page.px(rim)).astype(np.int32)], 255)
+    return cv2.distanceTransform(255 - mask, cv2.DIST_L2, 3) - cv2.distanceTransform(mask, cv2.DIST_L2, 3)
+
+
 def to_bytes(image):
     """Rounded and clipped uint8."""
     return np.clip(np.rint(image), 0, 255).astype(np.uint8)

@@ -262,7 +262,5 @@ def millimetre():
 
 def _beyond(page, shape):
     """Where the glass shows beside the askew sheet [h, w, 1], with a soft shadow line."""
-    from .copies import outside
-
-    out = outside(page, shape, (3.5, 4.0, 3.0, 3.5))
+    out = ageing.outside(page, shape, (3.5, 4.0, 3.0, 3.5))
     return (1 / (1 + np.exp(-np.clip(out / 0.8, -30, 30))))[..., None].astype(np.float32)

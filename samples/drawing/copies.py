@@ -14,18 +14,6 @@ from .parts import Sheet
 from .pumps import Pump
 
 
-def outside(page, shape, inset_mm):
-    """How far [px] each pixel lies beyond the paper's own edges (negative on the paper)."""
-    left, top, right, bottom = inset_mm
-    x0, y0, x1, y1 = left, top, page.width_mm - right, page.height_mm - bottom
-    t = np.linspace(0, 1, 12)[:, None]
-    corners = np.array([[x0, y0], [x1, y0], [x1, y1], [x0, y1], [x0, y0]], float)
-    rim = np.vstack([a + t * (b - a) for a, b in zip(corners[:-1], corners[1:], strict=True)])
-    mask = np.zeros(shape, np.uint8)
-    cv2.fillPoly(mask, [np.rint(page.px(rim)).astype(np.int32)], 255)
-    return cv2.distanceTransform(255 - mask, cv2.DIST_L2, 3) - cv2.distanceTransform(mask, cv2.DIST_L2, 3)
-
-
 def photocopy():
     """ORMSGARTH D 400: a third-generation copy, gray, specked, with starved toner and a black glass edge."""
     pump = Pump(
@@ -113,7 +101,7 @@ def photocopy():
             base = ageing.punch(base, page, (10.5, y), rng, lid=(24, 24, 24))
         page_gray = parts.gray(base)
         page_gray = page_gray * (1 - 0.9 * ageing.specks(shape, rng, count=900, largest_px=3.4))
-        out = outside(page, shape, (2.2, 3.4, 0.4, 1.0)) + 0.8 * ageing.smooth_noise(rng, shape, 130)
+        out = ageing.outside(page, shape, (2.2, 3.4, 0.4, 1.0)) + 0.8 * ageing.smooth_noise(rng, shape, 130)
         glass = 1 / (1 + np.exp(-np.clip(out / 1.8, -30, 30)))
         page_gray = page_gray * (1 - glass) + glass * (34 + 14 * ageing.smooth_noise(rng, shape, 12))
         haze = (
