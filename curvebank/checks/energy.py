@@ -62,12 +62,12 @@ def _at_speed(s: Series, speed_rpm: float | None, q: np.ndarray) -> tuple[np.nda
 
 
 def _balance(context: Context, h: Series, p: Series, e: Series) -> Balance | None:
-    def ratio(s: Series) -> float:
+    def faster(s: Series) -> float:
         return p.speed_rpm / s.speed_rpm if p.speed_rpm and s.speed_rpm else 1.0
 
-    best = float(e.flow[np.argmax(e.value)]) * ratio(e)
-    lo = max(p.lo, h.lo * ratio(h), e.lo * ratio(e), context.limits["energy_low_share"] * best)
-    hi = min(p.hi, h.hi * ratio(h), e.hi * ratio(e), context.limits["energy_high_share"] * best)
+    best = float(e.flow[np.argmax(e.value)]) * faster(e)
+    lo = max(p.lo, h.lo * faster(h), e.lo * faster(e), context.limits["energy_low_share"] * best)
+    hi = min(p.hi, h.hi * faster(h), e.hi * faster(e), context.limits["energy_high_share"] * best)
     if not hi > lo > 0:
         return None
     q = np.linspace(lo, hi, 41)
@@ -79,9 +79,12 @@ def _balance(context: Context, h: Series, p: Series, e: Series) -> Balance | Non
         return None
     r = closure(q[ok], head[ok], power[ok], eff[ok], density_kgm3=context.density_kgm3)
     u = np.sqrt((uh[ok] / head[ok]) ** 2 + (up[ok] / power[ok]) ** 2 + (ue[ok] / eff[ok]) ** 2)
-    middle = int(np.argsort(r)[r.size // 2])
-    even = float((np.percentile(r, 90) - np.percentile(r, 10)) / np.median(r))
-    return Balance(h, p, e, float(np.median(r)), float(np.median(u)), float(q[ok][middle]), even)
+    ratio = float(np.median(r))
+    even = float((np.percentile(r, 90) - np.percentile(r, 10)) / ratio)
+    # quoted where the ratio is the median one, as near to best efficiency as such a flow lies
+    typical = np.abs(r / ratio - 1) <= max(0.005, float(np.min(np.abs(r / ratio - 1))))
+    at = float(q[ok][typical][np.argmin(np.abs(q[ok][typical] - best))])
+    return Balance(h, p, e, ratio, float(np.median(u)), at, even)
 
 
 def explanations(context: Context, ratio: float, tolerance: float, head: Series, power: Series, efficiency: Series) -> list[str]:
