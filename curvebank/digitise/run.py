@@ -9,6 +9,8 @@ from collections.abc import Callable
 from typing import Any
 
 import cv2
+import scipy.linalg  # noqa: F401 - its BLAS must be loaded before threads are limited
+from threadpoolctl import threadpool_limits
 
 from .. import axes, checks, recipe, sheet, trace
 from ..errors import CurvebankError, SheetError, TraceError
@@ -87,7 +89,9 @@ def run(
         data = recipe.to_bytes(doc)
         sha = recipe.sha256(data)
         parsed = recipe.parse(data)
-        return _run(parsed, sha, sheet_bytes, settings or {}, tell, prepared, page)
+        # the number of BLAS threads changes the last bits of a sum: one thread, so that any machine setting repeats the same numbers
+        with threadpool_limits(limits=1, user_api="blas"):
+            return _run(parsed, sha, sheet_bytes, settings or {}, tell, prepared, page)
     except CurvebankError as e:
         if e.code == "cancelled":
             raise
