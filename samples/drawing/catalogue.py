@@ -1,6 +1,6 @@
 """Every sample sheet by name."""
 
-from . import blueprint, colours, contours, copies, metric, vector
+from . import blueprint, colours, contours, copies, metric, photo, vector
 
 SHEETS = {
     "lark-wm-150": metric.stacked,
@@ -12,4 +12,5 @@ SHEETS = {
     "stavering-6x5": copies.fax,
     "ebbrook-vl-200": vector.plotted,
     "marrowby-pf-500": blueprint.speeds,
+    "garrowell-kg-65": photo.lettered,
 }

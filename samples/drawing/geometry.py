@@ -11,7 +11,8 @@ class PageMap:
 
     ``turn_deg`` is clockwise about the middle of the page. ``waves`` are (amplitude mm, wavelength mm, phase rad,
     direction deg, push deg): damp paper and an uneven feed. ``curl`` is (edge mm, depth mm, decay mm): the page bends
-    away from the glass towards its left edge, which shortens it there.
+    away from the glass towards its left edge, which shortens it there. ``tilt`` (1/mm, 1/mm) and ``barrel`` (1/mm^2) are
+    those of a hand-held camera: farther parts shrink, and straight lines bow outwards.
     """
 
     width_mm: float = 210.0
@@ -24,6 +25,8 @@ class PageMap:
     shear: float = 0.0
     waves: tuple = field(default=())
     curl: tuple | None = None
+    tilt: tuple = (0.0, 0.0)
+    barrel: float = 0.0
 
     @property
     def size(self):
@@ -44,6 +47,8 @@ class PageMap:
         middle = np.array([self.width_mm / 2, self.height_mm / 2])
         q = (moved - middle) * self.stretch
         q[:, 0] += self.shear * q[:, 1]
+        q = q / (1 + q @ np.asarray(self.tilt))[:, None]
+        q = q * (1 - self.barrel * (q**2).sum(1))[:, None]
         a = np.radians(self.turn_deg)
         q = q @ np.array([[np.cos(a), np.sin(a)], [-np.sin(a), np.cos(a)]]) + middle + self.shift_mm
         return q * [self.dpi_x / 25.4, self.dpi_y / 25.4] - 0.5

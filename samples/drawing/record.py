@@ -109,7 +109,7 @@ def truth(name, image, page, title, mode, family, panels, curves, seed):
         "mode": mode,
         "title": title,
         "pixel_convention": "centre of the top-left pixel is (0, 0); x right, y down",
-        "distorted": bool(page.turn_deg or page.waves or page.curl or page.shear),
+        "distorted": bool(page.turn_deg or page.waves or page.curl or page.shear or page.barrel or any(page.tilt)),
         "wobble_px": 0.0,
         "affinity": family,
         "panels": [_panel(page, p, rng) for p in panels],

@@ -153,11 +153,16 @@ def test_power_head_and_efficiency_close(name, size, flow_m3h, head_m, power_kw,
 def test_pumps_are_plausible(name):
     """Shut-off head coefficient 0.5 to 0.65 for radial and mixed-flow wheels: common practice, no source."""
     unit_m = 0.3048 if name == "stavering-6x5" else 1.0
-    heads = [c for c in committed(name, "truth")["curves"] if c["quantity"] == "head"]
-    largest = max(heads, key=lambda c: (c["diameter_mm"], c["rpm"]))
-    tip_ms = np.pi * largest["diameter_mm"] / 1000 * largest["rpm"] / 60
+    truth = committed(name, "truth")
+    heads = [c for c in truth["curves"] if c["quantity"] == "head"]
+
+    def size(curve):  # wheels known by letter only go by their shut-off head
+        return curve["diameter_mm"] or curve["line"][0][3], curve["rpm"]
+
+    largest = max(heads, key=size)
+    tip_ms = np.pi * truth["affinity"]["dmax_mm"] / 1000 * largest["rpm"] / 60
     assert 0.5 <= largest["line"][0][3] * unit_m * GRAVITY_MS2 / tip_ms**2 <= 0.65
-    ends = [(c["line"][0][3], c["line"][-1][2]) for c in sorted(heads, key=lambda c: (c["diameter_mm"], c["rpm"]))]
+    ends = [(c["line"][0][3], c["line"][-1][2]) for c in sorted(heads, key=size)]
     assert ends == sorted(ends), "a larger or faster wheel gives more head and reaches further"
 
 
@@ -173,3 +178,10 @@ def test_one_diameter_is_wrong_and_only_the_truth_says_so():
     q_wrong, head_wrong = true_curve("tarnbeck-st-65", f"H-{wrong['shown']}")
     carried = np.interp(q_wrong, q * ratio ** truth["affinity"]["a"], head * ratio ** truth["affinity"]["b"])
     assert np.allclose(carried, head_wrong, rtol=1e-3)
+
+
+def test_letters_stay_letters():
+    for curve in committed("garrowell-kg-65", "recipe")["curves"]:
+        assert curve["diameter_mm"] is None
+        assert curve["applies_to"] == "unknown"
+        assert curve["label"] == {"by": "letter", "printed": curve["id"][-1]}
