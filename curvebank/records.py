@@ -133,13 +133,14 @@ class Fit:
     def value(self, flow_m3h: Any) -> FloatArray:
         """The polynomial at any flow (no domain check here: callers guard the domain)."""
         t = (np.asarray(flow_m3h, dtype=np.float64) - self.mid) / self.half
-        return np.polynomial.polynomial.polyval(t, self.scaled)
+        return np.asarray(np.polynomial.polynomial.polyval(t, self.scaled), dtype=np.float64)
 
     def uncertainty(self, flow_m3h: Any) -> FloatArray:
         """Standard uncertainty of the fitted value: sqrt(phi V phi'), JCGM 100 eq. 13."""
         t = (np.asarray(flow_m3h, dtype=np.float64) - self.mid) / self.half
         phi = np.polynomial.polynomial.polyvander(t.ravel(), self.order).reshape(*t.shape, self.order + 1)
-        return np.sqrt(np.maximum(np.einsum("...i,ij,...j->...", phi, self.covariance, phi), 0.0))
+        variance = np.einsum("...i,ij,...j->...", phi, self.covariance, phi)
+        return np.asarray(np.sqrt(np.maximum(variance, 0.0)), dtype=np.float64)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True, eq=False)

@@ -9,8 +9,10 @@ from ..records import PageInfo
 from . import curves as curve_maker
 from .result import clean, curve_json, panel_json
 from .run import clicks, pump_info
+from .threads import one_thread
 
 
+@one_thread
 def preview(
     panel: dict[str, Any], curve: dict[str, Any] | None, prepared: Any, page: PageInfo | None, pump: dict[str, Any] | None = None
 ) -> dict[str, Any]:

@@ -17,6 +17,7 @@ from ..errors import CurvebankError, SheetError, TraceError
 from ..recipe import CurveModel, Recipe
 from ..records import Curve, Digitised, PageInfo, PumpInfo
 from . import curves as curve_maker
+from .threads import one_thread
 
 Progress = Callable[[float, str], None]
 ALGORITHM = "ribbon-1"
@@ -53,6 +54,7 @@ def pump_info(doc: Recipe) -> PumpInfo:
     )
 
 
+@one_thread
 def run(
     doc: bytes | str | dict[str, Any],
     sheet_bytes: bytes | None,
@@ -187,6 +189,8 @@ def clicks(c: CurveModel) -> trace.Clicks:
     points = [tuple(p) for p in c.clicks]
     if c.closed and len(points) > 2 and points[0] == points[-1]:
         points = points[:-1]
+    if c.kind == "table":
+        raise TraceError("A typed table is not traced.", code="table")
     return trace.Clicks(id=c.id, points=points, closed=c.closed, ends=c.ends, kind=c.kind)
 
 
