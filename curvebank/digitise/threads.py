@@ -1,4 +1,4 @@
-"""One thread for the numbers: results repeat to the bit, and small matrices are faster without a pool of threads to wake."""
+"""One thread for the numbers: the count of threads changes the last bits of a sum, and small matrices run faster on one."""
 
 import functools
 from collections.abc import Callable
