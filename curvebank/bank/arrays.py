@@ -6,6 +6,10 @@ from typing import Any
 import numpy as np
 
 from ..errors import ExtrapolationWarning, LawError, OutsideDomain
+from ..laws import family
+
+MANY_SPEEDS = 16
+"""From so many distinct speeds on, the speed laws are applied to the array instead of making a reading for each."""
 
 
 def read_arrays(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of: str | None) -> np.ndarray:
@@ -14,27 +18,63 @@ def read_arrays(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: st
     Returns a float64 array of the broadcast shape. NaN flows give NaN with ``outside="nan"`` and an error otherwise.
     """
     flows = np.asarray(flow, dtype=np.float64)
-    sizes = [np.asarray(x, dtype=np.float64) for x in (diameter, speed) if x is not None and np.ndim(x) > 0]
-    if not sizes:
+    many = [x for x in (diameter, speed) if x is not None and np.ndim(x) > 0]
+    if not many:
         d = None if diameter is None else float(diameter)
         n = None if speed is None else float(speed)
         return _group(quantity, flows, d, n, outside, of)
+    diameters, of_diameter = _levels(diameter, "diameter", "mm")
+    speeds, of_speed = _levels(speed, "speed", "1/min")
     try:
-        parts = np.broadcast_arrays(flows, *(np.nan if x is None else np.asarray(x, dtype=np.float64) for x in (diameter, speed)))
+        flows, of_diameter, of_speed = np.broadcast_arrays(flows, of_diameter, of_speed)
     except ValueError as error:
         raise LawError(f"Flow, diameter and speed have shapes that do not fit together ({error}).") from None
-    flows, diameters, speeds = (np.ascontiguousarray(p).reshape(-1) for p in parts)
-    if (diameter is not None and not np.isfinite(diameters).all()) or (speed is not None and not np.isfinite(speeds).all()):
-        raise LawError("A diameter or speed is not a finite number. Give numbers above 0.")
-    pairs = np.stack([diameters, speeds], axis=1)
-    unique, which = np.unique(pairs, axis=0, return_inverse=True, equal_nan=True)
-    order = np.argsort(which.reshape(-1), kind="stable")
-    cuts = np.searchsorted(which.reshape(-1)[order], np.arange(len(unique) + 1))
+    by_law = of is None and speed is not None and len(speeds) > MANY_SPEEDS
+    code = of_diameter.reshape(-1) if by_law else of_diameter.reshape(-1) * len(speeds) + of_speed.reshape(-1)
+    order = np.argsort(code, kind="stable")
+    starts = np.flatnonzero(np.diff(code[order], prepend=-1))
+    flat, out = np.ascontiguousarray(flows).reshape(-1), np.empty(flows.size)
+    for start, stop in zip(starts, [*starts[1:], code.size], strict=True):
+        at = order[start:stop]
+        d, n = diameters[of_diameter.reshape(-1)[at[0]]], speeds[of_speed.reshape(-1)[at[0]]]
+        if by_law:
+            out[at] = _over_speeds(quantity, flat[at], d, speeds[of_speed.reshape(-1)[at]], outside)
+        else:
+            out[at] = _group(quantity, flat[at], None if diameter is None else float(d), None if speed is None else float(n), outside, of)
+    return out.reshape(flows.shape)
+
+
+def _levels(values: Any, what: str, unit: str) -> tuple[np.ndarray, np.ndarray]:
+    """Distinct values and, in the shape of the input, which of them each one is."""
+    if values is None:
+        return np.array([np.nan]), np.zeros((), dtype=np.intp)
+    a = np.asarray(values, dtype=np.float64)
+    if not np.isfinite(a).all() or (a <= 0).any():
+        raise LawError(f"A {what} in the array is not a number above 0 {unit}.")
+    distinct, which = np.unique(a, return_inverse=True)
+    return distinct, which.reshape(a.shape)
+
+
+def _over_speeds(quantity: Any, flows: np.ndarray, diameter: float, speeds: np.ndarray, outside: str) -> np.ndarray:
+    """Many speeds at one diameter: one reading per printed speed, carried by the speed laws over the whole array."""
+    d = None if np.isnan(diameter) else float(diameter)
+    able = np.array(family.able_speeds(quantity.lines, d))
+    if able.size == 0 or not quantity.carries_speed:
+        return np.array([quantity(float(q), d, float(n), outside=outside) for q, n in zip(flows, speeds, strict=True)])
+    distance = np.abs(np.log(speeds[:, None] / able[None, ::-1]))  # the faster of two equally near, as for plain numbers
+    nearest = able[::-1][np.argmin(distance, axis=1)]
     out = np.empty(flows.shape)
-    for i, (d, n) in enumerate(unique):
-        at = order[cuts[i] : cuts[i + 1]]
-        out[at] = _group(quantity, flows[at], None if diameter is None else float(d), None if speed is None else float(n), outside, of)
-    return out.reshape(parts[0].shape)
+    for printed in np.unique(nearest):
+        at = np.flatnonzero(nearest == printed)
+        ratio = speeds[at] / printed
+        power = np.where(ratio >= 1, *(family.speed_exponent(quantity.quantity, r) for r in (1.0, 0.5)))
+        try:
+            out[at] = _group(quantity, flows[at] / ratio, d, float(printed), outside, None) * ratio**power
+        except OutsideDomain:
+            for i in at:  # the sentence is about the flow and the speed that were asked
+                quantity(float(flows[i]), d, float(speeds[i]), outside=outside)
+            raise
+    return out
 
 
 def _group(quantity: Any, flows: np.ndarray, diameter: float | None, speed: float | None, outside: str, of: str | None) -> np.ndarray:
@@ -44,6 +84,10 @@ def _group(quantity: Any, flows: np.ndarray, diameter: float | None, speed: floa
         if outside == "nan" and error.code == OutsideDomain.code:
             return np.full(flows.shape, np.nan)
         raise
+    if of is None and isinstance(reading, family.Plan):
+        quick = reading.values(flows, guarded=True)
+        if quick is not None:
+            return quick
     inside = reading.holds(flows)
     if inside.all():
         return _inside(quantity, reading, flows, of)

@@ -18,7 +18,8 @@ TOUCH = 1e-10
 def bisect(f: Callable[[float], float], a: float, b: float) -> float:
     """The root of a continuous function between two points where it differs in sign, to the last bits.
 
-    Regula falsi in its Illinois form (the end that stays has its value halved), with a plain halving every third step so that it never stalls.
+    Regula falsi in its Illinois form (the end that stays has its value halved), with a plain halving every third step so that it
+    never stalls.
     """
     fa, fb = f(a), f(b)
     if fa == 0.0 or fb == 0.0:

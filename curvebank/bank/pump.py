@@ -14,6 +14,22 @@ BASES = ("catalogue", "quotation", "guaranteed", "works test", "field test")
 """What a reading rests on where a pump has several: the type before one machine of it."""
 
 
+class _Read:
+    """A quantity made on first use, a plain attribute from then on: a call in a loop pays for no property."""
+
+    def __init__(self, doc):
+        self.__doc__ = doc
+
+    def __set_name__(self, owner, name):
+        self.name = name
+
+    def __get__(self, pump, owner=None):
+        if pump is None:
+            return self
+        made = pump.__dict__[self.name] = pump.quantity(self.name)
+        return made
+
+
 class Pump:
     """The curves of one revision as callables: ``head``, ``efficiency``, ``power``, ``npshr`` and, where printed, ``suction_lift``,
     ``input_power``, ``overall_efficiency``. Immutable: what it reads never changes."""
@@ -29,40 +45,13 @@ class Pump:
     def __repr__(self):
         return f"<{self.key} revision {self.revision}: {self.maker} {self.model}, {', '.join(self.quantities)}>"
 
-    @property
-    def head(self):
-        """Total head of the pump, all stages [m]."""
-        return self._quantities.get("head") or self.quantity("head")
-
-    @property
-    def efficiency(self):
-        """Pump efficiency, a fraction."""
-        return self._quantities.get("efficiency") or self.quantity("efficiency")
-
-    @property
-    def power(self):
-        """Shaft power [kW]."""
-        return self._quantities.get("power") or self.quantity("power")
-
-    @property
-    def npshr(self):
-        """NPSH required [m]."""
-        return self._quantities.get("npshr") or self.quantity("npshr")
-
-    @property
-    def suction_lift(self):
-        """Permissible suction lift under the conditions that the sheet states [m]."""
-        return self.quantity("suction_lift")
-
-    @property
-    def input_power(self):
-        """Electrical input power [kW]; not shaft power."""
-        return self.quantity("input_power")
-
-    @property
-    def overall_efficiency(self):
-        """Efficiency of pump and motor together, a fraction."""
-        return self.quantity("overall_efficiency")
+    head = _Read("Total head of the pump, all stages [m].")
+    efficiency = _Read("Pump efficiency, a fraction.")
+    power = _Read("Shaft power [kW].")
+    npshr = _Read("NPSH required [m].")
+    suction_lift = _Read("Permissible suction lift under the conditions that the sheet states [m].")
+    input_power = _Read("Electrical input power [kW]; not shaft power.")
+    overall_efficiency = _Read("Efficiency of pump and motor together, a fraction.")
 
     def quantity(self, name, *, group=None, basis=None):
         """A callable quantity; ``group`` (casting) and ``basis`` choose among lines where a pump has several kinds."""

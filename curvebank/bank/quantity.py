@@ -37,6 +37,7 @@ class Quantity:
         self.lines = lines
         self.basis = basis
         self._plans = {}
+        self.carries_speed = quantity == "npshr" or quantity in family.SPEED
         self._diameters = sorted({li.diameter_mm for li in lines if li.diameter_mm is not None})
         self._speeds = sorted({li.speed_rpm for li in lines if li.speed_rpm is not None})
 

@@ -57,24 +57,26 @@ BLOCK = 16384
 class Line:
     """One stored line: a polynomial in t = (flow - mid)/half over lo <= flow <= hi, at one diameter (or for all) and one speed."""
 
-    __slots__ = ("cov", "curve", "diameter_mm", "half", "hi", "lo", "mid", "scaled", "sigma", "speed_rpm")
+    __slots__ = ("_sums", "cov", "curve", "diameter_mm", "half", "hi", "lo", "mid", "scaled", "sigma", "speed_rpm")
 
     def __init__(self, curve, diameter_mm, speed_rpm, lo, hi, mid, half, scaled, sigma=0.0, cov=None):
         self.curve, self.diameter_mm, self.speed_rpm = curve, diameter_mm, speed_rpm
         self.lo, self.hi, self.mid, self.half = lo, hi, mid, half
         self.scaled, self.sigma, self.cov = tuple(scaled), sigma, cov
+        self._sums = None
 
     def uncertainty(self, flow_m3h):
         """Standard uncertainty at a flow (float or array): sqrt(phi V phi'), JCGM 100 eq. 13; ``sigma`` where no covariance is stored."""
         if not self.cov:
             return self.sigma
-        n = len(self.scaled)
+        if self._sums is None:
+            n = len(self.scaled)
+            v = struct.unpack(f"<{n * n}d", self.cov)
+            # phi V phi' is a polynomial in t: sum the covariance along its anti-diagonals once, highest power first
+            self._sums = [math.fsum(v[i * n + m - i] for i in range(max(0, m - n + 1), min(n, m + 1))) for m in range(2 * n - 2, -1, -1)]
         t = (flow_m3h - self.mid) / self.half
-        v = struct.unpack(f"<{n * n}d", self.cov)
-        # phi V phi' is a polynomial in t: sum the covariance along its anti-diagonals once
-        sums = [math.fsum(v[i * n + m - i] for i in range(max(0, m - n + 1), min(n, m + 1))) for m in range(2 * n - 1)]
-        total = sums[-1]
-        for s in reversed(sums[:-1]):
+        total = 0.0
+        for s in self._sums:
             total = total * t + s
         if isinstance(total, float):
             return math.sqrt(max(total, 0.0))
@@ -118,8 +120,11 @@ class Plan:
         twice = [(w * (s / li.half) ** 2, s, _Derived(_Derived(li))) for w, s, li in self.terms]
         return _evaluator(twice, 0.0)(flow_m3h)
 
-    def values(self, flow_m3h):
-        """The value over a float64 array, by Horner in place and in blocks that stay in cache."""
+    def values(self, flow_m3h, *, guarded=False):
+        """The value over a float64 array, by Horner in place and in blocks that stay in cache.
+
+        With ``guarded`` the answer is None where any flow lies outside the domain (the check shares the cache with the sum).
+        """
         import numpy as np
 
         flow = np.asarray(flow_m3h, dtype=np.float64, order="C")
@@ -130,6 +135,8 @@ class Plan:
         for start in range(0, q.size, BLOCK):
             block, target = q[start : start + BLOCK], v[start : start + BLOCK]
             n = block.size
+            if guarded and not (self.holds(block.min()) and self.holds(block.max())):
+                return None
             for i, (weight, factor, line) in enumerate(self.terms):
                 x = t[:n]
                 np.multiply(block, factor / line.half, out=x)
@@ -279,7 +286,7 @@ def _speed_notes(quantity, line, speed_rpm):
 
 
 def _doubt(value, parts, relative, absolute):
-    """Rule doubt as a function of flow: ``parts`` is None or the two carried values of a blend."""
+    """Rule doubt as a function of flow: ``parts`` is None or w and the two carried lines of a blend."""
     if parts is None and not relative and not absolute:
         return None
 
@@ -288,7 +295,8 @@ def _doubt(value, parts, relative, absolute):
         if relative:
             total = total + (relative * value(flow)) ** 2
         if parts is not None:
-            w, first, second = parts
+            w, one, two = parts
+            first, second = _evaluator([one], 0.0), _evaluator([two], 0.0)
             # between two traced diameters the answer lies between the carried neighbours: rectangular, none at the ends (JCGM 100, 4.3.7)
             total = total + (2 * w * (1 - w) * (first(flow) - second(flow))) ** 2 / 3
         return total**0.5
@@ -354,17 +362,27 @@ def plan(quantity, lines, diameter_mm, speed_rpm, *, rule=DEFAULT_RULE, span=Non
 
 def at_speed(lines, diameter_mm, speed_rpm):
     """The lines printed at the speed nearest (by ratio) to the one asked, among the speeds whose diameters reach the one asked."""
-    speeds = sorted({li.speed_rpm for li in lines if li.speed_rpm is not None})
-    if len(speeds) <= 1 or speed_rpm is None:
+    if speed_rpm is None:
         return list(lines)
+    able = able_speeds(lines, diameter_mm)
+    if not able:
+        return list(lines)
+    nearest = min(able, key=lambda n: (abs(math.log(speed_rpm / n)), -n))
+    return [li for li in lines if li.speed_rpm == nearest or li.speed_rpm is None]
+
+
+def able_speeds(lines, diameter_mm):
+    """Printed speeds whose diameters reach the one asked, ascending; all printed speeds where none does."""
+    speeds = sorted({li.speed_rpm for li in lines if li.speed_rpm is not None})
+    if len(speeds) <= 1:
+        return speeds
     groups = {n: [li for li in lines if li.speed_rpm == n or li.speed_rpm is None] for n in speeds}
 
     def reaches(group):
         known = [li.diameter_mm for li in group if li.diameter_mm is not None]
         return diameter_mm is None or len(known) < len(group) or min(known) <= diameter_mm <= max(known)
 
-    able = [n for n in speeds if reaches(groups[n])] or speeds
-    return groups[min(able, key=lambda n: (abs(math.log(speed_rpm / n)), -n))]
+    return [n for n in speeds if reaches(groups[n])] or speeds
 
 
 def _single(quantity, line, diameter_mm, speed_rpm, rule, notes):
@@ -387,7 +405,7 @@ def _blend(quantity, small, large, diameter_mm, speed_rpm, rule):
         )
     notes, relative, other = _speed_notes(quantity, large, speed_rpm)
     out = Plan([((1 - w) * w1, f1, small), (w * w2, f2, large)], lo, hi, rule, notes=notes)
-    parts = (w, _evaluator([(w1, f1, small)], 0.0), _evaluator([(w2, f2, large)], 0.0))
+    parts = (w, (w1, f1, small), (w2, f2, large))
     out._doubt = _doubt(out.value, parts, math.hypot(relative, other / math.sqrt(3)), 0.0)
     return out
 

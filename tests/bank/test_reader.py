@@ -395,3 +395,37 @@ def test_thousands_of_diameters_do_not_fill_memory(pump):
     for i in range(CACHE + 10):
         pump.head(50.0, 280.0 + 40.0 * (i + 1) / (CACHE + 20))
     assert len(pump.head._plans) <= CACHE
+
+
+def test_hourly_speeds_are_carried_over_the_whole_array(pump):
+    """Thousands of distinct speeds and a few diameters: the same numbers as one by one, in one pass."""
+    rng = np.random.default_rng(11)
+    flow, speed, diameter = rng.uniform(10, 50, (300, 3)), rng.uniform(1000, 1600, (300, 1)), np.array([285.0, 300.0, 320.0])
+    for quantity in (pump.head, pump.power, pump.efficiency):
+        got = quantity(flow, diameter, speed)
+        want = [
+            [quantity(float(q), float(d), float(n)) for q, d in zip(row, diameter, strict=True)]
+            for row, (n,) in zip(flow, speed, strict=True)
+        ]
+        np.testing.assert_allclose(got, want, rtol=1e-12)
+    with pytest.raises(OutsideDomain, match="90 m³/h is outside .* to 68.* m³/h"):
+        pump.head(np.full(300, 90.0), 320.0, np.linspace(1000, 1200, 300))
+    assert np.isnan(pump.head(np.full(300, 90.0), 320.0, np.linspace(1000, 1200, 300), outside="nan")).all()
+
+
+def test_npshr_over_many_speeds_takes_both_exponents(store):
+    """n^1.3 below and n^2 above the printed speed, in one array; two printed speeds share the array."""
+    curves = [make.curve("N", "npshr", (3.0,), 320.0, hi=300.0), make.curve("M", "npshr", (12.0,), 320.0, speed=2900.0, hi=300.0)]
+    make.save(store, make.digitised(curves), release=True)
+    n = np.linspace(1000, 3500, 101)
+    npshr = store.pump(make.KEY).npshr
+    np.testing.assert_allclose(npshr(np.full(101, 40.0), 320.0, n), [npshr(40.0, 320.0, float(x)) for x in n], rtol=1e-12)
+
+
+@pytest.mark.parametrize("bad", [0.0, float("nan"), -300.0])
+def test_impossible_diameters_and_speeds_in_arrays(pump, bad):
+    """One bad entry refuses the array."""
+    with pytest.raises(LawError, match="above 0 mm"):
+        pump.head(50.0, np.array([320.0, bad]))
+    with pytest.raises(LawError, match="above 0 1/min"):
+        pump.head(50.0, 320.0, np.array([1450.0, bad]))
