@@ -14,8 +14,9 @@ from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validat
 from .. import units
 from ..records import CONTOURS
 
-Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0)]
+Number = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=-1e12, le=1e12)]
+"""Any pixel or printed value; beyond 1e12 a number is a slip, and squares of it would overflow."""
+Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=1e-12, le=1e12)]
 Text = Annotated[str, Field(strict=True, min_length=1, max_length=500)]
 Pair = tuple[Number, Number]
 
