@@ -58,6 +58,32 @@ def _best(family: Family) -> Alternative | None:
     return family.verdict.best if family.verdict is not None else None
 
 
+def _settled(context: Context, family: Family) -> Alternative | None:
+    """The one label that the other quantity's curves of the same wheels single out where this family alone names several."""
+    v = family.verdict
+    named = [a for a in v.alternatives if a.kind == "diameter"] if v is not None else []
+    labels = [s.diameter_mm for s in family.members]
+    for other in context.families:
+        w = other.verdict
+        if (
+            other.quantity == family.quantity
+            or other.quantity not in JUDGED
+            or other.group != family.group
+            or w is None
+            or w.gain_of is None
+        ):
+            continue
+        if [s.diameter_mm for s in other.members] != labels or "diameter" not in w.exponents or not named:
+            continue
+        theirs = {a.curve: w.gain_of("diameter", a.curve, a.shift) for a in named}
+        total = sorted(named, key=lambda a: -(a.gain + theirs[a.curve]))
+        lead = total[0].gain + theirs[total[0].curve]
+        runner = total[1].gain + theirs[total[1].curve] if len(total) > 1 else 0.0
+        if theirs[total[0].curve] > context.limits["family_margin"] and lead - runner > context.limits["family_margin"]:
+            return total[0]
+    return None
+
+
 def diameter_label(context: Context) -> Iterator[Finding]:
     """family-diameter-label: one printed diameter (or speed) disagrees with the others, and which would agree."""
     for f in context.families:
@@ -66,7 +92,11 @@ def diameter_label(context: Context) -> Iterator[Finding]:
             continue
         best = v.alternatives[0]
         what = QUANTITY_WORDS[f.quantity]
-        if v.verdict == "mislabelled":
+        settled = _settled(context, f) if v.verdict == "one of these" else None
+        if v.verdict == "mislabelled" or settled is not None:
+            best = settled or best
+            also = " The power curves of the same wheels say so too." if settled is not None and f.quantity == "head" else ""
+            also = " The head curves of the same wheels say so too." if settled is not None and f.quantity == "power" else also
             rule = "family-diameter-label" if best.kind == "diameter" else "family-speed-label"
             agreed = f"{best.agrees:.0f} {'mm' if best.kind == 'diameter' else '1/min'}"
             action = f"Check the original, then file it as {agreed} or give the reason."
@@ -75,7 +105,7 @@ def diameter_label(context: Context) -> Iterator[Finding]:
                 rule=rule,
                 severity="error",
                 subject=f"curve:{curve.id}",
-                message=f"The {what} curve printed {_printed(best)} behaves like {_agrees(best)}. {action}",
+                message=f"The {what} curve printed {_printed(best)} behaves like {_agrees(best)}.{also} {action}",
                 measured=round(best.agrees or 0.0, 2),
                 limit=best.printed,
                 unit="mm" if best.kind == "diameter" else "1/min",

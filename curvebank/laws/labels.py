@@ -49,9 +49,9 @@ SPEED_PRIOR = {
 }
 """Speed: exponents are known (White ch. 11; ISO 9906 for NPSHr 1.3 to 2)."""
 
-THRESHOLD = 7.0
-MARGIN = 3.0
-DISPLACED_ODDS = 3.0
+THRESHOLD = 6.0
+MARGIN = 2.0
+DISPLACED_ODDS = 2.0
 """Log prior odds of a wrong label against a displaced curve: labels are misread far more often than lines are drawn off their place."""
 
 
@@ -83,6 +83,8 @@ class Verdict:
     ``verdict`` is ``sound``, ``mislabelled`` (a diameter or speed), ``displaced`` (one curve's value or flow scale), ``exchanged`` (two
     labels), ``one of these`` (several explanations nearly alike) or ``cannot tell`` (two curves). ``detectable`` is the
     smallest relative error of a diameter (or speed) that this family would show; ``unexplained`` tells that no single explanation fits.
+    ``gain_of(kind, curve, shift)`` is the log likelihood gained if that label were off by ``shift``, so that families of several
+    quantities with the same labels can be added up.
     """
 
     verdict: str
@@ -92,6 +94,7 @@ class Verdict:
     detectable: float | None
     unexplained: bool = False
     gains: dict[str, float] = field(default_factory=dict)
+    gain_of: Callable[[str, int, float], float] | None = None
 
     @property
     def best(self) -> Alternative | None:
@@ -275,6 +278,12 @@ def judge_family(
     alternatives = _alternatives(model, curves, kinds, xs, sound)
     detectable = max(np.sqrt(2 * threshold / model.information(xs, 0, k)) for k in range(len(curves)))
     best = alternatives[0]
+
+    def gain_of(kind: str, curve: int, shift: float) -> float:
+        moved = [x.copy() for x in xs]
+        moved[kinds.index(kind)][curve] += shift
+        return float(model.score(moved)) - sound
+
     gains = {f"{a.kind}:{curves[a.curve].id}": a.gain for a in alternatives}
     used = xs
     named: tuple[Alternative, ...] = ()
@@ -302,6 +311,7 @@ def judge_family(
         detectable=float(detectable),
         unexplained=bool(left > limit),
         gains=gains,
+        gain_of=gain_of,
     )
 
 

@@ -146,3 +146,23 @@ def test_family_picture_shows_ghosts_gaps_and_the_agreeing_diameter():
     assert abs(sound["gap"]) < 2 * sound["doubt"]
     assert abs(wrong["gap"]) > 5 * wrong["doubt"]
     assert checks.family_picture(family("head")[:1], {}) == {}
+
+
+def test_power_settles_what_head_alone_leaves_open():
+    """Three wheels, the smallest printed 2 % too large for head and power alike."""
+
+    def wheels(quantity):
+        return [curve(quantity, 340.0), curve(quantity, 323.0), curve(quantity, 305.0, true=299.0)]
+
+    def label(curves):
+        return {f.subject: f for f in said(curves) if f.rule == "family-diameter-label"}
+
+    alone = label(wheels("head"))
+    assert list(alone) == ["family:head"] and alone["family:head"].severity == "warning"
+    both = label([*wheels("head"), *wheels("power")])
+    f = both["curve:H-305"]
+    assert f.severity == "error" and f.measured == pytest.approx(299, rel=0.01)
+    assert "The power curves of the same wheels say so too." in f.message
+    # sound power curves say nothing for a wrong label, so nothing is settled
+    mixed = label([*wheels("head"), *family("power", (340, 323, 305))])
+    assert mixed["family:head"].severity == "warning"
