@@ -19,13 +19,15 @@ LOG_PRIOR_TYPO = float(np.log(0.003))
 LOG_PRIOR_SWAP = float(np.log(0.001))
 LOG_PRIOR_PHOTO = float(np.log(0.02))
 """How often a value is mistyped, two are swapped, a sheet is a photo taken at an angle (our own estimates, no source)."""
+LOG_ODDS_UPRIGHT = 4.0
 WARP_SIGMAS_PX = ((CLICK_SIGMA_PX, float(np.log(0.88))), (2.0, float(np.log(0.08))), (4.0, float(np.log(0.03))), (8.0, float(np.log(0.01))))
 """Scatter of marks about a flat plane, with log prior: good paper, and paper that is warped by so much."""
 NEARLY_AS_GOOD = 3.0
 """Readings within this of the best (odds of 20 to 1) cannot be told apart."""
 LEAST_MISS_PX = 6.0
 """A value that fits this well is not called mistyped."""
-MOST_TICKS = 400.0
+FEWEST_TICKS, MOST_TICKS = 6.0, 400.0
+"""An axis has about this many ticks at least, and no scale is finer than the other."""
 STEPS = (5.0, 2.5, 2.0, 1.0)
 
 
@@ -125,6 +127,11 @@ def _read(
             if axis == name:
                 level[mark] = np.log10(value) if a.log else value
         score -= tick_cost(a.printed(level), a.log)
+    # Flow grows to the right and values grow upwards on nearly every chart.
+    score -= LOG_ODDS_UPRIGHT * (float(solution.x[2] < 0) + float(solution.x[5] > 0))
+    for slot in layout.slots.values():
+        if slot.own is not None:
+            score -= LOG_ODDS_UPRIGHT * float(solution.x[solution.plane_size + slot.own + 1] < 0)
     if projective:
         score += LOG_PRIOR_PHOTO
     if (
@@ -238,22 +245,23 @@ def round_values(low: float, high: float, value: float) -> list[float]:
 def tick_cost(values: Sequence[float] | np.ndarray, log: bool) -> float:
     """Minus log probability that an axis's printed ticks are these: k ln(number of ticks of the coarsest common step).
 
-    On a log scale ticks have one leading digit, some two.
+    More than ten labelled ticks get rarer quickly, and a lone value below zero is rare. On a log scale ticks have one
+    leading digit, some two.
     """
     values = np.asarray(values, dtype=np.float64)
     if log:
-        cost = 0.0
-        for v in values:
-            lead = v / 10.0 ** np.floor(np.log10(v) + 1e-12)
-            cost += np.log(15.0 if _whole(lead) else 60.0 if _whole(lead * 10) or _whole(lead * 4) else MOST_TICKS)
-        return float(cost)
+        lead = values / 10.0 ** np.floor(np.log10(values) + 1e-12)
+        digits = [0 if _whole(v) else 1 if _whole(v * 10) or _whole(v * 4) else 2 for v in lead]
+        return float(len(digits) * np.log(12.0) + 4.0 * sum(digits))
     span = float(np.ptp(values)) or 1.0
+    lone = 3.0 if np.sum(values < 0) == 1 and len(values) > 2 else 0.0
     for power in range(int(np.ceil(np.log10(span))), int(np.floor(np.log10(span))) - 5, -1):
         for head in STEPS:
             step = head * 10.0**power
             if step <= span * (1 + 1e-9) and all(_whole(v / step) for v in values):
-                return float(len(values) * np.log(min(max(span / step, 2.0), MOST_TICKS)))
-    return float(len(values) * np.log(MOST_TICKS))
+                ticks = float(min(max(span / step, FEWEST_TICKS), MOST_TICKS))
+                return lone + len(values) * float(np.log(ticks)) + 4 * max(float(np.log(ticks / 10)), 0.0)
+    return lone + len(values) * float(np.log(MOST_TICKS)) + 4 * float(np.log(MOST_TICKS / 10))
 
 
 def _whole(x: float) -> bool:
