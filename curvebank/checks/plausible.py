@@ -45,12 +45,15 @@ def rising_head(context: Context) -> Iterator[Finding]:
 
 def _dip(context: Context, s: Series) -> Iterator[Finding]:
     """A rise that follows a fall: saddle of a high specific speed wheel, or a trace on another line."""
+    scale = float(np.abs(s.value).max())
+    if scale == 0:
+        return
     lowest = np.minimum.accumulate(s.value)
     climb = s.value - lowest
     at = int(np.argmax(climb))
     foot = int(np.argmin(s.value[: at + 1]))
     doubt = float(np.hypot(s.u[at], s.u[foot]))
-    share = float(climb[at]) / float(np.abs(s.value).max())
+    share = float(climb[at]) / scale
     if foot == 0 or share <= context.limits["rising_note_pct"] / 100 or climb[at] <= 2 * doubt:
         return
     action = "Look along this stretch: the trace may have taken another line."

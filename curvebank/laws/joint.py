@@ -156,7 +156,14 @@ def joint_scales(
     """
     if len(curves) < 2:
         raise LawError("A family needs two or more curves.")
-    problem = _Problem(curves, order, offset_sd)
+    try:
+        return _fit(_Problem(curves, order, offset_sd), start_flow, start_value, robust)
+    except np.linalg.LinAlgError as e:
+        raise LawError("The curves have no common shape that could be fitted. Look whether they are one quantity.") from e
+
+
+def _fit(problem: "_Problem", start_flow: npt.ArrayLike, start_value: npt.ArrayLike, robust: bool) -> Scales:
+    """The better of several starts: redescending weights can settle in the wrong place from a single one."""
     labels = np.concatenate([np.asarray(start_flow, dtype=np.float64), np.asarray(start_value, dtype=np.float64)])
     found = [problem.solve(labels, robust)]
     if robust:

@@ -273,9 +273,12 @@ def judge_family(
     start_flow = np.sum([p.flow * x for p, x in zip(priors, xs, strict=True)], axis=0)
     start_value = np.sum([p.value * x for p, x in zip(priors, xs, strict=True)], axis=0)
     scales = joint_scales(curves, start_flow, start_value, order=order)
-    model = _Model(scales, trim, speed)
-    sound = float(model.score(xs))
-    alternatives = _alternatives(model, curves, kinds, xs, sound)
+    try:
+        model = _Model(scales, trim, speed)
+        sound = float(model.score(xs))
+        alternatives = _alternatives(model, curves, kinds, xs, sound)
+    except np.linalg.LinAlgError as e:
+        raise LawError("The curves leave their scales undetermined, so their labels cannot be judged.") from e
     detectable = max(np.sqrt(2 * threshold / model.information(xs, 0, k)) for k in range(len(curves)))
     best = alternatives[0]
 
