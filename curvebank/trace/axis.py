@@ -10,7 +10,7 @@ from ..records import FloatArray
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Axis:
-    """A curve sampled finely: ``points`` [n, 2] px at arc lengths ``s`` [n], with unit tangents [n, 2].
+    """A curve sampled finely: ``points`` [n, 2] px at even arc lengths ``s`` [n], with unit tangents [n, 2].
 
     A closed one repeats its first point at the end.
     """
@@ -34,12 +34,18 @@ class Axis:
         """Points and unit normals at arc lengths ``s`` (wrapped when closed, continued straight when open)."""
         s = np.asarray(s, dtype=np.float64)
         t = np.mod(s, self.length) if self.closed else np.clip(s, 0.0, self.length)
-        xy = np.stack([np.interp(t, self.s, self.points[:, k]) for k in (0, 1)], axis=1)
-        tangent = np.stack([np.interp(t, self.s, self.tangents[:, k]) for k in (0, 1)], axis=1)
-        tangent /= np.maximum(np.hypot(*tangent.T), 1e-12)[:, None]
+        # Samples are even in arc length, so the cell is found by division.
+        u = t * ((len(self.s) - 1) / self.length)
+        cell = np.minimum(u.astype(np.int64), len(self.s) - 2)
+        table = np.concatenate([self.points, self.tangents], axis=1)
+        out = np.take(table, cell, axis=0)
+        out += (u - cell)[:, None] * np.take(np.diff(table, axis=0), cell, axis=0)
         if not self.closed:
-            xy = xy + (s - t)[:, None] * tangent
-        return xy, np.stack([-tangent[:, 1], tangent[:, 0]], axis=1)
+            beyond = s - t
+            if beyond.any():
+                out[:, :2] += beyond[:, None] * out[:, 2:]
+        # Between neighbouring unit tangents the length is 1 to second order in their tiny angle.
+        return out[:, :2], np.stack([-out[:, 3], out[:, 2]], axis=1)
 
     def arc_of(self, xy: FloatArray) -> FloatArray:
         """Arc length of the nearest axis sample to each point [n, 2]."""
@@ -67,8 +73,7 @@ def from_polyline(points: FloatArray, closed: bool, step: float = 1.0) -> Axis:
     else:
         tangents = np.gradient(xy, axis=0, edge_order=2)
     tangents /= np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
-    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(xy, axis=0).T))]
-    return Axis(xy, s, tangents, closed)
+    return Axis(xy, at, tangents, closed)
 
 
 def through(points: FloatArray, closed: bool) -> tuple[Axis, FloatArray]:

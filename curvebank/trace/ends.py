@@ -4,6 +4,7 @@ import numpy as np
 
 from ..records import FloatArray
 from ..sheet import Prepared
+from ..sheet.prepare import unit_of
 from .axis import Axis, from_polyline
 from .clicks import PanelMap
 from .presence import CROSSED, EMPTY, HIDDEN, INKED, Presence, Rhythm, presence, rhythm
@@ -14,7 +15,7 @@ CHUNK_PX = 30.0
 
 def to_ink(prepared: Prepared, panel: PanelMap, axis: Axis, shape: Shape, fixed_ends: tuple[bool, bool] = (False, False)) -> Axis:
     """The axis with each end where the ink stops (an end in ``fixed_ends`` stays). Open axes only."""
-    unit = max(prepared.unit, 0.6)
+    unit = max(unit_of(shape.width), 0.6)
     inside = presence(prepared, axis, shape, np.arange(0.0, axis.length + 0.5, 1.0))
     beat = rhythm(inside, unit)
     for end in (0, 1):
@@ -36,7 +37,7 @@ def _carry_on(prepared: Prepared, panel: PanelMap, axis: Axis, shape: Shape, bea
     chunk = CHUNK_PX * unit + (beat.gap_px if beat.dashed else 0.0)
     original = len(points)
     for _ in range(60):
-        grown = _one_chunk(prepared, panel, points, shape, chunk, unit)
+        grown = _one_chunk(prepared, panel, points, shape, chunk, beat, unit)
         if grown is None:
             break
         candidate = from_polyline(np.vstack([points, grown]), False)
@@ -62,10 +63,12 @@ def _length(points: FloatArray) -> float:
     return float(np.hypot(*np.diff(points, axis=0).T).sum())
 
 
-def _one_chunk(prepared: Prepared, panel: PanelMap, points: FloatArray, shape: Shape, chunk: float, unit: float) -> FloatArray | None:
+def _one_chunk(
+    prepared: Prepared, panel: PanelMap, points: FloatArray, shape: Shape, chunk: float, beat: Rhythm, unit: float
+) -> FloatArray | None:
     """The next points along the local parabola, moved onto the ink where there is some; None beyond the panel."""
     s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(points, axis=0).T))]
-    reach = min(max(110.0 * unit, 3 * chunk), 0.5 * s[-1])
+    reach = float(np.clip(80.0 * unit, 20.0, max(0.25 * s[-1], 20.0)))
     tail = s >= s[-1] - reach
     u = (s[tail] - s[-1]) / reach
     degree = 2 if tail.sum() > 25 else 1
@@ -75,7 +78,7 @@ def _one_chunk(prepared: Prepared, panel: PanelMap, points: FloatArray, shape: S
     c = np.linalg.lstsq(basis * w, points[tail] * w, rcond=None)[0]
     ahead = np.arange(1.0, chunk + 0.5)
     predicted = np.polynomial.polynomial.polyvander(ahead / reach, degree) @ c
-    predicted += (points[-1] - c[0])[None, :] * np.exp(-ahead / (0.3 * chunk))[:, None]
+    predicted += points[-1] - c[0]
     height, width = prepared.shape
     ok = (
         np.asarray(panel.inside(predicted), bool)
@@ -91,6 +94,11 @@ def _one_chunk(prepared: Prepared, panel: PanelMap, points: FloatArray, shape: S
         local = from_polyline(np.vstack([points[-1:], predicted]), False)
         blocks = read_blocks(pixels := pixels_near(prepared, local, shape.half_extent + 6.0), pixels.d, shape, local.length, 3.0 * unit)
         good = blocks.good & (np.abs(blocks.shift) < 2.5)
+        # Readings behind the first real gap are not this line's: a label often stands just behind its end.
+        lost = max(int(np.ceil((beat.gap_px if beat.dashed else 4.0 * unit) / (3.0 * unit))), 2)
+        failing = np.convolve(~good, np.ones(lost), "full")[: len(good)] >= lost
+        if failing.any():
+            good[max(int(np.argmax(failing)) - lost + 1, 0) :] = False
         if good.sum() >= 3:
             # A straight correction that starts at zero: the continuation may bend a little, never jump.
             v = blocks.s[good] / local.length

@@ -56,11 +56,11 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     first = Pass(half, grain, grain, rows, slope, 0.04, 6, 4.0 * max(unit, 0.75))
     path, cost = _search(prepared, axis, at, clicks, first, grain, cap)
     for reach in (30.0, 14.0):
-        axis, at = _smoothed(path, axis, clicks, unit, grain if reach > 20 else grain / 4)
+        axis, at = _smoothed(path, axis, clicks, grain)
         step = grain / 4
         narrow = Pass(reach * max(unit, 0.7), step, grain, 12 if axis.length > 300 * unit else 6, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
         path, cost = _search(prepared, axis, at, clicks, narrow, max(grain / 3, 1.0), cap)
-    axis, at = _smoothed(path, axis, clicks, unit, grain / 4)
+    axis, at = _smoothed(path, axis, clicks, grain)
     return Followed(axis, cost, at)
 
 
@@ -122,17 +122,17 @@ def _trust(seen: FloatArray) -> FloatArray:
     return np.maximum(np.minimum(np.r_[share[:1], share], np.r_[share, share[-1:]]), 0.003)
 
 
-def _smoothed(path: Path, axis: Axis, clicks: FloatArray, unit: float, grain: float) -> tuple[Axis, FloatArray]:
-    """A new axis: a robust penalised spline through the path's nodes, and where the clicks fall on it."""
+def _smoothed(path: Path, axis: Axis, clicks: FloatArray, grain: float) -> tuple[Axis, FloatArray]:
+    """A new axis: the old one moved by a robust penalised spline through the path's nodes, and where the clicks fall on it."""
     s, offset, trust = path
-    points, normals = axis.at(s)
-    xy = points + normals * offset[:, None]
     t = s / axis.length
     if axis.closed:
-        xy, t, trust = xy[:-1], t[:-1], trust[:-1]
-    pieces = int(np.clip(len(xy) // 2, 6 if axis.closed else 3, 40))
-    curve = smooth.fit(t, xy, trust, pieces=pieces, periodic=axis.closed, floor=0.3 * grain, correlation=2.0)
-    dense = curve.value(np.linspace(0, 1, max(int(axis.length), 16) + 1))
+        t, offset, trust = t[:-1], offset[:-1], trust[:-1]
+    pieces = int(np.clip(len(t) // 2, 6 if axis.closed else 3, 40))
+    curve = smooth.fit(t, offset, trust, pieces=pieces, periodic=axis.closed, floor=0.25 * grain, correlation=2.0)
+    dense = axis.points + axis.normals * curve.value(axis.s / axis.length)
+    if axis.closed:
+        dense[-1] = dense[0]
     fresh = from_polyline(dense, axis.closed)
     at = fresh.arc_of(clicks)
     if axis.closed:

@@ -1,4 +1,4 @@
-"""Say how far a trace may be believed: stretches without support, a confidence, a flag with its reason in words, and the click that would help."""
+"""How far a trace may be believed: stretches without support, confidence, a flag with its reason in words, the click that would help."""
 
 from dataclasses import dataclass, field
 
@@ -29,7 +29,7 @@ class Doubt:
 
 
 def sigma_of(fine: Refined, unit: float) -> FloatArray:
-    """Standard uncertainty across the line [px]: of the spline, plus what pixel sampling and the printed shape add (found on drawn sheets)."""
+    """Standard uncertainty across the line [px]: of the spline, plus what sampling and the print's shape add (from drawn sheets)."""
     return np.sqrt((1.6 * fine.sigma) ** 2 + (0.005 * max(unit, 0.7)) ** 2)
 
 
@@ -96,9 +96,17 @@ def settle(trace: Trace, doubt: Doubt) -> Trace:
     if flagged and doubt.hint is not None:
         hint = (float(trace.pixels[doubt.hint, 0]), float(trace.pixels[doubt.hint, 1]))
     return Trace(
-        pixels=trace.pixels, sigma_px=trace.sigma_px, closed=trace.closed, confidence=confidence, flagged=flagged,
-        stretches=tuple(doubt.stretches), warnings=tuple(doubt.notices), hint_click=hint, source=trace.source, line_width_px=trace.line_width_px,
-    )  # fmt: skip
+        pixels=trace.pixels,
+        sigma_px=trace.sigma_px,
+        closed=trace.closed,
+        confidence=confidence,
+        flagged=flagged,
+        stretches=tuple(doubt.stretches),
+        warnings=tuple(doubt.notices),
+        hint_click=hint,
+        source=trace.source,
+        line_width_px=trace.line_width_px,
+    )
 
 
 def overlap(a: FloatArray, b: FloatArray, within: float) -> list[tuple[int, int]]:

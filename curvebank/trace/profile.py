@@ -16,6 +16,11 @@ from ..sheet import Prepared
 from . import smooth
 from .axis import Axis, from_polyline
 
+WIDTHS = np.array([0.4, 0.55, 0.7, 0.85, 1.0, 1.15, 1.3, 1.5, 1.8])
+BLURS = (0.45, 0.65, 0.85, 1.1, 1.4, 1.8, 2.4)
+"""Widths (in parts of a first guess) and blurs [px] tried for a line's cross profile."""
+PER_PX = 128
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Shape:
@@ -97,10 +102,9 @@ def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
     _, first = np.unique(flat, return_index=True)
     at = np.repeat(s, len(d))[ok][first]
     px = np.stack([x.ravel()[ok][first], y.ravel()[ok][first]], axis=1).astype(np.float64)
-    for _ in range(2):
-        base, normal = axis.at(at)
-        gap = px - base
-        at = at + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
+    base, normal = axis.at(at)
+    gap = px - base
+    at = at + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
     base, normal = axis.at(at)
     across = ((px - base) * normal).sum(axis=1)
     if axis.closed:
@@ -129,15 +133,15 @@ def first_shape(pixels: Pixels, width_px: float) -> Shape:
     at = (sorted_bins[np.r_[0, edges]] + low) / 3.0
     profile = np.array([np.median(g) for g in groups])
     best = (np.inf, max(width_px, 1.0), 0.9, 1.0)
-    for width in np.clip(width_px * np.array([0.4, 0.55, 0.7, 0.85, 1.0, 1.15, 1.3, 1.5, 1.8]), 0.6, 30):
-        for blur in (0.45, 0.65, 0.85, 1.1, 1.4, 1.8, 2.4):
-            trial = Shape(float(width), blur, 0.0, 1.0)
-            g = trial.value(at)
-            basis = np.stack([np.ones_like(g), g], 1)
-            c, *_ = np.linalg.lstsq(basis, profile, rcond=None)
-            miss = float(np.abs(profile - basis @ c).sum())
-            if miss < best[0] and c[1] > 0.02:
-                best = (miss, float(width), blur, float(c[1]))
+    mean = profile.mean()
+    for width in np.clip(width_px * WIDTHS, 0.6, 30):
+        for blur in BLURS:
+            g = Shape(float(width), blur, 0.0, 1.0).value(at)
+            g0 = g - g.mean()
+            height = float(g0 @ profile) / max(float(g0 @ g0), 1e-12)
+            miss = float(np.abs(profile - mean - height * g0).sum())
+            if miss < best[0] and height > 0.02:
+                best = (miss, float(width), blur, height)
     return Shape(best[1], best[2], 0.05, best[3])
 
 
@@ -154,11 +158,15 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
     eye = np.eye(3)
     prior = np.array([0.15, 0.6 * shape.height, 1.5])
     weight = given
+    # The profile is even and its slope odd: both are looked up from a fine table.
+    table = (np.arange(int((shape.half_extent + 8.0) * PER_PX)) + 0.5) / PER_PX
+    level, tilt = shape.value(table), -shape.slope(table)
     miss = ink
     inverse = np.repeat(eye[None], count, axis=0)
     for turn in range(rounds):
         local = d - shift[block]
-        g, dg = shape.value(local), -height[block] * shape.slope(local)
+        cell = np.minimum(np.abs(local) * PER_PX, len(level) - 1).astype(np.int64)
+        g, dg = level[cell], -height[block] * np.copysign(tilt[cell], -local)
         miss = ink - base[block] - height[block] * g
         if turn:
             robust = np.maximum(1 - (miss * np.sqrt(given) / (5.0 * noise)) ** 2, 0.0) ** 2
@@ -230,7 +238,7 @@ def refine(prepared: Prepared, axis: Axis, rounds: int = 2, shape: Shape | None 
         if shape is None:
             shape = first_shape(pixels, prepared.width_px)
             blocks = read_blocks(pixels, pixels.d, shape, axis.length, block, rounds=3)
-            fitted = _along(blocks, axis, unit)
+            fitted = _along(blocks, axis, unit, stiff_only=True)
             moved = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
             shape = first_shape(Pixels(pixels.s, moved, pixels.ink, pixels.weight, pixels.printed), shape.width)
         blocks = read_blocks(pixels, pixels.d, shape, axis.length, block)
@@ -247,7 +255,7 @@ def refine(prepared: Prepared, axis: Axis, rounds: int = 2, shape: Shape | None 
     return Refined(final, sigma, blocks, shape, fitted.scale)
 
 
-def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
+def _along(blocks: Blocks, axis: Axis, unit: float, stiff_only: bool = False) -> smooth.Smooth:
     """The shifts smoothed along the curve."""
     t = blocks.s / axis.length
     weight = np.where(blocks.good, 1.0 / (blocks.sigma**2 + 0.01**2), 0.0)
@@ -256,12 +264,14 @@ def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
     pieces = int(np.clip(axis.length / (18 * unit), 6 if axis.closed else 4, 80))
     # A stiff curve first: readings far off it (strokes of letters, other lines) are dropped before the supple one sees them.
     stiff = smooth.fit(t, blocks.shift, weight, pieces=max(pieces // 4, 6 if axis.closed else 3), periodic=axis.closed, correlation=8.0)
+    if stiff_only:
+        return stiff
     miss = np.abs(blocks.shift - stiff.value(t)[:, 0])
     if blocks.good.sum() >= 8:
         weight = np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), 0.35), weight, 0.0)
-    curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0)
+    curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0, rounds=3)
     count = _correlation(blocks, curve, t)
-    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count)
+    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count, rounds=3, start=curve.robust)
 
 
 def _correlation(blocks: Blocks, curve: smooth.Smooth, t: FloatArray) -> float:

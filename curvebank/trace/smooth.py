@@ -42,7 +42,7 @@ def penalty(size: int, periodic: bool) -> FloatArray:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Smooth:
-    """A fitted penalised spline over t in 0..1: coefficients [k, d], covariance [k, k] of each column, residual scale, robust weights [n]."""
+    """A fitted spline over t in 0..1: coefficients [k, d], covariance [k, k] of each column, residual scale, robust weights [n]."""
 
     coefficients: FloatArray
     covariance: FloatArray
@@ -50,6 +50,7 @@ class Smooth:
     periodic: bool
     scale: float
     weights: FloatArray
+    robust: FloatArray
     freedom: float
 
     def value(self, t: FloatArray) -> FloatArray:
@@ -73,11 +74,12 @@ def fit(
     cut: float = 4.7,
     correlation: float = 1.0,
     floor: float = 0.0,
+    start: FloatArray | None = None,
 ) -> Smooth:
     """Fit ``values`` [n] or [n, d] at ``t`` [n] in 0..1.
 
     ``weights`` are 1 / variance up to a factor. ``cut`` is Tukey's constant (0 turns robustness off), ``correlation`` the number of
-    readings that count as one, ``floor`` the least residual scale believed.
+    readings that count as one, ``floor`` the least residual scale believed, ``start`` robust weights of an earlier fit to begin from.
     """
     y = np.asarray(values, dtype=np.float64)
     y = y[:, None] if y.ndim == 1 else y
@@ -85,7 +87,7 @@ def fit(
     given = given / max(float(np.median(given[given > 0])) if (given > 0).any() else 1.0, 1e-300)
     b = basis(t, pieces, periodic)
     p = penalty(b.shape[1], periodic)
-    robust = np.ones(len(t))
+    robust = np.ones(len(t)) if start is None else start
     result: tuple[FloatArray, FloatArray, float, float] | None = None
     for turn in range(max(rounds, 1)):
         result = _solve(b, p, y, given * robust, periodic, correlation, (given * robust > 1e-6).sum())
@@ -100,7 +102,7 @@ def fit(
         robust = new
     assert result is not None
     coefficients, covariance, variance, freedom = result
-    return Smooth(coefficients, covariance, pieces, periodic, float(np.sqrt(variance)), given * robust, freedom)
+    return Smooth(coefficients, covariance, pieces, periodic, float(np.sqrt(variance)), given * robust, robust, freedom)
 
 
 def _solve(

@@ -12,7 +12,24 @@ import numpy as np
 from scipy.spatial import cKDTree
 from scipy.special import ndtr
 
-KINDS = ("plain", "sameink", "dashes", "labels", "warp", "fax", "hairline", "merge", "loops", "photo", "copy", "mm", "coarse", "plotter", "steep", "dense")
+KINDS = (
+    "plain",
+    "sameink",
+    "dashes",
+    "labels",
+    "warp",
+    "fax",
+    "hairline",
+    "merge",
+    "loops",
+    "photo",
+    "copy",
+    "mm",
+    "coarse",
+    "plotter",
+    "steep",
+    "dense",
+)
 """What each kind stresses; ``draw`` takes one of these."""
 
 
@@ -141,7 +158,9 @@ def draw(kind: str, seed: int) -> tuple[np.ndarray, dict[str, Any]]:
     width, height = int(1250 * big), int(1050 * big)
     line_px = {"hairline": pick(0.9, 1.4), "coarse": pick(1.1, 1.7), "plotter": pick(4, 6.5)}.get(kind, pick(2.0, 4.0))
     page = Page(rng, width, height, blur=pick(0.5, 0.9) * (0.8 if kind == "coarse" else 1.0))
-    bend, turn, key = {"warp": (5, 2.0, 0.01), "photo": (1.5, 1.5, 0.09), "fax": (0.5, 0.6, 0), "copy": (2, 0.8, 0)}.get(kind, (0.0, pick(-0.4, 0.4), 0))
+    bend, turn, key = {"warp": (5, 2.0, 0.01), "photo": (1.5, 1.5, 0.09), "fax": (0.5, 0.6, 0), "copy": (2, 0.8, 0)}.get(
+        kind, (0.0, pick(-0.4, 0.4), 0)
+    )
     page.warp = make_warp(rng, width, height, bend, turn, key)
     x0, x1, y0, y1 = 0.1 * width, 0.92 * width, 0.08 * height, 0.88 * height
     to_px = lambda q, v: np.stack([x0 + np.asarray(q) * (x1 - x0), y1 - np.asarray(v) * (y1 - y0)], -1)  # noqa: E731
@@ -195,7 +214,9 @@ def _curves(page: Page, kind: str, to_px: Any, line_px: float, pick: Any) -> lis
         for k, (a, b) in enumerate(((0.1, 0.05), (0.16, 0.09), (0.22, 0.13))):
             phi, tilt = 2 * np.pi * np.linspace(0, 1, 500), -0.25
             e, f = a * np.cos(phi) * (1 + 0.12 * np.cos(phi)), b * np.sin(phi)
-            shapes.append(("efficiency_iso", 0.5 + e * np.cos(tilt) - f * np.sin(tilt), 0.6 + 0.02 * k + e * np.sin(tilt) + f * np.cos(tilt), True))
+            shapes.append(
+                ("efficiency_iso", 0.5 + e * np.cos(tilt) - f * np.sin(tilt), 0.6 + 0.02 * k + e * np.sin(tilt) + f * np.cos(tilt), True)
+            )
         phi = np.linspace(-2.0, 2.0, 400)
         shapes.append(("efficiency_iso", 0.5 + 0.28 * np.cos(phi), 0.6 + 0.18 * np.sin(phi), False))
     if kind == "steep":
@@ -242,13 +263,26 @@ def _truth(page: Page, name: str, quantity: str, style: str, width: float, close
         if closed and n == 2:
             continue
         clicks[str(n)] = (at + rng.uniform(-3, 3, at.shape)).tolist()
-    return {"id": name, "panel": "p0", "quantity": quantity, "style": style, "width_px": width, "closed": closed, "clicks": clicks, "line": line.tolist()}
+    return {
+        "id": name,
+        "panel": "p0",
+        "quantity": quantity,
+        "style": style,
+        "width_px": width,
+        "closed": closed,
+        "clicks": clicks,
+        "line": line.tolist(),
+    }
 
 
 def _spoil(page: Page, kind: str, pick: Any) -> np.ndarray:
     rng, ink = page.rng, np.clip(page.ink, 0, 1)
     h, w = ink.shape
-    field_ = lambda cell, size: cv2.resize(rng.normal(0, size, (max(h // cell, 2), max(w // cell, 2))).astype(np.float32), (w, h), interpolation=cv2.INTER_CUBIC)  # noqa: E731
+
+    def field_(cell: int, size: float) -> np.ndarray:
+        coarse = rng.normal(0, size, (max(h // cell, 2), max(w // cell, 2))).astype(np.float32)
+        return cv2.resize(coarse, (w, h), interpolation=cv2.INTER_CUBIC)
+
     if kind in ("copy", "fax"):
         ink = ink * np.clip(1 + field_(14, 0.25) + field_(4, 0.15), 0.1, 1.3)
     if kind in ("hairline", "coarse"):
