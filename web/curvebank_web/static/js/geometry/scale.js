@@ -44,6 +44,19 @@ export function ticks(kind, lo, hi, most) {
   return kind === "log10" ? logTicks(lo, hi, most) : linearTicks(lo, hi, most);
 }
 
+const NICE = [1, 2, 2.5, 4, 5, 8];
+const nice = (step) => NICE.some((m) => Math.abs(step / (m * 10 ** Math.floor(Math.log10(step) + 1e-9)) - 1) < 1e-6);
+
+/** One division of several linear ranges [[lo, hi], ...] that gives each of them round steps from its low end; null where there is none. */
+export function commonTicks(ranges, most = 9) {
+  for (let n = most; n >= 4; n--) {
+    const steps = ranges.map(([lo, hi]) => (hi - lo) / n);
+    const round = (v, step) => Math.abs(v / step - Math.round(v / step)) < 1e-6;
+    if (steps.every(nice) && ranges.every(([lo], i) => round(lo, steps[i]))) return ranges.map(([lo], i) => Array.from({ length: n + 1 }, (_, k) => Number((lo + k * steps[i]).toPrecision(10))));
+  }
+  return null;
+}
+
 /** Written form of ticks: the decimals that the closest pair needs, a thin space between thousands above 9999. */
 export function tickText(values) {
   const gaps = values.slice(1).map((v, i) => Math.abs(v - values[i]));

@@ -6,7 +6,7 @@ import { apply } from "../state/doc.js";
 import { actionLabel } from "../state/words.js";
 
 const uid = () => (crypto.randomUUID ? crypto.randomUUID() : `${Date.now().toString(16)}-${Math.random().toString(16).slice(2)}`);
-const clock = () => new Date().toTimeString().slice(0, 5);
+const clock = (at = new Date()) => new Date(at).toTimeString().slice(0, 5);
 
 function entriesToNodes(history, entries) {
   let next = history;
@@ -25,7 +25,8 @@ export class Session {
     this.page = draft.page;
     this.onChange = onChange;
     this.onNews = onNews;
-    this.keptAt = null;
+    const newest = (draft.steps ?? []).find((s) => s.step === draft.step);
+    this.keptAt = newest?.at ? clock(newest.at) : null;
     this.conflict = null;
     this.refused = null;
     this.outbox = new Outbox({ key: `curvebank.outbox.${draft.id}`, send: (e) => this.#send(e), storage: localStorage, on: (...a) => this.#hear(...a) });

@@ -2,7 +2,7 @@
 import { nudge, toScreen, toSheet, zoomAt } from "../geometry/affine.js";
 import { nearest } from "../geometry/polyline.js";
 import { snap } from "../geometry/snap.js";
-import { desk as deskPart, insertClick, newPanel, apply } from "../state/doc.js";
+import { clickChange, desk as deskPart, insertClick, newPanel, apply } from "../state/doc.js";
 import { axisIds } from "../geometry/panelmap.js";
 import { axisFor } from "../panels/sentences-curves.js";
 import { calibrated } from "../state/derive.js";
@@ -224,7 +224,14 @@ export class DeskTools {
     return undefined;
   }
 
-  traceAt(screen, reach = 7) {
+  /** Screen distance to a curve's trace; 0 where it has none yet, so that a guide can still be added. */
+  #awayFrom(id, screen) {
+    const item = this.desk.items.find((i) => i.id === id);
+    if (!item?.pixels.length) return 0;
+    return nearest(item.pixels.map((p) => toScreen(this.desk.view, p)), screen).distance;
+  }
+
+  traceAt(screen, reach = 4.5) {
     const { desk } = this;
     let best = null;
     for (const item of desk.items) {
@@ -250,19 +257,21 @@ export class DeskTools {
     const { desk } = this;
     const at = round(sheet);
     if (desk.openCurve) {
-      const clicks = insertClick(desk.openCurve.clicks, at);
-      if (clicks.length === 2 || !desk.openCurve.diameter_mm) desk.focusBlank = clicks.length >= 2 ? "curve" : null;
-      return desk.act({ type: "curve/change", change: { clicks } });
+      const change = clickChange(desk.openCurve, at);
+      if (change.clicks.length >= 2) desk.focusBlank = "curve";
+      return desk.act({ type: "curve/change", change });
     }
     const chosen = (desk.doc.curves ?? []).find((c) => c.id === desk.selected);
     const trace = this.traceAt(screen);
-    if (chosen && !e.altKey && !(trace && trace.id !== chosen.id)) {
+    const away = chosen && this.#awayFrom(chosen.id, screen);
+    if (chosen && !e.shiftKey && away < 40 && !(trace && trace.id !== chosen.id)) {
       return desk.act({ type: "curve/set", curve: chosen.id, change: { clicks: insertClick(chosen.clicks, at) } });
     }
     if (trace && !e.shiftKey) return desk.select(trace.id);
     const inside = (desk.doc.panels ?? []).filter((p) => calibrated(p) && p.outline && insidePolygon(sheet, p.outline));
     const panel = inside.find((p) => p.id === desk.panel?.id) ?? inside[0] ?? desk.panel;
     if (!panel || !calibrated(panel)) return desk.say("This panel has no scales yet: give each two marks.");
+    desk.selected = null;
     desk.panelId = panel.id;
     return desk.act({ type: "curve/open", curve: this.fresh(panel, [at]) });
   }

@@ -197,7 +197,7 @@ function header() {
   $("name").textContent = `${detail.maker} ${detail.model}`;
   document.title = `${detail.maker} ${detail.model}, curvebank`;
   const many = pump.revisions.length > 1;
-  put($("chip"), h("span", { class: `chip ${detail.state}` }, `revision ${detail.number}, ${detail.state}`), many ? choice({ name: "revision", label: "Revision shown", value: detail.number, options: pump.revisions.map((r) => [r.number, `revision ${r.number}, ${r.state}`]), onValue: (v) => { asked.revision = v; writeAddress(); start(); } }) : null);
+  put($("chip"), h("span", { class: `chip ${detail.state}` }, `revision ${detail.number}, ${detail.state}`), many ? choice({ name: "revision", label: "Revision shown", value: detail.number, options: pump.revisions.map((r) => [r.number, r.number === detail.number ? `${r.number} of ${pump.revisions.length}` : `revision ${r.number}, ${r.state}`]), onValue: (v) => { asked.revision = v; writeAddress(); start(); } }) : null);
   const n = detail.diameters_mm.length;
   $("about").textContent = `${[...new Set(detail.curves.map((c) => c.basis))].join(", ")} curve · ${n} ${n === 1 ? "diameter" : "diameters"} · ${detail.stages} ${detail.stages === 1 ? "stage" : "stages"}`;
   $("where").textContent = `${detail.maker} ${detail.model}${detail.rated_rpm ? `, ${plain(detail.rated_rpm, 0)} 1/min` : ""}`;

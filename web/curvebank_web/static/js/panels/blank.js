@@ -89,12 +89,21 @@ export function button(words, { main = false, quiet = false, key = null, onClick
   return waiting ? [b, h("span", { class: "hint" }, waiting)] : b;
 }
 
-/** Fill the slip; focus, caret and half-typed text survive when the same blank is there again. */
-export function fillSlip(slip, { sentence, does = [], focus = null }) {
+const shownNow = new WeakMap();
+
+/**
+ * Fill the slip. The same sentence is not laid again, so that what is half typed, and what was said of it, stays; `key` tells sentences
+ * apart that read alike but speak of another mark or curve. Focus, caret and half-typed text survive a change around them.
+ */
+export function fillSlip(slip, { sentence, does = [], focus = null, key = "" }) {
+  const parts = [h("div", { class: "sentence" }, sentence), h("div", { class: "does" }, does)];
+  const written = key + parts.map((p) => p.outerHTML + [...p.querySelectorAll("input, select")].map((i) => i.value).join("|")).join("");
+  if (shownNow.get(slip) === written && !focus) return;
+  shownNow.set(slip, written);
   const active = slip.contains(document.activeElement) ? document.activeElement : null;
   const was = active?.name ? { name: active.name, value: active.value, from: active.selectionStart, initial: active.defaultValue, tag: active.tagName } : null;
   const dirty = active && slip.dataset.typed === active.name ? active.value : null;
-  slip.replaceChildren(h("div", { class: "sentence" }, sentence), h("div", { class: "does" }, does));
+  slip.replaceChildren(...parts);
   const wanted = focus ?? was?.name;
   if (!wanted) return;
   const next = slip.querySelector(`[name="${CSS.escape(wanted)}"]`);
@@ -109,4 +118,9 @@ export function fillSlip(slip, { sentence, does = [], focus = null }) {
 export function watchTyping(slip) {
   slip.addEventListener("input", (e) => (slip.dataset.typed = e.target.name));
   slip.addEventListener("change", () => delete slip.dataset.typed);
+  slip.addEventListener("keydown", (e) => {
+    if (e.key !== "Enter" || e.target.tagName !== "SELECT") return;
+    e.preventDefault();
+    slip.querySelector(".btn.main")?.click();
+  });
 }

@@ -36,7 +36,7 @@ const endingChange = (v) => (v === "hand" || v === "points" ? { kind: v, ends: u
 
 function curveParts(panel, curve, set, onEnter) {
   const contour = curve.quantity in CONTOURS;
-  const parts = [t("This line is"), choice({ name: "quantity", label: "Quantity of this line", value: curve.quantity, options: quantitiesOf(panel), onValue: (q) => set({ quantity: q, y: axisFor(panel, q), ...(q in CONTOURS ? { diameter_mm: undefined } : { value: undefined, closed: undefined }) }) })];
+  const parts = [t("This line is"), choice({ name: "quantity", label: "Quantity of this line", value: curve.quantity, options: quantitiesOf(panel), onValue: (q) => set({ quantity: q, y: axisFor(panel, q), ...(q in CONTOURS ? { diameter_mm: undefined, ...(curve["x-clicked"] ? { clicks: curve["x-clicked"] } : {}) } : { value: undefined, closed: undefined }) }) })];
   const blanks = [];
   if (contour) {
     const percent = curve.quantity === "efficiency_contour";
@@ -76,6 +76,7 @@ export function curvesSentence(desk) {
     return {
       sentence: [curveParts(own, openCurve, set, keep), item?.failed ? null : looking ? h("small", { class: "held" }, "Following the ink …") : null],
       does: [few ? h("span", { class: "hint" }, "Click once more along the line.") : null, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) }), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
+      key: JSON.stringify(openCurve),
       focus: desk.focusBlank === "curve" ? (openCurve.quantity in CONTOURS ? "level" : "diameter") : null,
     };
   }
@@ -84,6 +85,7 @@ export function curvesSentence(desk) {
     const own = doc.panels.find((p) => p.id === chosen.panel) ?? panel;
     const set = (change) => desk.act({ type: "curve/set", curve: chosen.id, change });
     return {
+      key: JSON.stringify(chosen),
       sentence: curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }),
       does: [button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) })],
     };

@@ -163,6 +163,7 @@ export function marksSentence(desk) {
       sentence: parts,
       does: [hint("Z", "magnify"), button("Let go", { quiet: true, onClick: () => desk.act({ type: "mark/drop" }) }), button("Keep mark", { main: true, key: "Enter", onClick: keep })],
       focus: desk.focusBlank === "mark" ? `mark-${order[0]}` : null,
+      key: JSON.stringify(openMark),
     };
   }
   if (desk.chosenMark) {
@@ -173,6 +174,7 @@ export function marksSentence(desk) {
     if (mark) {
       return {
         sentence: [t("This mark reads"), chosenBlanks(desk, own, id, mark), stop()],
+        key: JSON.stringify([pid, mark]),
         does: [h("span", { class: "hint" }, h("kbd", {}, "←"), h("kbd", {}, "→"), " 0.1 px"), button("Remove", { quiet: true, onClick: () => desk.removeChosenMark() }), button("Done", { main: true, onClick: () => desk.chooseMark(null) })],
       };
     }

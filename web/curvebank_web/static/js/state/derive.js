@@ -96,6 +96,12 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
   });
 }
 
+/** A message as a whole sentence. */
+export function sentence(text) {
+  const t = String(text ?? "").trim();
+  return /[.!?…”]$/.test(t) ? t : `${t}.`;
+}
+
 const place = (severity, text, more = {}) => ({ severity, text, ways: [], ...more });
 
 /** Findings that need no run: mistyped marks, panels and curves that failed, doubtful stretches. */
@@ -119,11 +125,11 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
     const result = panel && resultOf(panel, curve);
     if (!result) continue;
     if (result.error) {
-      out.push(place("error", result.error.message, { where: { panel: curve.panel, curve: curve.id }, subject: `curve:${curve.id}`, code: result.error.code }));
+      out.push(place("error", `${curveLabel(curve) || "This line"}: ${sentence(result.error.message)}`, { where: { panel: curve.panel, curve: curve.id }, subject: `curve:${curve.id}`, code: result.error.code }));
       continue;
     }
     for (const w of result.warnings ?? []) {
-      out.push(place("warning", w.message, { where: { panel: curve.panel, curve: curve.id, stretch: w.stretch ?? null }, subject: `curve:${curve.id}`, code: w.code }));
+      out.push(place("warning", `${curveLabel(curve)}: ${sentence(w.message)}`, { where: { panel: curve.panel, curve: curve.id, stretch: w.stretch ?? null }, subject: `curve:${curve.id}`, code: w.code }));
     }
   }
   return out;

@@ -78,8 +78,8 @@ const HANDLERS = {
   "curve/change": (doc, a) => !desk(doc).curve ? doc : withDesk(doc, { curve: clean({ ...desk(doc).curve, ...a.change }) }),
   "curve/drop": (doc) => withDesk(doc, { curve: undefined }),
   "curve/keep": (doc) => {
-    const curve = desk(doc).curve;
-    if (!curve) return doc;
+    if (!desk(doc).curve) return doc;
+    const { "x-clicked": _, ...curve } = desk(doc).curve;
     return { ...withDesk(doc, { curve: undefined }), curves: [...(doc.curves ?? []), curve] };
   },
   "curve/set": (doc, a) => ({ ...doc, curves: map(doc.curves, a.curve, (c) => clean({ ...c, ...a.change })) }),
@@ -92,6 +92,12 @@ export function apply(doc, action) {
   const handler = HANDLERS[action.type];
   if (!handler) throw new Error(`no such action: ${action.type}`);
   return handler(doc, action);
+}
+
+/** The change that one more click makes to an open curve; the order of clicking is kept aside for contours, which may turn back. */
+export function clickChange(curve, point) {
+  const clicked = [...(curve["x-clicked"] ?? curve.clicks), point];
+  return { clicks: curve.quantity.endsWith("_contour") ? clicked : insertClick(curve.clicks, point), "x-clicked": clicked };
 }
 
 /** Put a click where it belongs along a line of clicks: between the two it shortens, or at an end. */

@@ -17,7 +17,7 @@ function frameAndTicks(svg, { frame: [x0, y0, x1, y1], x, ys }) {
   const xText = x.text ?? tickText(xt);
   xt.forEach((v, i) => {
     const px = x.map(v);
-    if (px < x0 - 0.6 || px > x1 + 0.6) return;
+    if (px < x0 - 2.5 || px > x1 + 2.5) return;
     if (px > x0 + 1 && px < x1 - 1) g.append(s("line", { class: "grid", x1: px, y1: y0, x2: px, y2: y1 }));
     if (x.labels !== false) {
       g.append(s("line", { class: "tickmark", x1: px, y1, x2: px, y2: y1 + 4 }));
@@ -25,12 +25,12 @@ function frameAndTicks(svg, { frame: [x0, y0, x1, y1], x, ys }) {
     }
   });
   ys.forEach((y, k) => {
-    const yt = y.ticks ?? ticks(y.kind ?? "linear", y.lo, y.hi, y.most ?? Math.max(2, Math.floor((y1 - y0) / 46)));
+    const yt = y.ticks ?? ticks(y.kind ?? "linear", y.lo, y.hi, y.most ?? Math.max(3, Math.min(10, Math.floor((y1 - y0) / 42))));
     const text = y.text ?? tickText(yt);
     const right = y.side === "right";
     yt.forEach((v, i) => {
       const py = y.map(v);
-      if (py < y0 - 0.6 || py > y1 + 0.6) return;
+      if (py < y0 - 2.5 || py > y1 + 2.5) return;
       if (k === 0 && py > y0 + 1 && py < y1 - 1) g.append(s("line", { class: "grid", x1: x0, y1: py, x2: x1, y2: py }));
       const at = right ? x1 : x0;
       const out = right ? 4 : -4;

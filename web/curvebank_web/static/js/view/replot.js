@@ -1,6 +1,6 @@
 // The re-plot: the same window as the paper, in engineering units, at the same heights.
 import { toScreen, toSheet } from "../geometry/affine.js";
-import { linear, log10 } from "../geometry/scale.js";
+import { commonTicks, linear, log10 } from "../geometry/scale.js";
 import { QUANTITY_SIGNS, written } from "../geometry/units.js";
 import { drawChart } from "./chart.js";
 import { drawPlaces, leader } from "./overlay.js";
@@ -62,6 +62,10 @@ export function alignedScales({ view, paper, plot, axes, flow }) {
     const ends = [invert(y0), invert(y1)];
     return { map: (v) => at(m, v), invert, kind: m.kinds[1], lo: Math.min(...ends), hi: Math.max(...ends), side: i === 0 ? "left" : "right", title: `${QUANTITY_SIGNS[axis.quantity] ?? axis.quantity}, ${written(axis.unit)}` };
   });
+  if (axes.length > 1 && ys.every((y) => y.kind === "linear")) {
+    const common = commonTicks(axes.map((a) => a.ext.value), Math.max(4, Math.floor((y1 - y0) / 52)));
+    common?.forEach((t, i) => (ys[i].ticks = t));
+  }
   return { x, ys, frame: [x0, y0, x1, y1], qRef };
 }
 
