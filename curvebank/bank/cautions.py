@@ -9,6 +9,7 @@ from typing import Any
 from ..errors import CurvebankError
 from .closure import computed_power
 from .duty import known
+from .quantity import NAMES
 
 DEFER = (
     "These numbers were read from a printed chart of a type of pump. Confirm with the maker; local codes and a licensed engineer decide."
@@ -49,7 +50,10 @@ def _motor(pump: Any) -> list[str]:
     if not pump.power:
         return ["Power is not on the paper. Do not choose a motor from these curves."]
     reading = _try(pump.power.plan, largest(pump), None)
-    return [] if reading is None else _rising_power(reading)
+    if reading is None:
+        return []
+    computed = [] if "power" in pump.quantities else [reading.notes[0]]
+    return [*computed, *_rising_power(reading)]
 
 
 def _rising_power(reading: Any) -> list[str]:
@@ -72,8 +76,12 @@ def _droop(pump: Any) -> list[str]:
 
 
 def _letters(pump: Any) -> list[str]:
-    lost = [c["label"] or c["id"] for c in pump.curves if c["applies_to"] == "unknown"]
-    return [f"Lines without a known diameter are stored but not read: {', '.join(lost)}."] if lost else []
+    lost: dict[str, list[str]] = {}
+    for c in pump.curves:
+        if c["applies_to"] == "unknown":
+            lost.setdefault(NAMES.get(c["quantity"], c["quantity"]), []).append(c["label"] or c["id"])
+    listed = "; ".join(f"{name} {', '.join(letters)}" for name, letters in lost.items())
+    return [f"Lines without a known diameter are stored but not read: {listed}."] if lost else []
 
 
 def _corrections(pump: Any) -> list[str]:

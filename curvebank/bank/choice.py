@@ -99,7 +99,11 @@ def _diameters(head: Any, flow: float, speed: float | None) -> list[list[tuple[f
 def diameter_for(head: Any, flow: float, wanted: float, speed: float | None) -> float | None:
     """The largest diameter in the traced range whose head at a flow is the wanted one, by the read rule; None where there is none."""
     near = 1e-9 * max(abs(wanted), 1.0)
-    for run in reversed(_diameters(head, flow, speed)):
+    runs = _diameters(head, flow, speed)
+    for run in reversed(runs):  # a traced diameter that meets it is the answer, not its neighbour by one rounding
+        if len(run) == 1 and abs(run[0][1] - wanted) <= near:
+            return run[0][0]
+    for run in reversed(runs):
         if abs(run[-1][1] - wanted) <= near:
             return run[-1][0]
         for (d1, h1), (d2, h2) in reversed(list(zip(run, run[1:], strict=False))):

@@ -176,7 +176,7 @@ class Store:
             self._keep(db, recipe_sha, "recipe", recipe_bytes)
             if sheet_bytes and source[0]:
                 self._keep(db, source[0], "sheet", sheet_bytes)
-                self._keep_sheet(db, digitised.page, digitised.sheet_file)
+                self._keep_sheet(db, source[0], digitised)
             revision_id = self._insert(db, pump_id, body, traces)
             failed = [{"id": f["id"], "code": f["code"], "message": f["message"]} for f in body["failed"]]
             note = {"body_sha256": self._body_hash(db, revision_id), "curves": len(body["curves"]), "failed": failed}
@@ -303,11 +303,11 @@ class Store:
             db.execute("INSERT INTO blob (sha256, kind, bytes) VALUES (?, ?, ?)", (sha, kind, bytes(raw)))
 
     @staticmethod
-    def _keep_sheet(db: sqlite3.Connection, page: PageInfo | None, file_name: str | None) -> None:
+    def _keep_sheet(db: sqlite3.Connection, sha: bytes, digitised: Digitised) -> None:
+        page = digitised.page
         assert page is not None
-        sha = bytes.fromhex(page.sha256)
         if not db.execute("SELECT 1 FROM sheet WHERE sha256 = ?", (sha,)).fetchone():
-            row = (sha, file_name or "", page.media or "", max(int(page.pages), 1))
+            row = (sha, digitised.sheet_file or "", page.media or "", max(int(page.pages), 1))
             db.execute("INSERT INTO sheet (sha256, file_name, media, pages) VALUES (?, ?, ?, ?)", row)
 
     @staticmethod

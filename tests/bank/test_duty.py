@@ -188,6 +188,12 @@ def trim_pump(tmp_path_factory):
 FAMILY = ((280.0, 38.0, 0.0, 85.0), (295.0, 42.0, 2.0, 90.0), (310.0, 46.5, 0.0, 95.0), (320.0, 50.0, 4.0, 101.0))
 
 
+def test_trim_at_a_traced_diameter_is_that_diameter(pump):
+    """Not its neighbour by one rounding."""
+    for d in (280.0, 320.0):
+        assert pump.trim_for(60.0, pump.head(60.0, d)).diameter_mm == d
+
+
 def test_trim_shows_its_methods_and_their_spread(pump):
     """The bank's rule, the simple law from the largest; the caution names the largest, rounded up."""
     trim = pump.trim_for(60, 33)

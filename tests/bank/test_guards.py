@@ -137,6 +137,10 @@ INSERT INTO revision SELECT 99, pump_id, 3, NULL, saved_at, who, why, 'k', {REST
 -- event with a made-up hash
 INSERT INTO event SELECT {NEXT}, '2099-01-01T00:00:00.000Z', who, 'withdrawn', 1, 1, why, json, {LAST}, zeroblob(32) FROM event
 LIMIT 1
+-- view of the contract dropped
+DROP VIEW released_curve
+-- column added
+ALTER TABLE curve ADD COLUMN remark TEXT
 -- table of another program
 CREATE TABLE notes (text TEXT)
 -- schema rewritten

@@ -260,7 +260,7 @@ def test_letters_without_millimetres_are_stored_and_never_read(store):
     pump = store.pump(make.KEY)
     with pytest.raises(OutsideDomain, match="letter without a diameter: B"):
         pump.head(50.0)
-    assert any("not read: B" in c for c in pump.cautions) and pump.curves[0]["label"] == "B"
+    assert any("not read: head B." in c for c in pump.cautions) and pump.curves[0]["label"] == "B"
 
 
 def test_curve_without_diameter_is_read_for_all(store):
