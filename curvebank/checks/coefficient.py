@@ -38,10 +38,17 @@ def head_coefficient_at_shut_off(context: Context) -> Iterator[Finding]:
     kind = (context.pump.type or "").lower() if context.pump else ""
     if any(word in kind for word in OTHER_WHEELS):
         return
+    doubted = {
+        f.members[a.curve].curve.id
+        for f in context.families
+        if f.verdict is not None
+        for a in f.verdict.alternatives
+        if a.kind == "diameter"
+    }
     seen: list[tuple[Series, float, float]] = []
     for s in context.of("head"):
         by = (s.curve.label or {}).get("by")
-        if s.diameter_mm is None or not s.speed_rpm or by in ("stages", "pumps_running"):
+        if s.diameter_mm is None or not s.speed_rpm or by in ("stages", "pumps_running") or s.curve.id in doubted:
             continue
         h0 = shut_off_head(s, limits["shut_off_reach"])
         if h0 is None or h0[0] <= 0:

@@ -23,7 +23,7 @@ DRAWING = "0.35 mm pen on a 180 mm axis is 0.2 %; three printed curves read at 0
 SIMULATED = "set on simulated families with published exponents, tests/bench/family.py"
 
 LIMITS: dict[str, Limit] = {
-    "family_threshold": Limit(6.0, "ln likelihood", SIMULATED, "gain an explanation needs before a label is doubted"),
+    "family_threshold": Limit(5.5, "ln likelihood", SIMULATED, "gain an explanation needs before a label is doubted"),
     "family_margin": Limit(2.0, "ln likelihood", SIMULATED, "explanations this close to the best are named with it"),
     "family_reading_pct": Limit(0.3, "%", DRAWING, "least standard uncertainty of a drawn curve, in % of the family's largest value"),
     "family_order_pct": Limit(1.0, "%", DRAWING, "a smaller wheel's head may exceed a larger one's by this and its uncertainty"),

@@ -1,7 +1,7 @@
 """Do the printed diameters and speeds of a family agree with its curves?
 
 The joint fit gives log scales (q_i, h_i) with their covariance. Labels that are right put them on q = a x + c x^2, h = b x + d x^2 with
-x = ln(D / D_largest): a and b have broad published priors, c and d let the exponents drift over the trim, and each curve may
+x = ln(D / D_middle): a and b have broad published priors, c and d let the exponents drift over the trim, and each curve may
 miss by a small discrepancy, what the law leaves out. All of that is Gaussian, so the marginal likelihood of "labels are right" and of
 each alternative, one label off by d, one curve displaced, two labels exchanged, is closed form. The best alternative wins when it
 gains more than a threshold.
@@ -32,7 +32,7 @@ class Prior:
 
 
 TRIM_PRIOR = {
-    "head": Prior(flow=1.2, flow_sd=0.25, value=2.15, value_sd=0.15, flow_drift_sd=0.5, value_drift_sd=0.5),
+    "head": Prior(flow=1.2, flow_sd=0.25, value=2.15, value_sd=0.16, flow_drift_sd=0.5, value_drift_sd=0.5),
     "power": Prior(flow=1.2, flow_sd=0.25, value=3.3, value_sd=0.35, flow_drift_sd=0.5, value_drift_sd=0.7, value_discrepancy=0.008),
     "efficiency": Prior(flow=1.2, flow_sd=0.3, value=0.2, value_sd=0.2, flow_drift_sd=0.5, value_drift_sd=0.5, value_discrepancy=0.01),
     "npshr": Prior(
@@ -49,7 +49,9 @@ SPEED_PRIOR = {
 }
 """Speed: exponents are known (White ch. 11; ISO 9906 for NPSHr 1.3 to 2)."""
 
-THRESHOLD = 6.0
+_BEND_REACH = 0.35
+"""Exponents drift no further than over this log ratio, so that a label typed ten times too large is not excused by drift."""
+THRESHOLD = 5.5
 MARGIN = 2.0
 DISPLACED_ODDS = 2.0
 """Log prior odds of a wrong label against a displaced curve: labels are misread far more often than lines are drawn off their place."""
@@ -108,6 +110,7 @@ class _Model:
     def __init__(self, scales: Scales, trim: Prior | None, speed: Prior | None):
         self.n = n = len(scales.curves)
         self.keep = np.array([k for k in range(2 * n) if k not in (0, n)])
+        self.value = scales.value
         self.data = np.concatenate([scales.flow, scales.value])[self.keep]
         difference = np.eye(2 * n)
         difference[:n, 0] -= 1
@@ -130,9 +133,11 @@ class _Model:
         for p, x in zip(self.priors, labels, strict=True):
             none = np.zeros_like(x)
             f, v = np.concatenate([x, none], axis=-1), np.concatenate([none, x], axis=-1)
-            twice = np.concatenate([x, x], axis=-1)
+            middle = x - np.median(x, axis=-1, keepdims=True)
+            bend = middle * np.clip(middle, -_BEND_REACH, _BEND_REACH)
+            fb, vb = np.concatenate([bend, none], axis=-1), np.concatenate([none, bend], axis=-1)
             mean += p.flow * f + p.value * v
-            for column, sd in ((f, p.flow_sd), (v, p.value_sd), (f * twice, p.flow_drift_sd), (v * twice, p.value_drift_sd)):
+            for column, sd in ((f, p.flow_sd), (v, p.value_sd), (fb, p.flow_drift_sd), (vb, p.value_drift_sd)):
                 cov += sd**2 * column[..., :, None] * column[..., None, :]
         return mean @ self.difference.T, self.base + self.difference @ cov @ self.difference.T
 
@@ -184,7 +189,7 @@ def _profile(score: Callable[[FloatArray], FloatArray], grid: FloatArray) -> tup
     """Best shift, 95 % limits (log likelihood 1.92 below the best) and the log likelihood there."""
     values = score(grid)
     i = int(np.argmax(values))
-    step = float(np.diff(grid[max(0, i - 1) : i + 2]).max())
+    step = min(0.02, float(np.diff(grid[max(0, i - 1) : i + 2]).max()))
     inner = grid[i] + step * np.linspace(-1, 1, 41)
     fine = score(inner)
     j = int(np.clip(np.argmax(fine), 1, 39))
@@ -197,11 +202,14 @@ def _profile(score: Callable[[FloatArray], FloatArray], grid: FloatArray) -> tup
     return best, best - reach, best + reach, float(fine[j]) + (0.5 * lean**2 / bend if bend > 0 else 0.0)
 
 
-def _grid(reach: float) -> FloatArray:
-    fine = np.arange(0.004, 0.12, 0.004)
-    coarse = np.arange(0.12, reach, 0.02)
-    half = np.concatenate([fine, coarse])
-    return np.concatenate([-half[::-1], half])
+def _grid(model: _Model, p: Prior, x: FloatArray, k: int) -> FloatArray:
+    """Shifts of label k to try: small ones finely, and those around where the other curves' values put it, however far that is."""
+    small = np.concatenate([np.arange(0.004, 0.12, 0.004), np.arange(0.12, 0.3, 0.02)])
+    others = np.delete(np.arange(x.size), k)
+    implied = float(np.median(x[others] + (model.value[k] - model.value[others]) / p.value)) - x[k]
+    near = implied + np.arange(-0.12, 0.121, 0.008)
+    grid = np.concatenate([-small, small, near[np.abs(near) > 0.3]])
+    return np.unique(grid.round(6))
 
 
 def judge_family(
@@ -348,7 +356,7 @@ def _alternatives(model: _Model, curves: Sequence[FamilyCurve], kinds: list[str]
                 many[which][:, k] += d
                 return model.score(many)
 
-            shift, low, high, top = _profile(moved, _grid(0.8 if kind == "speed" else 0.3))
+            shift, low, high, top = _profile(moved, _grid(model, model.priors[which], xs[which], k))
             c = curves[k]
             printed = c.diameter_mm if kind == "diameter" else c.speed_rpm
             assert printed is not None

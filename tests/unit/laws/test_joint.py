@@ -217,3 +217,21 @@ def test_the_package_loads_nothing_by_itself():
 
     lines = Path(curvebank.laws.__file__).read_text(encoding="utf-8").splitlines()
     assert not [line for line in lines if line.startswith(("import ", "from "))]
+
+
+@pytest.mark.parametrize("printed", [31.0, 3100.0, 130.0, 103.0, 410.0])
+def test_a_slip_of_the_keys_is_found_however_far_it_is(printed):
+    v = judge_family([curve(340), curve(325), curve(310, printed, name="x"), curve(295), curve(280)])
+    assert v.verdict == "mislabelled" and v.scales.curves[v.best.curve].id == "x"
+    assert v.best.agrees == pytest.approx(310, rel=0.01)
+
+
+def test_more_than_one_label_off_is_said_to_be_unexplained():
+    v = judge_family([curve(340), curve(325, 332), curve(310), curve(295, 289), curve(280)])
+    assert v.unexplained and v.verdict in ("mislabelled", "one of these")
+
+
+def test_labels_of_several_quantities_can_be_added_up():
+    v = judge_family([curve(340), curve(325), curve(310, 319), curve(295), curve(280)])
+    assert v.gain_of("diameter", v.best.curve, v.best.shift) == pytest.approx(v.best.gain, abs=0.05)
+    assert v.gain_of("diameter", v.best.curve, 0.0) == pytest.approx(0.0, abs=1e-9)
