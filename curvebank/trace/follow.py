@@ -71,7 +71,7 @@ def contrast_cap(prepared: Prepared, clicks: FloatArray) -> float:
     for x, y in np.rint(clicks).astype(int):
         part = prepared.clean[max(y - reach, 0) : y + reach + 1, max(x - reach, 0) : x + reach + 1]
         tops.append(float(part.max(initial=0)) / 255.0)
-    return float(np.clip(0.5 * np.median(tops), 0.06, 0.35))
+    return float(np.clip(0.6 * np.median(tops), 0.06, 0.6))
 
 
 def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, how: Pass, shrink: float, cap: float) -> tuple[Path, float]:
@@ -129,7 +129,7 @@ def _smoothed(path: Path, axis: Axis, clicks: FloatArray, grain: float) -> tuple
     if axis.closed:
         t, offset, trust = t[:-1], offset[:-1], trust[:-1]
     pieces = int(np.clip(len(t) // 2, 6 if axis.closed else 3, 40))
-    curve = smooth.fit(t, offset, trust, pieces=pieces, periodic=axis.closed, floor=0.25 * grain, correlation=2.0)
+    curve = smooth.fit(t, offset, trust, pieces=pieces, periodic=axis.closed, floor=0.25 * grain, correlation=2.0, cut=8.0)
     dense = axis.points + axis.normals * curve.value(axis.s / axis.length)
     if axis.closed:
         dense[-1] = dense[0]

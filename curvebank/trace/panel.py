@@ -11,6 +11,7 @@ from .ends import to_ink
 from .follow import follow
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
 from .manual import by_hand, points_on_symbols
+from .meet import end_on_others
 from .profile import refine
 
 Progress = Callable[[float, str], Any]
@@ -43,6 +44,12 @@ def trace_panel(
         traces.append(trace)
         doubts.append(doubt)
         faults.append(fault)
+    on_ink = [c.kind == "line" and c.ends == "ink" and not c.closed for c in wanted]
+    traced = list(traces)
+    for i, trace in enumerate(traced):
+        if trace is not None and on_ink[i]:
+            others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
+            traces[i] = end_on_others(trace, others)
     pair_test([c.id for c in wanted], traces, doubts, list(fixed))
     tell(1.0, "Traced")
     out: list[Trace | TraceError] = []
