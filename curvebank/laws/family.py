@@ -40,7 +40,7 @@ SPEED_RANGE = (0.5, 1.2)
 
 BORROWED = ("efficiency", "power", "npshr")
 EFFICIENCY_STEP = 0.2
-"""Points of efficiency lost per per cent of trim where nothing is printed: Gülich names 0.15 to 0.25 for radial wheels (from memory)."""
+"""Points of peak efficiency lost per per cent of trim where nothing is printed. Gülich: 0.15 to 0.25 for radial wheels (from memory)."""
 POWER_EXPONENT_SPREAD = 0.7
 """Published trim exponents a + b of power reach from 3 to about 3.7: how far a borrowed power may be off."""
 NPSHR_TRIM_SPREAD = 1.0
@@ -91,13 +91,12 @@ class Plan:
     ``terms`` are (weight, flow factor, line): v(Q) = sum of weight x V(Q x factor). ``notes`` are cautions that belong to the reading.
     """
 
-    __slots__ = ("_doubt", "_slope", "hi", "lo", "notes", "offset", "rule", "terms", "value")
+    __slots__ = ("_doubt", "_slope", "hi", "lo", "notes", "rule", "terms", "value")
 
-    def __init__(self, terms, lo, hi, rule, *, offset=0.0, notes=(), doubt=None):
-        self.terms, self.lo, self.hi, self.rule, self.offset, self.notes = terms, lo, hi, rule, offset, notes
-        self._doubt = doubt
-        self._slope = None
-        self.value = _evaluator(terms, offset)
+    def __init__(self, terms, lo, hi, rule, *, notes=()):
+        self.terms, self.lo, self.hi, self.rule, self.notes = terms, lo, hi, rule, notes
+        self._doubt = self._slope = None
+        self.value = _evaluator(terms)
 
     @property
     def curves(self):
@@ -112,13 +111,13 @@ class Plan:
     def slope(self, flow_m3h):
         """dv/dQ at a flow."""
         if self._slope is None:
-            self._slope = _evaluator([(w * s / li.half, s, _Derived(li)) for w, s, li in self.terms], 0.0)
+            self._slope = _evaluator([(w * s / li.half, s, _Derived(li)) for w, s, li in self.terms])
         return self._slope(flow_m3h)
 
     def bend(self, flow_m3h):
         """d2v/dQ2 at a flow."""
         twice = [(w * (s / li.half) ** 2, s, _Derived(_Derived(li))) for w, s, li in self.terms]
-        return _evaluator(twice, 0.0)(flow_m3h)
+        return _evaluator(twice)(flow_m3h)
 
     def values(self, flow_m3h, *, guarded=False):
         """The value over a float64 array, by Horner in place and in blocks that stay in cache.
@@ -150,8 +149,6 @@ class Plan:
                     y *= weight
                 if i:
                     target += y
-            if self.offset:
-                target += self.offset
         return out
 
     def uncertainty(self, flow_m3h):
@@ -200,13 +197,13 @@ class _Derived:
         self.scaled = tuple(k * c for k, c in enumerate(line.scaled))[1:] or (0.0,)
 
 
-def _evaluator(terms, offset):
+def _evaluator(terms):
     """A function of flow for plain floats: one closure per reading, so that a call costs well under a microsecond per coefficient."""
     parts = []
     for weight, factor, line in terms:
         tail = tuple(weight * c for c in reversed(line.scaled))
         parts.append((factor / line.half, line.mid / line.half, tail[0], tail[1:]))
-    if len(parts) == 1 and not offset:
+    if len(parts) == 1:
         k, m, first, rest = parts[0]
 
         def one(q):
@@ -219,7 +216,7 @@ def _evaluator(terms, offset):
         return one
 
     def several(q):
-        total = offset
+        total = 0.0
         for k, m, first, rest in parts:
             t = q * k - m
             v = first
@@ -285,18 +282,16 @@ def _speed_notes(quantity, line, speed_rpm):
     return notes, relative, other
 
 
-def _doubt(value, parts, relative, absolute):
+def _doubt(value, parts, relative):
     """Rule doubt as a function of flow: ``parts`` is None or w and the two carried lines of a blend."""
-    if parts is None and not relative and not absolute:
+    if parts is None and not relative:
         return None
 
     def doubt(flow):
-        total = absolute * absolute
-        if relative:
-            total = total + (relative * value(flow)) ** 2
+        total = (relative * value(flow)) ** 2 if relative else 0.0
         if parts is not None:
             w, one, two = parts
-            first, second = _evaluator([one], 0.0), _evaluator([two], 0.0)
+            first, second = _evaluator([one]), _evaluator([two])
             # between two traced diameters the answer lies between the carried neighbours: rectangular, none at the ends (JCGM 100, 4.3.7)
             total = total + (2 * w * (1 - w) * (first(flow) - second(flow))) ** 2 / 3
         return total**0.5
@@ -389,7 +384,7 @@ def _single(quantity, line, diameter_mm, speed_rpm, rule, notes):
     weight, factor = carried(line, quantity, diameter_mm, speed_rpm, rule)
     more, relative, other = _speed_notes(quantity, line, speed_rpm)
     out = Plan([(weight, factor, line)], line.lo / factor, line.hi / factor, rule, notes=notes + more)
-    out._doubt = _doubt(out.value, None, math.hypot(relative, other / math.sqrt(3)), 0.0)
+    out._doubt = _doubt(out.value, None, math.hypot(relative, other / math.sqrt(3)))
     return out
 
 
@@ -406,7 +401,7 @@ def _blend(quantity, small, large, diameter_mm, speed_rpm, rule):
     notes, relative, other = _speed_notes(quantity, large, speed_rpm)
     out = Plan([((1 - w) * w1, f1, small), (w * w2, f2, large)], lo, hi, rule, notes=notes)
     parts = (w, (w1, f1, small), (w2, f2, large))
-    out._doubt = _doubt(out.value, parts, math.hypot(relative, other / math.sqrt(3)), 0.0)
+    out._doubt = _doubt(out.value, parts, math.hypot(relative, other / math.sqrt(3)))
     return out
 
 
@@ -417,20 +412,31 @@ def _borrow(quantity, line, diameter_mm, speed_rpm, rule):
     trim = 1.0 - diameter_mm / line.diameter_mm
     named = {"efficiency": "Efficiency", "power": "Power", "npshr": "NPSH required"}[quantity]
     how = {
-        "efficiency": f"carried to equal relative flow and lowered by {EFFICIENCY_STEP:g} points per % of trim",
+        "efficiency": f"carried to equal relative flow, its peak lowered by {EFFICIENCY_STEP:g} points per % of trim",
         "power": "carried by the trim law with exponents 1 and 3",
         "npshr": "taken at equal flow",
     }[quantity]
     note = f"{named} is printed for Ø {line.diameter_mm:g} alone. For Ø {diameter_mm:.4g} it is borrowed ({how}), with a wider band."
     note += " Confirm with the maker."
-    offset = absolute = 0.0
     if quantity == "efficiency":
-        step = EFFICIENCY_STEP * abs(trim)  # 0.2 points (0.002) per per cent: 0.2 x trim
-        offset, absolute = (-step if trim > 0 else 0.0), step / math.sqrt(3)
+        step = EFFICIENCY_STEP * abs(trim) / _peak(line)  # 0.2 points (0.002) per per cent: 0.2 x trim, as a share of the peak
+        weight *= max(1.0 - step, 0.0) if trim > 0 else 1.0
+        relative = math.hypot(relative, step / math.sqrt(3))
     elif quantity == "power":
         relative = math.hypot(relative, abs(1 - (1 - trim) ** POWER_EXPONENT_SPREAD) / math.sqrt(3))
     else:
         relative = math.hypot(relative, NPSHR_TRIM_SPREAD * abs(trim) / math.sqrt(3))
-    out = Plan([(weight, factor, line)], line.lo / factor, line.hi / factor, rule, offset=offset, notes=(note, *notes))
-    out._doubt = _doubt(out.value, None, math.hypot(relative, other / math.sqrt(3)), absolute)
+    out = Plan([(weight, factor, line)], line.lo / factor, line.hi / factor, rule, notes=(note, *notes))
+    out._doubt = _doubt(out.value, None, math.hypot(relative, other / math.sqrt(3)))
     return out
+
+
+def _peak(line, samples=64):
+    """The largest value of a line over its domain, by the parabola through the largest sample and its neighbours."""
+    value = _evaluator([(1.0, 1.0, line)])
+    v = [value(line.lo + (line.hi - line.lo) * i / samples) for i in range(samples + 1)]
+    i = max(range(samples + 1), key=v.__getitem__)
+    if not 0 < i < samples:
+        return v[i]
+    bend = v[i - 1] - 2 * v[i] + v[i + 1]
+    return v[i] - (v[i + 1] - v[i - 1]) ** 2 / (8 * bend) if bend < 0 else v[i]

@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 
 from curvebank.errors import LawError, OutsideDomain
 from curvebank.laws import family
-from curvebank.laws.family import Line, Plan, plan
+from curvebank.laws.family import Line, plan
 
 EXPONENTS = {"head": (1, 2), "power": (1, 3), "efficiency": (1, 0), "npshr": (0, 0)}
 
@@ -174,10 +174,11 @@ def test_borrowed_npshr_is_at_equal_flow_with_a_caution_and_a_wider_band():
 
 
 def test_borrowed_efficiency_steps_down_with_the_trim():
-    """Equal relative flow, 0.2 points per per cent of trim; 10 % of trim costs 0.02."""
-    lines = [line((0.0, 0.0235, -0.000175), 320.0)]
+    """Equal relative flow; 10 % of trim costs the peak 2 points and no flow nothing."""
+    lines = [line((0.0, 0.0235, -0.000175), 320.0, sigma=0.004)]
     own, other = (plan("efficiency", lines, d, 1450.0, span=(280.0, 320.0)) for d in (320.0, 288.0))
-    assert other.value(60.0 * 0.9) == pytest.approx(own.value(60.0) - 0.02, abs=1e-12)
+    assert other.value(0.9 * 67.142857142857) == pytest.approx(0.788928571428571 - 0.02, rel=1e-12)
+    assert other.value(0.0) == pytest.approx(0.0, abs=1e-12)
     assert other.uncertainty(54.0) > own.uncertainty(60.0) and "borrowed" in other.notes[0]
 
 
@@ -291,10 +292,9 @@ def test_slope_and_bend_are_derivatives():
 
 
 def test_large_arrays_in_blocks_equal_the_scalar():
-    """More than one block, odd length, two terms and an offset."""
+    """More than one block, odd length, two terms."""
     lines = [line((38.0, -0.04, -0.0015), 280.0), line((50.0, -0.05, -0.0015), 320.0)]
     reading = plan("head", lines, 305.0, 1450.0)
-    reading = Plan(reading.terms, reading.lo, reading.hi, reading.rule, offset=1.5)
     q = np.linspace(reading.lo, reading.hi, 2 * family.BLOCK + 17)
     got = reading.values(q)
     assert [got[i] for i in (0, family.BLOCK, q.size - 1)] == pytest.approx(
