@@ -8,18 +8,19 @@ import numpy as np
 from .. import units
 from ..laws.affinity import SPEED, carry_quantity
 from ..laws.power import closure
-from ..records import Finding
+from ..records import Finding, FloatArray
 from .context import Context, Series
-from .words import listed, number, panel_of, printed_mm, unit_word
+from .words import flows, listed, number, panel_of, printed_mm, unit_word
 
 SOURCE = "P = rho g Q H / eta"
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class Balance:
     """Balance of one diameter: ratio of traced to computed power, its doubt, and the flow it is quoted at [m3/h].
 
-    ``uneven`` is the spread of the ratio over the range, 10th to 90th percentile over the median.
+    ``uneven`` is the spread of the ratio over the range, 10th to 90th percentile over the median; ``flows`` [n] and ``ratios`` [n] are
+    the whole of it.
     """
 
     head: Series
@@ -29,6 +30,8 @@ class Balance:
     doubt: float
     flow_m3h: float
     uneven: float
+    flows: FloatArray
+    ratios: FloatArray
 
 
 def balances(context: Context) -> list[Balance]:
@@ -84,7 +87,7 @@ def _balance(context: Context, h: Series, p: Series, e: Series) -> Balance | Non
     # quoted where the ratio is the median one, as near to best efficiency as such a flow lies
     typical = np.abs(r / ratio - 1) <= max(0.005, float(np.min(np.abs(r / ratio - 1))))
     at = float(q[ok][typical][np.argmin(np.abs(q[ok][typical] - best))])
-    return Balance(h, p, e, ratio, float(np.median(u)), at, even)
+    return Balance(h, p, e, ratio, float(np.median(u)), at, even, q[ok], r)
 
 
 def explanations(context: Context, ratio: float, tolerance: float, head: Series, power: Series, efficiency: Series) -> list[str]:
@@ -134,6 +137,7 @@ def balance(context: Context) -> Iterator[Finding]:
         warn = max(np.log1p(limits["energy_warning_pct"] / 100), 2 * b.doubt)
         fail = max(np.log1p(limits["energy_error_pct"] / 100), 3 * b.doubt)
         if off <= warn:
+            yield from _stretch(b, float(fail))
             continue
         at = f"at {number(b.flow_m3h)} m³/h"
         computed = "more" if b.ratio > 1 else "less"
@@ -172,3 +176,30 @@ def balance(context: Context) -> Iterator[Finding]:
             action=action,
             where={"panel": panel_of(curves), "curves": [c.id for c in curves]},
         )
+
+
+def _stretch(b: Balance, limit: float) -> Iterator[Finding]:
+    """A part of the range, a fifth of it or more, where the balance is off although the middle agrees."""
+    miss = np.log(b.ratios)
+    worst = int(np.argmax(np.abs(miss)))
+    over = (np.abs(miss) > limit) & (np.sign(miss) == np.sign(miss[worst]))
+    if over.mean() < 0.2:
+        return
+    pct = abs(float(np.expm1(miss[worst]))) * 100
+    more = "more" if miss[worst] > 0 else "less"
+    of = f" of Ø {printed_mm(b.power.diameter_mm)}" if b.power.diameter_mm else ""
+    curves = [b.power.curve, b.head.curve, b.efficiency.curve]
+    action = "Look along the three lines there: one trace may have taken another line."
+    yield Finding(
+        rule="energy-balance",
+        severity="warning",
+        subject=f"curve:{b.power.curve.id}",
+        message=f"Power, head and efficiency{of} do not agree {flows(float(b.flows[over].min()), float(b.flows[over].max()))}: "
+        f"power is up to {number(pct, 2)} % {more} than head and efficiency give, with {number(b.doubt * 100, 2)} % of doubt. {action}",
+        measured=round(float(b.ratios[worst]), 5),
+        limit=round(float(np.exp(limit)), 5),
+        unit="1",
+        source=SOURCE,
+        action=action,
+        where={"panel": panel_of(curves), "curves": [c.id for c in curves]},
+    )

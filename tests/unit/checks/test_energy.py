@@ -100,6 +100,16 @@ def test_curves_at_two_speeds_are_carried_to_one():
     assert said([curve("head"), slow, curve("efficiency")], "energy-balance") == []
 
 
+def test_a_stretch_that_leaves_the_balance_is_named():
+    c = curve("power")
+    p = c.points.copy()
+    late = p[:, 0] > 130
+    p[late, 1] *= 1 + 0.25 * (p[late, 0] - 130) / 60
+    (f,) = said([curve("head"), replace(c, points=frozen(p)), curve("efficiency")], "energy-balance")
+    assert f.severity == "warning"
+    assert re.search(r"do not agree between 1[45]\d and 1[78]\d m³/h: power is up to 2\d % more than", f.message)
+
+
 # ------------------------------------------------------------------------------------------------- head coefficient
 
 
