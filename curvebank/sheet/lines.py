@@ -68,7 +68,7 @@ def _family(ink: Bytes, unit: float) -> list[tuple[Floats, Floats, float, float]
         if fit is None or fit[1] > 0.6 * max(unit, 0.7):
             continue
         kept.append((x, y, r, fit[0], fit[1]))
-    return _with_field(kept, ink.shape, strip, unit)
+    return _with_field(kept, response, ink.shape, strip, unit)
 
 
 def _ridges(ink: Bytes, cell: int, sigma: float) -> tuple[npt.NDArray[np.float32], npt.NDArray[np.float32], float]:
@@ -170,7 +170,11 @@ def _robust_poly(x: Floats, y: Floats, width: int) -> tuple[Floats, float] | Non
 
 
 def _with_field(
-    tracks: list[tuple[Floats, Floats, Floats, Floats, float]], shape: tuple[int, ...], strip: int, unit: float
+    tracks: list[tuple[Floats, Floats, Floats, Floats, float]],
+    response: npt.NDArray[np.float32],
+    shape: tuple[int, ...],
+    strip: int,
+    unit: float,
 ) -> list[tuple[Floats, Floats, float, float]]:
     """Keep the tracks whose direction agrees with a smooth field of directions over the page."""
     height, width = shape[:2]
@@ -209,11 +213,42 @@ def _with_field(
         off = off - np.median(off)
         if 1.4826 * np.median(np.abs(off)) > 1.0 * max(unit, 0.7) + 0.0012 * (tx[-1] - tx[0]):
             continue
+        low, high = (_reach(response, tx, coefficients, float(np.median(strength)), strip, width, unit, way) for way in (-1, 1))
         # Half a strip beyond the outer strips' middles; the removal step trims to where ink really is.
-        dense = np.arange(max(tx[0] - strip / 2, 0), min(tx[-1] + strip / 2, width - 1) + 1, max(strip // 4, 1), dtype=float)
-        dense = np.unique(np.r_[dense, min(tx[-1] + strip / 2, width - 1)])
-        line = np.polynomial.polynomial.polyval(2 * dense / width - 1, coefficients)
+        first, last = max(low - strip / 2, 0), min(high + strip / 2, width - 1)
+        dense = np.unique(np.r_[np.arange(first, last + 1, max(strip // 4, 1), dtype=float), last])
+        line = _continued(dense, tx, coefficients, width)
         if line.min() < 0 or line.max() > height - 1:
             continue
         out.append((dense, line, float(np.median(strength)), scatter))
     return out
+
+
+def _continued(x: Floats, track_x: Floats, coefficients: Floats, width: int) -> Floats:
+    """The track's polynomial over its own strips, straight beyond them."""
+    poly = np.polynomial.polynomial
+    inner = np.clip(x, track_x[0], track_x[-1])
+    slope = poly.polyval(2 * inner / width - 1, poly.polyder(coefficients)) * 2 / width
+    return poly.polyval(2 * inner / width - 1, coefficients) + slope * (x - inner)
+
+
+def _reach(
+    response: npt.NDArray[np.float32], track_x: Floats, coefficients: Floats, strength: float, strip: int, width: int, unit: float, way: int
+) -> float:
+    """How far the line goes on beyond its track, strip by strip: a curve lying along a line often hides its beginning."""
+    at = float(track_x[0] if way < 0 else track_x[-1])
+    reached, missed = at, 0
+    gate = max(1, round(1.5 * unit))
+    while missed < 3:
+        at += way * strip
+        column = int(at // strip)
+        if not 0 <= column < response.shape[1] or at < 0:
+            break
+        y = int(round(float(_continued(np.array([at]), track_x, coefficients, width)[0])))
+        if not gate <= y < response.shape[0] - gate:
+            break
+        if response[y - gate : y + gate + 1, column].max() > 0.35 * strength:
+            reached, missed = at, 0
+        else:
+            missed += 1
+    return reached
