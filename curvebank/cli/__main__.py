@@ -1,0 +1,6 @@
+"""``python -m curvebank.cli`` is the ``curvebank`` command."""
+
+from . import main
+
+if __name__ == "__main__":
+    main()
