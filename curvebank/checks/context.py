@@ -7,8 +7,9 @@ from functools import cached_property
 import numpy as np
 
 from ..errors import LawError
+from ..laws.evidence import TRIM_PRIOR
 from ..laws.joint import FamilyCurve
-from ..laws.labels import TRIM_PRIOR, Verdict, judge_family
+from ..laws.labels import Verdict, judge_family
 from ..records import Curve, Digitised, FloatArray
 
 COMPARABLE_LABELS = (None, "diameter", "speed")

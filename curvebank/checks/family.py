@@ -4,7 +4,8 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from ..laws.labels import TRIM_PRIOR, Alternative
+from ..laws.evidence import TRIM_PRIOR
+from ..laws.labels import Alternative
 from ..records import Finding, Severity
 from .context import Context, Family, Series
 from .words import QUANTITY_WORDS, flows, listed, number, panel_of, printed_mm

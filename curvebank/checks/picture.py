@@ -6,12 +6,13 @@ from typing import Any
 import numpy as np
 
 from ..laws.affinity import carry
-from ..laws.labels import TRIM_PRIOR
+from ..laws.evidence import SPEED_PRIOR, TRIM_PRIOR
 from ..records import Curve, Digitised, PumpInfo
 from .context import Context, Family, Series
 from .settings import resolve
 
 POINTS = 60
+_LABEL = {"diameter": "diameter_mm", "speed": "speed_rpm"}
 
 
 def family_picture(curves: Iterable[Curve], settings: Mapping[str, Any] | None = None, *, pump: PumpInfo | None = None) -> dict[str, Any]:
@@ -29,7 +30,7 @@ def family_picture(curves: Iterable[Curve], settings: Mapping[str, Any] | None =
     Returns
     -------
     dict
-        ``{quantity: {verdict, exponents: {flow: [a, sd], value: [b, sd], measured: bool}, detectable_pct, curves: [...]}}``; a curve is
+        ``{quantity: {verdict, over, exponents: {flow: [a, sd], value: [b, sd], measured: bool}, detectable_pct, curves: [...]}}``; a curve is
         ``{id, diameter_mm, speed_rpm, printed, agrees_mm, agrees_low_mm, agrees_high_mm, ghosts: [...]}`` (``agrees`` null where the
         label is not doubted); a ghost is ``{to_id, to_diameter_mm, points: [[flow_m3h, value], ...], gap, doubt, gap_at_m3h}``.
         ``gap`` is the largest difference between a ghost and the curve it should cover, ``doubt`` the standard uncertainty of it
@@ -50,10 +51,12 @@ def family_picture(curves: Iterable[Curve], settings: Mapping[str, Any] | None =
 
 
 def _one(f: Family) -> dict[str, Any]:
-    prior, v = TRIM_PRIOR[f.quantity], f.verdict
+    v = f.verdict
+    over = "diameter" if len({s.diameter_mm for s in f.members}) > 1 else "speed"
+    prior = (TRIM_PRIOR if over == "diameter" else SPEED_PRIOR)[f.quantity]
     a, sa, b, sb, measured = prior.flow, prior.flow_sd, prior.value, prior.value_sd, False
-    if v is not None and "diameter" in v.exponents and len({s.diameter_mm for s in f.members}) > 2:
-        (a, sa), (b, sb) = v.exponents["diameter"]["flow"], v.exponents["diameter"]["value"]
+    if v is not None and over in v.exponents and len({getattr(s, _LABEL[over]) for s in f.members}) > 2:
+        (a, sa), (b, sb) = v.exponents[over]["flow"], v.exponents[over]["value"]
         measured = True
     agrees = {}
     if v is not None and v.verdict == "mislabelled" and v.best is not None and v.best.kind == "diameter":
@@ -70,22 +73,23 @@ def _one(f: Family) -> dict[str, Any]:
                 "agrees_mm": best.agrees if best else None,
                 "agrees_low_mm": best.agrees_low if best else None,
                 "agrees_high_mm": best.agrees_high if best else None,
-                "ghosts": [_ghost(s, f.members[j], a, sa, b, sb) for j in (i - 1, i + 1) if 0 <= j < len(f.members)],
+                "ghosts": [_ghost(s, f.members[j], over, a, sa, b, sb) for j in (i - 1, i + 1) if 0 <= j < len(f.members)],
             }
         )
     return {
         "verdict": v.verdict if v is not None else "cannot tell",
+        "over": over,
         "exponents": {"flow": [a, sa], "value": [b, sb], "measured": measured},
         "detectable_pct": 100 * v.detectable if v is not None and v.detectable is not None else None,
         "curves": rows,
     }
 
 
-def _ghost(s: Series, to: Series, a: float, sa: float, b: float, sb: float) -> dict[str, Any]:
-    r = (to.diameter_mm or 1.0) / (s.diameter_mm or 1.0)
+def _ghost(s: Series, to: Series, over: str, a: float, sa: float, b: float, sb: float) -> dict[str, Any]:
+    r = (getattr(to, _LABEL[over]) or 1.0) / (getattr(s, _LABEL[over]) or 1.0)
     pick = np.unique(np.linspace(0, len(s.flow) - 1, POINTS).round().astype(int))
     q, v = carry(s.flow, s.value, r, flow_exponent=a, value_exponent=b)
-    if s.speed_rpm and to.speed_rpm and s.speed_rpm != to.speed_rpm:
+    if over == "diameter" and s.speed_rpm and to.speed_rpm and s.speed_rpm != to.speed_rpm:
         speed = {"head": 2.0, "power": 3.0, "efficiency": 0.0, "npshr": 2.0}[s.curve.quantity]
         q, v = carry(q, v, to.speed_rpm / s.speed_rpm, flow_exponent=1.0, value_exponent=speed)
     gap = doubt = at = None

@@ -3,7 +3,7 @@
 import math
 from collections.abc import Sequence
 
-from ..records import Curve, Digitised
+from ..records import Curve
 
 QUANTITY_WORDS = {
     "head": "head",
@@ -53,17 +53,6 @@ def flows(lo: float, hi: float) -> str:
     return f"between {number(lo)} and {number(hi)} m³/h"
 
 
-def mm(x: float, places: int = 0) -> str:
-    """A diameter without needless zeros.
-
-    Examples
-    --------
-    >>> mm(242.0), mm(241.3, 1), mm(234.04, 1)
-    ('242', '241.3', '234.0')
-    """
-    return f"{x:.{places}f}"
-
-
 def printed_mm(x: float) -> str:
     """A diameter as it was typed: whole numbers stay whole."""
     return f"{x:g}" if x != int(x) else f"{int(x)}"
@@ -102,8 +91,3 @@ def panel_of(curves: Sequence[Curve]) -> str | None:
     """The panel all curves share, else None."""
     panels = {c.panel for c in curves}
     return panels.pop() if len(panels) == 1 else None
-
-
-def units_of(digitised: Digitised, quantity: str) -> set[str]:
-    """Printed value units of all curves of a quantity."""
-    return {c.printed_y_unit for c in digitised.curves if c.quantity == quantity}
