@@ -27,7 +27,7 @@ export function linearTicks(lo, hi, most = 8, step = roundStep(hi - lo, most)) {
 
 export function logTicks(lo, hi, most = 8) {
   if (!(lo > 0 && hi > lo)) return [];
-  for (const digits of [[1, 2, 3, 4, 5, 6, 7, 8, 9], [1, 2, 3, 4, 6, 8], [1, 2, 3, 5], [1, 2, 5], [1, 3], [1]]) {
+  for (const digits of [[1, 2, 3, 4, 5, 6, 7, 8, 9], [1, 2, 3, 5, 7], [1, 2, 3, 5], [1, 2, 5], [1, 3], [1]]) {
     const ticks = [];
     for (let e = Math.floor(Math.log10(lo)); e <= Math.ceil(Math.log10(hi)); e++) {
       for (const d of digits) {

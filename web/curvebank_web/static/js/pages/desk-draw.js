@@ -32,11 +32,18 @@ export function homeView(desk, whole = false) {
   const outline = panel?.outline;
   if (whole || !outline || ["sheet", "panel"].includes(desk.step)) return fitBox(corners(page.width, page.height), width, height, 0, { left: 14, right: 14, top: 14, bottom: 14 });
   const lead = desk.axes?.[0];
-  const middle = [(outline[0][0] + outline[2][0]) / 2, (outline[0][1] + outline[2][1]) / 2];
+  const frame = lead ? frameOf(lead) : outline;
+  const middle = [(frame[0][0] + frame[2][0]) / 2, (frame[0][1] + frame[2][1]) / 2];
   const tilt = lead ? lead.map.turnAt(middle) : 0;
   const turn = Math.abs(tilt) < 0.3 ? -tilt : 0;
   const side = Math.max(46, Math.min(90, width * 0.13));
-  return fitBox(outline, width, height, turn, { left: side, right: side, top: EDGE.top, bottom: EDGE.bottom });
+  return fitBox(frame, width, height, turn, { left: side, right: side, top: EDGE.top, bottom: EDGE.bottom });
+}
+
+/** Sheet pixels of the four corners of a calibrated panel. */
+function frameOf({ map, ext }) {
+  const [[q0, q1], [v0, v1]] = [ext.flow, ext.value];
+  return [[q0, v1], [q1, v1], [q1, v0], [q0, v0]].map((p) => map.toPixel(p));
 }
 
 function curvePlace(desk, f) {
@@ -189,6 +196,7 @@ export class DeskDraw {
     plot.setAttribute("viewBox", `0 0 ${plotSize.width} ${plotSize.height}`);
     over.replaceChildren();
     plot.replaceChildren();
+    if (desk.hand) over.append(...handMark(desk.hand));
     const fold = size("fold");
     const c = desk.cursor;
     if (!scales || !c || !Number.isFinite(c.q)) {
@@ -231,7 +239,7 @@ export class DeskDraw {
       plot.append(s(r.dashed ? "rect" : "circle", r.dashed ? { x: px - 3.5, y: r.y - 3.5, width: 7, height: 7, fill: "var(--sheet)", stroke: "var(--construct)", "stroke-width": 1.5 } : { cx: px, cy: r.y, r: r.near ? 5.5 : 3.2, fill: "var(--sheet)", class: `dot k-${r.tone}`, "stroke-width": 1.5 }));
     }
     const uq = desk.flowDoubt?.(near) ?? null;
-    drawFold($("fold"), { heading: `at ${plain(c.q, c.q < 10 ? 2 : c.q < 100 ? 1 : 0)} ${written(desk.flowAxis.unit)}`, flow: { doubt: uq ? `± ${uq}` : null }, rows: rows.filter((r) => r.y > -40 && r.y < fold.height + 40), foot: rows.some((r) => r.doubt) ? "± is what the print allows, k = 1" : "", grey: c.left }, fold);
+    drawFold($("fold"), { heading: `at ${plain(c.q, c.q < 10 ? 2 : c.q < 100 ? 1 : 0)} ${written(desk.flowAxis.unit)}`, flow: { doubt: uq ? `± ${uq}` : null }, rows: rows.filter((r) => scales.stacked || (r.y > -40 && r.y < fold.height + 40)), foot: rows.some((r) => r.doubt) ? "± is what the print allows, k = 1" : "", grey: c.left }, fold);
     this.read = { q: c.q, rows };
   }
 
@@ -305,6 +313,12 @@ export class DeskDraw {
   }
 }
 
+/** The hand of the keyboard: an open cross. */
+function handMark([x, y]) {
+  const d = `M${x - 16} ${y}h11m10 0h11M${x} ${y - 16}v11m0 10v11`;
+  return [s("path", { d, class: "casing", "stroke-width": 4.6 }), s("path", { d, class: "k-ink", "stroke-width": 2 })];
+}
+
 /** A rim ruled in sheet pixels. */
 function rim(view, side) {
   const out = [s("rect", { x: 0.75, y: 0.75, width: side - 1.5, height: side - 1.5, class: "k-ink", "stroke-width": 1.5 })];
@@ -341,5 +355,5 @@ function stackedScales(desk, plot, paper, scales) {
     const f = (w) => (log ? (Math.log10(w) - Math.log10(lo)) / (Math.log10(hi) - Math.log10(lo)) : (w - lo) / (hi - lo));
     return { ...y, lo, hi, map: (w) => frame[3] - f(w) * (frame[3] - frame[1]), invert: (p) => (log ? 10 ** (Math.log10(lo) + ((frame[3] - p) / (frame[3] - frame[1])) * (Math.log10(hi) - Math.log10(lo))) : lo + ((frame[3] - p) / (frame[3] - frame[1])) * (hi - lo)) };
   });
-  return { ...scales, x, ys, frame };
+  return { ...scales, x, ys, frame, stacked: true };
 }

@@ -10,7 +10,7 @@ export const ROWS = [
   ["hold Z", "magnify in place, 9 times; the wheel changes it"], ["← → ↑ ↓", "nudge by 0.1 px, or move the straightedge; Shift for more"],
   ["hold Space", "move the paper; the wheel zooms at the pointer"], ["hold Shift", "no snap while placing or dragging"],
   ["+ −", "closer, further"], ["0 9", "whole panel, whole sheet"],
-  ["Enter", "keep: mark, curve"], ["Esc", "one level back; then stop the check"],
+  ["P", "put a corner, mark or guide where the hand is; arrows move it"], ["Enter", "keep: mark, curve"], ["Esc", "one level back; then stop the check"],
   ["U R", "undo, redo, through the whole history"], ["N", "next finding; with Shift the last"],
   ["1 … 7", "go to a step"], ["Del", "take away the mark, guide or curve in focus"],
   ["hold B", "bare paper, nothing drawn over it"], ["G", "carried curves on and off"],
@@ -25,6 +25,7 @@ export function deskKeys(desk, draw, tools, invalidate, more) {
   const zoom = (f) => {
     const at = desk.pointer?.surface === "paper" ? desk.pointer.screen : [paper.clientWidth / 2, paper.clientHeight / 2];
     desk.view = zoomAt(desk.view, f, at);
+    desk.moved = true;
     invalidate("view");
   };
   const focusPoint = () => {
@@ -64,9 +65,10 @@ export function deskKeys(desk, draw, tools, invalidate, more) {
       z: () => !desk.loupe && tools.openLoupe(focusPoint()),
       b: () => { desk.bare = true; invalidate("paper"); },
       "+": () => zoom(1.4), "=": () => zoom(1.4), "-": () => zoom(1 / 1.4), "−": () => zoom(1 / 1.4),
-      0: () => { desk.view = homeView(desk); invalidate("view"); },
-      9: () => { desk.view = homeView(desk, true); invalidate("view"); },
+      0: () => { desk.moved = false; desk.view = homeView(desk); invalidate("view"); },
+      9: () => { desk.moved = true; desk.view = homeView(desk, true); invalidate("view"); },
       u: () => desk.undoOrRedo("undo"), r: () => desk.undoOrRedo("redo"),
+      p: () => tools.putDown(e),
       n: () => desk.nextFinding(e.shiftKey ? -1 : 1),
       g: () => desk.set({ over: desk.over === "none" ? "both" : "none" }),
       i: () => desk.say(draw.read ? `At ${$("fold").querySelector(".fold-head b")?.textContent.replace("at ", "")}: ${draw.read.rows.map((r) => `${r.name} ${r.value} ${r.doubt}`).join("; ")}` : "No reading here."),

@@ -114,6 +114,7 @@ export class Desk {
       if (this.step === "fit") addFit(item);
     }
     if (this.run) this.run.fresh = JSON.stringify(recipeOf(doc)) === this.run.recipe;
+    if (this.saved && this.saved.recipe !== JSON.stringify(recipeOf(doc))) this.saved = null;
     this.ghosts = this.step === "family" && this.run && panel ? ghostsOf(this.run, doc, panel, this.carry) : [];
     const live = liveFindings(doc, this.panelResult, this.curveResult, words);
     this.findings = mergeFindings(live, this.run ? runFindings(this.run) : []).map((f, i) => ({ ...f, number: i + 1, cured: false }));

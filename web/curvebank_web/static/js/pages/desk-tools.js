@@ -21,7 +21,7 @@ export class DeskTools {
     Object.assign(this, { desk, draw, tiles, invalidate, space: false });
     const paper = $("paper");
     const at = (e) => this.at(e);
-    const view = { view: () => desk.view, setView: (v) => { desk.view = v; invalidate("view"); } };
+    const view = { view: () => desk.view, setView: (v) => { desk.view = v; desk.moved = true; invalidate("view"); } };
     this.navigate = new Navigate(paper, at, { ...view, spaceHeld: () => this.space, stopOthers: () => this.cancel(), wheel: (e) => this.#wheel(e) }).enable();
     this.grab = new Grab(paper, at, { find: (p) => this.find(p), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: () => this.drop(), chosen: (hd) => this.chosen(hd), back: () => this.back() }).enable();
     this.box = new Box(paper, at, { show: (o) => { desk.box = o; invalidate("paper"); }, done: (o) => this.addPanel(o) });
@@ -92,6 +92,7 @@ export class DeskTools {
   moved({ surface, screen }) {
     const { desk, draw } = this;
     desk.pointer = { surface, screen };
+    desk.hand = null;
     if (desk.loupe && surface === "paper") {
       const l = desk.loupe;
       if (Math.abs(screen[0] - l.at[0]) > l.side / 2 || Math.abs(screen[1] - l.at[1]) > l.side / 2) this.openLoupe(screen, l.times);
@@ -100,7 +101,8 @@ export class DeskTools {
     if (surface === "paper") {
       const q = desk.axes[0].map.toValues(this.toSheet(screen))[0];
       const [lo, hi] = desk.axes[0].ext.flow;
-      desk.cursor = { q: Math.min(hi, Math.max(lo, q)), sy: screen[1] };
+      const sy = draw.scales.stacked ? draw.scales.ys[0].map(desk.axes[0].map.toValues(this.toSheet(screen))[1]) : screen[1];
+      desk.cursor = { q: Math.min(hi, Math.max(lo, q)), sy };
     } else {
       desk.cursor = { q: draw.scales.x.invert(Math.min(Math.max(screen[0], draw.scales.frame[0]), draw.scales.frame[2])), sy: screen[1] };
     }
@@ -302,6 +304,7 @@ export class DeskTools {
         return;
       }
     }
+    if (document.activeElement === $("paper") && ["panel", "marks", "curves"].includes(desk.step)) return this.moveHand(dx, dy, e.shiftKey ? 1 : 8);
     const { scales } = this.draw;
     if (!scales) return;
     const [x0, y0, x1, y1] = scales.frame;
@@ -309,6 +312,35 @@ export class DeskTools {
     const px = Math.min(x1, Math.max(x0, scales.x.map(c.q) + dx * (e.shiftKey ? 10 : 1)));
     desk.cursor = { q: scales.x.invert(px), sy: Math.min(y1, Math.max(y0, c.sy + dy * (e.shiftKey ? 24 : 8))) };
     this.invalidate("cursor");
+  }
+
+  /** The hand: a cross on the paper that arrow keys move and P puts down; it starts where the pointer is. */
+  moveHand(dx, dy, step) {
+    const { desk } = this;
+    const paper = $("paper");
+    const from = desk.hand ?? (desk.pointer?.surface === "paper" ? desk.pointer.screen : [paper.clientWidth / 2, paper.clientHeight / 2]);
+    const within = (v, hi) => Math.min(hi - 1, Math.max(1, v));
+    desk.hand = [within(from[0] + dx * step, paper.clientWidth), within(from[1] + dy * step, paper.clientHeight)];
+    this.moved({ surface: "paper", screen: desk.hand });
+    desk.hand = desk.pointer.screen;
+    if (this.box.enabled) this.box.hoverAt(this.#handPoint());
+    this.invalidate("cursor");
+  }
+
+  #handPoint() {
+    const { desk } = this;
+    const screen = desk.hand ?? (desk.pointer?.surface === "paper" ? desk.pointer.screen : null);
+    return screen && { screen, sheet: this.toSheet(screen) };
+  }
+
+  /** Put a corner, a mark or a guide where the hand is: what a click there would do. */
+  putDown(e) {
+    const { desk } = this;
+    const here = this.#handPoint();
+    if (!here) return desk.say("Arrow keys move the hand first; P then puts a point down.");
+    if (this.box.enabled) return this.box.corner(here);
+    if (["marks", "curves"].includes(desk.step)) return this.click(here, { target: $("paper"), shiftKey: e.shiftKey });
+    return undefined;
   }
 
   removeFocused() {

@@ -88,7 +88,7 @@ function abilities(desk, draw, tools, invalidate) {
     choosePanel(id) {
       if (id === "+") desk.drawingPanel = true;
       else { desk.drawingPanel = false; desk.panelId = id; desk.chosenMark = null; desk.cursor = null; }
-      if (desk.step !== "panel") desk.view = null;
+      if (desk.step !== "panel") { desk.view = null; desk.moved = false; }
       tools.stepped(desk.step);
       redo("all");
     },
@@ -168,6 +168,7 @@ function abilities(desk, draw, tools, invalidate) {
         if (!desk.run?.fresh && (await desk.startRun()) !== "done") { desk.saving = false; return; }
         const pump = desk.doc.pump ?? {};
         desk.saved = await api.save(draftId, { ...(pump.key ? { key: pump.key } : {}), who, why, save_key: desk.saveKey, release, step: desk.run.step });
+        desk.saved.recipe = desk.run.recipe;
         desk.saveKey = null;
         closeProblem(problems, "save");
       } catch (error) {
@@ -231,7 +232,7 @@ async function start() {
   const desk = new Desk(session, {
     invalidate: (w) => invalidate(w),
     problem: (id, error) => fromError(problems, id, error),
-    stepped: (step) => { tools?.stepped(step); if (["sheet", "panel"].includes(step) !== ["sheet", "panel"].includes(lastStep)) desk.view = null; lastStep = step; },
+    stepped: (step) => { tools?.stepped(step); if (!desk.moved || ["sheet", "panel"].includes(step) !== ["sheet", "panel"].includes(lastStep)) { desk.view = null; desk.moved = false; } lastStep = step; },
   });
   let lastStep = desk.step;
   const tiles = new TileLayer(() => invalidate("tiles"));

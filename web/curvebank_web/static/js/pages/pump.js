@@ -116,7 +116,7 @@ function draw() {
   drawAnswer($("answer"), m);
   if (m.duties.length > 1) $("answer").append(h("p", { class: "band-note" }, `The system meets this pump ${m.duties.length} times: at ${m.duties.map((d) => plain(d.flow_m3h, 0)).join(" and ")} m³/h. The table is for the stable one.`));
   drawImpellers($("scale"), detail.diameters_mm, asked.diameter);
-  drawCautions($("cautions"), detail, m.duty);
+  drawCautions($("cautions"), detail, m.duty, waive);
   drawScan(m);
 }
 
@@ -166,6 +166,24 @@ async function toDesk() {
   } catch (error) {
     fromError($("problems"), "desk", error);
   }
+}
+
+/** Ask for the reason in place, then note the waiver with its name. */
+function waive(f, li) {
+  const say = async () => {
+    if (!release.why || !release.who) return;
+    keepSetting("who", release.who);
+    try {
+      await api.revisionEvent(key, detail.number, { kind: "waived", who: release.who, why: release.why, finding: f.key });
+      release.why = "";
+      await start();
+    } catch (error) {
+      fromError($("problems"), "waive", error);
+    }
+  };
+  li.querySelector(".link")?.remove();
+  li.lastElementChild.append(h("div", { class: "sentence" }, h("span", {}, "It is right, because"), textBlank({ name: "wwhy", label: "Why it is right", value: "", example: "why", width: 150, onValue: (v) => { release.why = v; } }), h("span", {}, ", signed"), textBlank({ name: "wwho", label: "Your name", value: release.who, example: "your name", width: 100, onValue: (v) => { release.who = v; } }), button("Waive", { onClick: say })));
+  li.querySelector("input").focus();
 }
 
 async function releaseNow() {

@@ -63,7 +63,7 @@ function drawMap() {
   }
   const around = (list) => {
     const [lo, hi] = [Math.min(...list), Math.max(...list)];
-    const pad = Math.max(1.25, (hi / lo) ** 0.12);
+    const pad = Math.max(1.3, (hi / lo) ** 0.12, Math.sqrt(5 / (hi / lo)));
     return [lo / pad, hi * pad];
   };
   const [q0, q1] = around(qs);

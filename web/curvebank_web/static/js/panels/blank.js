@@ -4,15 +4,19 @@ import { h, s } from "../view/dom.js";
 
 const arrow = () => s("svg", { width: 9, height: 6, viewBox: "0 0 9 6", "aria-hidden": "true", focusable: "false" }, s("path", { d: "M0 0h9L4.5 6z", fill: "currentColor" }));
 
-/** A blank that takes a number. onValue(number | null); `offer` is a value that Tab takes when the blank is empty. */
-export function numberBlank({ name, label, value, example = "", offer = null, width = 52, onValue, onEnter, least = null, whole = false }) {
-  const shown = value === null || value === undefined ? "" : typed(value);
+/**
+ * A blank that takes a number. onValue(number | null); `offer` is a value that Tab takes when the blank is empty; `words(text)` may
+ * accept a text in place of a number (a letter for a diameter).
+ */
+export function numberBlank({ name, label, value, example = "", offer = null, width = 52, onValue, onEnter, least = null, whole = false, words = null }) {
+  const shown = value === null || value === undefined ? "" : typeof value === "string" ? value : typed(value);
   const input = h("input", { name, type: "text", inputmode: "decimal", autocomplete: "off", spellcheck: "false", "aria-label": label, value: shown, placeholder: offer !== null ? `${typed(offer)}` : example, style: { width: `${Math.max(width, 16 + 9 * shown.length)}px` } });
   const wrap = h("span", { class: "blank" }, input);
   const commit = () => {
-    const got = parseNumber(input.value);
+    const said = words?.(input.value.trim());
+    const got = said ? { value: said } : parseNumber(input.value);
     let error = got.error ?? null;
-    if (!error && got.value !== null && least !== null && !(got.value >= least)) error = `“${input.value}” is too small here. Type ${typed(least)} or more.`;
+    if (!error && !said && got.value !== null && least !== null && !(got.value >= least)) error = `“${input.value}” is too small here. Type ${typed(least)} or more.`;
     if (!error && got.value !== null && whole && got.value !== Math.round(got.value)) error = `“${input.value}” is not a whole number.`;
     wrap.classList.toggle("wrong", Boolean(error));
     input.toggleAttribute("aria-invalid", Boolean(error));

@@ -1,5 +1,4 @@
 // Findings as sentences, each with its number, which also stands at its place on paper and plot.
-import { count } from "../geometry/number.js";
 import { h, placeIcon, put, SEVERITY_WORDS } from "../view/dom.js";
 
 /** list = [{number, severity, text, waysInline: [[words, fn]], buttons: [[words, fn]], chosen, cured}] */
@@ -11,7 +10,8 @@ export function drawFindings(root, { title, list, most = 3, chosen, onChoose, hi
   const shown = list.slice(from, from + most);
   const items = shown.map((f) => finding(f, { chosen: f.number === chosen, onChoose }));
   const rest = list.length - shown.length;
-  put(root, head, h("ol", { class: "findings" }, items), rest > 0 ? h("button", { type: "button", class: "btn quiet more", onclick: () => onChoose(list[(from + most) % list.length]) }, `${count(rest, "more finding", "more findings")}`) : null);
+  if (rest > 0) head.append(h("button", { type: "button", class: "btn quiet more", onclick: () => onChoose(list[(from + most) % list.length]) }, `show ${rest} more`));
+  put(root, head, h("ol", { class: "findings" }, items));
 }
 
 export function finding(f, { chosen = false, onChoose = null } = {}) {

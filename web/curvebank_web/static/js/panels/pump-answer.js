@@ -64,14 +64,16 @@ export function drawImpellers(root, diameters, asked) {
   return put(root, h("h3", {}, "Impeller, mm; long strokes are traced curves"), svg);
 }
 
-export function drawCautions(root, detail, duty) {
+export function drawCautions(root, detail, duty, onWaive) {
   const cautions = [...(detail.cautions ?? []), ...(duty?.cautions ?? [])].map((c) => ({ severity: "warning", word: "caution", text: cautionText(c) }));
   const seen = new Set();
-  const list = [...cautions.filter((c) => !seen.has(c.text) && seen.add(c.text)).map((c) => ({ ...c, caution: true })), ...(detail.findings ?? []).map((f) => ({ severity: f.severity, text: f.message, waived: waiverOf(detail, f) }))];
+  const list = [...cautions.filter((c) => !seen.has(c.text) && seen.add(c.text)).map((c) => ({ ...c, caution: true })), ...(detail.findings ?? []).map((f) => ({ severity: f.severity, key: f.key, text: f.message, waived: waiverOf(detail, f) }))];
   if (!list.length) return put(root);
   return put(root, h("h2", {}, "Before you rely on it"), h("ol", { class: "findings" }, list.map((f, i) => {
-    const li = finding({ number: i + 1, severity: f.severity, text: f.waived ? `Waived by ${f.waived.who}: “${f.waived.why}” ${f.text}` : f.text });
+    const li = finding({ number: i + 1, severity: f.severity, text: f.waived ? `${f.text} “${f.waived.why}” ${f.waived.who}.` : f.text });
     if (f.caution) li.querySelector("strong").textContent = "Caution. ";
+    else if (f.waived) li.querySelector("strong").textContent = `${f.severity === "error" ? "Error" : f.severity === "warning" ? "Warning" : "Note"}, waived. `;
+    else if (onWaive && f.severity !== "note") li.lastElementChild.append(" ", h("button", { type: "button", class: "link", onclick: () => onWaive(f, li) }, "Waive it, with the reason"), ".");
     return li;
   })));
 }

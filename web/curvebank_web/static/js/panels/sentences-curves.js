@@ -45,15 +45,17 @@ function curveParts(panel, curve, set, onEnter) {
     blanks.push(b);
     parts.push(t("of"), b, t(`${unit},`), choice({ name: "closed", label: "Open or closed line", value: curve.closed ? "closed" : "open", options: [["open", "an open line"], ["closed", "a closed loop"]], onValue: (v) => set({ closed: v === "closed" ? true : undefined }) }), t("at"));
   } else {
-    const b = numberBlank({ name: "diameter", label: "Impeller diameter in mm", value: curve.diameter_mm, example: "all", width: 48, least: 1, onValue: (v) => set({ diameter_mm: v ?? undefined }), onEnter: (v) => onEnter({ diameter_mm: v ?? undefined }) });
+    const change = (v) => (typeof v === "string" ? { diameter_mm: undefined, label: { by: "letter", printed: v } } : { diameter_mm: v ?? undefined, label: curve.label?.by === "letter" ? undefined : curve.label });
+    const letter = (text) => (/^[A-Z]{1,3}\d?$/.test(text) ? text : null);
+    const b = numberBlank({ name: "diameter", label: "Impeller diameter in mm, or its letter", value: curve.diameter_mm ?? (curve.label?.by === "letter" ? curve.label.printed : null), example: "all", width: 48, least: 1, words: letter, onValue: (v) => set(change(v)), onEnter: (v) => onEnter(change(v)) });
     blanks.push(b);
     parts.push(t("for impeller"), b, t("mm at"));
   }
   const speed = numberBlank({ name: "rpm", label: "Speed in revolutions a minute", value: curve.speed_rpm, example: "1450", width: 52, least: 1, onValue: (v) => set({ speed_rpm: v ?? undefined }), onEnter: (v) => onEnter({ speed_rpm: v ?? undefined }) });
-  parts.push(speed, t("1/min, read on"));
+  parts.push(speed, t("1/min,"), h("span", { class: "wide" }, "read"), t("on"));
   const ids = axisIds(panel);
-  parts.push(choice({ name: "axis", label: "Axis this line is read on", value: curve.y, options: ids.value.map((id) => [id, [QUANTITY_SIGNS[panel.axes[id].quantity], sideOf(panel, id, panel.outline), written(panel.axes[id].unit)].filter(Boolean).join(", ")]), onValue: (y) => set({ y }) }));
-  if (!curve.closed) parts.push(t(". It ends"), choice({ name: "ends", label: "Where this line ends", value: endingOf(curve), options: ENDINGS, onValue: (v) => set(endingChange(v)) }));
+  parts.push(choice({ name: "axis", label: "Axis this line is read on", value: curve.y, options: ids.value.map((id) => [id, [QUANTITY_SIGNS[panel.axes[id].quantity], sideOf(panel, id, panel.outline), innerWidth < 1200 ? "" : written(panel.axes[id].unit)].filter(Boolean).join(", ")]), onValue: (y) => set({ y }) }));
+  if (!curve.closed) parts.push(h("span", { class: "wide" }, ". It ends"), choice({ name: "ends", label: "Where this line ends", value: endingOf(curve), options: ENDINGS, onValue: (v) => set(endingChange(v)) }));
   parts.push(stop());
   return parts;
 }
@@ -75,7 +77,7 @@ export function curvesSentence(desk) {
     const looking = !few && !item?.result;
     return {
       sentence: [curveParts(own, openCurve, set, keep), item?.failed ? null : looking ? h("small", { class: "held" }, "Following the ink …") : null],
-      does: [few ? h("span", { class: "hint" }, "Click once more along the line.") : null, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) }), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
+      does: [few ? h("span", { class: "hint" }, "Click once more along the line.") : null, h("span", { class: "wide" }, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) })), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
       key: JSON.stringify(openCurve),
       focus: desk.focusBlank === "curve" ? (openCurve.quantity in CONTOURS ? "level" : "diameter") : null,
     };

@@ -88,13 +88,16 @@ export function submitSentence(desk) {
   const pump = desk.doc.pump ?? {};
   const setPump = (change) => desk.act({ type: "pump/set", change });
   const form = desk.form;
+  const all = (desk.doc.curves ?? []).map((c) => c.id);
+  const first = desk.doc.curves[0];
   const missing = [!pump.maker && "the maker", !pump.model && "the model", !form.why && "why", !form.who && "who"].filter(Boolean);
   const errors = (desk.run?.findings ?? []).filter((f) => f.severity === "error").length;
   return {
     sentence: [
-      t("Submit as"), nameBlanks(desk),
-      t("with"), numberBlank({ name: "stages", label: "Number of stages", value: pump.stages ?? 1, width: 34, least: 1, whole: true, onValue: (v) => setPump({ stages: v ?? 1 }) }), t((pump.stages ?? 1) === 1 ? "stage, because" : "stages, because"),
-      textBlank({ name: "why", label: "Why this revision is made", value: form.why, example: "why", width: 210, onValue: (v) => desk.fillForm({ why: v }) }),
+      t("Submit the"), choice({ name: "basis", label: "What the curves claim to be", value: first.basis ?? "catalogue", options: ["catalogue", "quotation", "guaranteed", "works test", "field test"].map((b) => [b, b]), onValue: (v) => desk.act({ type: "curves/set", curves: all, change: { basis: v === "catalogue" ? undefined : v } }) }), t("curves of"), nameBlanks(desk),
+      t("with"), numberBlank({ name: "stages", label: "Number of stages", value: pump.stages ?? 1, width: 34, least: 1, whole: true, onValue: (v) => setPump({ stages: v ?? 1 }) }), t((pump.stages ?? 1) === 1 ? "stage," : "stages, heads"),
+      (pump.stages ?? 1) > 1 ? [choice({ name: "headis", label: "What the printed heads are", value: first.head_is ?? "total", options: [["total", "of the whole pump"], ["per stage", "per stage"]], onValue: (v) => desk.act({ type: "curves/set", curves: all, change: { head_is: v === "total" ? undefined : v } }) }), t(",")] : null, t("because"),
+      textBlank({ name: "why", label: "Why this revision is made", value: form.why, example: "why", width: 150, onValue: (v) => desk.fillForm({ why: v }) }),
       t(", signed"), textBlank({ name: "who", label: "Your name", value: form.who, example: "your name", width: 120, onValue: (v) => desk.fillForm({ who: v }) }), stop(),
     ],
     does: [

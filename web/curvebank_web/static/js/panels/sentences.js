@@ -153,12 +153,15 @@ export function marksSentence(desk) {
       desk.keepMark(own, openMark, values);
     };
     const parts = [t("This mark reads")];
+    let offers = false;
     order.forEach((id, i) => {
       const axis = own.axes[id];
-      blanks[id] = numberBlank({ name: `mark-${id}`, label: `${QUANTITY_WORDS[axis.quantity]} at this mark, in ${written(axis.unit)}`, value: null, offer: likely.includes(id) ? offered(desk, own, id, openMark.at) : null, width: 56, onEnter: keep });
+      const offer = likely.includes(id) ? offered(desk, own, id, openMark.at) : null;
+      offers ||= offer !== null;
+      blanks[id] = numberBlank({ name: `mark-${id}`, label: `${QUANTITY_WORDS[axis.quantity]} at this mark, in ${written(axis.unit)}`, value: null, offer, width: 56, onEnter: keep });
       parts.push(blanks[id], t(`${written(axis.unit)} ${QUANTITY_WORDS[axis.quantity]}${i < order.length - 1 ? "," : ""}`));
     });
-    parts.push(stop(), openMark.held ? h("small", { class: "held" }, `It holds to the ${openMark.held} found.`) : null);
+    parts.push(stop(), openMark.held ? h("small", { class: "held" }, `It holds to the ${openMark.held} found.`) : null, offers ? h("small", { class: "held" }, h("kbd", {}, "Tab"), " takes the value offered.") : null);
     return {
       sentence: parts,
       does: [hint("Z", "magnify"), button("Let go", { quiet: true, onClick: () => desk.act({ type: "mark/drop" }) }), button("Keep mark", { main: true, key: "Enter", onClick: keep })],

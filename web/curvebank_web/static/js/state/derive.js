@@ -154,7 +154,7 @@ export function progress(doc, { page, panelResultOf, resultOf, run, saved }) {
     panel: { share: panels.length ? 1 : 0, word: panels.length ? String(panels.length) : "" },
     marks: { share: panels.length ? ready / panels.length : 0, word: marks.length ? String(marks.length) : "" },
     curves: { share: curves.length ? (traced / curves.length) * (deskPart(doc).curve ? 0.75 : 1) : 0, word: curves.length ? `${traced} of ${curves.length + (deskPart(doc).curve ? 1 : 0)}` : "" },
-    family: { share: fresh ? 1 : run ? 0.5 : 0, word: run ? (fresh ? (bad ? `${bad} ${bad === 1 ? "finding" : "findings"}` : "no finding") : "out of date") : "", stale: Boolean(run && !fresh) },
+    family: { share: fresh ? 1 : run ? 0.5 : 0, word: run ? (fresh ? (bad ? `${bad} ${bad === 1 ? "finding" : "findings"}` : "checked") : "out of date") : "", stale: Boolean(run && !fresh) },
     fit: { share: fresh ? 1 : 0, word: "", stale: Boolean(run && !fresh) },
     submit: { share: saved ? 1 : 0, word: saved ? `revision ${saved.revision}` : "" },
   };

@@ -13,7 +13,7 @@ export class Box extends Tool {
     super(surface, at);
     this.hooks = hooks;
     this.first = null;
-    this.hover = (e) => this.first && !this.gesture && this.hooks.show(boxOutline(this.first.sheet, this.at(e).sheet));
+    this.hover = (e) => !this.gesture && this.hoverAt(this.at(e));
     this.key = (e) => {
       if (e.key === "Escape" && this.first) {
         e.stopImmediatePropagation();
@@ -46,10 +46,20 @@ export class Box extends Tool {
     if (gesture.moved) this.hooks.show(boxOutline(gesture.from.sheet, to.sheet));
   }
 
+  hoverAt(point) {
+    if (this.first) this.hooks.show(boxOutline(this.first.sheet, point.sheet));
+  }
+
   end(to, gesture) {
-    const from = gesture.moved ? gesture.from : this.first;
+    if (gesture.moved) this.first = gesture.from;
+    this.corner(gesture.moved ? to : gesture.from);
+  }
+
+  /** The first corner, or the one that finishes the box. */
+  corner(to) {
+    const from = this.first;
     if (!from) {
-      this.first = gesture.from;
+      this.first = to;
       return;
     }
     const [w, h] = [Math.abs(to.screen[0] - from.screen[0]), Math.abs(to.screen[1] - from.screen[1])];

@@ -68,7 +68,7 @@ function drawOne(figure, q, m) {
   const brackets = q === "head" && m.detail.bep ? [{ lo: m.detail.bep.flow_m3h * 0.7 * m.fu, hi: Math.min(m.qHi, m.detail.bep.flow_m3h * 1.2) * m.fu, y: frame[3] - 12, width: 2.6, label: "70 to 120 % of best-efficiency flow" }] : [];
   drawChart(svg, { frame, x, ys: [y], lines, bands: band ? [band] : [], brackets });
   if (band && q === "head" && m.asked.diameter) askedLabel(svg, values, m, k, y, traced);
-  if (m.flow !== null) pointer(svg, frame, x, y, m, q, k);
+  if (m.flow !== null && has) pointer(svg, frame, x, y, m, q, k);
   const says = h("figcaption", { class: "unseen", id: `says-${q}` }, summary(q, curves, unit, k));
   put(figure, svg, has ? null : h("p", { class: "empty" }, NOT_PRINTED[q] ?? "Not printed on any sheet kept here."), says);
 }

@@ -78,7 +78,7 @@ export function drawReplot(svg, scales, scene) {
     if (y < 0 || item.points.length < 2) continue;
     const preview = !item.kept;
     lines.push({
-      id: item.id, y, points: item.points, tone: preview || item.fitLine ? "trace" : "ink", form: preview ? "preview" : "", faint: Boolean(item.fitLine), width: item.fitLine ? 4 : scene.selected === item.id ? item.weight + 0.9 : item.weight,
+      id: item.id, y, points: item.points, tone: preview || item.fitLine ? "trace" : "ink", form: preview ? "preview" : "", faint: Boolean(item.fitLine), width: preview ? 1.8 : item.fitLine ? 4 : scene.selected === item.id ? item.weight + 0.9 : item.weight,
       label: item.label, labelTone: item.wrong ? "finding" : preview ? "trace" : "ink", arrow: y > 0, labelAt: item.contour ? "top" : undefined, small: item.contour,
     });
     if (item.band) bands.push({ ...item.band, y, edges: true });
