@@ -31,7 +31,9 @@ TRIM_PRIOR = {
         flow=0.5, flow_sd=0.6, value=0.2, value_sd=0.6, flow_drift_sd=1.0, value_drift_sd=1.0, flow_discrepancy=0.03, value_discrepancy=0.03
     ),
 }
-"""Trim: published rules spread the head factor of r = 0.857 over 0.63 to 0.735; means and widths as tried on simulated families."""
+"""What trims are known to do: published rules spread the head factor of r = 0.857 over 0.63 to 0.735.
+
+Means and widths were tried on simulated families."""
 
 SPEED_PRIOR = {
     "head": Prior(flow=1.0, flow_sd=0.01, value=2.0, value_sd=0.02, flow_discrepancy=0.004),

@@ -166,3 +166,25 @@ def test_power_settles_what_head_alone_leaves_open():
     # sound power curves say nothing for a wrong label, so nothing is settled
     mixed = label([*wheels("head"), *family("power", (340, 323, 305))])
     assert mixed["family:head"].severity == "warning"
+
+
+def test_the_picture_of_a_speed_family_is_over_speed():
+    def at(n):
+        return curve("head", 340.0, id=f"n-{n:g}", rpm=float(n), points=frozen(curve("head").points * [n / 1450, (n / 1450) ** 2]))
+
+    picture = checks.family_picture([at(n) for n in (1450, 1200, 980)], {})["head"]
+    assert picture["over"] == "speed" and picture["exponents"]["value"][0] == pytest.approx(2.0, abs=0.05)
+    for row in picture["curves"]:
+        for ghost in row["ghosts"]:
+            assert abs(ghost["gap"]) < 2 * ghost["doubt"]
+
+
+def test_the_picture_carries_two_speeds_to_one():
+    slow = [
+        curve("head", d, id=f"s{d:g}", rpm=980.0, points=frozen(curve("head", d).points * [r, r**2]))
+        for r in [980 / 1450]
+        for d in (340.0, 310.0)
+    ]
+    picture = checks.family_picture([*family("head", (340, 310)), *slow], {})["head"]
+    assert picture["over"] == "diameter"
+    assert all(abs(g["gap"]) < 2.5 * g["doubt"] for row in picture["curves"] for g in row["ghosts"])
