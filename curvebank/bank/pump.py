@@ -8,10 +8,12 @@ from .quantity import NAMES, Missing, Power, Quantity
 
 COLUMNS = (
     "local_id, quantity, diameter_mm, speed_rpm, level, applies_to, label, casting, basis, kind, orders, q_lo, q_hi, q_mid, q_half, "
-    "c0, c1, c2, c3, c4, c5, c6, c7, c8, sigma, cov"
+    "c0, c1, c2, c3, c4, c5, c6, c7, c8, sigma, cov, label_by"
 )
 BASES = ("catalogue", "quotation", "guaranteed", "works test", "field test")
 """What a reading rests on where a pump has several: the type before one machine of it."""
+VARIANTS = ("stages", "blade_angle", "pumps_running")
+"""Labels that make lines of one diameter and speed different machines: they are never mixed."""
 
 
 class _Read:
@@ -53,18 +55,20 @@ class Pump:
     input_power = _Read("Electrical input power [kW]; not shaft power.")
     overall_efficiency = _Read("Efficiency of pump and motor together, a fraction.")
 
-    def quantity(self, name, *, group=None, basis=None):
-        """A callable quantity; ``group`` (casting) and ``basis`` choose among lines where a pump has several kinds."""
-        if group is None and basis is None and name in self._quantities:
+    def quantity(self, name, *, group=None, basis=None, variant=None):
+        """A callable quantity; ``group`` (casting), ``basis`` and ``variant`` (the printed number of stages, blade angle or pumps running)
+        choose among lines where a sheet has several kinds."""
+        usual = group is None and basis is None and variant is None
+        if usual and name in self._quantities:
             return self._quantities[name]
         if name not in NAMES:
             raise OutsideDomain(f"“{name}” is not a quantity. Known: {', '.join(NAMES)}.", code="no-curve")
-        made = self._build(name, group, basis)
-        if group is None and basis is None:
+        made = self._build(name, group, basis, variant)
+        if usual:
             self._quantities[name] = made
         return made
 
-    def _build(self, name, group, basis):
+    def _build(self, name, group, basis, variant):
         rows = [r for r in self._rows if r[1] == name and r[10] is not None and (r[5] != "unknown" or r[2] is not None)]
         if basis is not None:
             rows = [r for r in rows if r[8] == basis]
@@ -79,24 +83,47 @@ class Pump:
                 name,
                 f"{self.key} has {NAMES[name]} for several castings: {', '.join(groups)}. Use pump.quantity({name!r}, group=...).",
             )
+        wanted = variant or self._own_variant(rows)
+        variants = sorted({r[6] for r in rows if r[26] in VARIANTS})
+        if variants and wanted is None:
+            by = next(r[26] for r in rows if r[26] in VARIANTS).replace("_", " ")
+            why = f"{self.key} has {NAMES[name]} lines for {', '.join(variants)} ({by})"
+            return Missing(self, name, f"{why}. Use pump.quantity({name!r}, variant=...).")
+        if variants:
+            rows = [r for r in rows if r[26] not in VARIANTS or r[6] == wanted]
         if not rows:
-            return self._without_line(name, group, basis)
+            return self._without_line(name, group, basis, variant)
         lines = [_line(r) for r in rows]
         return (Power if name == "power" else Quantity)(self, name, lines, chosen)
 
-    def _without_line(self, name, group, basis):
+    def _own_variant(self, rows):
+        """The line that is this pump: its own number of stages, one pump running, or the only variant there is."""
+        variants = {(r[26], r[6]) for r in rows if r[26] in VARIANTS}
+        own = {"stages": self.stages, "pumps_running": 1}
+        for by, printed in variants:
+            count = "".join(c for c in printed if c.isdigit())
+            if by in own and count:
+                if int(count) == own[by]:
+                    return printed
+            elif len(variants) == 1:
+                return printed
+        return None
+
+    def _without_line(self, name, group, basis, variant):
         letters = [f"{r[6] or '?'} ({r[0]})" for r in self._rows if r[1] == name and r[5] == "unknown" and r[2] is None]
         if letters:
             why = f"The {NAMES[name]} lines of {self.key} are printed by letter without a diameter: {', '.join(letters)}."
             return Missing(self, name, f"{why} Their diameter is not guessed. Ask the maker, then file it.")
-        if group is None and basis is None and name in ("power", "efficiency"):
+        if group is None and basis is None and variant is None and name in ("power", "efficiency"):
             from .closure import derived
 
             made = derived(self, name)
             if made is not None:
                 return made
         has = ", ".join(NAMES[q] for q in self.quantities) or "no curve that can be read"
-        which = "".join(f" of {what} {value!r}" for what, value in (("casting", group), ("basis", basis)) if value is not None)
+        which = "".join(
+            f" of {what} {value!r}" for what, value in (("casting", group), ("basis", basis), ("variant", variant)) if value is not None
+        )
         return Missing(self, name, f"Revision {self.revision} of {self.key} has no {NAMES[name]} line{which}. It has {has}.")
 
     @property

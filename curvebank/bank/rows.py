@@ -202,6 +202,7 @@ def curve_columns(record: dict[str, Any]) -> dict[str, Any]:
         "speed_rpm": record["speed_rpm"],
         "level": record["level"],
         "applies_to": record["applies_to"],
+        "label_by": label.get("by") if label else None,
         "label": label.get("printed") if label else None,
         "casting": record["group"],
         "basis": record["basis"],

@@ -56,8 +56,8 @@ CREATE TABLE curve (
     ''),
   quantity TEXT NOT NULL CHECK (quantity <> ''), diameter_mm REAL CHECK (diameter_mm > 0 AND diameter_mm < 1e6),
   speed_rpm REAL CHECK (speed_rpm > 0 AND speed_rpm < 1e6), level REAL CHECK (level BETWEEN -1e300 AND 1e300),
-  applies_to TEXT NOT NULL CHECK (applies_to IN ('this', 'all', 'unknown')), label TEXT, casting TEXT, basis TEXT NOT NULL, kind TEXT NOT
-    NULL,
+  applies_to TEXT NOT NULL CHECK (applies_to IN ('this', 'all', 'unknown')), label_by TEXT, label TEXT, casting TEXT, basis TEXT NOT NULL,
+    kind TEXT NOT NULL,
   sheet_sha256 BLOB REFERENCES sheet (sha256), page INTEGER NOT NULL CHECK (page >= 0),
   orders INTEGER CHECK (orders BETWEEN 0 AND 8),
   q_lo REAL CHECK (q_lo BETWEEN -1e300 AND 1e300), q_hi REAL CHECK (q_hi BETWEEN -1e300 AND 1e300 AND q_hi > q_lo),

@@ -281,6 +281,41 @@ def test_castings_are_never_mixed(store):
     assert pump.quantity("head", group="cast B")(50.0, 300.0) == 30.0
 
 
+def test_lines_by_stages_are_read_by_the_pump_s_own(store):
+    """One sheet for two, three and four stages: the pump has three; another number is asked for by name, none is ever mixed in."""
+    curves = [
+        make.curve(f"H-{n}", "head", (20.0 * n,), None, applies_to="all", label={"by": "stages", "printed": f"{n} stages"})
+        for n in (2, 3, 4)
+    ]
+    make.save(store, make.digitised(curves, stages=3), release=True)
+    pump = store.pump(make.KEY)
+    assert pump.head(50.0) == 60.0 and pump.quantity("head", variant="4 stages")(50.0) == 80.0
+    with pytest.raises(OutsideDomain, match="variant '9'"):
+        pump.quantity("head", variant="9")(50.0)
+    make.save(store, make.digitised(curves[2:], stages=3, key="B-1"), release=True)
+    with pytest.raises(OutsideDomain, match="4 stages .stages"):
+        store.pump("B-1").head(50.0)
+
+
+def test_one_of_several_pumps_running_is_the_pump(store):
+    """Lines for one and two pumps in parallel."""
+    curves = [make.curve(f"H-{n}", "head", (20.0 + n,), 300.0, label={"by": "pumps_running", "printed": str(n)}) for n in (1, 2)]
+    make.save(store, make.digitised(curves), release=True)
+    assert store.pump(make.KEY).head(50.0, 300.0) == 21.0
+
+
+def test_blade_angles_are_never_mixed(store):
+    """Two angles at one diameter: say which; a single one needs no saying."""
+    curves = [make.curve(f"H-{n}", "head", (20.0 + n,), 300.0, label={"by": "blade_angle", "printed": f"{n}°"}) for n in (10, 14)]
+    make.save(store, make.digitised(curves), release=True)
+    pump = store.pump(make.KEY)
+    with pytest.raises(OutsideDomain, match="10°, 14° .blade angle"):
+        pump.head(50.0, 300.0)
+    assert pump.quantity("head", variant="14°")(50.0, 300.0) == 34.0
+    make.save(store, make.digitised(curves[:1], key="B-1"), release=True)
+    assert store.pump("B-1").head(50.0, 300.0) == 30.0
+
+
 def test_the_type_is_read_before_one_machine_of_it(store):
     """A works test beside a catalogue curve does not change what the type answers."""
     curves = [make.curve("cat", "head", (40.0,), 300.0), make.curve("test", "head", (39.0,), 300.0, basis="works test")]
