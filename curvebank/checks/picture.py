@@ -30,9 +30,9 @@ def family_picture(curves: Iterable[Curve], settings: Mapping[str, Any] | None =
     Returns
     -------
     dict
-        ``{quantity: {verdict, over, exponents: {flow: [a, sd], value: [b, sd], measured: bool}, detectable_pct, curves: [...]}}``; a
-        curve is ``{id, diameter_mm, speed_rpm, printed, agrees_mm, agrees_low_mm, agrees_high_mm, ghosts: [...]}`` (``agrees``
-        null where the label is not doubted); a ghost is ``{to_id, to_diameter_mm, points: [[flow_m3h, value], ...], gap, doubt, gap_at_m3h}``.
+        ``{quantity: {verdict, over, exponents: {flow: [a, sd], value: [b, sd], measured: bool}, detectable_pct, curves: [...]}}``.
+        A curve is ``{id, diameter_mm, speed_rpm, printed, agrees_mm, agrees_low_mm, agrees_high_mm, ghosts: [...]}``, ``agrees`` null
+        where the label is not doubted. A ghost is ``{to_id, to_diameter_mm, points: [[flow_m3h, value], ...], gap, doubt, gap_at_m3h}``.
         ``gap`` is the largest difference between a ghost and the curve it should cover, ``doubt`` the standard uncertainty of it
         there; both in the quantity's unit, null without common flow.
         Several castings of one quantity are told apart as ``head (GROUP)``.
