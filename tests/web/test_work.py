@@ -127,6 +127,14 @@ class TestResult:
         job = finish(client.post(f"/api/drafts/{chart_draft['id']}/run").json)
         assert client.get(job["result_url"]).json["result"]["error"]["code"] == "no-such-page"
 
+    def test_a_recipe_that_does_not_state_its_sheets_hash_is_read_on_the_sheet_it_lies_on(self, client, chart_draft, put, finish, save):
+        sheet = {k: v for k, v in chart_draft["doc"]["sheet"].items() if k != "sha256"}
+        put(chart_draft["id"], chart_draft["doc"] | {"sheet": sheet}, 1)
+        assert client.get(f"/api/drafts/{chart_draft['id']}").json["page"] == chart_draft["page"]
+        job = finish(client.post(f"/api/drafts/{chart_draft['id']}/run").json)
+        assert client.get(job["result_url"]).json["result"]["sheet"]["sha256"] == chart_draft["sheet_sha256"]
+        assert save(chart_draft["id"]).status_code == 201
+
     def test_a_typed_table_needs_no_sheet(self, client, finish):
         rows = [[0, 40], [20, 39.5], [40, 37.3], [60, 33.3], [80, 27.5]]
         curve = {"id": "T", "kind": "table", "quantity": "head", "diameter_mm": 320, "rows": rows, "x_unit": "m3/h", "y_unit": "m"}

@@ -40,9 +40,12 @@ def sheet_of(doc: dict[str, Any]) -> str | None:
     return sha.lower()
 
 
-def page_key(doc: dict[str, Any]) -> PageKey | None:
-    """The page the document works on, or None where it names none that could exist."""
-    sha, sheet = sheet_of(doc), part(doc, "sheet")
+def page_key(doc: dict[str, Any], laid: str | None = None) -> PageKey | None:
+    """The page the document works on, or None where it names none that could exist.
+
+    A recipe need not state its sheet's SHA-256: ``laid`` is the sheet the draft lies on.
+    """
+    sha, sheet = sheet_of(doc) or (laid if "sheet" in doc else None), part(doc, "sheet")
     page, dpi, turn = sheet.get("page", 1), sheet.get("dpi", 300), sheet.get("turn", 0)
     if sha is None or not _whole(page) or page < 1 or not _number(dpi) or not 36 <= dpi <= 1200 or not _whole(turn) or turn not in TURNS:
         return None

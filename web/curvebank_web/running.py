@@ -18,10 +18,11 @@ from .services import Services
 
 def start(services: Services, db: sqlite3.Connection, draft_id: str) -> Job:
     """Queue a run of the draft's head. A run of that step that is under way is returned as it is."""
-    step = desk_drafts.row_of(db, draft_id)["head"]
+    draft = desk_drafts.row_of(db, draft_id)
+    step = draft["head"]
     doc = desk_drafts.doc_at(db, draft_id, step)
     recipe_bytes = recipe.to_bytes(doc)
-    key = documents.page_key(doc)
+    key = documents.page_key(doc, draft["sheet_sha256"])
     try:
         page_info = asdict(services.pages.info(key)) if key else None
     except (SheetError, Problem):

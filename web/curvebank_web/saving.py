@@ -3,7 +3,7 @@
 import sqlite3
 from typing import Any
 
-from . import desk_drafts, desk_results, documents, record_pack
+from . import desk_drafts, desk_results, record_pack
 from .bank_access import writing
 from .problems import Problem
 from .services import Services
@@ -31,7 +31,7 @@ def save(
         )
     if done is not None:
         wanted = done["step"]
-    doc = desk_drafts.doc_at(db, draft_id, wanted)
+    desk_drafts.doc_at(db, draft_id, wanted)  # a step that is not there is named as such
     row = desk_results.get(db, draft_id, wanted)
     if row is None:
         raise Problem(
@@ -41,8 +41,7 @@ def save(
     if made.error is not None or made.pump is None:
         error = made.error or {"code": "recipe", "message": "The recipe names no pump.", "path": "$.pump"}
         raise Problem(422, error["code"], "Nothing to save: the run failed", error["message"], path=error.get("path"))
-    sha = documents.sheet_of(doc)
-    sheet_bytes = services.sheet_bytes(sha) if sha else None
+    sheet_bytes = services.sheet_bytes(made.page.sha256) if made.page is not None else None
     with writing(services.bank) as store:
         saved_key, revision = store.save(
             made, row["recipe"], sheet_bytes, key=key or made.pump.key, who=who, why=why, save_key=save_key, release=release

@@ -21,7 +21,7 @@ blueprint = APIBlueprint("drafts", __name__, url_prefix="/api/drafts", abp_tags=
 def full(draft_id: str) -> dict[str, Any]:
     """DRAFT of the API: the draft and the page it works on (null where that cannot be shown)."""
     draft = desk_drafts.read(desk_db(), draft_id)
-    key = documents.page_key(draft["doc"])
+    key = documents.page_key(draft["doc"], draft["sheet_sha256"])
     draft["page"] = None
     if key is not None:
         try:
@@ -80,8 +80,9 @@ def head(path: DraftPath, body: Head) -> dict[str, Any]:
 def preview(path: DraftPath, body: PreviewQuestion) -> tuple[dict[str, Any], int]:
     """A quick look at one panel and perhaps one curve; 202 with a job while the sheet is being prepared."""
     db = desk_db()
-    doc = desk_drafts.doc_at(db, path.draft, desk_drafts.row_of(db, path.draft)["head"])
-    key = documents.page_key(doc)
+    draft = desk_drafts.row_of(db, path.draft)
+    doc = desk_drafts.doc_at(db, path.draft, draft["head"])
+    key = documents.page_key(doc, draft["sheet_sha256"])
     if key is None:
         raise Problem(422, "no-sheet", "The draft has no sheet", "Lay a sheet on the desk first.", path="$.sheet")
     services().pages.info(key)
