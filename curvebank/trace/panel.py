@@ -12,7 +12,7 @@ from .follow import follow
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
 from .manual import by_hand, points_on_symbols
 from .meet import end_on_others
-from .profile import refine
+from .profile import align, refine
 
 Progress = Callable[[float, str], Any]
 LOST = 0.25
@@ -68,11 +68,10 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace
     if clicks.kind == "points":
         return points_on_symbols(prepared, points), None
     found = follow(prepared, points, clicks.closed)
-    fine = refine(prepared, found.axis, rounds=1)
-    axis = fine.axis
+    axis, shape = align(prepared, found.axis)
     if not clicks.closed and clicks.ends == "ink":
-        axis = to_ink(prepared, panel_map, axis, fine.shape)
-    fine = refine(prepared, axis, rounds=1, shape=fine.shape)
+        axis = to_ink(prepared, panel_map, axis, shape)
+    fine = refine(prepared, axis, shape)
     if fine.blocks.good.mean() < LOST and found.cost > 0.5:
         raise TraceError("No line was found between the clicks; check that they lie on one line, or add clicks along it", code="lost")
     return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(prepared, found, fine)

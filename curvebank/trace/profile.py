@@ -5,7 +5,7 @@ the whole curve; in each block of a few pixels of length base, height and shift 
 blocks at once. The shifts are then smoothed along the curve by a penalised spline that bridges gaps.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -13,6 +13,7 @@ from scipy.special import ndtr
 
 from ..records import FloatArray
 from ..sheet import Prepared
+from ..sheet.prepare import unit_of
 from . import smooth
 from .axis import Axis, from_polyline
 
@@ -121,17 +122,18 @@ def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
 
 def first_shape(pixels: Pixels, width_px: float) -> Shape:
     """Line width and blur from the median profile of all pixels."""
-    bins = np.rint(pixels.d * 3).astype(int)
-    low = bins.min()
-    order = np.argsort(bins, kind="stable")
-    sorted_bins, ink = bins[order] - low, pixels.ink[order]
-    heavy = pixels.weight[order] > 0.4
-    if heavy.sum() > 0.3 * len(heavy):
-        sorted_bins, ink = sorted_bins[heavy], ink[heavy]
-    edges = np.flatnonzero(np.diff(sorted_bins)) + 1
-    groups = np.split(ink, edges)
-    at = (sorted_bins[np.r_[0, edges]] + low) / 3.0
-    profile = np.array([np.median(g) for g in groups])
+    bins = np.rint(pixels.d * 3).astype(np.int64)
+    low = int(bins.min())
+    keep = pixels.weight > 0.4
+    if keep.sum() < 0.3 * len(keep):
+        keep = np.ones(len(keep), bool)
+    bins, ink = bins[keep] - low, pixels.ink[keep]
+    # Medians of all bins at once: sorted by bin, then by ink, the middle of each run.
+    order = np.argsort(bins + 0.4 * ink)
+    edges = np.flatnonzero(np.diff(bins[order], prepend=-1))
+    sizes = np.diff(np.r_[edges, len(order)])
+    at = (bins[order][edges] + low) / 3.0
+    profile = ink[order][edges + sizes // 2]
     best = (np.inf, max(width_px, 1.0), 0.9, 1.0)
     mean = profile.mean()
     for width in np.clip(width_px * WIDTHS, 0.6, 30):
@@ -226,49 +228,78 @@ def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], w
     return (failing > 0.45) & (crowded > 0.15)
 
 
-def refine(prepared: Prepared, axis: Axis, rounds: int = 2, shape: Shape | None = None) -> Refined:
-    """Move the axis onto the middle of its ink."""
+def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape]:
+    """Bring an axis that is a pixel or two off near the middle of its ink, and measure the line's shape there."""
     unit = max(prepared.unit, 0.6)
-    half = 0.9 * prepared.width_px + 6.0 * unit
-    block = 3.0 * unit
-    blocks: Blocks | None = None
-    fitted: smooth.Smooth | None = None
-    for turn in range(rounds):
-        pixels = pixels_near(prepared, axis, half)
-        if shape is None:
-            shape = first_shape(pixels, prepared.width_px)
-            blocks = read_blocks(pixels, pixels.d, shape, axis.length, block, rounds=3)
-            fitted = _along(blocks, axis, unit, stiff_only=True)
-            moved = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
-            shape = first_shape(Pixels(pixels.s, moved, pixels.ink, pixels.weight, pixels.printed), shape.width)
-        blocks = read_blocks(pixels, pixels.d, shape, axis.length, block)
-        fitted = _along(blocks, axis, unit)
-        t = axis.s / axis.length
-        moved_points = axis.points + axis.normals * fitted.value(t)
-        sigma = fitted.sigma(t)
-        if turn == rounds - 1:
-            break
-        axis = from_polyline(moved_points, axis.closed)
-    assert blocks is not None and fitted is not None and shape is not None
-    final = from_polyline(moved_points, axis.closed)
-    sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(sigma)), sigma)
+    pixels = pixels_near(prepared, axis, max(0.9 * prepared.width_px, 3.0) + 6.0 * unit)
+    rough = first_shape(pixels, prepared.width_px)
+    unit = max(unit_of(rough.width), 0.6)
+    blocks = read_blocks(pixels, pixels.d, rough, axis.length, 3.0 * unit, rounds=3)
+    stiff = _stiff(blocks, axis, _weights(blocks), _pieces(axis, unit) // 4, 8.0)
+    fitted = _stiff(blocks, axis, _gated(blocks, stiff, axis), _pieces(axis, unit) // 2, 4.0)
+    pixels.d = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
+    moved = axis.points + axis.normals * fitted.value(axis.s / axis.length)
+    return from_polyline(moved, axis.closed), first_shape(pixels, rough.width)
+
+
+def refine(prepared: Prepared, axis: Axis, shape: Shape) -> Refined:
+    """Move an aligned axis onto the middle of its ink, with uncertainties."""
+    unit = max(unit_of(shape.width), 0.6)
+    pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
+    blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
+    # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
+    reference, off = _reference(axis, _pieces(axis, unit) // 4)
+    whole = replace(blocks, shift=blocks.shift + np.interp(blocks.s, axis.s, off))
+    fitted = _along(whole, axis, unit)
+    t = axis.s / axis.length
+    final = from_polyline(reference.points + reference.normals * fitted.value(t), axis.closed)
+    sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
     return Refined(final, sigma, blocks, shape, fitted.scale)
 
 
-def _along(blocks: Blocks, axis: Axis, unit: float, stiff_only: bool = False) -> smooth.Smooth:
+def _reference(axis: Axis, pieces: int) -> tuple[Axis, FloatArray]:
+    """A curve of few pieces along the axis, sample by sample, and the axis's distance from it at each sample."""
+    t = axis.s / axis.length
+    thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
+    curve = smooth.fit(t[thin], axis.points[thin], pieces=max(pieces, 6 if axis.closed else 3), periodic=axis.closed, cut=0)
+    points = curve.value(t)
+    tangents = curve.slope(t)
+    tangents = tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+    reference = Axis(points, axis.s, tangents, axis.closed)
+    return reference, ((axis.points - points) * reference.normals).sum(axis=1)
+
+
+def _pieces(axis: Axis, unit: float) -> int:
+    return int(np.clip(axis.length / (18 * unit), 6 if axis.closed else 4, 80))
+
+
+def _weights(blocks: Blocks) -> FloatArray:
+    if blocks.good.sum() < 4:
+        return np.ones(len(blocks.s))
+    return np.where(blocks.good, 1.0 / (blocks.sigma**2 + 0.01**2), 0.0)
+
+
+def _stiff(blocks: Blocks, axis: Axis, weight: FloatArray, pieces: int, correlation: float) -> smooth.Smooth:
+    pieces = max(pieces, 6 if axis.closed else 3)
+    t = blocks.s / axis.length
+    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=correlation)
+
+
+def _gated(blocks: Blocks, stiff: smooth.Smooth, axis: Axis) -> FloatArray:
+    """Weights without readings far off a stiff curve (strokes of letters, other lines): a supple curve must not see them."""
+    weight = _weights(blocks)
+    if blocks.good.sum() < 8:
+        return weight
+    miss = np.abs(blocks.shift - stiff.value(blocks.s / axis.length)[:, 0])
+    return np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), 0.35), weight, 0.0)
+
+
+def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
     """The shifts smoothed along the curve."""
     t = blocks.s / axis.length
-    weight = np.where(blocks.good, 1.0 / (blocks.sigma**2 + 0.01**2), 0.0)
-    if blocks.good.sum() < 4:
-        weight = np.full(len(t), 1.0)
-    pieces = int(np.clip(axis.length / (18 * unit), 6 if axis.closed else 4, 80))
-    # A stiff curve first: readings far off it (strokes of letters, other lines) are dropped before the supple one sees them.
-    stiff = smooth.fit(t, blocks.shift, weight, pieces=max(pieces // 4, 6 if axis.closed else 3), periodic=axis.closed, correlation=8.0)
-    if stiff_only:
-        return stiff
-    miss = np.abs(blocks.shift - stiff.value(t)[:, 0])
-    if blocks.good.sum() >= 8:
-        weight = np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), 0.35), weight, 0.0)
+    pieces = _pieces(axis, unit)
+    stiff = _stiff(blocks, axis, _weights(blocks), pieces // 4, 8.0)
+    weight = _gated(blocks, stiff, axis)
     curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0, rounds=3)
     count = _correlation(blocks, curve, t)
     return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count, rounds=3, start=curve.robust)

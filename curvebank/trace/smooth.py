@@ -17,13 +17,16 @@ from ..records import FloatArray
 LOG_LAMBDAS = np.arange(-6.0, 12.01, 0.5)
 
 
-def basis(t: FloatArray, pieces: int, periodic: bool) -> FloatArray:
-    """Cubic B-splines on ``pieces`` even intervals of 0..1 at ``t``: dense [n, pieces + 3], or [n, pieces] when periodic."""
+def basis(t: FloatArray, pieces: int, periodic: bool, derivative: bool = False) -> FloatArray:
+    """Cubic B-splines (or their slopes) on ``pieces`` even intervals of 0..1 at ``t``: [n, pieces + 3], or [n, pieces] when periodic."""
     t = np.asarray(t, dtype=np.float64)
     u = np.mod(t, 1.0) * pieces if periodic else np.clip(t, 0.0, 1.0) * pieces
     cell = np.minimum(u.astype(int), pieces - 1)
     f = u - cell
     parts = ((1 - f) ** 3 / 6, (3 * f**3 - 6 * f**2 + 4) / 6, (-3 * f**3 + 3 * f**2 + 3 * f + 1) / 6, f**3 / 6)
+    if derivative:
+        parts = (-((1 - f) ** 2) / 2, (3 * f**2 - 4 * f) / 2, (-3 * f**2 + 2 * f + 1) / 2, f**2 / 2)
+        parts = tuple(part * pieces for part in parts)
     out = np.zeros((len(t), pieces if periodic else pieces + 3))
     rows = np.arange(len(t))
     for k, part in enumerate(parts):
@@ -56,6 +59,10 @@ class Smooth:
     def value(self, t: FloatArray) -> FloatArray:
         """The spline at ``t``: [n, d]."""
         return basis(t, self.pieces, self.periodic) @ self.coefficients
+
+    def slope(self, t: FloatArray) -> FloatArray:
+        """Derivative over ``t``: [n, d]."""
+        return basis(t, self.pieces, self.periodic, derivative=True) @ self.coefficients
 
     def sigma(self, t: FloatArray) -> FloatArray:
         """Standard uncertainty at ``t``: [n]."""
