@@ -20,6 +20,8 @@ import numpy.typing as npt
 from curvebank.records import PageInfo
 
 TILE = 256
+FIRST_DPI = 300
+"""Resolution at which a new PDF is first drawn [1/inch]."""
 FORM = "1"
 """Part of the folder name: changes when the pyramid would."""
 Pixels = npt.NDArray[np.uint8]
@@ -91,6 +93,23 @@ class PageStore:
         """
         return PageInfo(**json.loads((self._page_folder(key) / "info.json").read_text()))
 
+    def first_page(self, data: bytes) -> PageInfo:
+        """Decode the first page of a new file and keep it, so that its tiles are ready.
+
+        Raises
+        ------
+        curvebank.errors.SheetError
+            The file cannot be read.
+        """
+        from curvebank import sheet
+
+        with self._decoding:
+            loaded = sheet.load(data, page=1, dpi=FIRST_DPI, turn=0)
+            folder = self._place(PageKey(loaded.info.sha256, 1, FIRST_DPI, 0))
+            if not folder.exists():
+                self._keep(loaded, folder)
+        return loaded.info
+
     def describe(self, key: PageKey) -> dict[str, Any]:
         """A page as the API shows it."""
         return describe(self.info(key), key.dpi)
@@ -123,8 +142,11 @@ class PageStore:
             self._open[key, level] = pixels
             return pixels
 
+    def _place(self, key: PageKey) -> Path:
+        return self.folder / "pages" / f"{key.name}-{FORM}"
+
     def _page_folder(self, key: PageKey) -> Path:
-        folder = self.folder / "pages" / f"{key.name}-{FORM}"
+        folder = self._place(key)
         if not folder.exists():
             with self._decoding:
                 if not folder.exists():
@@ -134,7 +156,9 @@ class PageStore:
     def _decode(self, key: PageKey, folder: Path) -> None:
         from curvebank import sheet
 
-        loaded = sheet.load(self.fetch(key.sha256), page=key.page, dpi=key.dpi, turn=key.turn)
+        self._keep(sheet.load(self.fetch(key.sha256), page=key.page, dpi=key.dpi, turn=key.turn), folder)
+
+    def _keep(self, loaded: Any, folder: Path) -> None:
         folder.parent.mkdir(parents=True, exist_ok=True)
         scratch = Path(tempfile.mkdtemp(prefix=".page-", dir=folder.parent))
         try:

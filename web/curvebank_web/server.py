@@ -6,10 +6,14 @@ import socket
 import sys
 import threading
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from curvebank.errors import CurvebankError
 
 from . import worker
+
+if TYPE_CHECKING:
+    from .services import Services
 
 HOST = "127.0.0.1"
 DEFAULT_PORT = 8470
@@ -83,7 +87,7 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
     if threading.current_thread() is threading.main_thread():
         signal.signal(signal.SIGTERM, _leave)
     services.jobs.start()
-    threading.Thread(target=_load_engine, daemon=True).start()
+    threading.Thread(target=_settle, args=(services,), daemon=True).start()
     print(address, flush=True)
     if open_browser:
         import webbrowser
@@ -96,9 +100,11 @@ def serve(bank: str | Path, port: int | None = None, open_browser: bool = True) 
         server.close()
 
 
-def _load_engine() -> None:
-    """Import what previews need, so that the first one need not wait for it."""
+def _settle(services: "Services") -> None:
+    """While the first page is looked at: import what previews need, and tidy the cache."""
     import curvebank.digitise  # noqa: F401
+
+    services.prune_cache()
 
 
 def _leave(_number: int, _frame: object) -> None:

@@ -47,6 +47,11 @@ class Services:
             )
         return data
 
+    def prune_cache(self) -> None:
+        """Keep the cache below its limit; what was not used for longest goes first."""
+        for part in ("pages", "prepared"):
+            prune(self.cache / part, CACHE_LIMIT_BYTES // 2)
+
     def close(self) -> None:
         """End background work."""
         self.jobs.close()
@@ -67,8 +72,6 @@ def start(app: Flask) -> Services:
     bank_access.make_if_missing(bank)
     desk_file.prepare(desk)
     cache = Path(cache).absolute()
-    for part in ("pages", "prepared"):
-        prune(cache / part, CACHE_LIMIT_BYTES // 2)
     services = Services(
         bank=bank, desk=desk, cache=cache, jobs=Registry(app.config.get("WORKERS", 1)), prepare_ahead=app.config.get("PREPARE_AHEAD", True)
     )

@@ -7,7 +7,7 @@ from flask import Response, request
 from flask_openapi import APIBlueprint, Tag
 
 from .. import desk_sheets
-from ..page_store import FORM, PageKey
+from ..page_store import FIRST_DPI, FORM, PageKey, describe
 from ..problems import Problem
 from ..services import desk_db, services
 from .models import PagePath, PageQuery, SheetForm, TilePath
@@ -19,14 +19,11 @@ UNNAMED = "sheet"
 @blueprint.post("")
 def add(form: SheetForm) -> tuple[dict[str, Any], int]:
     """Add a scan: it is decoded at once, so that a bad file is refused here and nowhere later."""
-    from curvebank import sheet
-
     data = form.file.read()
     name = bare_name(form.file.filename or "")
-    info = sheet.load(data).info
+    info = services().pages.first_page(data)
     sha = desk_sheets.add(desk_db(), data, file_name=name, media=info.media, pages=info.pages)
-    page = services().pages.describe(PageKey(sha, 1, 300, 0))
-    return {"sha256": sha, "file_name": name, "media": info.media, "pages": info.pages, "page": page}, 201
+    return {"sha256": sha, "file_name": name, "media": info.media, "pages": info.pages, "page": describe(info, FIRST_DPI)}, 201
 
 
 @blueprint.get("/<sha256>/<int:page>")
