@@ -1,6 +1,7 @@
 """From a fresh digitisation to what a revision holds: packed records, trace bytes and columns.
 
-A head printed per stage is stored as the total head of the pump's stages. A failed curve is not stored as a curve but named with its error.
+Records carry the head of the whole pump, all stages, whatever the paper prints (``head_is`` remembers that); it is stored as it comes.
+A failed curve is not stored as a curve but named with its error.
 """
 
 import json
@@ -14,7 +15,6 @@ from . import pack
 
 TRACE_POINTS = 200
 MAX_ORDER = 8
-HEAD_ON_Y = ("head", "efficiency_contour", "power_contour", "npshr_contour")
 
 
 def canonical_json(value: Any) -> str:
@@ -32,7 +32,7 @@ def _notices(notices: tuple[Notice, ...]) -> list[dict[str, Any]]:
     return [{"code": n.code, "message": n.message, "stretch": None if n.stretch is None else [int(i) for i in n.stretch]} for n in notices]
 
 
-def _fit(fit: Fit, scale: float) -> dict[str, Any]:
+def _fit(fit: Fit) -> dict[str, Any]:
     order = int(fit.order)
     if (
         not 0 <= order <= MAX_ORDER
@@ -47,11 +47,11 @@ def _fit(fit: Fit, scale: float) -> dict[str, Any]:
         "hi": float(fit.hi),
         "mid": float(fit.mid),
         "half": float(fit.half),
-        "scaled": np.asarray(fit.scaled) * scale,
-        "covariance": np.asarray(fit.covariance) * scale**2,
-        "plain": np.asarray(fit.plain) * scale,
-        "sigma": float(fit.sigma) * scale,
-        "max_miss": float(fit.max_miss) * scale,
+        "scaled": fit.scaled,
+        "covariance": fit.covariance,
+        "plain": fit.plain,
+        "sigma": float(fit.sigma),
+        "max_miss": float(fit.max_miss),
         "max_miss_pct": float(fit.max_miss_pct),
         "through_zero": bool(fit.through_zero),
     }
@@ -73,18 +73,16 @@ def trace_bytes(pixels: Any, sigma_px: Any, points: Any, sigma: Any) -> tuple[in
     return n, table.tobytes()
 
 
-def _curve(curve: Curve, source: tuple[bytes | None, int], stages: int, rated_rpm: float | None) -> tuple[dict[str, Any], bytes | None]:
-    scale = float(stages) if curve.head_is == "per stage" and curve.quantity in HEAD_ON_Y else 1.0
+def _curve(curve: Curve, source: tuple[bytes | None, int], rated_rpm: float | None) -> tuple[dict[str, Any], bytes | None]:
     trace, raw = None, None
     if len(curve.points):
         t = curve.trace
-        points = np.asarray(curve.points, dtype=float) * (1.0, scale)
         pixels, sigma_px = (t.pixels, t.sigma_px) if t is not None else ((), ())
-        n, raw = trace_bytes(pixels, sigma_px, points, np.asarray(curve.sigma, dtype=float) * scale)
+        n, raw = trace_bytes(pixels, sigma_px, curve.points, curve.sigma)
         trace = {
             "n": n,
             "sha256": pack.sha256(raw),
-            "traced": len(points),
+            "traced": len(curve.points),
             "closed": bool(t.closed) if t else False,
             "confidence": float(t.confidence) if t else 1.0,
             "flagged": bool(t.flagged) if t else False,
@@ -116,10 +114,10 @@ def _curve(curve: Curve, source: tuple[bytes | None, int], stages: int, rated_rp
         "printed_x_unit": curve.printed_x_unit,
         "printed_y_unit": curve.printed_y_unit,
         "factor": float(curve.factor),
-        "spread": {k: float(v) * scale for k, v in curve.spread.items()},
+        "spread": {k: float(v) for k, v in curve.spread.items()},
         "warnings": _notices(curve.warnings),
         "trace": trace,
-        "fit": None if curve.fit is None else _fit(curve.fit, scale),
+        "fit": None if curve.fit is None else _fit(curve.fit),
     }
     return record, raw
 
@@ -182,7 +180,7 @@ def fresh_parts(digitised: Digitised, source: tuple[bytes | None, int]) -> tuple
             }
             parts["failed"].append(failed)
             continue
-        record, raw = _curve(curve, source, pump.stages, pump.speed_rpm)
+        record, raw = _curve(curve, source, pump.speed_rpm)
         parts["curves"].append(record)
         if raw is not None:
             traces[record["trace"]["sha256"]] = raw

@@ -6,6 +6,7 @@ import bank_samples as make
 import numpy as np
 import pytest
 
+from curvebank import digitise, recipe
 from curvebank.bank import catalogue, pack
 from curvebank.bank.reader import Bank
 from curvebank.bank.store import Store
@@ -122,25 +123,32 @@ def test_failed_curves_are_named_not_stored(store):
     assert detail["events"][0]["more"]["failed"][0]["id"] == "H-300"
 
 
-def test_head_per_stage_becomes_total_head(store):
-    """A three-stage pump whose sheet shows head per stage: fit, points, uncertainty and covariance all take the factor."""
-    per_stage = make.curve("H", "head", (20.0, -0.02, -0.0006), 320.0, head_is="per stage")
-    make.save(store, make.digitised([per_stage, make.curve("N", "npshr", make.NPSHR, 320.0, head_is="per stage")], stages=3), release=True)
+def test_head_per_stage_comes_as_total_head_and_is_stored_once(store):
+    """A three-stage pump whose sheet shows head per stage, digitised and saved: 3 x 20 m at no flow, not 9 x."""
+    text = recipe.to_bytes(
+        {
+            "recipe": 1,
+            "pump": {"maker": "Lark", "model": "WM 3", "key": make.KEY, "stages": 3, "speed_rpm": 1450.0},
+            "curves": [
+                {
+                    "id": "H",
+                    "quantity": "head",
+                    "kind": "table",
+                    "head_is": "per stage",
+                    "diameter_mm": 320.0,
+                    "x_unit": "m3/h",
+                    "y_unit": "m",
+                    "rows": [[q, 20.0 - 0.0006 * q * q] for q in range(0, 101, 10)],
+                }
+            ],
+        }
+    )
+    made = digitise.run(text, None, {})
+    make.save(store, made, sheet=None, recipe=text, release=True)
     pump = store.pump(make.KEY)
-    assert pump.head(50.0, 320.0) == pytest.approx(3 * (20.0 - 1.0 - 1.5), rel=1e-12)
-    assert pump.head.uncertainty(50.0, 320.0, of="print") == pytest.approx(3 * 0.02, rel=1e-9)
-    assert pump.npshr(50.0, 320.0) == pytest.approx(2.75, rel=1e-12)
-    stored = catalogue.revision_detail(store.bank, make.KEY, 1)["curves"][0]
-    assert stored["points"][0][1] == pytest.approx(60.0, rel=1e-6) and stored["head_is"] == "per stage"
-    assert stored["fit"]["coefficients"] == pytest.approx([60.0, -0.06, -0.0018])
-
-
-def test_contour_of_a_per_stage_chart_takes_total_head_too(store):
-    """Its points are flow and head."""
-    make.save(store, make.digitised([make.renamed(make.contour(), head_is="per stage")], stages=2))
-    stored = catalogue.revision_detail(store.bank, make.KEY, 1)["curves"][0]
-    assert max(p[1] for p in stored["points"]) == pytest.approx(80.0, rel=1e-3)
-    assert stored["level"] == 0.75 and stored["fit"] is None and stored["trace"]["closed"]
+    assert (pump.stages, pump.head(0.0, 320.0)) == (3, pytest.approx(60.0, rel=1e-6))
+    assert pump.head(100.0, 320.0) == pytest.approx(42.0, rel=1e-6)
+    assert catalogue.revision_detail(store.bank, make.KEY, 1)["curves"][0]["head_is"] == "per stage"
 
 
 def test_traces_keep_at_most_200_points_with_both_ends(store):
