@@ -203,10 +203,7 @@ def revision_detail(bank: Any, key: str, number: int) -> dict[str, Any]:
         "sheets": sheets,
         "curves": [_curve(record, raw.get(record["id"]), index) for record in body["curves"]],
         "panels": [_panel(panel, index) for panel in body["panels"]],
-        "failed": [
-            {k: f[k] for k in ("id", "quantity", "code", "message")} | {"sheet": index.get((f["sheet_sha256"], f["page"]))}
-            for f in body["failed"]
-        ],
+        "failed": [_failed(f, index) for f in body["failed"]],
         "findings": [_finding(f, index) for f in body["findings"]],
         "waivers": pump.waivers,
         "cautions": pump.cautions,
@@ -270,6 +267,12 @@ def _panel(panel: dict[str, Any], index: dict[Any, int]) -> dict[str, Any]:
         },
         "warnings": panel["warnings"],
     }
+
+
+def _failed(failed: dict[str, Any], index: dict[Any, int]) -> dict[str, Any]:
+    error = {"code": failed["code"], "message": failed["message"]}
+    sheet = index.get((failed["sheet_sha256"], failed["page"]))
+    return {"id": failed["id"], "quantity": failed["quantity"], "error": error, "sheet": sheet}
 
 
 def _finding(finding: dict[str, Any], index: dict[Any, int]) -> dict[str, Any]:

@@ -119,7 +119,8 @@ def test_failed_curves_are_named_not_stored(store):
     make.save(store)
     assert "H-300" not in ids(store, 1)
     detail = catalogue.revision_detail(store.bank, make.KEY, 1)
-    assert detail["failed"] == [{"id": "H-300", "quantity": "head", "code": "off-ink", "message": "Click 2 is off the ink.", "sheet": 0}]
+    error = {"code": "off-ink", "message": "Click 2 is off the ink."}
+    assert detail["failed"] == [{"id": "H-300", "quantity": "head", "error": error, "sheet": 0}]
     assert detail["events"][0]["more"]["failed"][0]["id"] == "H-300"
 
 
