@@ -239,7 +239,7 @@ export class DeskDraw {
       plot.append(s(r.dashed ? "rect" : "circle", r.dashed ? { x: px - 3.5, y: r.y - 3.5, width: 7, height: 7, fill: "var(--sheet)", stroke: "var(--construct)", "stroke-width": 1.5 } : { cx: px, cy: r.y, r: r.near ? 5.5 : 3.2, fill: "var(--sheet)", class: `dot k-${r.tone}`, "stroke-width": 1.5 }));
     }
     const uq = desk.flowDoubt?.(near) ?? null;
-    drawFold($("fold"), { heading: `at ${plain(c.q, c.q < 10 ? 2 : c.q < 100 ? 1 : 0)} ${written(desk.flowAxis.unit)}`, flow: { doubt: uq ? `± ${uq}` : null }, rows: rows.filter((r) => scales.stacked || (r.y > -40 && r.y < fold.height + 40)), foot: rows.some((r) => r.doubt) ? "± is what the print allows, k = 1" : "", grey: c.left }, fold);
+    drawFold($("fold"), { heading: `at ${plain(c.q, c.q < 10 ? 2 : c.q < 100 ? 1 : 0)} ${written(desk.flowAxis.unit)}`, flow: { doubt: uq ? `± ${uq}` : null }, rows: rows.filter((r) => scales.stacked || (r.y > -40 && r.y < fold.height + 40)), foot: rows.some((r) => r.doubt) ? "± is what the print allows, k\u00a0=\u00a01" : "", grey: c.left }, fold);
     this.read = { q: c.q, rows };
   }
 

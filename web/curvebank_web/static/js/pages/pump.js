@@ -1,7 +1,7 @@
 // The pump page: what was stored, read where the sentence asks.
 import * as api from "../net/api.js";
 import { parseNumber, plain } from "../geometry/number.js";
-import { csv, dutyFlowDoubt, grid, readAt, SHOWN, system, SYSTEMS } from "../state/pump.js";
+import { csv, dutyFlowDoubt, grid, meets, readAt, SHOWN, system, SYSTEMS } from "../state/pump.js";
 import { drawBlock } from "../panels/block.js";
 import { button, choice, fillSlip, numberBlank, textBlank, watchTyping } from "../panels/blank.js";
 import { keepSetting, keysDialog, letterMayAct, setting } from "../panels/keys.js";
@@ -79,7 +79,8 @@ async function ask() {
     }));
     const sys = system(asked);
     duties = [];
-    if (sys && next.head) {
+    if (sys && next.head && !meets(next.head, sys)) note = "This pump and this system do not meet within what was traced.";
+    else if (sys && next.head) {
       try {
         duties = (await api.duty(key, detail.number, { ...sys, ...common }, signal)).duties;
         if (!duties.length) note = "This pump and this system do not meet within what was traced.";

@@ -72,6 +72,7 @@ function drawMap() {
   const x = { ...log10(q0, q1, frame[0], frame[2]), lo: q0, hi: q1, ticks: logTicks(q0, q1, 8), title: "best-efficiency flow, m³/h (log)" };
   const y = { ...log10(h0, h1, frame[3], frame[1]), lo: h0, hi: h1, ticks: logTicks(h0, h1, 8), title: "best-efficiency head, m (log)" };
   drawChart(svg, { frame, x, ys: [y] });
+  for (const p of shown) cutLine(svg, x, y, p);
   askedLines(svg, frame, x, y);
   shown.forEach((p, i) => {
     if (!p.bep) return;
@@ -83,6 +84,18 @@ function drawMap() {
     svg.append(g);
   });
   $("map-says").textContent = `${points.length} pumps by their best-efficiency point, flow ${plain(Math.min(...qs), 0)} to ${plain(Math.max(...qs), 0)} m³/h, head ${plain(Math.min(...hs), 0)} to ${plain(Math.max(...hs), 0)} m. The table holds the same numbers.`;
+}
+
+/** From the best-efficiency point down to where the affinity laws put it for the smallest impeller traced. */
+function cutLine(svg, x, y, p) {
+  const ds = p.diameters_mm ?? [];
+  if (!p.bep || ds.length < 2) return;
+  const r = Math.min(...ds) / Math.max(...ds);
+  const a = [x.map(p.bep.flow_m3h), y.map(p.bep.head_m)];
+  const b = [x.map(p.bep.flow_m3h * r), y.map(p.bep.head_m * r * r)];
+  const l = Math.hypot(b[0] - a[0], b[1] - a[1]) || 1;
+  const [nx, ny] = [(-4 * (b[1] - a[1])) / l, (4 * (b[0] - a[0])) / l];
+  svg.append(s("path", { d: `M${a[0]} ${a[1]}L${b[0]} ${b[1]}M${b[0] - nx} ${b[1] - ny}L${b[0] + nx} ${b[1] + ny}`, class: "k-ink", "stroke-width": 1.2 }));
 }
 
 function askedLines(svg, [x0, y0, x1, y1], x, y) {
@@ -105,15 +118,22 @@ function table() {
   const num = (v, d = 0) => (Number.isFinite(v) ? plain(v, d) : "?");
   const rows = shown.map((p, i) => {
     const row = h("tr", { class: `row ${p.key === chosen ? "chosen" : ""}`, "data-key": p.key },
-      h("td", { class: "num" }, String(i + 1)), h("td", { class: "name" }, h("a", { href: `/pumps/${p.key}` }, `${p.maker} ${p.model}`)), h("td", {}, p.state),
-      h("td", { class: "num" }, num(p.bep?.flow_m3h)), h("td", { class: "num" }, num(p.bep?.head_m, 1)), h("td", { class: "num" }, p.diameters_mm?.length ? `${plain(Math.min(...p.diameters_mm), 0)} to ${plain(Math.max(...p.diameters_mm), 0)}` : "?"),
+      h("td", { class: "num" }, String(i + 1)), h("td", { class: "name" }, h("a", { href: `/pumps/${p.key}` }, `${p.maker} ${p.model}`)), h("td", { class: "wide" }, p.state),
+      h("td", { class: "num" }, num(p.bep?.flow_m3h)), h("td", { class: "num" }, num(p.bep?.head_m, 1)), h("td", { class: "num" }, diameters(p)),
       h("td", { class: "num wide" }, num(p.rated_rpm)), h("td", { class: "missing" }, unknowns(p)), h("td", { class: "num" }, String(p.revision)));
     row.addEventListener("click", (e) => e.target.closest("a") || choose(p.key));
     return row;
   });
   const th = (words, cls) => h("th", { scope: "col", class: cls }, words);
-  put($("hits"), h("table", {}, h("caption", { class: "unseen" }, "Pumps of the bank"), h("thead", {}, h("tr", {}, th("no.", "num"), th("pump"), th("state"), th(["best flow", h("br"), "m³/h"], "num"), th(["head there", h("br"), "m"], "num"), th(["impeller", h("br"), "mm"], "num"), th(["speed", h("br"), "1/min"], "num wide"), th("what we do not know"), th("rev.", "num"))), h("tbody", {}, rows)),
+  put($("hits"), h("table", {}, h("caption", { class: "unseen" }, "Pumps of the bank"), h("thead", {}, h("tr", {}, th("no.", "num"), th("pump"), th("state", "wide"), th(["best flow", h("br"), "m³/h"], "num"), th(["head there", h("br"), "m"], "num"), th(["impeller", h("br"), "mm"], "num"), th(["speed", h("br"), "1/min"], "num wide"), th("what we do not know"), th("rev.", "num"))), h("tbody", {}, rows)),
     more ? h("p", {}, h("button", { type: "button", class: "btn", onclick: () => load(more) }, "Show more")) : null);
+}
+
+function diameters(p) {
+  const ds = p.diameters_mm ?? [];
+  if (!ds.length) return "?";
+  const [lo, hi] = [Math.min(...ds), Math.max(...ds)];
+  return lo === hi ? plain(lo, 0) : `${plain(lo, 0)} to ${plain(hi, 0)}`;
 }
 
 function choose(key) {
@@ -127,7 +147,7 @@ function card() {
   if (!p) return put($("chosen"));
   const f = p.findings ?? {};
   const count = [["error", "errors"], ["warning", "warnings"], ["note", "notes"]].map(([k, w]) => (f[k] ? `${f[k]} ${f[k] === 1 ? k : w}` : null)).filter(Boolean).join(", ");
-  const bep = p.bep ? `Its best efficiency lies at ${plain(p.bep.flow_m3h, 0)} m³/h and ${plain(p.bep.head_m, 1)} m with the largest wheel.` : "Its best-efficiency point is not known: the paper shows no efficiency.";
+  const bep = p.bep ? `Its best efficiency lies at ${plain(p.bep.flow_m3h, 0)} m³/h and ${plain(p.bep.head_m, 1)} m with the largest wheel.` : "Its best-efficiency point is not known.";
   return put($("chosen"), h("div", { class: "head" }, h("h2", {}, `${i + 1}  ${p.maker} ${p.model}`), h("span", { class: `chip ${p.state}` }, `revision ${p.revision}, ${p.state}`), h("a", { href: `/pumps/${p.key}` }, "open the pump page")),
     h("p", {}, `${bep} ${p.stages} ${p.stages === 1 ? "stage" : "stages"}${p.rated_rpm ? ` at ${plain(p.rated_rpm, 0)} 1/min` : ""}. ${count ? `Its check left ${count}.` : "Its check left nothing open."}`));
 }
@@ -144,7 +164,7 @@ function draw() {
   card();
   const bank = String(boot.bank ?? "").split(/[\\/]/).pop();
   $("where").textContent = bank ? `Bank: ${bank}` : "";
-  drawBlock($("block"), [["view", `${shown.length}${more ? " or more" : ""} ${shown.length === 1 ? "pump" : "pumps"}, ${asked.state || "any state"}`], ["points", "best efficiency of the largest wheel"], ["not on the map", `${shown.filter((p) => !p.bep).length} without a best-efficiency point`, { grow: true }], ["bank", bank || "?"]]);
+  drawBlock($("block"), [["view", `${shown.length}${more ? " or more" : ""} ${shown.length === 1 ? "pump" : "pumps"}, ${asked.state || "any state"}`], ["points", "best efficiency of the largest wheel"], ["cut ends", "smallest impeller traced, by the affinity laws"], ["not on the map", `${shown.filter((p) => !p.bep).length} without a best-efficiency point`, { grow: true }], ["bank", bank || "?"]]);
 }
 
 async function load(cursor = null) {

@@ -65,17 +65,23 @@ export function drawImpellers(root, diameters, asked) {
 }
 
 export function drawCautions(root, detail, duty, onWaive) {
-  const cautions = [...(detail.cautions ?? []), ...(duty?.cautions ?? [])].map((c) => ({ severity: "warning", word: "caution", text: cautionText(c) }));
-  const seen = new Set();
-  const list = [...cautions.filter((c) => !seen.has(c.text) && seen.add(c.text)).map((c) => ({ ...c, caution: true })), ...(detail.findings ?? []).map((f) => ({ severity: f.severity, key: f.key, text: f.message, waived: waiverOf(detail, f) }))];
-  if (!list.length) return put(root);
-  return put(root, h("h2", {}, "Before you rely on it"), h("ol", { class: "findings" }, list.map((f, i) => {
-    const li = finding({ number: i + 1, severity: f.severity, text: f.waived ? `${f.text} “${f.waived.why}” ${f.waived.who}.` : f.text });
+  const findings = (detail.findings ?? []).map((f) => ({ severity: f.severity, key: f.key, text: f.message, waived: waiverOf(detail, f) }));
+  const grave = findings.filter((f) => f.severity !== "note");
+  const notes = findings.filter((f) => f.severity === "note");
+  const said = [...new Set([...(duty?.cautions ?? []), ...(detail.cautions ?? [])].map(cautionText))].filter((text) => !grave.some((f) => text.includes(f.text)));
+  const list = [...grave, ...said.map((text) => ({ severity: "warning", caution: true, text }))];
+  if (!list.length && !notes.length) return put(root);
+  return put(root, h("h2", {}, "Before you rely on it"), items(list, 0, onWaive), notes.length ? h("details", { class: "notes" }, h("summary", {}, `${notes.length} ${notes.length === 1 ? "note" : "notes"} of the check`), items(notes, list.length, null)) : null);
+}
+
+function items(list, from, onWaive) {
+  return h("ol", { class: "findings" }, list.map((f, i) => {
+    const li = finding({ number: from + i + 1, severity: f.severity, text: f.waived ? `${f.text} “${f.waived.why}” ${f.waived.who}.` : f.text });
     if (f.caution) li.querySelector("strong").textContent = "Caution. ";
     else if (f.waived) li.querySelector("strong").textContent = `${f.severity === "error" ? "Error" : f.severity === "warning" ? "Warning" : "Note"}, waived. `;
     else if (onWaive && f.severity !== "note") li.lastElementChild.append(" ", h("button", { type: "button", class: "link", onclick: () => onWaive(f, li) }, "Waive it, with the reason"), ".");
     return li;
-  })));
+  }));
 }
 
 function waiverOf(detail, f) {

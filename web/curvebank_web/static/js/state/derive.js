@@ -66,7 +66,7 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
   const all = open && draft?.panel === panel.id ? [...kept, { curve: draft, kept: false }] : kept;
   const byQuantity = {};
   for (const { curve } of all) if (curve.diameter_mm) (byQuantity[curve.quantity] ??= new Set()).add(curve.diameter_mm);
-  const mixed = new Set(kept.map((c) => CONTOURS[c.curve.quantity] ?? c.curve.quantity)).size > 1;
+  const mixed = new Set(all.map((c) => CONTOURS[c.curve.quantity] ?? c.curve.quantity)).size > 1;
   return all.map(({ curve, kept: isKept }) => {
     const result = resultOf(panel, curve);
     const x = panel.axes[curve.x];

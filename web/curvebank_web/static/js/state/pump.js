@@ -57,6 +57,12 @@ export function dutyFlowDoubt(head, flow, friction, which) {
   return m[which] === null ? null : Math.abs(m[which] / (slope - system));
 }
 
+/** True where the system curve crosses the pump's line somewhere on its grid. */
+export function meets(head, { static_head_m, friction_m_per_m3h2 }) {
+  const over = head.flow_m3h.map((q, i) => (head.value[i] === null ? null : head.value[i] - static_head_m - friction_m_per_m3h2 * q * q)).filter((v) => v !== null);
+  return over.some((v) => v >= 0) && over.some((v) => v <= 0);
+}
+
 export function system({ lift, loss, at }) {
   if (lift === null && loss === null) return null;
   if (loss !== null && loss > 0 && !(at > 0)) return null;
