@@ -42,6 +42,7 @@ ALL: tuple[Rule, ...] = (
     complete.flow_unit_unchecked,
     provenance.speed_missing,
     provenance.speed_differs,
+    provenance.mixed_axis,
 )
 _RANK = {"error": 0, "warning": 1, "note": 2}
 

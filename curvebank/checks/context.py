@@ -112,8 +112,11 @@ class Context:
         return tuple(s for s in made if s is not None)
 
     def of(self, quantity: str) -> list[Series]:
-        """Usable curves of one quantity, largest diameter first."""
-        found = [s for s in self.series if s.curve.quantity == quantity]
+        """Usable curves of one quantity in its own unit, largest diameter first.
+
+        A line that keeps the values of another quantity's axis is left out: its numbers are no head, power or efficiency.
+        """
+        found = [s for s in self.series if s.curve.quantity == quantity and not any(n.code == "mixed-axis" for n in s.curve.warnings)]
         return sorted(found, key=lambda s: -(s.diameter_mm or 0.0))
 
     @property

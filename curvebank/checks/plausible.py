@@ -113,7 +113,7 @@ def efficiency(context: Context) -> Iterator[Finding]:
 
 def negative(context: Context) -> Iterator[Finding]:
     """plausible-negative: power, efficiency, head or NPSHr clearly below zero."""
-    for s in context.series:
+    for s in (s for quantity in sorted({s.curve.quantity for s in context.series}) for s in context.of(quantity)):
         low = int(np.argmin(s.value))
         v, u = float(s.value[low]), float(s.u[low])
         scale = float(np.abs(s.value).max())

@@ -51,3 +51,21 @@ def speed_differs(context: Context) -> Iterator[Finding]:
         action=action,
         where={"panel": None, "curves": [c.id for c in context.digitised.curves if c.speed_rpm]},
     )
+
+
+def mixed_axis(context: Context) -> Iterator[Finding]:
+    """provenance-mixed-axis: a line keeps the values of another quantity's axis, so its numbers have no unit of their own."""
+    for c in context.digitised.curves:
+        notice = next((n for n in c.warnings if n.code == "mixed-axis"), None)
+        if notice is None or c.error is not None:
+            continue
+        action = "Look for a factor printed at the axis or on the line, and give the line its factor."
+        yield Finding(
+            rule="provenance-mixed-axis",
+            severity="warning",
+            subject=f"curve:{c.id}",
+            message=notice.message,
+            source="recipe",
+            action=action,
+            where={"panel": c.panel, "curves": [c.id], "axis": c.y_axis},
+        )

@@ -8,6 +8,12 @@ from ..records import Curve, Finding, PanelResult
 from .context import Context
 from .words import flows, name_of, number, sentence
 
+MISTYPED = {"mistyped", "mistyped-mark", "swapped"}
+"""Notices of the axes that say a typed value cannot stand."""
+HARMLESS = {"direction"}
+EXPLAINED = MISTYPED | {"scatter", "perspective"}
+"""Notices that already speak of the residuals."""
+
 
 def trace_failed(context: Context) -> Iterator[Finding]:
     """trace-failed: a curve of the recipe has no trace."""
@@ -126,14 +132,15 @@ def calibration_failed(context: Context) -> Iterator[Finding]:
 
 
 def calibration_notices(context: Context) -> Iterator[Finding]:
-    """calibration-*: what the axes said while they were placed; a mistyped mark is an error, the rest are warnings."""
+    """calibration-*: what the axes said while they were placed; a mistyped mark is an error, the rest warn."""
     for p in context.digitised.panels:
         for i, n in enumerate(p.warnings):
             twice = sum(other.code == n.code for other in p.warnings[:i])
-            error = n.code == "mistyped-mark"
+            code = n.code.removeprefix("calibration-")
+            error = code in MISTYPED
             yield Finding(
-                rule=f"calibration-{n.code}",
-                severity="error" if error else "warning",
+                rule=f"calibration-{code}",
+                severity="error" if error else "note" if code in HARMLESS else "warning",
                 subject=f"panel:{p.id}" if not twice else f"panel:{p.id}/{twice + 1}",
                 message=n.message,
                 source="marks against each other and the printed grid",
@@ -145,7 +152,7 @@ def calibration_notices(context: Context) -> Iterator[Finding]:
 def calibration_residual(context: Context) -> Iterator[Finding]:
     """calibration-residual: marks do not lie on straight scales."""
     for p in context.digitised.panels:
-        if p.error is not None or any(n.code == "mistyped-mark" for n in p.warnings):
+        if p.error is not None or any(n.code.removeprefix("calibration-") in EXPLAINED for n in p.warnings):
             continue
         limit, worst = context.limits["calibration_rms_px"], context.limits["calibration_worst_px"]
         scale = max(1.0, _size(p) / 1500)

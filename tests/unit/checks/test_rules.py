@@ -130,6 +130,20 @@ def test_a_mistyped_mark_is_an_error_and_silences_the_residual():
     assert found[0].message.startswith("The power mark typed 25")
 
 
+@pytest.mark.parametrize(
+    ("code", "severity"),
+    [
+        ("calibration-mistyped", "error"),
+        ("calibration-swapped", "error"),
+        ("calibration-scatter", "warning"),
+        ("calibration-direction", "note"),
+    ],
+)
+def test_notices_of_the_axes_become_findings_under_their_own_name(code, severity):
+    found = [f for f in run([curve()], panels=[panel(warnings=(notice(code),))]) if f.rule.startswith("calibration-")]
+    assert [(f.rule, f.severity) for f in found] == [(code, severity)]
+
+
 def test_residuals_of_marks_are_judged_by_panel_size():
     assert [f.rule for f in run([curve()], panels=[panel(worst_px=9.0)]) if f.severity == "warning"] == ["calibration-residual"]
     large = panel(worst_px=9.0, outline=frozen([[0, 0], [4800, 0], [4800, 3600], [0, 3600]]))
@@ -194,6 +208,15 @@ def test_speed_missing_and_speed_that_differs():
     (f,) = said("provenance-speed-differs", [curve(rpm=1480.0)])
     assert f.severity == "note" and "rated at 1450 1/min and its curves are for 1480 1/min" in f.message
     assert not said("provenance-speed-differs", [curve(), curve(rpm=1480.0, id="x")])
+
+
+def test_a_line_on_another_quantitys_axis_is_not_judged_by_its_numbers():
+    mixed = shaped(
+        curve("efficiency", warnings=(notice("mixed-axis", "This efficiency line is read on the head axis."),)), lambda q, v: v * 50
+    )
+    found = run([curve(), curve("power"), mixed])
+    assert [f.severity for f in found if f.rule == "provenance-mixed-axis"] == ["warning"]
+    assert not [f for f in found if f.rule in ("plausible-efficiency", "energy-balance")]
 
 
 # ------------------------------------------------------------------------------------------------- the door
