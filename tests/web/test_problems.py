@@ -111,6 +111,8 @@ RAISED = [
     (errors.CurvebankError("Other.", code="other"), 422, "other"),
     (sqlite3.OperationalError("database is locked"), 503, "locked"),
     (sqlite3.OperationalError("database or disk is full"), 503, "cannot-write"),
+    (OSError(28, "No space left on device"), 503, "cannot-write"),
+    (MemoryError(), 503, "memory"),
     (ZeroDivisionError("secret detail"), 500, "internal"),
 ]
 

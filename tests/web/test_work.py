@@ -66,6 +66,13 @@ class TestPreview:
         put(ready["id"], ready["doc"] | {"pump": {"maker": "", "model": "", "stages": 0, "speed_rpm": "?"}}, 1)
         assert self.look(client, ready, ready["doc"]["curves"][0]).json["curve"]["error"] is None
 
+    def test_a_damaged_cache_is_made_again(self, app, client, ran, finish):
+        for path in (app.extensions["curvebank"].cache / "prepared").rglob("ink.npy"):
+            path.write_bytes(path.read_bytes()[:1000])
+        again = self.look(client, ran, None)
+        assert again.status_code == 202 and finish(again.json["job"])["state"] == "done"
+        assert self.look(client, ran, None).status_code == 200
+
     def test_without_a_sheet_there_is_nothing_to_look_at(self, client, is_problem):
         bare = client.post("/api/drafts", json={"doc": {}}).json
         is_problem(client.post(f"/api/drafts/{bare['id']}/preview", json={"panel": {}, "curve": None, "seq": 1}), 422, "no-sheet")

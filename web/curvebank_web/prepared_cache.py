@@ -28,11 +28,15 @@ def read(cache: Path, key: PageKey) -> Any:
     folder = folder_of(cache, key)
     if not folder.is_dir():
         return None
-    arrays = {}
-    for path in folder.glob("*.npy"):
-        large = path.stat().st_size > SMALL_BYTES
-        arrays[path.stem] = np.load(path, mmap_mode="r" if large else None, allow_pickle=False)
-    return sheet.Prepared.from_arrays(arrays)
+    try:
+        arrays = {}
+        for path in folder.glob("*.npy"):
+            large = path.stat().st_size > SMALL_BYTES
+            arrays[path.stem] = np.load(path, mmap_mode="r" if large else None, allow_pickle=False)
+        return sheet.Prepared.from_arrays(arrays)
+    except (KeyError, ValueError, IndexError, OSError, EOFError):  # damaged, or half tidied away: it is made again
+        shutil.rmtree(folder, ignore_errors=True)
+        return None
 
 
 def write(cache: Path, key: PageKey, prepared: Any) -> None:

@@ -4,6 +4,7 @@
 follows and what to do. Outside ``/api`` the same problem is an HTML page.
 """
 
+import errno
 import json
 import logging
 import sqlite3
@@ -127,6 +128,12 @@ def from_unexpected(error: Exception) -> Problem:
     if isinstance(error, sqlite3.OperationalError) and ("readonly" in str(error) or "full" in str(error)):
         detail = "Nothing was saved: the disk is full or the file cannot be written. Make room, then do it again."
         return Problem(503, "cannot-write", "The file cannot be written", detail)
+    if isinstance(error, OSError) and error.errno in (errno.ENOSPC, errno.EROFS):
+        detail = "Nothing was saved: the disk is full or cannot be written. Make room, then do it again."
+        return Problem(503, "cannot-write", "The file cannot be written", detail)
+    if isinstance(error, MemoryError):
+        detail = "What was kept before is safe. Close other programs, or scan at a lower resolution."
+        return Problem(503, "memory", "There is not enough memory", detail)
     log.error("unexpected error at %s %s", request.method, request.path, exc_info=error)
     detail = "This is a fault of the program, not of your sheet. What was kept before is safe. The server's output has the details."
     return Problem(500, "internal", "Something went wrong inside", detail)

@@ -77,7 +77,7 @@ def check_origin() -> None:
 
 def check_body() -> None:
     """Writes under /api carry one JSON object; a file upload is the exception and is checked by its view."""
-    if request.method not in UNSAFE or not request.path.startswith("/api") or request.path == "/api/sheets":
+    if request.method not in UNSAFE or not request.path.startswith("/api") or request.path.rstrip("/") == "/api/sheets":
         return
     request.max_content_length = JSON_LIMIT
     if not request.content_length and "Transfer-Encoding" not in request.headers:
