@@ -12,11 +12,17 @@ MANY_SPEEDS = 16
 """From so many distinct speeds on, the speed laws are applied to the array instead of making a reading for each."""
 
 
-def read_arrays(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of: str | None) -> np.ndarray:
+def read_arrays(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of: str | None) -> Any:
     """Values (or uncertainties, with ``of``) of a quantity at arrays of flow, diameter and speed.
 
-    Returns a float64 array of the broadcast shape. NaN flows give NaN with ``outside="nan"`` and an error otherwise.
+    Returns a float64 array of the broadcast shape, or a float where no input is an array (a Decimal or a float32 is a plain number too).
+    NaN flows give NaN with ``outside="nan"`` and an error otherwise.
     """
+    out = _read(quantity, flow, diameter, speed, outside, of)
+    return out if out.ndim or any(isinstance(x, np.ndarray) for x in (flow, diameter, speed)) else float(out)
+
+
+def _read(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of: str | None) -> np.ndarray:
     flows = np.asarray(flow, dtype=np.float64)
     many = [x for x in (diameter, speed) if x is not None and np.ndim(x) > 0]
     if not many:

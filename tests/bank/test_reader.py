@@ -2,6 +2,8 @@
 
 import math
 import warnings
+from decimal import Decimal
+from fractions import Fraction
 
 import bank_samples as make
 import numpy as np
@@ -38,6 +40,8 @@ def test_plain_in_float_out_array_in_array_out(pump):
     """Broadcast shape, float64; ints and numpy's own floats count as plain."""
     for q in (50, 50.0, np.float64(50.0)):
         assert type(pump.head(q, 320.0)) in (float, np.float64)
+    for q in (Fraction(50), Decimal(50), np.float32(50), np.int64(50)):
+        assert type(pump.head(q, 320.0)) is float and pump.head(q, 320.0) == pytest.approx(43.75)
     out = pump.head(np.array([[10.0], [20.0]]), np.array([280.0, 300.0, 320.0]))
     assert out.shape == (2, 3) and out.dtype == np.float64
     for i, q in enumerate((10.0, 20.0)):
