@@ -33,6 +33,7 @@ ALL: tuple[Rule, ...] = (
     plausible.efficiency,
     plausible.negative,
     plausible.rising_head,
+    plausible.head_saddle,
     plausible.npshr,
     plausible.power_still_rising,
     complete.missing_quantity,

@@ -17,7 +17,8 @@ def _where(*series: Series) -> dict[str, object]:
 
 
 def rising_head(context: Context) -> Iterator[Finding]:
-    """plausible-rising-head: head rises with flow near shut-off (drooping curve), or elsewhere, where a trace is the likelier cause."""
+    """plausible-rising-head: head rises with flow near shut-off (drooping curve); one finding for all wheels, on the steepest."""
+    rising: list[tuple[float, float, float, int, Series]] = []
     for s in context.of("head"):
         top = int(np.argmax(s.value))
         rise = float(s.value[top] - s.value[0])
@@ -25,21 +26,31 @@ def rising_head(context: Context) -> Iterator[Finding]:
         share = rise / float(s.value[top]) if s.value[top] > 0 else 0.0
         # shared calibration error cancels in the difference, so the doubt is on the cautious side
         if top > 0 and share > context.limits["rising_note_pct"] / 100 and rise > doubt:
-            strong = share > context.limits["rising_warning_pct"] / 100
-            action = "Look that the left end of the line is traced right; then keep the duty to the right of the highest point."
-            yield Finding(
-                rule="plausible-rising-head",
-                severity="warning" if strong else "note",
-                subject=f"curve:{s.curve.id}",
-                message=f"{sentence(name_of(s.curve))} rises by {number(rise, 2)} ± {number(doubt, 1)} m "
-                f"{flows(s.lo, float(s.flow[top]))}: one head may have two flows there. {action}",
-                measured=round(share, 5),
-                limit=context.limits["rising_note_pct"] / 100,
-                unit="1",
-                source=PRACTICE,
-                action=action,
-                where=_where(s),
-            )
+            rising.append((share, rise, doubt, top, s))
+    if not rising:
+        return
+    share, rise, doubt, top, s = max(rising, key=lambda one: one[0])
+    more = len(rising) - 1
+    too = "" if not more else " Another wheel does so too." if more == 1 else f" So do {more} other wheels."
+    action = "Look that the left end of the line is traced right; then keep the duty to the right of the highest point."
+    yield Finding(
+        rule="plausible-rising-head",
+        severity="warning" if share > context.limits["rising_warning_pct"] / 100 else "note",
+        subject=f"curve:{s.curve.id}",
+        message=f"{sentence(name_of(s.curve))} rises by {number(rise, 2)} ± {number(doubt, 1)} m {flows(s.lo, float(s.flow[top]))}: "
+        f"one head may have two flows there.{too} {action}",
+        measured=round(share, 5),
+        limit=context.limits["rising_note_pct"] / 100,
+        unit="1",
+        source=PRACTICE,
+        action=action,
+        where=_where(s, *(other[-1] for other in rising if other[-1] is not s)),
+    )
+
+
+def head_saddle(context: Context) -> Iterator[Finding]:
+    """plausible-head-saddle: head falls and then rises again, where a trace on another line is the likelier cause."""
+    for s in context.of("head"):
         yield from _dip(context, s)
 
 

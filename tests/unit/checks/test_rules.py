@@ -41,6 +41,11 @@ def test_drooping_head_is_a_note_then_a_warning():
     assert strong.severity == "warning" and "between 8 and" in strong.message
 
 
+def test_drooping_wheels_of_one_family_are_said_in_one_breath():
+    (f,) = said("plausible-rising-head", [shaped(c, lambda q, v: v - 2.5 * np.exp(-q / 25)) for c in family()])
+    assert "So do 3 other wheels." in f.message and len(f.where["curves"]) == 4
+
+
 def test_head_that_rises_after_a_fall():
     (f,) = said("plausible-head-saddle", [shaped(curve(), lambda q, v: v + 4 * np.exp(-(((q - 150) / 15) ** 2)))])
     assert f.severity == "warning" and "falls and then rises again" in f.message
