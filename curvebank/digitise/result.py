@@ -133,8 +133,9 @@ def digits(values: Any, n: int = 9) -> Any:
     a = np.asarray(values, dtype=float)
     if not a.size:
         return a.tolist() if a.ndim == 1 else []
-    with np.errstate(divide="ignore"):
-        scale = 10.0 ** (n - 1 - np.floor(np.log10(np.where(a == 0, 1.0, np.abs(a)))))
+    # The power of ten is held where a float can carry it: a subnormal number is its own best rounding.
+    power = np.clip(n - 1 - np.floor(np.log10(np.where(a == 0, 1.0, np.abs(a)))), -300, 300)
+    scale = 10.0**power
     return (np.round(a * scale) / scale).tolist()
 
 
