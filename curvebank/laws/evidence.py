@@ -36,8 +36,8 @@ TRIM_PRIOR = {
 Means and widths were tried on simulated families."""
 
 SPEED_PRIOR = {
-    "head": Prior(flow=1.0, flow_sd=0.01, value=2.0, value_sd=0.02, flow_discrepancy=0.004),
-    "power": Prior(flow=1.0, flow_sd=0.01, value=3.0, value_sd=0.05, flow_discrepancy=0.004, value_discrepancy=0.006),
+    "head": Prior(flow=1.0, flow_sd=0.02, value=2.0, value_sd=0.03, flow_discrepancy=0.008, value_discrepancy=0.008),
+    "power": Prior(flow=1.0, flow_sd=0.02, value=3.0, value_sd=0.06, flow_discrepancy=0.008, value_discrepancy=0.01),
     "efficiency": Prior(flow=1.0, flow_sd=0.01, value=0.03, value_sd=0.05, flow_discrepancy=0.006, value_discrepancy=0.01),
     "npshr": Prior(flow=1.0, flow_sd=0.02, value=1.7, value_sd=0.25, flow_discrepancy=0.02, value_discrepancy=0.02),
 }
