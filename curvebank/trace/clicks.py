@@ -88,7 +88,7 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
 
 def _has_ink(prepared: Prepared, x: float, y: float) -> bool:
     """A stroke within a few line widths: wide enough for a click in the gap of a dashed line."""
-    reach = 12.0 * max(prepared.unit, 0.75)
+    reach = 16.0 * max(prepared.unit, 0.75)
     height, width = prepared.shape
     x0, x1 = max(int(x - reach), 0), min(int(x + reach) + 1, width)
     y0, y1 = max(int(y - reach), 0), min(int(y + reach) + 1, height)

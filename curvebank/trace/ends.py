@@ -138,6 +138,8 @@ def walk(seen: Presence, beat: Rhythm, unit: float, begin: int) -> float:
             gap += 1
             if gap > beat.gap_px:
                 break
+        elif row <= begin:
+            last = row  # up to the click the user vouches for the line, even where others lie on it
         else:
             hidden += 1
             if hidden > 24 * unit:

@@ -2,6 +2,7 @@
 
 from dataclasses import dataclass
 
+import cv2
 import numpy as np
 
 from ..records import FloatArray
@@ -45,16 +46,19 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     """The path of the line through the clicks [n, 2]."""
     unit, width = prepared.unit, prepared.width_px
     cap = contrast_cap(prepared, clicks)
-    axis, at = through(clicks, closed)
-    gaps = np.diff(np.r_[at, axis.length]) if closed else np.diff(at)
-    share, slope = WIDE.get(len(clicks), WIDE_MANY)
     grain = float(np.clip(width / 1.5, 1.0, 5.0))
-    half = float(np.clip(share * gaps.max(), 12 * unit, 320 * unit))
-    if closed:
-        half = min(half, 0.75 * axis.tightest_radius())
-    rows = 16 if axis.length > 12 * 16 * grain and not closed else 8
-    first = Pass(half, grain, grain, rows, slope, 0.04, 6, 4.0 * max(unit, 0.75))
-    path, cost = _search(prepared, axis, at, clicks, first, grain, cap)
+    tries = []
+    for axis, at in _first_axes(clicks, closed):
+        gaps = np.diff(np.r_[at, axis.length]) if closed else np.diff(at)
+        share, slope = WIDE.get(len(clicks), WIDE_MANY)
+        half = float(np.clip(share * gaps.max(), 12 * unit, 320 * unit))
+        if closed:
+            half = max(min(half, 0.75 * axis.tightest_radius()), min(half, 40 * unit))
+        rows = 16 if axis.length > 12 * 16 * grain and not closed else 8
+        first = Pass(half, grain, grain, rows, slope, 0.04, 6, 4.0 * max(unit, 0.75))
+        path, cost = _search(prepared, axis, at, clicks, first, grain, cap)
+        tries.append((cost, path, axis, at))
+    cost, path, axis, at = min(tries, key=lambda t: t[0])
     for reach in (30.0, 14.0):
         axis, at = _smoothed(path, axis, clicks, grain)
         step = grain / 4
@@ -64,6 +68,29 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     return Followed(axis, cost, at)
 
 
+def _first_axes(clicks: FloatArray, closed: bool) -> list[tuple[Axis, FloatArray]]:
+    """The spline through the clicks; for a loop of five or more clicks also the ellipse through them, which keeps its blunt ends."""
+    out = [through(clicks, closed)]
+    if closed and len(clicks) >= 5:
+        middle, axes, turn = cv2.fitEllipseDirect(clicks.astype(np.float32))
+        c, s = np.cos(np.radians(turn)), np.sin(np.radians(turn))
+        if 4.0 < min(axes) and max(axes) < 4 * np.ptp(clicks, axis=0).max():
+            phi = np.linspace(0, 2 * np.pi, 721)
+            ring = np.array([0.5 * axes[0] * np.cos(phi), 0.5 * axes[1] * np.sin(phi)]).T @ np.array([[c, s], [-s, c]]) + np.array(middle)
+            ring[-1] = ring[0]
+            order = from_polyline(ring, True).arc_of(clicks)
+            if np.count_nonzero(np.diff(np.r_[order, order[0]]) < 0) > 1:
+                ring = ring[::-1]
+            loop = from_polyline(ring, True)
+            start = loop.arc_of(clicks[:1])[0]
+            loop = from_polyline(loop.at(np.linspace(0, loop.length, 721) + start)[0], True)
+            at = loop.arc_of(clicks)
+            at[0] = 0.0
+            if (np.diff(at) > 0).all():
+                out.append((loop, at))
+    return out
+
+
 def contrast_cap(prepared: Prepared, clicks: FloatArray) -> float:
     """Contrast from which a spot counts as fully line-like: less for a faint curve than for a black one."""
     reach = int(round(4 * max(prepared.unit, 0.75)))
@@ -71,7 +98,7 @@ def contrast_cap(prepared: Prepared, clicks: FloatArray) -> float:
     for x, y in np.rint(clicks).astype(int):
         part = prepared.clean[max(y - reach, 0) : y + reach + 1, max(x - reach, 0) : x + reach + 1]
         tops.append(float(part.max(initial=0)) / 255.0)
-    return float(np.clip(0.6 * np.median(tops), 0.06, 0.6))
+    return float(np.clip(0.45 * np.median(tops), 0.06, 0.45))
 
 
 def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, how: Pass, shrink: float, cap: float) -> tuple[Path, float]:

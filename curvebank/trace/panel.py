@@ -14,6 +14,8 @@ from .manual import by_hand, points_on_symbols
 from .meet import end_on_others
 from .profile import align, refine
 
+FAR_PX = 1.2
+"""An axis that had to be moved by more than this is read once more from where it now lies."""
 Progress = Callable[[float, str], Any]
 LOST = 0.25
 """Share of readings that must show the line; with fewer there is no line to speak of between the clicks."""
@@ -68,7 +70,9 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace
     if clicks.kind == "points":
         return points_on_symbols(prepared, points), None
     found = follow(prepared, points, clicks.closed)
-    axis, shape = align(prepared, found.axis)
+    axis, shape, far = align(prepared, found.axis)
+    if far > FAR_PX * max(prepared.unit, 0.7):
+        axis, shape, far = align(prepared, axis)
     if not clicks.closed and clicks.ends == "ink":
         axis = to_ink(prepared, panel_map, axis, shape)
     fine = refine(prepared, axis, shape)

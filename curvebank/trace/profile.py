@@ -228,8 +228,8 @@ def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], w
     return (failing > 0.45) & (crowded > 0.15)
 
 
-def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape]:
-    """Bring an axis that is a pixel or two off near the middle of its ink, and measure the line's shape there."""
+def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape, float]:
+    """Bring an axis that is a pixel or two off near the middle of its ink: the axis, the line's shape and how far [px] it moved."""
     unit = max(prepared.unit, 0.6)
     pixels = pixels_near(prepared, axis, max(0.9 * prepared.width_px, 3.0) + 6.0 * unit)
     rough = first_shape(pixels, prepared.width_px)
@@ -238,8 +238,9 @@ def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape]:
     stiff = _stiff(blocks, axis, _weights(blocks), _pieces(axis, unit) // 4, 8.0)
     fitted = _stiff(blocks, axis, _gated(blocks, stiff, axis), _pieces(axis, unit) // 2, 4.0)
     pixels.d = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
-    moved = axis.points + axis.normals * fitted.value(axis.s / axis.length)
-    return from_polyline(moved, axis.closed), first_shape(pixels, rough.width)
+    shift = fitted.value(axis.s / axis.length)
+    moved = axis.points + axis.normals * shift
+    return from_polyline(moved, axis.closed), first_shape(pixels, rough.width), float(np.abs(shift).max())
 
 
 def refine(prepared: Prepared, axis: Axis, shape: Shape) -> Refined:
