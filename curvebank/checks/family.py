@@ -157,7 +157,8 @@ def displaced(context: Context) -> Iterator[Finding]:
         action = "Look whether the trace follows this line and whether it is read on its own scale, then correct it or give the reason."
         yield Finding(
             rule="family-displaced",
-            severity="error",
+            # a line off its place is rarer than a wrong label, so an accusation needs more
+            severity="error" if best.gain > context.limits["family_threshold"] + 2.0 else "warning",
             subject=f"curve:{f.members[best.curve].curve.id}",
             message=f"{text[0].upper()}{text[1:]}; no other diameter would explain it. {action}",
             measured=round(float(np.expm1(best.shift)), 5),
