@@ -202,3 +202,9 @@ def open_page(context, watch):
 def desk(open_page, server):
     """A window with the front page."""
     return Desk(open_page(), server.address)
+
+
+@pytest.fixture
+def desk_of(server):
+    """A person at a given window."""
+    return lambda page: Desk(page, server.address)

@@ -101,7 +101,7 @@ def test_from_scan_to_script(desk, server, chart_png):
     axe_is_content(page)
     desk.step("fit")
     page.select_option("#slip [name=fit-curve]", label="head Ø 320")
-    assert "auto:" in page.inner_text("#slip [name=order]")
+    page.wait_for_selector("#slip [name=order] option:has-text('auto:')", state="attached")
     axe_is_content(page)
     desk.step("submit")
     desk.fill("why", "read from the drawn chart")
@@ -296,3 +296,72 @@ def test_a_file_that_is_no_scan_is_refused_in_words(desk, server, watch):
     assert "Choose another file" in page.inner_text('[data-problem="lay"]')
     axe_is_content(page)
     watch.complaints = [c for c in watch.complaints if "status of 4" not in c]
+
+
+def test_the_path_by_keyboard_alone(desk, server, chart_png):
+    """Panel, a mark and a curve without the mouse: arrow keys move the hand, P puts down, Enter keeps."""
+    page = desk.page
+    desk.upload("chart.png", chart_png)
+    page.keyboard.press("2")
+    hand = [0.0, 0.0]
+
+    def go(place):
+        """From where the hand is to a sheet pixel: steps of 8 px, then of 1 px."""
+        x, y = desk.screen(place)
+        for k, wanted in enumerate((x, y)):
+            far = wanted - hand[k]
+            keys = ("ArrowRight", "ArrowLeft") if k == 0 else ("ArrowDown", "ArrowUp")
+            key = keys[0] if far > 0 else keys[1]
+            for _ in range(int(abs(far) // 8)):
+                page.keyboard.press(key)
+            for _ in range(round(abs(far) % 8)):
+                page.keyboard.press(f"Shift+{key}")
+            hand[k] = wanted
+
+    page.locator("#paper").focus()
+    box = page.locator("#paper").bounding_box()
+    hand[:] = [box["x"] + box["width"] / 2, box["y"] + box["height"] / 2]
+    for corner in CORNERS:
+        go(corner)
+        page.keyboard.press("p")
+    page.wait_for_selector("#slip [name=which]")
+    page.locator("#paper").focus()
+    page.keyboard.press("3")
+    page.wait_for_selector('[data-step="marks"][aria-current="step"]')
+    page.wait_for_timeout(100)
+    for place, values in [((0, 0), {"flow": 0, "head": 0}), ((200, 0), {"flow": 200}), ((0, 1), {"head": 60})]:
+        go(chart.to_px(*place))
+        page.keyboard.press("p")
+        page.wait_for_selector('#slip [name^="mark-"]:focus')
+        names = page.locator('#slip [name^="mark-"]').evaluate_all("inputs => inputs.map(i => i.name)")
+        for name in names:
+            if name[5:] in values:
+                page.keyboard.type(str(values[name[5:]]))
+            page.keyboard.press("Tab" if name != names[-1] else "Enter")
+        page.wait_for_selector('#slip [name^="mark-"]', state="detached")
+        assert page.evaluate("document.activeElement.id") == "paper"
+    desk.kept()
+    axes = document_of(server, page)["panels"][0]["axes"]
+    assert [m["value"] for m in axes["flow"]["marks"]] == [0, 200]
+    assert [m["value"] for m in axes["head"]["marks"]] == [0, 60]
+    assert axes["flow"]["marks"][1]["at"] == pytest.approx(list(chart.to_px(200, 0)), abs=1.2)
+
+
+@pytest.mark.parametrize("size", [(1024, 768), (768, 1024), (480, 800)])
+def test_dark_and_small_pages_are_accessible(open_page, desk_of, server, chart_png, size, watch):
+    """The desk with marks and the empty pages, in the dark and in small windows."""
+    page = open_page()
+    page.emulate_media(color_scheme="dark")
+    page.set_viewport_size({"width": size[0], "height": size[1]})
+    window = desk_of(page)
+    window.upload("chart.png", chart_png)
+    window.step("panel")
+    window.draw_panel(*CORNERS)
+    window.step("marks")
+    window.mark(chart.to_px(0, 0), flow=0, head=0)
+    axe_is_content(page)
+    for address in ("/", "/pumps", "/pumps/NOT-THERE", "/nothing-here"):
+        page.goto(server.address + address)
+        page.wait_for_timeout(300)
+        axe_is_content(page)
+    watch.complaints = [c for c in watch.complaints if "status of 404" not in c]

@@ -108,7 +108,10 @@ export class Previews {
         this.onAnswer("slow");
         retry = true;
         await new Promise((r) => setTimeout(r, 300));
-      } else this.#store(q, answer.panel, answer.curve);
+      } else {
+        this.state = "idle";
+        this.#store(q, answer.panel, answer.curve);
+      }
     } catch (problem) {
       if (problem.name === "AbortError" || problem.code === "superseded") retry = true;
       else if (problem.away) {
@@ -121,7 +124,7 @@ export class Previews {
       }
     }
     clearTimeout(slow);
-    this.state = "idle";
+    if (this.state === "asking") this.state = "idle";
     this.busy = null;
     if (!retry) this.wanted = this.wanted.filter((w) => this.#key(w) !== key);
     this.onAnswer("answer");

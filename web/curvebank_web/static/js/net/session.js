@@ -1,6 +1,7 @@
 // One draft at work: the document, its history, and the steps on their way to the server.
 import * as api from "./api.js";
 import { Outbox } from "./outbox.js";
+import { storage } from "./storage.js";
 import * as tree from "../state/history.js";
 import { apply } from "../state/doc.js";
 import { actionLabel } from "../state/words.js";
@@ -29,7 +30,7 @@ export class Session {
     this.keptAt = newest?.at ? clock(newest.at) : null;
     this.conflict = null;
     this.refused = null;
-    this.outbox = new Outbox({ key: `curvebank.outbox.${draft.id}`, send: (e) => this.#send(e), storage: localStorage, on: (...a) => this.#hear(...a) });
+    this.outbox = new Outbox({ key: `curvebank.outbox.${draft.id}`, send: (e) => this.#send(e), storage, on: (...a) => this.#hear(...a) });
     this.history = entriesToNodes(tree.fromDraft(draft), this.outbox.entries);
     if (this.outbox.size) this.outbox.flush();
   }

@@ -29,7 +29,7 @@ export function homeView(desk, whole = false) {
   const { page, panel } = desk;
   if (!page) return null;
   const { width, height } = size("paper");
-  const outline = panel?.outline;
+  const outline = panel && desk.outlineOf(panel);
   if (whole || !outline || ["sheet", "panel"].includes(desk.step)) return fitBox(corners(page.width, page.height), width, height, 0, { left: 14, right: 14, top: 14, bottom: 14 });
   const lead = desk.axes?.[0];
   const frame = lead ? frameOf(lead) : outline;
@@ -88,7 +88,7 @@ export function sceneOf(desk) {
   const doc = desk.doc;
   const places = placesOf(desk);
   return {
-    step: desk.step, bare: desk.bare, panelId: desk.panel?.id ?? null, panels: (doc.panels ?? []).map((p, i) => ({ ...p, name: `Panel ${i + 1}` })),
+    step: desk.step, bare: desk.bare, panelId: desk.panel?.id ?? null, panels: (doc.panels ?? []).map((p, i) => ({ ...p, outline: desk.outlineOf(p), name: `Panel ${i + 1}` })),
     box: desk.box, marks: sceneMarks(doc, desk.panelResult, desk.map, desk.chosenMark), openMark: desk.step === "marks" ? desk.openMark : null,
     curves: ["curves", "family", "fit", "submit"].includes(desk.step) ? desk.items : [], selected: desk.selected ?? (desk.step === "curves" ? desk.openCurve?.id : null), focused: desk.focusedGuide, grabbed: desk.grabbed,
     ghosts: desk.ghosts, showGhosts: desk.step === "family" && ["both", "paper"].includes(desk.over), places: desk.step === "sheet" ? [] : places.paper, plotPlaces: places.plot, axes: desk.axes,
@@ -163,7 +163,7 @@ export class DeskDraw {
     const empty = $("plot-empty");
     const nothing = !this.scales || !desk.items.some((i) => i.points.length);
     empty.hidden = !nothing;
-    if (nothing) put(empty, h("b", {}, this.scales ? "No curves yet." : "Nothing to redraw yet."), h("span", {}, this.#emptyWords()));
+    if (nothing) put(empty, ...this.#emptyWords());
     if (!this.scales) svg.replaceChildren();
     else drawReplot(svg, this.scales, { ...this.scene, showGhosts: desk.step === "family" && ["both", "plot"].includes(desk.over), curves: desk.items });
     this.#plotWords();
@@ -171,9 +171,12 @@ export class DeskDraw {
 
   #emptyWords() {
     const { desk } = this;
-    if (!desk.panel) return "Draw round the plot, then give each scale two marks.";
-    if (!this.scales) return desk.axes.length ? "The panel is out of sight: press 0 to see it whole." : "Two marks on each scale, and the grid stands here.";
-    return desk.step === "marks" ? "A stroke ending in a ring: how far the mark stands off the axis, 20 times." : "Click twice along a printed line.";
+    const say = (title, text) => [h("b", {}, title), h("span", {}, text)];
+    if (!desk.panel) return say("Nothing to redraw yet.", "Draw round the plot, then give each scale two marks.");
+    if (!this.scales && desk.axes.length) return say("The panel is out of sight.", "Press 0 to see it whole.");
+    if (!this.scales) return say("Nothing to redraw yet.", "Two marks on each scale, and the grid stands here.");
+    if (desk.items.some((i) => i.curve.clicks?.length > 1 && !i.result)) return say("Following the ink …", desk.previews.state === "preparing" ? "The sheet is being levelled first; you can go on working." : "The lines stand here in a moment.");
+    return say("No curves yet.", desk.step === "marks" ? "A stroke ending in a ring: how far the mark stands off the axis, 20 times." : "Click twice along a printed line.");
   }
 
   #plotWords() {
@@ -287,7 +290,7 @@ export class DeskDraw {
       doc.sheet?.kept_at ? ["paper register", doc.sheet.kept_at] : null,
       desk.panel ? ["panel", words.panelWords(desk.panel)] : null,
       marks.length ? ["marks", `${marks.length}${worst}`] : null,
-      ["grid", desk.panel ? grid : "", { grow: true }],
+      desk.panel ? ["grid", grid, { grow: true }] : ["panel", "none drawn yet", { grow: true }],
       page ? ["size", `${page.width} × ${page.height} px`] : null,
       page ? ["file", `sha-256 ${page.sha256.slice(0, 4)} ${page.sha256.slice(4, 8)} …`] : null,
     ]);

@@ -2,6 +2,7 @@
 import * as api from "../net/api.js";
 import { follow } from "../net/jobs.js";
 import { Previews } from "../net/previews.js";
+import { storage } from "../net/storage.js";
 import { axisIds, panelMap } from "../geometry/panelmap.js";
 import { desk as deskPart, recipeOf } from "../state/doc.js";
 import { calibrated, liveFindings, panelCurves, progress, STEPS } from "../state/derive.js";
@@ -76,6 +77,12 @@ export class Desk {
 
   panelResult = (panel) => this.previews.panelSoon(panel);
 
+  /** The panel's edge: as drawn, as calibrated, or round its marks. */
+  outlineOf(panel) {
+    const result = this.panelResult(panel);
+    return panel.outline ?? (result?.outline?.length ? result.outline : null) ?? outlineOfMap(result) ?? markBox(panel);
+  }
+
   curveResult = (panel, curve) => this.previews.curveSoon(panel, curve);
 
   map = (panel, flow, value) => {
@@ -99,7 +106,7 @@ export class Desk {
     const ids = panel ? axisIds(panel) : { flow: [], value: [] };
     this.axes = [];
     if (panel) {
-      const outline = panel.outline ?? this.panelResult(panel)?.outline ?? outlineOfMap(this.panelResult(panel)) ?? markBox(panel);
+      const outline = this.outlineOf(panel);
       for (const id of ids.value) {
         const map = this.map(panel, ids.flow[0], id);
         if (!map || !outline) continue;
@@ -191,15 +198,11 @@ export class Desk {
 
   /** The browser remembers at which steps this draft was checked, so that it only asks for results that are there. */
   #remember() {
-    try {
-      localStorage.setItem(`curvebank.checked.${this.session.id}`, String(this.run.step));
-    } catch {
-      // Without storage the check is asked for again after a reload.
-    }
+    storage.setItem(`curvebank.checked.${this.session.id}`, String(this.run.step));
   }
 
   async loadResult() {
-    const step = Number(localStorage.getItem(`curvebank.checked.${this.session.id}`) ?? 0);
+    const step = Number(storage.getItem(`curvebank.checked.${this.session.id}`) ?? 0);
     if (!step) return;
     try {
       const answer = await api.result(this.session.id, step);
@@ -207,7 +210,7 @@ export class Desk {
       if (answer.step === this.session.step) this.previews.learn(this.session.doc, answer.result);
       this.hooks.invalidate("doc");
     } catch {
-      localStorage.removeItem(`curvebank.checked.${this.session.id}`);
+      storage.removeItem(`curvebank.checked.${this.session.id}`);
     }
   }
 }

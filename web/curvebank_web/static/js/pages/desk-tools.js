@@ -14,6 +14,7 @@ import { Place } from "../tools/place.js";
 import { Straightedge } from "../tools/straightedge.js";
 import { $ } from "../view/dom.js";
 
+const inside = (desk, panel, sheet) => insidePolygon(sheet, desk.outlineOf(panel) ?? []);
 const round = (p) => p.map((v) => Math.round(v * 100) / 100);
 
 export class DeskTools {
@@ -219,7 +220,7 @@ export class DeskTools {
     if (number) return desk.chooseFinding(Number(number));
     if (desk.step === "marks") return this.#markAt(sheet, e);
     if (desk.step === "curves") return this.#curveAt(sheet, screen, e);
-    const other = (desk.doc.panels ?? []).find((p) => p.outline && insidePolygon(sheet, p.outline));
+    const other = (desk.doc.panels ?? []).find((p) => inside(desk, p, sheet));
     if (other && other.id !== desk.panel?.id) return desk.choosePanel(other.id);
     const trace = this.traceAt(screen);
     if (trace && desk.step === "fit") desk.select(trace.id);
@@ -248,7 +249,7 @@ export class DeskTools {
     const { desk } = this;
     if (!desk.panel) return;
     const { at, held } = this.snapped(sheet, e);
-    const inOther = (desk.doc.panels ?? []).find((p) => p.id !== desk.panel.id && p.outline && insidePolygon(sheet, p.outline) && !insidePolygon(sheet, desk.panel.outline ?? []));
+    const inOther = (desk.doc.panels ?? []).find((p) => p.id !== desk.panel.id && inside(desk, p, sheet) && !inside(desk, desk.panel, sheet));
     if (inOther && !desk.openMark) desk.panelId = inOther.id;
     desk.chosenMark = null;
     desk.focusBlank = "mark";
@@ -270,8 +271,8 @@ export class DeskTools {
       return desk.act({ type: "curve/set", curve: chosen.id, change: { clicks: insertClick(chosen.clicks, at) } });
     }
     if (trace && !e.shiftKey) return desk.select(trace.id);
-    const inside = (desk.doc.panels ?? []).filter((p) => calibrated(p) && p.outline && insidePolygon(sheet, p.outline));
-    const panel = inside.find((p) => p.id === desk.panel?.id) ?? inside[0] ?? desk.panel;
+    const here = (desk.doc.panels ?? []).filter((p) => calibrated(p) && inside(desk, p, sheet));
+    const panel = here.find((p) => p.id === desk.panel?.id) ?? here[0] ?? desk.panel;
     if (!panel || !calibrated(panel)) return desk.say("This panel has no scales yet: give each two marks.");
     desk.selected = null;
     desk.panelId = panel.id;

@@ -198,6 +198,17 @@ function abilities(desk, draw, tools, invalidate) {
   }
 }
 
+/** The draft's page cannot be shown: say why, and offer its first page. */
+async function pageMissing(session) {
+  const sheet = session.doc.sheet ?? {};
+  try {
+    session.page = await api.sheetPage(sheet.sha256, sheet.page ?? 1, { dpi: sheet.dpi ?? 300, turn: sheet.turn ?? 0 });
+  } catch (error) {
+    const ways = (sheet.page ?? 1) > 1 ? [["Go to page 1", (close) => { close(); session.act({ type: "sheet/set", change: { page: 1 } }); session.settled().then(() => location.reload()); }]] : [];
+    fromError(problems, "page", error, ways);
+  }
+}
+
 let flashTimer = null;
 function flash(text) {
   const kept = $("said") ?? $("kept").insertAdjacentElement("beforebegin", h("span", { class: "kept", id: "said", "aria-hidden": "true" }));
@@ -229,6 +240,7 @@ async function start() {
   } catch (error) {
     return fromError(problems, "open", error, [["Try again", () => location.reload()]]);
   }
+  if (!session.page) await pageMissing(session);
   const desk = new Desk(session, {
     invalidate: (w) => invalidate(w),
     problem: (id, error) => fromError(problems, id, error),

@@ -1,23 +1,16 @@
 // The map of keys for the screen one is on, with the few settings that a browser keeps.
 import { $, h, put } from "../view/dom.js";
+import { storage } from "../net/storage.js";
 import { choice } from "./blank.js";
 
 const KEEP = "curvebank.";
 
 export function setting(name, fallback) {
-  try {
-    return localStorage.getItem(KEEP + name) ?? fallback;
-  } catch {
-    return fallback;
-  }
+  return storage.getItem(KEEP + name) ?? fallback;
 }
 
 export function keepSetting(name, value) {
-  try {
-    localStorage.setItem(KEEP + name, value);
-  } catch {
-    // Without storage the choice lasts as long as the page.
-  }
+  storage.setItem(KEEP + name, value);
 }
 
 export function setTheme(theme) {

@@ -57,7 +57,7 @@ function drawOne(figure, q, m) {
   const sys = q === "head" && m.system ? systemLine(m, k) : null;
   const range = valueRange(q, [...curves.map((c) => c.points.map((p) => p[1] * k)), ...contours.map((c) => c.points.map((p) => p[1] * k)), band?.high ?? [], band?.low ?? []], sys ? [m.system.static_head_m * k] : []);
   const frame = [m.x0, q === "head" ? 16 : 9, m.x1, height - (q === "head" ? 40 : 9)];
-  const y = { ...linear(range[0], range[1], frame[3], frame[1]), lo: range[0], hi: range[1], title: `${SIGN[q]}, ${unit}`, most: q === "head" ? 8 : Math.max(3, Math.floor((frame[3] - frame[1]) / 20)), ticks: has ? undefined : [] };
+  const y = { ...linear(range[0], range[1], frame[3], frame[1]), lo: range[0], hi: range[1], title: `${SIGN[q]}, ${unit}`, most: q === "head" ? 8 : Math.max(3, Math.round((frame[3] - frame[1]) / 17)), ticks: has ? undefined : [] };
   const x = { ...m.scaleX, lo: 0, hi: m.qHi * m.fu, labels: q === "head", title: q === "head" ? `flow, ${m.units.flow[0]}` : null, titleAt: "end" };
   const svg = s("svg", { class: "plot", viewBox: `0 0 ${m.width} ${height}`, width: m.width, height, role: "img", "aria-labelledby": `says-${q}` });
   const lines = curves.map((c) => ({ points: c.points.map(([a, b]) => [a * m.fu, b * k]), width: m.weight[`${q}/${c.diameter_mm}`] ?? 1.4, label: q === "head" || curves.length > 1 ? curveLabel(c) : "" }));
