@@ -70,12 +70,12 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace
     if clicks.kind == "points":
         return points_on_symbols(prepared, points), None
     found = follow(prepared, points, clicks.closed)
-    axis, shape, far = align(prepared, found.axis)
+    axis, shape, far = align(prepared, found.axis, points)
     if far > FAR_PX * max(prepared.unit, 0.7):
-        axis, shape, far = align(prepared, axis)
+        axis, shape, far = align(prepared, axis, points)
     if not clicks.closed and clicks.ends == "ink":
         axis = to_ink(prepared, panel_map, axis, shape)
-    fine = refine(prepared, axis, shape)
+    fine = refine(prepared, axis, shape, points)
     if fine.blocks.good.mean() < LOST and found.cost > 0.5:
         raise TraceError("No line was found between the clicks; check that they lie on one line, or add clicks along it", code="lost")
     return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(prepared, found, fine)

@@ -228,13 +228,14 @@ def _text_zones(fair: npt.NDArray[np.bool_], cluttered: npt.NDArray[np.bool_], w
     return (failing > 0.45) & (crowded > 0.15)
 
 
-def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape, float]:
+def align(prepared: Prepared, axis: Axis, clicks: FloatArray) -> tuple[Axis, Shape, float]:
     """Bring an axis that is a pixel or two off near the middle of its ink: the axis, the line's shape and how far [px] it moved."""
     unit = max(prepared.unit, 0.6)
     pixels = pixels_near(prepared, axis, max(0.9 * prepared.width_px, 3.0) + 6.0 * unit)
     rough = first_shape(pixels, prepared.width_px)
     unit = max(unit_of(rough.width), 0.6)
     blocks = read_blocks(pixels, pixels.d, rough, axis.length, 3.0 * unit, rounds=3)
+    blocks = _with_clicks(blocks, axis, clicks, unit)
     stiff = _stiff(blocks, axis, _weights(blocks), _pieces(axis, unit) // 4, 8.0)
     fitted = _stiff(blocks, axis, _gated(blocks, stiff, axis), _pieces(axis, unit) // 2, 4.0)
     pixels.d = pixels.d - fitted.value(pixels.s / axis.length)[:, 0]
@@ -243,19 +244,35 @@ def align(prepared: Prepared, axis: Axis) -> tuple[Axis, Shape, float]:
     return from_polyline(moved, axis.closed), first_shape(pixels, rough.width), float(np.abs(shift).max())
 
 
-def refine(prepared: Prepared, axis: Axis, shape: Shape) -> Refined:
+def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray) -> Refined:
     """Move an aligned axis onto the middle of its ink, with uncertainties."""
     unit = max(unit_of(shape.width), 0.6)
     pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
     blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
     # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
     reference, off = _reference(axis, _pieces(axis, unit) // 4)
-    whole = replace(blocks, shift=blocks.shift + np.interp(blocks.s, axis.s, off))
+    whole = _with_clicks(blocks, axis, clicks, unit)
+    whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
     fitted = _along(whole, axis, unit)
     t = axis.s / axis.length
     final = from_polyline(reference.points + reference.normals * fitted.value(t), axis.closed)
     sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
     return Refined(final, sigma, blocks, shape, fitted.scale)
+
+
+def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) -> Blocks:
+    """The readings and the clicks as poor readings: they count only where the ink says nothing (merged lines, long gaps)."""
+    s = axis.arc_of(clicks)
+    base, normal = axis.at(s)
+    gap = clicks - base
+    across = (gap * normal).sum(axis=1)
+    keep = np.hypot(*gap.T) < np.abs(across) + 3.0
+    count = int(keep.sum())
+    none = np.zeros(count, bool)
+    return Blocks(
+        np.r_[blocks.s, s[keep]], np.r_[blocks.shift, across[keep]], np.r_[blocks.sigma, np.full(count, 2.0 * max(unit, 0.75))],
+        np.r_[blocks.height, np.ones(count)], np.r_[blocks.good, ~none], np.r_[blocks.masked, none],
+    )  # fmt: skip
 
 
 def _reference(axis: Axis, pieces: int) -> tuple[Axis, FloatArray]:
