@@ -124,7 +124,8 @@ def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, 
     offsets = np.arange(-how.half, how.half + how.across / 2, how.across)
     band = sample(prepared.clean, axis, s_rows, offsets, shrink)
     flank = max(2, int(round(6.0 * max(prepared.unit, 0.6) / how.across)))
-    likeness = ridge(band, flank, cap)
+    # Lines that merge make one broad stroke: a wider flank sees it too, at less weight.
+    likeness = np.maximum(ridge(band, flank, cap), np.float32(0.6) * ridge(band, 2 * flank + flank // 2, cap))
     step = how.along * how.rows
     reach = max(int(np.ceil(how.slope * step / how.across)), 3)
     costs = segment_costs(likeness, segments, reach)
