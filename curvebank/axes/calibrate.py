@@ -5,9 +5,9 @@ from typing import Any
 import numpy as np
 
 from ..errors import CalibrationError
-from ..records import FloatArray, GridReport, Notice
+from ..records import FloatArray, Notice
+from . import gridmap, plane
 from . import outline as outlines
-from . import plane
 from . import suspects as doubts
 from .layout import Layout, arrange
 from .marks import AxisMarks, get, read_axes
@@ -59,6 +59,11 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
     page = page_size or _page_size(prepared)
     given = get(panel, "outline")
     parameters, covariance, scales = _scales(layout, solution)
+    used, report = gridmap.bends(layout, solution, prepared, get(panel, "grid", None) or "auto")
+    warps = None
+    if used:
+        parameters, covariance, warps = gridmap.with_bends(layout, solution, used, parameters, covariance, scales)
+        residuals = gridmap.mark_misses(residuals, layout, solution, used, scales, parameters)
     return PanelMap(
         panel_id,
         parameters,
@@ -70,9 +75,10 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
         outline=outlines.given(given, path) if given else outlines.derive(layout, solution, page),
         mark_residuals=residuals,
         click_sigma_px=solution.sigma_px,
-        grid=_grid_report(panel),
+        grid=report,
         notices=tuple(notices),
         suspects=[s.as_dict() for s in verdict.suspects],
+        warps=warps,
     )
 
 
@@ -141,14 +147,6 @@ def _scatter_notices(axes: dict[str, AxisMarks], residuals: dict[str, FloatArray
         )
         out.append(Notice(code="calibration-perspective", message=text))
     return out
-
-
-def _grid_report(panel: Any) -> GridReport:
-    if (get(panel, "grid", None) or "auto") == "off":
-        return GridReport(
-            used=False, lines=0, residual_px=None, why="The grid is switched off for this panel; the marks alone place the axes."
-        )
-    return GridReport(used=False, lines=0, residual_px=None, why="Printed lines are not used yet; the marks alone place the axes.")
 
 
 def _page_size(prepared: Any) -> tuple[int, int] | None:

@@ -10,6 +10,7 @@ from ..errors import CalibrationError
 from ..records import FloatArray, GridReport, Notice, PanelResult, frozen
 from . import plane
 from .marks import AxisMarks
+from .warp import Warp
 
 LN10 = float(np.log(10.0))
 MAP_SIDE = 9
@@ -82,10 +83,11 @@ class PanelMap:
         grid: GridReport,
         notices: tuple[Notice, ...] = (),
         suspects: Sequence[dict[str, Any]] = (),
+        warps: dict[int, Warp] | None = None,
     ):
         self.id = panel_id
         self.parameters, self.parameter_covariance = frozen(parameters), frozen(covariance)
-        self.scales = dict(scales)
+        self.scales, self.warps = dict(scales), dict(warps or {})
         self.plane_size, self.shift, self.size = plane_size, frozen(shift), float(size)
         self.outline = frozen(outline, (-1, 2))
         self.mark_residuals = {k: frozen(v) for k, v in mark_residuals.items()}
@@ -104,8 +106,34 @@ class PanelMap:
         return tuple(self.scales)
 
     def _plane(self, xy: Any) -> tuple[FloatArray, FloatArray]:
+        """Coordinates on the flat plane and with the bend of the paper, [n, 2] each."""
         at = (np.asarray(xy, dtype=np.float64).reshape(-1, 2) - self.shift) / self.size
-        return at, plane.coordinates(self.parameters[: self.plane_size], at)
+        flat = plane.coordinates(self.parameters[: self.plane_size], at)
+        return flat, self._bent(flat)
+
+    def _bent(self, flat: FloatArray) -> FloatArray:
+        uv = flat.copy()
+        for d, w in self.warps.items():
+            uv[:, d] += w.terms(flat) @ self.parameters[w.first : w.first + w.size]
+        return uv
+
+    def _bend_slopes(self, flat: FloatArray) -> FloatArray:
+        """d (bent coordinates) / d (flat coordinates) [n, 2, 2]."""
+        out = np.tile(np.eye(2), (len(flat), 1, 1))
+        for d, w in self.warps.items():
+            out[:, d] += np.einsum("nks,k->ns", w.slopes(flat), self.parameters[w.first : w.first + w.size])
+        return out
+
+    def _flattened(self, uv: FloatArray) -> FloatArray:
+        """The inverse of the bend, by Newton steps (it is small)."""
+        flat = uv.copy()
+        good = np.all(np.isfinite(uv), axis=1)
+        for _ in range(12 if self.warps else 0):
+            miss = self._bent(flat[good]) - uv[good]
+            flat[good] -= np.linalg.solve(self._bend_slopes(flat[good]), miss[..., None])[..., 0]
+            if not miss.size or np.abs(miss).max() < 1e-13:
+                break
+        return flat
 
     def _pair(self, axis_ids: Sequence[str]) -> list[Scale]:
         for name in axis_ids:
@@ -129,13 +157,13 @@ class PanelMap:
         uv = np.empty_like(values)
         for k, s in enumerate(pair):
             uv[:, s.direction] = s.coordinate(values[:, k], self.parameters)
-        return plane.pixels(self.parameters[: self.plane_size], uv) * self.size + self.shift
+        return plane.pixels(self.parameters[: self.plane_size], self._flattened(uv)) * self.size + self.shift
 
     def pixel_size(self, xy: Any, axis_ids: Sequence[str]) -> FloatArray:
         """d value / d pixel [n, 2, 2]: rows are the two axes, columns x and y."""
-        _, uv = self._plane(xy)
-        _, by_uv = plane.pixel_derivatives(self.parameters[: self.plane_size], uv)
-        by_pixel = np.linalg.inv(by_uv) / self.size
+        flat, uv = self._plane(xy)
+        _, by_uv = plane.pixel_derivatives(self.parameters[: self.plane_size], flat)
+        by_pixel = self._bend_slopes(flat) @ np.linalg.inv(by_uv) / self.size
         out = np.empty((len(uv), 2, 2))
         for k, s in enumerate(self._pair(axis_ids)):
             c = uv[:, s.direction]
@@ -145,16 +173,21 @@ class PanelMap:
 
     def shared_basis(self, xy: Any, axis_ids: Sequence[str]) -> FloatArray:
         """d value / d parameters [n, 2, p] at fixed pixels; with ``parameter_covariance`` [p, p] this is JCGM 100 eq. 13."""
-        _, uv = self._plane(xy)
+        flat, uv = self._plane(xy)
         theta = self.parameters[: self.plane_size]
-        by_theta, by_uv = plane.pixel_derivatives(theta, uv)
+        by_theta, by_uv = plane.pixel_derivatives(theta, flat)
         # A fixed pixel: 0 = d pixel/d theta + d pixel/d uv . d uv/d theta.
         uv_by_theta = -np.linalg.solve(by_uv, by_theta)
         out = np.zeros((len(uv), 2, len(self.parameters)))
         for k, s in enumerate(self._pair(axis_ids)):
             c = uv[:, s.direction]
             slope, by_scale = s.level_derivatives(c, self.parameters)
-            by_scale[:, : self.plane_size] += slope[:, None] * uv_by_theta[:, s.direction]
+            warp = self.warps.get(s.direction)
+            if warp is None:
+                by_scale[:, : self.plane_size] += slope[:, None] * uv_by_theta[:, s.direction]
+            else:
+                # The plane is fixed where printed lines place the direction; the bend carries its uncertainty.
+                by_scale[:, warp.first : warp.first + warp.size] = slope[:, None] * warp.terms(flat)
             out[:, k] = s.value_slope(s.level(c, self.parameters))[:, None] * by_scale
         return out
 
@@ -176,11 +209,12 @@ class PanelMap:
     def panel_result(self) -> PanelResult:
         """The panel as the result format wants it, with a 9 x 9 map that covers the outline."""
         theta = self.parameters[: self.plane_size]
-        _, corners = self._plane(self.outline)
+        corners, _ = self._plane(self.outline)
         u, v = (np.linspace(corners[:, d].min(), corners[:, d].max(), MAP_SIDE) for d in (0, 1))
         uv = np.stack(np.meshgrid(u, v), -1).reshape(-1, 2)
         at = plane.pixels(theta, uv) * self.size + self.shift
-        values = {name: frozen(s.value(s.level(uv[:, s.direction], self.parameters))) for name, s in self.scales.items()}
+        bent = self._bent(uv)
+        values = {name: frozen(s.value(s.level(bent[:, s.direction], self.parameters))) for name, s in self.scales.items()}
         return PanelResult(
             id=self.id,
             outline=self.outline,

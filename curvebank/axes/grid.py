@@ -1,0 +1,232 @@
+"""Calibration from the printed grid: lines found on the sheet get their values from the marks, then the lines place the axes.
+
+Each line with a value is a row of linear equations for a low-order bend of the marks' plane (robust least squares, no
+intersections needed). The degree is chosen by leaving lines out. A direction with too few lines, with lines that do not sit on
+round values, or with marks that contradict them stays as the marks have it, and the report says why.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..records import FloatArray
+from . import plane
+from .layout import Layout
+from .lines import PLACES, measure
+from .solve import CLICK_SIGMA_PX, Solution
+from .warp import REACH, terms
+
+MATCH_SIGMA_PX = 1.5
+LEAST_PITCH_PX = 7.0
+FEWEST_LINES = 3
+SHORTEST_SHARE = 0.5
+"""A line counts where it covers this share of the panel across."""
+READINGS_A_LINE = 3.0
+"""A printed line is this many independent readings: its own waviness is common to long stretches."""
+LEAST_SIGMA_PX = 0.08
+WORST_RMS_PX = 0.6
+LEAST_LOG_ODDS = 8.0
+"""Chance that lines fall on some round step by accident: e^-8, with about twenty steps tried 1 in 150."""
+DEGREES = (1, 2, 3)
+LEAST_GAIN_PX = 0.06
+"""A higher degree must bring left-out lines closer by this much, and by three tenths."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Line:
+    """A printed line of one direction: base coordinates ``uv`` [n, 2], its middle ``c`` and its value's coordinate ``target``."""
+
+    uv: FloatArray
+    c: float
+    target: float
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Bend:
+    """The bend of one direction from its lines: ``coefficients`` and ``covariance`` in `warp.terms`, residual over the lines [px]."""
+
+    degree: int
+    coefficients: FloatArray
+    covariance: FloatArray
+    centre: FloatArray
+    half: FloatArray
+    lines: tuple[Line, ...]
+    rms_px: float
+    px: float
+
+    def at(self, uv: FloatArray) -> FloatArray:
+        return terms(np.clip((uv - self.centre) / self.half, -REACH, REACH), self.degree) @ self.coefficients
+
+
+def bend_of(d: int, layout: Layout, solution: Solution, printed: tuple, ink: np.ndarray) -> Bend | str:
+    """The bend of direction d (0: flow, 1: values), or the reason why the lines do not give one."""
+    at = (layout.at - layout.shift) / layout.size
+    marks_uv = plane.coordinates(solution.theta, at)
+    low, high = marks_uv.min(0), marks_uv.max(0)
+    centre, half = (low + high) / 2, np.maximum((high - low) / 2, 1e-9)
+    px = np.array([np.hypot(*solution.theta[2:4]), np.hypot(*solution.theta[4:6])]) * layout.size
+    found = _lines_along(d, layout, solution, printed, ink, centre, half, px)
+    if len(found) < FEWEST_LINES:
+        return f"{'no' if not found else 'only ' + str(len(found))} printed lines cross the panel"
+    name, slot = next((n, s) for n, s in layout.slots.items() if s.marks.direction == d and s.own is None and s.twin is None)
+    lines = _valued(found, slot.centre, slot.half, slot.marks.log, px[d], slot.marks.typed)
+    if len(lines) < FEWEST_LINES:
+        return "the printed lines do not sit on round values of the marks"
+    reach = max(line.c for line in lines) - min(line.c for line in lines)
+    if reach < 1.2 * half[d]:
+        return "the printed lines cover only a part of the panel"
+    rows = [i for i, pair in enumerate(layout.terms) if pair[d][0] == name]
+    marks = (marks_uv[rows], np.array([layout.terms[i][d][1] for i in rows]))
+    bend = _best_degree(d, lines, marks, centre, half, float(px[d]))
+    if bend is None:
+        return "the printed lines do not agree with each other"
+    miss = (marks[0][:, d] + bend.at(marks[0]) - marks[1]) * px[d]
+    if np.sqrt(np.mean(miss**2)) > 2.2 * CLICK_SIGMA_PX or np.abs(miss).max() > 4.5:
+        return f"the marks miss the printed lines by up to {np.abs(miss).max():.1f} px"
+    return bend
+
+
+def _lines_along(
+    d: int,
+    layout: Layout,
+    solution: Solution,
+    printed: tuple,
+    ink: np.ndarray,
+    centre: FloatArray,
+    half: FloatArray,
+    px: FloatArray,
+) -> list[tuple[FloatArray, float]]:
+    """Printed lines on which coordinate d stays: base coordinates inside the marked area and their middle."""
+    out: list[tuple[FloatArray, float]] = []
+    e = 1 - d
+    for line in printed:
+        uv = plane.coordinates(solution.theta, (line.points() - layout.shift) / layout.size)
+        if np.ptp(uv[:, d]) * px[d] > 0.25 * np.ptp(uv[:, e]) * px[e]:
+            continue
+        if abs(np.median(uv[:, d]) - centre[d]) > half[d] + 6 / px[d]:
+            continue
+        inside = np.abs(uv[:, e] - centre[e]) <= half[e] - 2 / px[e]
+        if inside.sum() < 4 or np.ptp(uv[inside, e]) < SHORTEST_SHARE * 2 * half[e]:
+            continue
+        points = measure(line.points()[inside], ink)
+        if len(points) < 4:
+            continue
+        uv = plane.coordinates(solution.theta, (points - layout.shift) / layout.size)
+        c = float(np.median(uv[:, d]))
+        if abs(c - centre[d]) <= half[d] + 4 / px[d]:
+            out.append((uv, c))
+    return sorted(out, key=lambda pair: pair[1])
+
+
+def _valued(found: list[tuple[FloatArray, float]], centre: float, half: float, log: bool, px: float, typed: FloatArray) -> list[Line]:
+    """Lines with the coordinate of the round value they stand for; lines between ticks are left out."""
+    c = np.array([pair[1] for pair in found])
+    level = centre + half * c
+    if log:
+        tick = _log_ticks(level)
+        gap = float(np.median(np.diff(np.unique(tick)))) if len(np.unique(tick)) > 1 else 0.0
+        if _odds((level - tick) / (half / px), gap * px / abs(half)).sum() < LEAST_LOG_ODDS:
+            return []
+    else:
+        per_px = half / px
+        best, tick = -np.inf, level
+        for step in _steps(typed, abs(half) * 2, abs(per_px) * LEAST_PITCH_PX):
+            off = (level - np.round(level / step) * step) / per_px
+            odds = _odds(off, step / abs(per_px))
+            if odds.sum() > best:
+                best, tick = float(odds.sum()), np.round(level / step) * step
+        if best < LEAST_LOG_ODDS:
+            return []
+    target = (tick - centre) / half
+    off = np.abs(c - target) * px
+    gap = np.min(np.abs(np.diff(np.unique(np.round(target, 9)))), initial=np.inf) * px
+    lines: dict[float, tuple[float, Line]] = {}
+    for k, (uv, middle) in enumerate(found):
+        if off[k] <= min(5.0, 0.3 * gap):
+            key = round(float(target[k]), 9)
+            if key not in lines or off[k] < lines[key][0]:
+                lines[key] = (off[k], Line(uv, middle, float(target[k])))
+    return [pair[1] for pair in lines.values()]
+
+
+def _odds(off_px: FloatArray, pitch_px: float) -> FloatArray:
+    """Log odds of each line: on a tick with a click-sized miss, against anywhere within the pitch."""
+    return np.log(0.95 * pitch_px / (MATCH_SIGMA_PX * 2.5066) * np.exp(-0.5 * (off_px / MATCH_SIGMA_PX) ** 2) + 0.05)
+
+
+def _steps(typed: FloatArray, span: float, least: float) -> list[float]:
+    """Grid steps to try: round numbers, and decimal parts of the marks' common step (8 m may be drawn as 20 mm)."""
+    common = 0.0
+    for value in typed:
+        a, b = abs(float(value)), common
+        while a > 1e-6 * span:
+            a, b = (b % a if b % a < a * (1 - 1e-9) else 0.0), a
+        common = b
+    round_steps = [
+        h * 10.0**p for p in range(int(np.floor(np.log10(span))) + 1, int(np.floor(np.log10(span))) - 4, -1) for h in (5.0, 2.5, 2.0, 1.0)
+    ]
+    parts = [common / n for n in (1, 2, 4, 5, 8, 10, 16, 20, 25, 40, 50, 80, 100, 200)]
+    return sorted({float(f"{s:.9g}") for s in (*round_steps, *parts) if least <= s <= span}, reverse=True)
+
+
+def _log_ticks(level: FloatArray) -> FloatArray:
+    whole = np.floor(level)
+    digits = np.log10(np.array([1.0, 1.5, 2, 2.5, 3, 4, 5, 6, 7, 8, 9, 10]))
+    return whole + digits[np.argmin(np.abs((level - whole)[:, None] - digits), axis=1)]
+
+
+def _best_degree(
+    d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float
+) -> Bend | None:
+    best: tuple[float, int] | None = None
+    for degree in DEGREES:
+        if len(lines) < degree + 2:
+            break
+        misses = []
+        for k in range(len(lines)):
+            rest = [*lines[:k], *lines[k + 1 :]]
+            a = _solve(d, rest, marks, centre, half, px, degree)[0]
+            left = lines[k]
+            miss = (left.uv[:, d] + terms((left.uv - centre) / half, degree) @ a - left.target) * px
+            misses.append(float(np.sqrt(np.mean(miss**2))))
+        # A line that is none (a table rule, a curve) must not decide: the worst tenth is left out, the ends are not.
+        score = float(np.sqrt(np.mean(np.sort(misses)[: max(len(misses) - len(misses) // 10, 1)] ** 2)))
+        if best is None or (score < 0.7 * best[0] and score < best[0] - LEAST_GAIN_PX):
+            best = (score, degree)
+    if best is None:
+        return None
+    degree = best[1]
+    a, rms, weight, information = _solve(d, lines, marks, centre, half, px, degree)
+    used = tuple(line for line, w in zip(lines, weight, strict=True) if w > 0.3)
+    if len(used) < max(FEWEST_LINES, 0.7 * len(lines)) or rms > WORST_RMS_PX:
+        return None
+    sigma = np.hypot(rms, LEAST_SIGMA_PX) / px
+    covariance = np.linalg.pinv(information, hermitian=True) * sigma**2 * (PLACES / READINGS_A_LINE)
+    return Bend(degree, a, covariance, centre, half, used, rms, px)
+
+
+def _solve(
+    d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float, degree: int
+) -> tuple[FloatArray, float, FloatArray, FloatArray]:
+    """Coefficients, rms over the lines kept [px], weight of each line, information for unit variance of a point."""
+    blocks = [terms((line.uv - centre) / half, degree) for line in lines]
+    misses = [line.target - line.uv[:, d] for line in lines]
+    mark_rows = terms((marks[0] - centre) / half, degree) * 0.1
+    mark_miss = (marks[1] - marks[0][:, d]) * 0.1
+    weight = np.ones(len(lines))
+    a = np.zeros(blocks[0].shape[1])
+    point = [np.ones(len(b)) for b in blocks]
+    for _ in range(8):
+        w = [np.sqrt(wk * pw) for pw, wk in zip(point, weight, strict=True)]
+        rows = np.concatenate([*(b * k[:, None] for b, k in zip(blocks, w, strict=True)), mark_rows])
+        y = np.concatenate([*(m * k for m, k in zip(misses, w, strict=True)), mark_miss])
+        a = np.linalg.lstsq(rows, y, rcond=1e-10)[0]
+        off = [np.abs(m - b @ a) * px for b, m in zip(blocks, misses, strict=True)]
+        size = np.array([np.sqrt(np.median(o**2)) * 1.4826 for o in off])
+        scale = max(float(np.median(size)), 0.1)
+        weight = np.maximum(1 - (size / (6 * scale)) ** 2, 0.0) ** 2
+        point = [np.maximum(1 - (o / (6 * scale)) ** 2, 0.0) ** 2 for o in off]
+    kept = weight > 0.3
+    rms = float(np.sqrt(np.mean(size[kept] ** 2))) if kept.any() else np.inf
+    information = sum((b.T * pw) @ b * wk for b, wk, pw in zip(blocks, weight, point, strict=True))
+    return a, rms, weight, information
