@@ -62,7 +62,7 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     for reach in (30.0, 14.0):
         axis, at = _smoothed(path, axis, clicks, grain)
         step = grain / 4
-        narrow = Pass(reach * max(unit, 0.7), step, grain, 12 if axis.length > 300 * unit and not closed else 6, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
+        narrow = Pass(reach * max(unit, 0.7), step, grain, 12 if axis.length > (700 if closed else 300) * unit else 6, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
         path, cost = _search(prepared, axis, at, clicks, narrow, max(grain / 3, 1.0), cap)
     axis, at = _smoothed(path, axis, clicks, grain)
     return Followed(axis, cost, at)
@@ -157,7 +157,9 @@ def _smoothed(path: Path, axis: Axis, clicks: FloatArray, grain: float) -> tuple
     if axis.closed:
         t, offset, trust = t[:-1], offset[:-1], trust[:-1]
     pieces = int(np.clip(len(t) // 2, 6 if axis.closed else 3, 40))
-    curve = smooth.fit(t, offset, trust, pieces=pieces, periodic=axis.closed, floor=0.25 * grain, correlation=2.0, cut=8.0)
+    # The blunt ends of a small loop rest on two or three nodes each: every node counts there.
+    count = 1.0 if axis.closed and axis.length < 350 * grain else 2.0
+    curve = smooth.fit(t, offset, trust, pieces=pieces, periodic=axis.closed, floor=0.25 * grain, correlation=count, cut=8.0)
     dense = axis.points + axis.normals * curve.value(axis.s / axis.length)
     if axis.closed:
         dense[-1] = dense[0]

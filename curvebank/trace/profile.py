@@ -250,7 +250,7 @@ def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray) -> 
     pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
     blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
     # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
-    reference, off = _reference(axis, _pieces(axis, unit) // 4)
+    reference, off = _reference(axis, _pieces(axis, unit) // 4, _shown(blocks, axis))
     whole = _with_clicks(blocks, axis, clicks, unit)
     whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
     fitted = _along(whole, axis, unit)
@@ -275,11 +275,22 @@ def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) ->
     )  # fmt: skip
 
 
-def _reference(axis: Axis, pieces: int) -> tuple[Axis, FloatArray]:
-    """A curve of few pieces along the axis, sample by sample, and the axis's distance from it at each sample."""
+def _shown(blocks: Blocks, axis: Axis) -> FloatArray:
+    """Weight of each axis sample: 1 where the line is shown by a run of good readings, 0 in a label gap."""
+    good = blocks.good.astype(float)
+    solid = np.convolve(good, np.ones(5), "same") >= 3
+    if (solid & blocks.good).mean() < 0.3:
+        solid = blocks.good | (np.convolve(good, np.ones(9), "same") >= 2)
+    if solid.mean() < 0.3:
+        return np.ones(len(axis.s))
+    return (np.interp(axis.s, blocks.s, solid.astype(float)) > 0.5).astype(float)
+
+
+def _reference(axis: Axis, pieces: int, shown: FloatArray) -> tuple[Axis, FloatArray]:
+    """A curve of few pieces along the axis where the line shows, bridging gaps by its curvature, and the axis's distance from it."""
     t = axis.s / axis.length
     thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
-    curve = smooth.fit(t[thin], axis.points[thin], pieces=max(pieces, 6 if axis.closed else 3), periodic=axis.closed, cut=0)
+    curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=max(pieces, 6 if axis.closed else 3), periodic=axis.closed, cut=0)
     points = curve.value(t)
     tangents = curve.slope(t)
     tangents = tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
