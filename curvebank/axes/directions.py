@@ -103,7 +103,7 @@ def check_values(axes: dict[str, AxisMarks], lined: dict[str, bool]) -> None:
                     )
 
 
-def check_advance(axes: dict[str, AxisMarks], oblique: FloatArray) -> None:
+def check_advance(axes: dict[str, AxisMarks], oblique: np.ndarray) -> None:
     """Marks of an axis must differ along it."""
     for a in axes.values():
         if np.ptp(a.at @ oblique[a.direction]) < LINED_UP_PX:

@@ -228,5 +228,5 @@ def _solve(
         point = [np.maximum(1 - (o / (6 * scale)) ** 2, 0.0) ** 2 for o in off]
     kept = weight > 0.3
     rms = float(np.sqrt(np.mean(size[kept] ** 2))) if kept.any() else np.inf
-    information = sum((b.T * pw) @ b * wk for b, wk, pw in zip(blocks, weight, point, strict=True))
+    information = np.sum([(b.T * pw) @ b * wk for b, wk, pw in zip(blocks, weight, point, strict=True)], axis=0)
     return a, rms, weight, information

@@ -77,7 +77,7 @@ def with_bends(
     return parameters, covariance, warps
 
 
-def _place_scale(bend: Bend, c: FloatArray, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+def _place_scale(bend: Bend, c: FloatArray, z: FloatArray) -> tuple[np.ndarray, np.ndarray]:
     """(alpha, beta) of a further axis and their covariance, from its marks snapped to the lines they stand on."""
     targets = np.array([line.target for line in bend.lines])
     near = targets[np.argmin(np.abs(c[:, None] - targets), axis=1)]

@@ -41,7 +41,7 @@ class Warp:
                 out[:, k, 1] = j * st[:, 0] ** i * st[:, 1] ** (j - 1)
         return out * (free / self.half)[:, None, :]
 
-    def _scaled(self, uv: FloatArray) -> tuple[FloatArray, FloatArray]:
+    def _scaled(self, uv: FloatArray) -> tuple[FloatArray, np.ndarray]:
         st = (uv - self.centre) / self.half
         return np.clip(st, -REACH, REACH), np.abs(st) <= REACH
 

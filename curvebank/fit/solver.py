@@ -77,7 +77,7 @@ class Polynomial:
     rss: float
     residual_sd: float
 
-    def value(self, x: FloatArray) -> FloatArray:
+    def value(self, x: FloatArray) -> np.ndarray:
         return np.polynomial.polynomial.polyval((np.asarray(x, dtype=np.float64) - self.mid) / self.half, self.scaled)
 
 
