@@ -1,6 +1,5 @@
 """``show``, ``export`` and ``verify``: what a bank holds, as text, as files, and whether it is whole."""
 
-import json
 import sys
 from pathlib import Path
 from typing import Any
@@ -143,11 +142,8 @@ def export(key: str, bank: Path | None, revision: int | None, form: str, out: Pa
 
     if form == "csv" and out is None:
         raise click.UsageError("csv makes two files: give their folder with --out DIR.")
-    doc = use_case.document(bank or default_bank(), key, revision)
-    if form == "json":
-        texts = {f"{doc['key']}.json": json.dumps(doc, ensure_ascii=False, indent=1, allow_nan=False) + "\n"}
-    else:
-        texts = use_case.tables(doc)
+    forms = ("json",) if form == "json" else ("csv-points", "csv-fits")
+    texts = use_case.files(use_case.document(bank or default_bank(), key, revision), *forms)
     if out is None:
         click.echo(next(iter(texts.values())), nl=False)
         return

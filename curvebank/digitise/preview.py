@@ -4,10 +4,11 @@ from typing import Any
 
 from .. import axes, trace
 from ..errors import CurvebankError
+from ..jsonable import clean
 from ..recipe import CurveModel, PanelModel, Recipe, validate_part
 from ..records import PageInfo
 from . import curves as curve_maker
-from .result import clean, curve_json, panel_json
+from .result import curve_json, panel_json
 from .run import clicks, pump_info
 from .threads import one_thread
 

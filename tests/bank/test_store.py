@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from curvebank import digitise, recipe
-from curvebank.bank import catalogue, pack
+from curvebank.bank import catalogue, pack, revision_view
 from curvebank.bank.reader import Bank
 from curvebank.bank.store import Store
 from curvebank.bank.verify import verify
@@ -81,7 +81,7 @@ def test_saving_a_sheet_again_replaces_its_own_curves_only(store):
     make.save(store, make.digitised([make.curve("N", "npshr", make.NPSHR)], sheet=make.SECOND_SHEET), sheet=make.SECOND_SHEET)
     make.save(store, make.digitised([make.curve("H-330", "head", make.HEAD_320, 330.0)]))
     assert ids(store, 3) == ["N", "H-330"]
-    assert len(catalogue.revision_detail(store.bank, make.KEY, 3)["sheets"]) == 2
+    assert len(revision_view.detail(store.bank, make.KEY, 3)["sheets"]) == 2
 
 
 def test_pages_of_one_file_are_sheets_of_their_own(store):
@@ -118,9 +118,11 @@ def test_failed_curves_are_named_not_stored(store):
     """They stand in the revision and in the saved event with code and message."""
     make.save(store)
     assert "H-300" not in ids(store, 1)
-    detail = catalogue.revision_detail(store.bank, make.KEY, 1)
+    detail = revision_view.detail(store.bank, make.KEY, 1)
     error = {"code": "off-ink", "message": "Click 2 is off the ink."}
-    assert detail["failed"] == [{"id": "H-300", "quantity": "head", "error": error, "sheet": 0}]
+    assert detail["failed"] == [
+        {"id": "H-300", "quantity": "head", "error": error, "sheet_sha256": detail["sheets"][0]["sha256"], "page": 1}
+    ]
     assert detail["events"][0]["more"]["failed"][0]["id"] == "H-300"
 
 
@@ -149,7 +151,7 @@ def test_head_per_stage_comes_as_total_head_and_is_stored_once(store):
     pump = store.pump(make.KEY)
     assert (pump.stages, pump.head(0.0, 320.0)) == (3, pytest.approx(60.0, rel=1e-6))
     assert pump.head(100.0, 320.0) == pytest.approx(42.0, rel=1e-6)
-    assert catalogue.revision_detail(store.bank, make.KEY, 1)["curves"][0]["head_is"] == "per stage"
+    assert revision_view.detail(store.bank, make.KEY, 1)["curves"][0]["head_is"] == "per stage"
 
 
 def test_traces_keep_at_most_200_points_with_both_ends(store):

@@ -1,5 +1,8 @@
-"""The catalogue over HTTP: lists, one pump, one revision, readings, duty points, events, settings."""
+"""The catalogue over HTTP: lists, one pump, one revision, readings, duty points, exports, events, settings."""
 
+import csv
+import io
+import json
 import uuid
 
 import numpy as np
@@ -206,6 +209,62 @@ class TestReadings:
 
     def test_no_duty_says_on_which_side(self, client, pump, is_problem):
         is_problem(client.get(f"{URL}/duty?static_head_m=90&friction_m_per_m3h2=0&diameter_mm=320"), 422, "no-duty")
+
+
+class TestExports:
+    """A revision as a file."""
+
+    def fetch(self, client, form):
+        answer = client.get(f"{URL}/export?format={form}")
+        assert answer.status_code == 200, answer.get_data(as_text=True)
+        return answer
+
+    @pytest.mark.parametrize(
+        ("form", "name", "media"),
+        [
+            ("csv-points", "LARK-WM-320-1-points.csv", "text/csv"),
+            ("csv-fits", "LARK-WM-320-1-fits.csv", "text/csv"),
+            ("json", "LARK-WM-320-1.json", "application/json"),
+        ],
+    )
+    def test_it_is_saved_under_a_name_that_tells_pump_and_revision(self, client, pump, form, name, media):
+        answer = self.fetch(client, form)
+        assert answer.headers["Content-Disposition"] == f'attachment; filename="{name}"' and answer.mimetype == media
+        if media == "text/csv":  # RFC 4180 section 3: charset and header are the parameters of text/csv
+            assert answer.mimetype_params == {"charset": "utf-8", "header": "present"}
+        assert answer.headers["X-Content-Type-Options"] == "nosniff" and answer.headers["Cache-Control"] == "no-store"
+
+    def test_points_are_the_revision_s_own(self, client, pump):
+        rows = list(csv.DictReader(io.StringIO(self.fetch(client, "csv-points").get_data(as_text=True))))
+        curves = client.get(URL).json["curves"]
+        assert [r["curve"] for r in rows] == [c["id"] for c in curves for _ in c["points"]]
+        read = [[float(r["flow_m3h"]), float(r["value"])] for r in rows]
+        assert read == [point for c in curves for point in c["points"]]
+        assert {(r["quantity"], r["unit"]) for r in rows} == {("head", "m"), ("efficiency", "1")}
+
+    def test_the_fits_alone_give_the_curve_of_the_paper(self, client, pump):
+        rows = {r["curve"]: r for r in csv.DictReader(io.StringIO(self.fetch(client, "csv-fits").get_data(as_text=True)))}
+        assert set(rows) == {"H-320", "H-298", "H-276", "E-320"}
+        for name, diameter in (("H-320", 320.0), ("H-276", 276.0)):
+            row = rows[name]
+            t, value = (50.0 - float(row["q_mid_m3h"])) / float(row["q_half_m3h"]), 0.0
+            for k in reversed(range(int(row["order"]) + 1)):
+                value = value * t + float(row[f"scaled_{k}"])
+            assert value == pytest.approx(head_of(50.0, diameter), abs=0.1)
+
+    def test_the_document_holds_all_of_it(self, client, pump):
+        doc = json.loads(self.fetch(client, "json").get_data())
+        seen = client.get(URL).json
+        assert doc["export"] == 1 and {name: doc[name] for name in seen if name != "sheets"} == {k: seen[k] for k in seen if k != "sheets"}
+        assert doc["sheets"][0]["sha256"] == pump["sheet_sha256"]
+
+    @pytest.mark.parametrize("query", ["", "?format=xlsx", "?format=csv"])
+    def test_a_form_that_is_not_known_is_refused(self, client, pump, is_problem, query):
+        is_problem(client.get(f"{URL}/export{query}"), 422, "validation")
+
+    def test_what_is_not_there_is_named(self, client, pump, is_problem):
+        is_problem(client.get("/api/pumps/LARK-WM-320/revisions/9/export?format=json"), 404, "not-found")
+        is_problem(client.get("/api/pumps/NOBODY-1/revisions/1/export?format=csv-fits"), 404, "not-found")
 
 
 class TestEvents:

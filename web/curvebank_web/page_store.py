@@ -176,20 +176,19 @@ class PageStore:
 
 def describe(info: PageInfo, dpi: float) -> dict[str, Any]:
     """PAGE of the API."""
-    return {
-        "sha256": info.sha256,
-        "page": info.page,
-        "pages": info.pages,
-        "width": info.width,
-        "height": info.height,
-        "dpi_x": info.dpi_x,
-        "dpi_y": info.dpi_y,
-        "media": info.media,
-        "turn": info.turn,
-        "dpi": dpi,
-        "tile_size": TILE,
-        "max_zoom": max_zoom(info.width, info.height),
-    }
+    return {**asdict(info), **_tiling(info.width, info.height, dpi)}
+
+
+def described(sheet: dict[str, Any]) -> dict[str, Any]:
+    """A sheet of a stored revision as PAGE, with what the revision knows of it; a source without a scan stays as it is."""
+    if sheet["sha256"] is None:
+        return sheet
+    drawn = sheet["dpi_x"] if sheet["media"] == "application/pdf" else None
+    return {**sheet, **_tiling(sheet["width"], sheet["height"], drawn or FIRST_DPI)}
+
+
+def _tiling(width: int, height: int, dpi: float) -> dict[str, Any]:
+    return {"dpi": dpi, "tile_size": TILE, "max_zoom": max_zoom(width, height)}
 
 
 def publish(scratch: Path, folder: Path) -> None:

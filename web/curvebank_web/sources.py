@@ -4,29 +4,31 @@ from contextlib import closing
 from pathlib import Path
 from typing import Any
 
-from curvebank.bank.connect import open_read
+from curvebank.bank import catalogue
+from curvebank.errors import NotFound
 
 from . import desk_file, desk_sheets
+from .bank_access import reading
 
 
 def from_bank(bank: Path, sha256: str) -> bytes | None:
     """The bytes of a sheet that a stored revision came from, or None."""
-    row = _bank_row(bank, "SELECT bytes FROM blob WHERE sha256 = ? AND kind = 'sheet'", sha256)
-    return row[0] if row else None
+    return _kept(catalogue.sheet_bytes, bank, sha256)
 
 
 def describe_in_bank(bank: Path, sha256: str) -> dict[str, Any] | None:
     """``{sha256, file_name, media, pages}`` of a stored sheet, or None."""
-    row = _bank_row(bank, "SELECT file_name, media, pages FROM sheet WHERE sha256 = ?", sha256)
-    return {"sha256": sha256, "file_name": row[0], "media": row[1], "pages": row[2]} if row else None
+    return _kept(catalogue.sheet_facts, bank, sha256)
 
 
-def _bank_row(bank: Path, sql: str, sha256: str) -> Any:
-    """One row of the bank's blob or sheet table, which are keyed by the 32 bytes of the digest."""
+def _kept(question: Any, bank: Path, sha256: str) -> Any:
     if not bank.exists():
         return None
-    with closing(open_read(bank)) as db:
-        return db.execute(sql, (bytes.fromhex(sha256),)).fetchone()
+    with reading(bank) as reader:
+        try:
+            return question(reader, sha256)
+        except NotFound:
+            return None
 
 
 def sheet_bytes(desk: Path, bank: Path, sha256: str) -> bytes | None:

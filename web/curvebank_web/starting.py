@@ -1,8 +1,12 @@
 """What a new draft begins with."""
 
+import json
 from typing import Any
 
-from . import catalogue, desk_sheets, sources
+from curvebank.bank import catalogue, revision_view
+from curvebank.errors import NotFound
+
+from . import desk_sheets, sources
 from .api.models import NewDraft
 from .bank_access import reading
 from .problems import Problem
@@ -41,13 +45,26 @@ def _from_sheet(body: NewDraft) -> dict[str, Any]:
 
 
 def _from_pump(body: NewDraft) -> tuple[dict[str, Any], str, Origin]:
-    from . import revisions
-
     assert body.from_pump is not None
     with reading(services().bank) as bank:
         key = bank.resolve(body.from_pump)[1]
-        number = body.revision or catalogue.history(bank, key)["revisions"][-1]["number"]
-        return revisions.recipe_of(bank, key, number, body.sheet_sha256), f"Took revision {number} of {key} back to the desk", (key, number)
+        number = body.revision or catalogue.pump_detail(bank, key)["revisions"][-1]["number"]
+        made_from = revision_view.recipes(bank, key, number)
+    doc = _recipe_of(made_from, body.sheet_sha256)
+    if doc is None:
+        raise NotFound(f"Revision {number} of {key} was not made from that sheet.", code="not-found")
+    return doc, f"Took revision {number} of {key} back to the desk", (key, number)
+
+
+def _recipe_of(made_from: list[dict[str, Any]], sheet_sha256: str | None) -> dict[str, Any] | None:
+    """The recipe document of the sheet named, else of the first; it names its sheet by SHA-256. None where no recipe is of that sheet."""
+    for source in made_from:
+        if sheet_sha256 is None or source["sheet_sha256"] == sheet_sha256:
+            doc: dict[str, Any] = json.loads(source["recipe"])
+            if source["sheet_sha256"]:
+                doc["sheet"] = {**doc.get("sheet", {}), "sha256": source["sheet_sha256"]}
+            return doc
+    return None
 
 
 def _from_doc(body: NewDraft) -> dict[str, Any]:

@@ -6,8 +6,8 @@ from pathlib import Path
 from typing import Any
 
 from curvebank import digitise, recipe, sheet
-from curvebank.digitise.result import clean
 from curvebank.errors import CurvebankError, SheetError
+from curvebank.jsonable import clean
 from curvebank.records import PageInfo
 
 from . import ghosts, prepared_cache, record_pack, sources

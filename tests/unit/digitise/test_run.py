@@ -224,15 +224,3 @@ def test_power_drawn_on_the_efficiency_axis(chart_png, chart_recipe):
     c = by_id(digitise.run(chart_recipe, chart_png))["E-320"]
     assert c.points[:, 1].max() == pytest.approx(0.78, rel=2e-3)
     assert "mixed-axis" in [n.code for n in c.warnings]
-
-
-def test_rounding_keeps_digits_at_any_size():
-    from curvebank.digitise.result import digits
-
-    assert digits([0.0, 123.4567891234, -9.87654321987e-7, 1e-320, 3e12]) == [
-        0.0,
-        123.456789,
-        -9.87654322e-7,
-        pytest.approx(0, abs=1e-300),
-        3e12,
-    ]

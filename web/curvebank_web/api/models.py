@@ -209,6 +209,12 @@ class DutyQuery(BaseModel):
     exponent: Annotated[float, Field(ge=0.5, le=3, allow_inf_nan=False)] = 2.0
 
 
+class ExportQuery(BaseModel):
+    """The form of a download: traced points or fits as a CSV table, or the whole revision as JSON."""
+
+    format: Literal["csv-points", "csv-fits", "json"]
+
+
 class NewEvent(Strict):
     """Who does what to a revision, and why; ``finding`` is the key of the finding that is waived."""
 

@@ -1,17 +1,18 @@
-"""Pumps: the catalogue, one pump's revisions, readings, duty points, events.
-
-``revisions`` is imported where it is used: it brings the engine along, which the first page need not wait for.
-"""
+"""Pumps: the catalogue, one pump's revisions, readings, duty points, exports, events."""
 
 from typing import Any
 
+from flask import Response
 from flask_openapi import APIBlueprint, Tag
 
-from .. import catalogue
+from curvebank.bank import catalogue, revision_view
+from curvebank.desk import export as exports
+
 from ..bank_access import reading, writing
+from ..page_store import described
 from ..problems import Problem
 from ..services import services
-from .models import DutyQuery, NewEvent, PumpPath, PumpsQuery, RevisionPath, ValuesQuery
+from .models import DutyQuery, ExportQuery, NewEvent, PumpPath, PumpsQuery, RevisionPath, ValuesQuery
 
 blueprint = APIBlueprint("pumps", __name__, url_prefix="/api/pumps", abp_tags=[Tag(name="pumps")])
 
@@ -20,37 +21,34 @@ blueprint = APIBlueprint("pumps", __name__, url_prefix="/api/pumps", abp_tags=[T
 def listing(query: PumpsQuery) -> dict[str, Any]:
     """Pumps by key, a page at a time; ``next`` is the cursor of the following page."""
     with reading(services().bank) as bank:
-        return catalogue.listing(bank, q=query.q, state=query.state, after=query.cursor, limit=query.limit)
+        return catalogue.list_pumps(bank, q=query.q, state=query.state, cursor=query.cursor, limit=query.limit)
 
 
 @blueprint.get("/<key>")
 def pump(path: PumpPath) -> dict[str, Any]:
     """One pump: its revisions and all that happened to them."""
     with reading(services().bank) as bank:
-        return catalogue.history(bank, path.key)
+        return catalogue.pump_detail(bank, path.key)
 
 
 @blueprint.get("/<key>/revisions/<int:number>")
 def revision(path: RevisionPath) -> dict[str, Any]:
     """One revision with its curves, findings and sheets."""
-    from .. import revisions
-
     with reading(services().bank) as bank:
-        return revisions.detail(bank, path.key, path.number)
+        found = revision_view.detail(bank, path.key, path.number)
+    return {**found, "sheets": [described(sheet) for sheet in found["sheets"]]}
 
 
 @blueprint.get("/<key>/revisions/<int:number>/values")
 def values(path: RevisionPath, query: ValuesQuery) -> dict[str, Any]:
     """A quantity at many flows, with both uncertainties."""
-    from .. import revisions
-
     with reading(services().bank) as bank:
-        return revisions.values(
+        return revision_view.values(
             bank,
             path.key,
             path.number,
-            quantity=query.quantity,
-            flow_m3h=query.flows,
+            query.quantity,
+            query.flows,
             diameter_mm=query.diameter_mm,
             speed_rpm=query.speed_rpm,
             outside=query.outside,
@@ -61,9 +59,18 @@ def values(path: RevisionPath, query: ValuesQuery) -> dict[str, Any]:
 def duty(path: RevisionPath, query: DutyQuery) -> dict[str, Any]:
     """Where the pump meets a system H = static + friction x Q^exponent."""
     with reading(services().bank) as bank:
-        pump = catalogue.open_pump(bank, path.key, path.number)
-        found = pump.duty(query.static_head_m, query.friction_m_per_m3h2, query.diameter_mm, query.speed_rpm, exponent=query.exponent)
-        return {"duties": [{**d._asdict(), "cautions": list(d.cautions)} for d in found]}
+        return revision_view.duty(bank, path.key, path.number, **query.model_dump())
+
+
+@blueprint.get("/<key>/revisions/<int:number>/export")
+def export(path: RevisionPath, query: ExportQuery) -> Response:
+    """A revision as a file: its traced points or its fits as CSV (canonical units, named in every row), or all of it as JSON."""
+    doc = exports.document(services().bank, path.key, path.number)
+    media = "application/json" if query.format == "json" else "text/csv; charset=utf-8; header=present"
+    response = Response(exports.text(doc, query.format), content_type=media)
+    name = f"{doc['key']}-{doc['number']}{exports.FORMS[query.format]}"
+    response.headers["Content-Disposition"] = f'attachment; filename="{name}"'  # a key is capitals, digits and hyphens
+    return response
 
 
 @blueprint.post("/<key>/revisions/<int:number>/events")
@@ -73,7 +80,7 @@ def event(path: RevisionPath, body: NewEvent) -> tuple[dict[str, Any], int]:
         raise Problem(
             422, "validation", "The request does not fit", "A waiver names its finding; other events have none.", path="$.finding"
         )
-    with writing(services().bank) as bank:
-        seq = bank.event(path.key, path.number, body.kind, who=body.who, why=body.why, finding=body.finding)
-        state = catalogue.open_pump(bank, path.key, path.number).state
+    with writing(services().bank) as store:
+        seq = store.event(path.key, path.number, body.kind, who=body.who, why=body.why, finding=body.finding)
+        state = catalogue.pinned(store.bank, path.key, path.number).state
     return {"seq": seq, "state": state}, 201
