@@ -7,7 +7,7 @@ from flask_openapi import APIBlueprint, Tag
 
 from curvebank.errors import SheetError
 
-from .. import desk_drafts, documents, running, saving
+from .. import desk_drafts, desk_results, documents, running, saving
 from ..jobs import Job
 from ..problems import Problem
 from ..services import desk_db, services
@@ -22,6 +22,7 @@ def full(draft_id: str) -> dict[str, Any]:
     """DRAFT of the API: the draft and the page it works on (null where that cannot be shown)."""
     draft = desk_drafts.read(desk_db(), draft_id)
     key = documents.page_key(draft["doc"], draft["sheet_sha256"])
+    draft["result_step"] = desk_results.nearest(desk_db(), draft_id, draft["step"])
     draft["page"] = None
     if key is not None:
         try:

@@ -24,6 +24,7 @@ export class Session {
   constructor(draft, { onChange, onNews }) {
     this.id = draft.id;
     this.page = draft.page;
+    this.resultStep = draft.result_step ?? null;
     this.onChange = onChange;
     this.onNews = onNews;
     const newest = (draft.steps ?? []).find((s) => s.step === draft.step);

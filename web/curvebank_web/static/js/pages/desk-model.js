@@ -2,7 +2,6 @@
 import * as api from "../net/api.js";
 import { follow } from "../net/jobs.js";
 import { Previews } from "../net/previews.js";
-import { storage } from "../net/storage.js";
 import { axisIds, panelMap } from "../geometry/panelmap.js";
 import { desk as deskPart, recipeOf } from "../state/doc.js";
 import { calibrated, liveFindings, panelCurves, progress, STEPS } from "../state/derive.js";
@@ -105,17 +104,18 @@ export class Desk {
     this.previews.want(doc, this.openCurve, panel?.id);
     const ids = panel ? axisIds(panel) : { flow: [], value: [] };
     this.axes = [];
+    this.items = panelCurves(doc, panel, this.curveResult);
     if (panel) {
       const outline = this.outlineOf(panel);
       for (const id of ids.value) {
         const map = this.map(panel, ids.flow[0], id);
         if (!map || !outline) continue;
-        const ext = extents(map, outline, (panel.axes[ids.flow[0]].marks ?? []).map((m) => m.value), (panel.axes[id].marks ?? []).map((m) => m.value));
+        const lines = panel.outline ? [] : this.items.filter((i) => i.curve.y === id).flatMap((i) => i.points);
+        const ext = extents(map, panel.outline ?? markBox(panel) ?? outline, (panel.axes[ids.flow[0]].marks ?? []).map((m) => m.value), (panel.axes[id].marks ?? []).map((m) => m.value), lines);
         if ([...ext.flow, ...ext.value].every(Number.isFinite) && ext.flow[1] > ext.flow[0] && ext.value[1] > ext.value[0]) this.axes.push({ id, axis: panel.axes[id], map, ext });
       }
       this.flowAxis = panel.axes[ids.flow[0]] ?? null;
     }
-    this.items = panelCurves(doc, panel, this.curveResult);
     for (const item of this.items) {
       item.stale = Boolean(item.result && panel && this.previews.curve(panel, item.curve) !== item.result);
       if (this.step === "fit") addFit(item);
@@ -151,6 +151,15 @@ export class Desk {
     const pump = this.doc.pump ?? {};
     const names = [!pump.maker && "the maker", !pump.model && "the model"].filter(Boolean);
     return names.length ? names.join(" and ") : null;
+  }
+
+  /** A scale that was named but not marked, which the check could not use: {panel, axis, quantity}, or null. */
+  unmarked() {
+    const panels = this.doc.panels ?? [];
+    for (const [i, panel] of panels.entries()) {
+      for (const [axis, a] of Object.entries(panel.axes)) if ((a.marks ?? []).length < 2) return { panel: panel.id, number: i + 1, axis, quantity: a.quantity };
+    }
+    return null;
   }
 
   async startRun() {
@@ -192,17 +201,11 @@ export class Desk {
     const doc = this.session.doc;
     this.run = { ...answer, doc, recipe, findings: answer.result.findings ?? [] };
     this.previews.learn(doc, answer.result);
-    this.#remember();
     this.hooks.invalidate("doc");
   }
 
-  /** The browser remembers at which steps this draft was checked, so that it only asks for results that are there. */
-  #remember() {
-    storage.setItem(`curvebank.checked.${this.session.id}`, String(this.run.step));
-  }
-
   async loadResult() {
-    const step = Number(storage.getItem(`curvebank.checked.${this.session.id}`) ?? 0);
+    const step = this.session.resultStep;
     if (!step) return;
     try {
       const answer = await api.result(this.session.id, step);
@@ -210,7 +213,7 @@ export class Desk {
       if (answer.step === this.session.step) this.previews.learn(this.session.doc, answer.result);
       this.hooks.invalidate("doc");
     } catch {
-      storage.removeItem(`curvebank.checked.${this.session.id}`);
+      // The check can be made again; what the draft holds does not depend on it.
     }
   }
 }

@@ -26,7 +26,7 @@ export class DeskTools {
     this.navigate = new Navigate(paper, at, { ...view, spaceHeld: () => this.space, stopOthers: () => this.cancel(), wheel: (e) => this.#wheel(e) }).enable();
     this.grab = new Grab(paper, at, { find: (p) => this.find(p), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: () => this.drop(), chosen: (hd) => this.chosen(hd), back: () => this.back() }).enable();
     this.box = new Box(paper, at, { show: (o) => { desk.box = o; invalidate("paper"); }, done: (o) => this.addPanel(o) });
-    this.place = new Place(paper, at, { ...view, place: (p, e) => this.click(p, e) });
+    this.place = new Place(paper, at, { ...view, place: (p, e) => this.click(p, e), magnify: (screen) => this.#magnify(screen), aim: (screen) => this.#aim(screen) });
     this.edge = new Straightedge([paper, $("replot")], { moved: (m) => this.moved(m), left: () => this.left() }).enable();
     this.plotNavigate = new Navigate($("replot"), (e) => this.#plotAt(e), { view: () => desk.view, setView: view.setView, spaceHeld: () => true, stopOthers: () => {} }).enable();
     this.stepped(desk.step);
@@ -69,6 +69,25 @@ export class DeskTools {
     const side = innerWidth < 1100 ? 240 : 300;
     desk.loupe = { at, side, times, view: zoomAt(desk.view, times, at, { max: 400 }) };
     this.invalidate("loupe");
+  }
+
+  /** Touch: magnify round a held finger, or stop; gives the gearing. */
+  #magnify(screen) {
+    if (!screen || !["marks", "curves"].includes(this.desk.step)) {
+      this.desk.hand = null;
+      this.closeLoupe();
+      return 0;
+    }
+    this.openLoupe(screen);
+    return this.desk.loupe.times;
+  }
+
+  /** Touch: the point a geared finger aims at, in the plain view; the square follows it. */
+  #aim(screen) {
+    this.desk.hand = screen;
+    this.openLoupe(screen, this.desk.loupe?.times);
+    this.invalidate("cursor");
+    return { screen, sheet: toSheet(this.desk.view, screen) };
   }
 
   closeLoupe() {

@@ -114,12 +114,12 @@ function abilities(desk, draw, tools, invalidate) {
     enter() {
       if (desk.step === "curves" && desk.openCurve) return desk.keepCurve();
       if (desk.step === "curves" && desk.selected) return desk.select(null);
-      return $("slip").querySelector(".btn.main")?.click();
+      return desk.step === "submit" ? undefined : $("slip").querySelector(".btn.main")?.click();
     },
     undoOrRedo(which) { const said = desk.session[which](); desk.say(said || `Nothing to ${which}.`); redo("all"); },
     async checkAndGo(step) {
       desk.go(step);
-      if (!desk.run?.fresh && !desk.missing()) await desk.startRun();
+      if (!desk.run?.fresh && !desk.missing() && !desk.unmarked()) await desk.startRun();
       redo("all");
     },
     chooseFinding(number) {
@@ -144,7 +144,10 @@ function abilities(desk, draw, tools, invalidate) {
         const axis = desk.doc.panels.find((p) => p.id === f.suspect.panel)?.axes[f.suspect.axis];
         if (axis) {
           const v = words.niceFit(axis, f.suspect);
-          ways.unshift([`Change it to ${plain(v)}`, () => desk.act({ type: "mark/set", panel: f.suspect.panel, axis: f.suspect.axis, index: f.suspect.index, change: { value: v } })]);
+          const other = axis.marks[f.suspect.swapped_with];
+          const set = (index, value) => desk.act({ type: "mark/set", panel: f.suspect.panel, axis: f.suspect.axis, index, change: { value } });
+          if (other) ways.unshift(["Exchange them", () => { const mine = axis.marks[f.suspect.index].value; set(f.suspect.index, other.value); set(f.suspect.swapped_with, mine); }]);
+          else ways.unshift([`Change it to ${plain(v)}`, () => desk.act({ type: "mark/set", panel: f.suspect.panel, axis: f.suspect.axis, index: f.suspect.index, change: { value: v } })]);
         }
       }
       const curve = f.subject?.startsWith("curve:") && (desk.doc.curves ?? []).find((c) => c.id === f.subject.slice(6));
@@ -159,7 +162,7 @@ function abilities(desk, draw, tools, invalidate) {
     fillForm(change) { Object.assign(desk.form, change); if (change.who !== undefined) keepSetting("who", change.who); redo("slip"); },
     async save(release) {
       const { who, why } = desk.form;
-      if (!who || !why || desk.saving || desk.missing()) return;
+      if (!who || !why || desk.saving || desk.missing() || desk.unmarked()) return;
       desk.saving = true;
       redo("slip");
       desk.saveKey ??= `${draftId}-${crypto.randomUUID?.() ?? Date.now()}`;

@@ -100,7 +100,7 @@ const shownNow = new WeakMap();
  * apart that read alike but speak of another mark or curve. Focus, caret and half-typed text survive a change around them.
  */
 export function fillSlip(slip, { sentence, does = [], focus = null, key = "" }) {
-  const parts = [h("div", { class: "sentence" }, sentence), h("div", { class: "does" }, does)];
+  const parts = [h("div", { class: "sentence" }, sentence, h("div", { class: "does" }, does))];
   const written = key + parts.map((p) => p.outerHTML + [...p.querySelectorAll("input, select")].map((i) => i.value).join("|")).join("");
   if (shownNow.get(slip) === written && !focus) return;
   shownNow.set(slip, written);

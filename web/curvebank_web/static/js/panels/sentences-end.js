@@ -20,7 +20,7 @@ export function nameBlanks(desk) {
 }
 
 function needsRun(desk, next) {
-  if (desk.run?.fresh) return null;
+  if (desk.run?.fresh && !desk.unmarked()) return null;
   if (desk.missing() && (desk.doc.curves ?? []).length) {
     return {
       sentence: [t("The check needs a name: this is the pump"), nameBlanks(desk), stop()],
@@ -28,6 +28,13 @@ function needsRun(desk, next) {
     };
   }
   const none = !(desk.doc.curves ?? []).length;
+  const bare = desk.unmarked();
+  if (bare && !none) {
+    return {
+      sentence: [t(`The ${QUANTITY_WORDS[bare.quantity]} scale of panel ${bare.number} has no two marks yet. Mark it, or take it away in the panel's sentence.`)],
+      does: [button("Go to the panel", { quiet: true, onClick: () => { desk.choosePanel(bare.panel); desk.go("panel"); } }), button("Go to the marks", { main: true, onClick: () => { desk.choosePanel(bare.panel); desk.go("marks"); } })],
+    };
+  }
   return {
     sentence: [t(none ? "There is no curve to check yet." : desk.run ? "The curves have changed since the last check." : "The curves have not been checked yet.")],
     does: [none ? button("Go to the curves", { main: true, onClick: () => desk.go("curves") }) : button(desk.run ? "Check again" : "Check the curves", { main: true, onClick: () => desk.checkAndGo(next) })],
@@ -84,7 +91,7 @@ export function submitSentence(desk) {
       does: [h("a", { class: "btn main", href: desk.saved.url, id: "pump-link" }, "Open the pump's page")],
     };
   }
-  if (!(desk.doc.curves ?? []).length) return needsRun(desk, "submit");
+  if (!(desk.doc.curves ?? []).length || desk.unmarked()) return needsRun(desk, "submit");
   const pump = desk.doc.pump ?? {};
   const setPump = (change) => desk.act({ type: "pump/set", change });
   const form = desk.form;

@@ -116,7 +116,8 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
       if (!axis) continue;
       const index = s.mark ?? s.mark_index ?? s.index;
       const mark = axis.marks[index];
-      out.push(place("error", words.suspect(axis, s), { where: { panel: panel.id, axis: s.axis, mark: index, at: mark?.at }, suspect: { ...s, index, panel: panel.id }, subject: `axis:${panel.id}/${s.axis}` }));
+      if (Number.isInteger(s.swapped_with) && s.swapped_with < index) continue;
+      out.push(place(s.sure === false ? "warning" : "error", words.suspect(axis, s), { where: { panel: panel.id, axis: s.axis, mark: index, at: mark?.at }, suspect: { ...s, index, panel: panel.id }, subject: `axis:${panel.id}/${s.axis}` }));
     }
   }
   const open = deskPart(doc).curve;

@@ -112,7 +112,7 @@ export function drawChart(svg, chart) {
     g.append(s("text", { class: `${l.line.small ? "note" : "endlabel"} halo t-${l.line.labelTone ?? l.line.tone ?? "ink"}`, x: l.x, y: l.y }, l.line.label));
     if (l.line.arrow) {
       const ax = l.x + l.w - 20;
-      g.append(s("path", { d: `M${ax} ${l.y - 4}h16m-5 -4l5 4l-5 4`, class: `k-${l.line.tone ?? "ink"}`, "stroke-width": 1.3 }));
+      g.append(s("path", { d: `M${ax} ${l.y - 4}h16m-5 -4l5 4l-5 4`, class: `k-${l.line.labelTone ?? l.line.tone ?? "ink"}`, "stroke-width": 1.3 }));
     }
     svg.append(g);
   }

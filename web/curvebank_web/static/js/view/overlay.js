@@ -147,7 +147,7 @@ export function drawOverlay(svg, view, scene) {
   drawPlaces(svg, scene.places, (p) => toScreen(view, p));
 }
 
-/** Marks of the document as the overlay wants them; residual as a sheet vector. */
+/** Marks of the document as the overlay wants them; residual: the sheet vector from the mark to where its typed value belongs. */
 export function sceneMarks(doc, panelResultOf, maps, chosen) {
   const out = [];
   for (const panel of doc.panels ?? []) {
@@ -160,8 +160,9 @@ export function sceneMarks(doc, panelResultOf, maps, chosen) {
         const r = answer?.mark_residuals?.[axis]?.[index];
         let residual = null;
         if (typeof r === "number" && map) {
-          const along = flow ? map.turnAt(m.at) : map.turnAt(m.at) - Math.PI / 2;
-          residual = [r * Math.cos(along), r * Math.sin(along)];
+          const read = map.toValues(m.at);
+          const belongs = map.toPixel(flow ? [m.value, read[1]] : [read[0], m.value]);
+          if (belongs.every(Number.isFinite)) residual = [belongs[0] - m.at[0], belongs[1] - m.at[1]];
         }
         out.push({ panel: panel.id, axis, index, at: m.at, flow, text: plain(m.value), residual, chosen: chosen && chosen.panel === panel.id && chosen.axis === axis && chosen.index === index });
       });

@@ -11,9 +11,9 @@ export const EDGE = { left: 44, right: 46, top: 14, bottom: 44 };
 
 const clampRange = (a, b, lo, hi) => [Math.max(Math.min(a, b), lo), Math.min(Math.max(a, b), hi)];
 
-/** Values at the panel's outline for one map: [lo, hi] of flow and of value, rounded to marks that lie within 1.5 % of an end. */
-export function extents(map, outline, flowMarks, valueMarks) {
-  const at = outline.map((p) => map.toValues(p)).filter((v) => v.every(Number.isFinite));
+/** Values at the panel's outline for one map: [lo, hi] of flow and of value, widened by `lines` and rounded to marks that lie within 3 % of an end. */
+export function extents(map, outline, flowMarks, valueMarks, lines = []) {
+  const at = [...outline.map((p) => map.toValues(p)), ...lines].filter((v) => v.every(Number.isFinite));
   const tidy = (values, marks) => {
     let [lo, hi] = [Math.min(...values), Math.max(...values)];
     const span = hi - lo;
