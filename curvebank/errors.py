@@ -87,6 +87,12 @@ class OutsideDomain(CurvebankError, ValueError):
     code = "outside-domain"
 
 
+class NumberError(CurvebankError, TypeError):
+    """Something that is no number where one belongs: text, None, a truth value. Nothing is converted in silence."""
+
+    code = "not-a-number"
+
+
 class Cancelled(CurvebankError):
     """A progress callback asked to stop. Library code never swallows it."""
 

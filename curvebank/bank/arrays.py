@@ -5,8 +5,9 @@ from typing import Any
 
 import numpy as np
 
-from ..errors import ExtrapolationWarning, LawError, OutsideDomain
+from ..errors import ExtrapolationWarning, LawError, NumberError, OutsideDomain
 from ..laws import family
+from .quantity import no_number, number
 
 MANY_SPEEDS = 16
 """From so many distinct speeds on, the speed laws are applied to the array instead of making a reading for each."""
@@ -16,21 +17,21 @@ def read_arrays(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: st
     """Values (or uncertainties, with ``of``) of a quantity at arrays of flow, diameter and speed.
 
     Returns a float64 array of the broadcast shape, or a float where no input is an array (a Decimal or a float32 is a plain number too).
-    NaN flows give NaN with ``outside="nan"`` and an error otherwise.
+    NaN flows give NaN with ``outside="nan"`` and an error otherwise; what holds no numbers is a `NumberError`.
     """
     out = _read(quantity, flow, diameter, speed, outside, of)
     return out if out.ndim or any(isinstance(x, np.ndarray) for x in (flow, diameter, speed)) else float(out)
 
 
 def _read(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of: str | None) -> np.ndarray:
-    flows = np.asarray(flow, dtype=np.float64)
+    flows = _numbers(flow, "flow_m3h")
     many = [x for x in (diameter, speed) if x is not None and np.ndim(x) > 0]
     if not many:
-        d = None if diameter is None else float(diameter)
-        n = None if speed is None else float(speed)
+        d = None if diameter is None else number(diameter, "diameter_mm")
+        n = None if speed is None else number(speed, "speed_rpm")
         return _group(quantity, flows, d, n, outside, of)
-    diameters, of_diameter = _levels(diameter, "diameter", "mm")
-    speeds, of_speed = _levels(speed, "speed", "1/min")
+    diameters, of_diameter = _levels(diameter, "diameter", "mm", "diameter_mm")
+    speeds, of_speed = _levels(speed, "speed", "1/min", "speed_rpm")
     try:
         flows, of_diameter, of_speed = np.broadcast_arrays(flows, of_diameter, of_speed)
     except ValueError as error:
@@ -50,11 +51,24 @@ def _read(quantity: Any, flow: Any, diameter: Any, speed: Any, outside: str, of:
     return out.reshape(flows.shape)
 
 
-def _levels(values: Any, what: str, unit: str) -> tuple[np.ndarray, np.ndarray]:
+def _numbers(values: Any, name: str) -> np.ndarray:
+    """A float64 array of numbers of any type. Text is not read as numbers, and truth values are not 0 and 1."""
+    try:
+        a = np.asarray(values)
+    except ValueError as error:
+        raise LawError(f"{name} is not an even table of numbers ({error}).") from None
+    if a.dtype.kind in "fiu":
+        return a.astype(np.float64, copy=False)
+    if a.dtype.kind == "O":
+        return np.array([number(v, name) for v in a.flat], dtype=np.float64).reshape(a.shape)
+    raise NumberError(no_number(values, name))
+
+
+def _levels(values: Any, what: str, unit: str, name: str) -> tuple[np.ndarray, np.ndarray]:
     """Distinct values and, in the shape of the input, which of them each one is."""
     if values is None:
         return np.array([np.nan]), np.zeros((), dtype=np.intp)
-    a = np.asarray(values, dtype=np.float64)
+    a = _numbers(values, name)
     if not np.isfinite(a).all() or (a <= 0).any():
         raise LawError(f"A {what} in the array is not a number above 0 {unit}.")
     distinct, which = np.unique(a, return_inverse=True)

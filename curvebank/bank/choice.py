@@ -8,6 +8,7 @@ from typing import Any
 from ..errors import CurvebankError, LawError, OutsideDomain
 from . import cautions
 from .duty import Duty, bisect, known
+from .quantity import number
 
 Trim = namedtuple("Trim", "diameter_mm methods cautions")
 """``diameter_mm`` meets the duty by the bank's own read rule; ``methods`` holds each method's answer [mm], for its spread."""
@@ -147,7 +148,7 @@ def trim_for(pump: Any, flow_m3h: float, head_m: float, speed_rpm: float | None 
     LawError
         A flow or head that cannot be.
     """
-    flow, wanted = float(flow_m3h), float(head_m)
+    flow, wanted = number(flow_m3h, "flow_m3h"), number(head_m, "head_m")
     if not (math.isfinite(flow) and flow >= 0 and math.isfinite(wanted) and wanted > 0):
         raise LawError(f"A duty of {flow_m3h} m³/h at {head_m} m is not possible. Flow is 0 or more, head above 0.")
     head = pump.head

@@ -122,7 +122,7 @@ def closure(pump: Any, flow_m3h: Any, diameter_mm: Any = None, speed_rpm: Any = 
     if missing:
         raise OutsideDomain(f"{pump.key} has no traced {' and no traced '.join(missing)}, so nothing can be compared.", code="no-curve")
     where = (flow_m3h, diameter_mm, speed_rpm)
-    hydraulic = KW_PER * pump.density_kgm3 * flow_m3h * pump.head(*where)
+    hydraulic = pump.head(*where) * flow_m3h * (KW_PER * pump.density_kgm3)
     return pump.power(*where) * pump.efficiency(*where) / hydraulic - 1.0
 
 

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from typing import Any
 
 from ..errors import CurvebankError, LawError, OutsideDomain
+from .quantity import number
 
 Duty = namedtuple("Duty", "flow_m3h head_m efficiency power_kw npshr_m stable cautions")
 """One duty point. What is not known is None; ``stable``: the system rises faster than the pump there (None where no system is meant)."""
@@ -105,7 +106,8 @@ def duties(
     """
     from .cautions import at_duty
 
-    static, friction, power = float(static_head_m), float(friction_m_per_m3h2), float(exponent)
+    static, friction = number(static_head_m, "static_head_m"), number(friction_m_per_m3h2, "friction_m_per_m3h2")
+    power = number(exponent, "exponent")
     if not (math.isfinite(static) and math.isfinite(friction) and friction >= 0):
         raise LawError(
             f"A system of {static_head_m} m static head and friction {friction_m_per_m3h2} is not possible: friction is 0 or more."

@@ -2,7 +2,7 @@
 
 from collections import namedtuple
 
-from ..errors import BankError, ExtrapolationWarning, LawError, OutsideDomain
+from ..errors import BankError, ExtrapolationWarning, LawError, NumberError, OutsideDomain
 from ..laws import family
 
 Domain = namedtuple("Domain", "lo_m3h hi_m3h")
@@ -24,8 +24,32 @@ CACHE = 4096
 
 
 def plain(value):
-    """True for a plain number (numpy's float64 counts, it is a float)."""
-    return isinstance(value, (float, int))
+    """True for a plain number (numpy's float64 counts, it is a float; True and False do not)."""
+    return isinstance(value, (float, int)) and not isinstance(value, bool)
+
+
+def number(value, name):
+    """A float of anything that is one number: int, float, Decimal, Fraction, a scalar of numpy.
+
+    Raises
+    ------
+    NumberError
+        Text, None, a truth value, or anything else that is no number; ``name`` is the argument that the message names.
+    """
+    kind = getattr(getattr(value, "dtype", None), "kind", "f")
+    if isinstance(value, (str, bytes, bytearray, bool)) or kind not in "fiuO":
+        raise NumberError(no_number(value, name))
+    try:
+        return float(value)
+    except (TypeError, ValueError):
+        raise NumberError(no_number(value, name)) from None
+
+
+def no_number(value, name):
+    """The sentence about an argument that is no number."""
+    shown = repr(value)
+    shown = shown if len(shown) <= 40 else shown[:39] + "…"
+    return f"{name} is {shown} ({type(value).__name__}), which is no number. Give a number or an array of numbers, such as 150.0."
 
 
 class Quantity:
@@ -66,8 +90,10 @@ class Quantity:
         ------
         OutsideDomain
             Beyond what was traced; the message names the domain.
+        NumberError
+            Text, None, truth values: nothing is converted in silence.
         """
-        if isinstance(flow_m3h, (float, int)):
+        if isinstance(flow_m3h, float) or type(flow_m3h) is int:
             try:
                 reading = self._plans[diameter_mm, speed_rpm]
             except (KeyError, TypeError):
@@ -130,7 +156,7 @@ class Quantity:
 
     def _pick_diameter(self, diameter_mm):
         if diameter_mm is not None:
-            return float(diameter_mm)
+            return number(diameter_mm, "diameter_mm")
         known = self.diameters()
         if len(known) > 1:
             listed = ", ".join(f"{d:g}" for d in known)
@@ -145,7 +171,7 @@ class Quantity:
                 raise LawError(
                     f"The sheet states no speed for {NAMES[self.quantity]}, so it cannot be carried to another. Leave speed_rpm out."
                 )
-            return float(speed_rpm)
+            return number(speed_rpm, "speed_rpm")
         known = self._speeds
         if len(known) <= 1:
             return known[0] if known else None
@@ -222,9 +248,10 @@ class Power(Quantity):
 
     def density_ratio(self, density_kgm3):
         """Density asked over density of the sheet."""
-        if not density_kgm3 > 0:
+        density = number(density_kgm3, "density_kgm3")
+        if not density > 0:
             raise LawError(f"A density of {density_kgm3} kg/m³ is not possible. Give a number above 0.")
-        return density_kgm3 / self.pump.density_kgm3
+        return density / self.pump.density_kgm3
 
 
 class Missing:

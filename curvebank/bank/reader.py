@@ -6,6 +6,7 @@ from collections import namedtuple
 from ..errors import BankError, NotFound, WithdrawnWarning
 from .connect import TIMEOUT_S, explain, open_read
 from .pump import COLUMNS, Pump
+from .quantity import number
 
 Listed = namedtuple("Listed", "key maker model stages rated_rpm revision state")
 """One line of `Bank.pumps`: the released revision, or the latest where none is released."""
@@ -194,7 +195,8 @@ class Bank:
         """
         from .choice import find
 
-        return find(self, float(flow_m3h), float(head_m), npsha_m, limit)
+        npsha = None if npsha_m is None else number(npsha_m, "npsha_m")
+        return find(self, number(flow_m3h, "flow_m3h"), number(head_m, "head_m"), npsha, limit)
 
     def curve_rows(self, revision_id):
         """The curve rows of a revision in the order of `pump.COLUMNS`."""
