@@ -38,8 +38,13 @@ def darkness(channel: Bytes) -> Floats:
 
 
 def ink_scale(dark: Floats) -> float:
-    """Darkness that counts as full ink: a high percentile of a thinned page (never below what noise alone gives)."""
-    return float(max(np.percentile(dark[::3, ::3], 99.5), 0.12))
+    """Darkness that counts as full ink: a high percentile of what is clearly darker than the paper, however little of it there is."""
+    thin = dark[::3, ::3]
+    noise = 1.4826 * float(np.median(np.abs(thin - np.median(thin))))
+    inked = thin[thin > max(0.12, 6.0 * noise)]
+    if len(inked) < 60:
+        return 0.5
+    return float(np.clip(np.percentile(inked, 90), 0.15, 1.0))
 
 
 def to_bytes(dark: Floats, scale: float) -> Bytes:

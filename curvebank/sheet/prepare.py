@@ -13,7 +13,7 @@ from .lines import PrintedLine, find_lines
 from .load import Sheet
 from .removal import remove_lines
 
-ALGORITHM = "ribbon-2"
+ALGORITHM = "ribbon-3"
 """Name of the preparation; changes when its output would, so that cached arrays are never mixed."""
 
 Progress = Callable[[float, str], Any]

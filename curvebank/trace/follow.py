@@ -62,7 +62,16 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     for reach in (30.0, 14.0):
         axis, at = _smoothed(path, axis, clicks, grain)
         step = grain / 4
-        narrow = Pass(reach * max(unit, 0.7), step, grain, 12 if axis.length > (700 if closed else 300) * unit else 6, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
+        narrow = Pass(
+            reach * max(unit, 0.7),
+            step,
+            grain,
+            12 if axis.length > (700 if closed else 300) * unit else 6,
+            0.35,
+            0.004,
+            7,
+            4.0 * max(unit, 0.75),
+        )
         path, cost = _search(prepared, axis, at, clicks, narrow, max(grain / 3, 1.0), cap)
     axis, at = _smoothed(path, axis, clicks, grain)
     return Followed(axis, cost, at)

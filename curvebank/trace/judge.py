@@ -68,6 +68,23 @@ def doubt_of(prepared: Prepared, found: Followed, fine: Refined) -> Doubt:
     share = sum(b - a + 1 for a, b in gaps) / total
     longest = max((b - a + 1 for a, b in gaps), default=0) / total
     doubt.logit -= 14.0 * max(0.0, share - 0.10) + 14.0 * max(0.0, longest - 0.12)
+    # Along merged lines only one flank is free, or none: nothing but the curve's own bend tells which line is which there.
+    beside = np.convolve((np.maximum(seen.left, seen.right) > 0.5).astype(float), np.ones(7) / 7, "same") > 0.5
+    merged = [(int(a), int(b - 1)) for a, b in seen.runs(beside) if b - a > 25 * unit]
+    together = sum(b - a + 1 for a, b in merged) / total
+    for first, last in merged:
+        doubt.stretches.append((first, last, f"another line lies against it over {last - first + 1} px"))
+    if together > 0.05:
+        widest = max(merged, key=lambda g: g[1] - g[0])
+        doubt.logit -= 30.0 * (together - 0.05) + 1.5
+        doubt.hint = (widest[0] + widest[1]) // 2
+        doubt.notices.append(
+            Notice(
+                code="merged",
+                message=f"Another line lies against {100 * together:.0f} % of its length; one click there would settle it",
+                stretch=widest,
+            )
+        )
     good = fine.blocks.good
     doubt.logit -= 5.0 * max(0.0, found.cost - 0.05)
     rough = fine.scatter / max(0.25 * unit, 1e-6)

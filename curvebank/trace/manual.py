@@ -67,7 +67,9 @@ def _symbol_at(prepared: Prepared, click: FloatArray, unit: float) -> FloatArray
         filled = np.zeros_like(ink)
         cv2.drawContours(filled, [outline], -1, 255, -1)
         # Grey edge pixels weigh by their ink, the inside fully.
-        weight = np.where(cv2.erode(filled, np.ones((3, 3), np.uint8)) > 0, 255, np.where(cv2.dilate(filled, np.ones((3, 3), np.uint8)) > 0, ink, 0))
+        weight = np.where(
+            cv2.erode(filled, np.ones((3, 3), np.uint8)) > 0, 255, np.where(cv2.dilate(filled, np.ones((3, 3), np.uint8)) > 0, ink, 0)
+        )
         rows, columns = np.mgrid[0 : ink.shape[0], 0 : ink.shape[1]]
         total = float(weight.sum())
         middle = np.array([x0 + (weight * columns).sum() / total, y0 + (weight * rows).sum() / total])

@@ -32,8 +32,15 @@ def _tail_to(points: FloatArray, trace: Trace, other: Trace) -> tuple[int, Float
     width = 0.5 * ((trace.line_width_px or 3.0) + (other.line_width_px or 3.0))
     unit = max(unit_of(trace.line_width_px or 3.0), 0.6)
     look = min(int(120 * unit), len(points) // 2)
-    near = cKDTree(other.pixels).query(points[-look:])[0] < width + 1.0 * unit
-    if look < 20 or not near[-1] or near.all():
+    if look < 20:
+        return None
+    gap = cKDTree(other.pixels).query(points[-look:])[0]
+    near = gap < width + 1.0 * unit
+    rim = int(12 * unit)
+    if not near[-1] and near[-rim:].any() and gap[-1] < width + 4.0 * unit:
+        # It ran on a little behind the other line: that is still an end on it.
+        near[len(near) - int(np.argmax(near[::-1])) :] = True
+    if not near[-1] or near.all():
         return None
     inside = int(np.argmax(near[::-1] == 0))
     if inside > 70 * unit:

@@ -248,12 +248,22 @@ def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray) -> 
     """Move an aligned axis onto the middle of its ink, with uncertainties."""
     unit = max(unit_of(shape.width), 0.6)
     pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
-    blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
     # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
-    reference, off = _reference(axis, _pieces(axis, unit) // 4, _shown(blocks, axis))
-    whole = _with_clicks(blocks, axis, clicks, unit)
-    whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
-    fitted = _along(whole, axis, unit)
+    for turn in (0, 1):
+        blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
+        reference, off = _reference(axis, _pieces(axis, unit) // 4, _shown(blocks, axis))
+        whole = _with_clicks(blocks, axis, clicks, unit)
+        whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
+        fitted = _along(whole, axis, unit)
+        if turn:
+            break
+        # A shape measured about a wiggling axis is too broad: measured again about the curve itself, it may ask for another reading.
+        t_pixels = pixels.s / axis.length
+        moved = pixels.d - fitted.value(t_pixels)[:, 0] + np.interp(pixels.s, axis.s, off)
+        sharper = first_shape(replace(pixels, d=moved), shape.width)
+        if abs(np.log(sharper.width / shape.width)) < 0.2:
+            break
+        shape = sharper
     t = axis.s / axis.length
     final = from_polyline(reference.points + reference.normals * fitted.value(t), axis.closed)
     sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
