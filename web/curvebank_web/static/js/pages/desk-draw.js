@@ -68,6 +68,7 @@ function placesOf(desk) {
   const plot = [];
   desk.findings.forEach((f, k) => {
     const chosen = desk.chosenFinding === f.number;
+    if (f.severity === "note" && !chosen) return;
     const base = { severity: f.severity, number: f.number, chosen, drop: 44 + (k % 3) * 14, side: (k % 2) * 10 };
     if (f.where?.curve) {
       const p = curvePlace(desk, f);
@@ -221,7 +222,7 @@ export class DeskDraw {
     for (const g of desk.ghosts.filter((k) => k.words)) {
       const y = Math.max(0, desk.axes.findIndex((a) => a.id === g.y));
       const hit = crossings(g.points, c.q)[0];
-      if (hit) rows.push({ y: scales.ys[y].map(hit.y), v: hit.y, axis: y, ...words.reading(desk.axes[y].axis, hit.y, 0), doubt: "", name: g.words.replace("dashed: ", ""), tone: "ink", dashed: true });
+      if (hit) rows.push({ y: scales.ys[y].map(hit.y), v: hit.y, axis: y, ...words.reading(desk.axes[y].axis, hit.y, 0), doubt: "", name: g.short, tone: "ink", dashed: true });
     }
     const near = rows.length ? rows.reduce((a, b) => (Math.abs(b.y - c.sy) < Math.abs(a.y - c.sy) ? b : a)) : null;
     if (near) near.near = true;

@@ -94,7 +94,7 @@ function residuals(root, desk) {
   const svg = s("svg", { class: "plot", viewBox: `0 0 ${width} 74`, width, height: 74, role: "img", "aria-label": `Trace minus fit, largest ${plain(big, 3)} ${unit}` });
   const frame = [52, 4, width - 10, 66];
   const x = { ...linear(points[0][0], points[points.length - 1][0], frame[0], frame[2]), lo: Math.min(points[0][0], points[points.length - 1][0]), hi: Math.max(points[0][0], points[points.length - 1][0]), labels: false };
-  const y = { ...linear(-1.2 * big, 1.2 * big, frame[3], frame[1]), lo: -1.2 * big, hi: 1.2 * big, most: 3 };
+  const y = { ...linear(-1.2 * big, 1.2 * big, frame[3], frame[1]), lo: -1.2 * big, hi: 1.2 * big, most: 4 };
   const miss = item.fit.max_miss / item.fy;
   drawChart(svg, { frame, x, ys: [y], lines: [{ points: inside, tone: "trace", width: 1.3 }] });
   put(root, h("h2", {}, `${item.label}: trace less fit, ${unit}`), svg, h("p", { class: "small" }, `Order ${item.fit.order}. Largest miss ${plain(miss, 3)} ${unit} (${plain(item.fit.max_miss_pct, 2)} %); the band drawn is k = 2.`));

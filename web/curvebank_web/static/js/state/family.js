@@ -50,6 +50,7 @@ export function ghostsOf(run, doc, panel, carry) {
         out.push({
           id, y: own.y, pixels: g.pixels ?? [], points: (g.points ?? []).map(([q, v]) => [q / kx, v / ky]),
           words: carry === "all" && !accused ? null : `dashed: ${plain(c.diameter_mm, 1)} carried to ${plain(g.to_diameter_mm ?? target?.diameter_mm, 1)}`,
+          short: `carried ${plain(c.diameter_mm, 1)}→${plain(g.to_diameter_mm, 1)}`,
           gap: gap?.pixels ?? null,
           gapPoints: gap?.points.map((pair) => pair.map(([q, v]) => [q / kx, v / ky])) ?? null,
         });
