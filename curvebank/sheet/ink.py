@@ -49,7 +49,7 @@ def ink_scale(dark: Floats) -> float:
 
 def to_bytes(dark: Floats, scale: float) -> Bytes:
     """Darkness as ink 0..255; half a step of a grey level is far below the noise of any scan."""
-    return cv2.convertScaleAbs(np.maximum(dark, 0.0, out=dark), alpha=255.0 / scale)
+    return np.asarray(cv2.convertScaleAbs(np.maximum(dark, 0.0, out=dark), alpha=255.0 / scale), dtype=np.uint8)
 
 
 def line_width(ink: Bytes) -> float:

@@ -43,7 +43,7 @@ class PrintedLine:
 def find_lines(ink: Bytes, unit: float) -> tuple[list[PrintedLine], list[PrintedLine]]:
     """Horizontal and vertical lines of a page of ink 0..255; ``unit`` is the page's scale (1 for 3 px lines)."""
     across = _family(ink, unit)
-    down = _family(cv2.transpose(ink), unit)
+    down = _family(np.ascontiguousarray(ink.T), unit)
     return ([_line(t, True) for t in across], [_line(t, False) for t in down])
 
 
@@ -98,8 +98,8 @@ def _ridges(ink: Bytes, cell: int, sigma: float) -> tuple[npt.NDArray[np.float32
         better = total > best
         best[better] = total[better]
         slope[better] = s
-    best = (best / CELLS) ** 2
-    return best, slope, float(max(0.012, 3.0 * np.median(best)))
+    best = np.square(best / np.float32(CELLS))
+    return best.astype(np.float32), slope.astype(np.float32), float(max(0.012, 3.0 * np.median(best)))
 
 
 def _link(
@@ -139,8 +139,8 @@ def _link(
         keep = [t for t in range(len(open_tracks)) if k - last[t] <= 3]
         done += [open_tracks[t] for t in range(len(open_tracks)) if k - last[t] > 3 and len(open_tracks[t]) >= 4]
         open_tracks, last = [open_tracks[t] for t in keep], [last[t] for t in keep]
-        for j in np.flatnonzero(~taken):
-            open_tracks.append([(k, float(y[j]), float(tilt[j]) * strip)])
+        for fresh in np.flatnonzero(~taken):
+            open_tracks.append([(k, float(y[fresh]), float(tilt[fresh]) * strip)])
             last.append(k)
     done += [t for t in open_tracks if len(t) >= 4]
     out = []
@@ -157,7 +157,7 @@ def _robust_poly(x: Floats, y: Floats, width: int) -> tuple[Floats, float] | Non
     degree = 3 if len(x) >= 10 else 2 if len(x) >= 7 else 1
     basis = np.polynomial.polynomial.polyvander(t, degree)
     weight = np.ones(len(x))
-    coefficients = np.zeros(degree + 1)
+    coefficients: Floats = np.zeros(degree + 1)
     scale = np.inf
     for _ in range(6):
         coefficients = np.linalg.lstsq(basis * weight[:, None], y * weight, rcond=None)[0]

@@ -65,6 +65,7 @@ def load(data: bytes, *, page: int = 1, dpi: float = 300, turn: int = 0, limits:
             f"the file has {len(data) / 1e6:.0f} MB, the limit is {limits.file_bytes / 1e6:.0f} MB; save a single page of it",
             code="too-large",
         )
+    resolution: tuple[float | None, float | None]
     if b"%PDF-" in data[:1024]:
         from .pdf import render_page
 

@@ -87,18 +87,18 @@ def prepare(sheet: Sheet, *, progress: Progress | None = None) -> Prepared:
     tell = progress or (lambda share, text: None)
     tell(0.0, "Levelling the paper")
     pixels = sheet.pixels
-    grey = pixels if pixels.ndim == 2 else cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY)
+    grey = pixels if pixels.ndim == 2 else np.asarray(cv2.cvtColor(pixels, cv2.COLOR_RGB2GRAY), dtype=np.uint8)
     light = levels.is_light_on_dark(grey)
     if light:
         pixels, grey = 255 - pixels, 255 - grey
-    colour = None
+    colour: Bytes | None = None
     if pixels.ndim == 2:
         dark = levels.darkness(grey)
         ink = levels.to_bytes(dark, levels.ink_scale(dark))
     else:
         channels = [levels.darkness(np.ascontiguousarray(pixels[..., c])) for c in range(3)]
         scale = max(levels.ink_scale(c) for c in channels)
-        colour = cv2.merge([levels.to_bytes(c, scale) for c in channels])
+        colour = np.stack([levels.to_bytes(c, scale) for c in channels], axis=2)
         # The darkest channel shows a curve of any one colour; each trace later weighs the channels for its own ink.
         ink = colour.max(axis=2)
         if not _is_coloured(colour):

@@ -18,13 +18,13 @@ def remove_lines(ink: Bytes, lines: tuple[list[PrintedLine], list[PrintedLine]],
     """Ink without printed lines, the modelled ink of those lines (both 0..255), and the lines with contrast and width filled in."""
     printed = np.zeros_like(ink)
     measured: list[PrintedLine] = []
-    flipped, drawn = cv2.transpose(ink), np.zeros(ink.shape[::-1], np.uint8)
+    flipped, drawn = np.ascontiguousarray(ink.T), np.zeros(ink.shape[::-1], np.uint8)
     for family, page, into in ((lines[0], ink, printed), (lines[1], flipped, drawn)):
         for line in family:
             found = _draw(page, into, line, unit)
             if found is not None:
                 measured.append(found)
-    printed = np.maximum(printed, cv2.transpose(drawn))
+    printed = np.ascontiguousarray(np.maximum(printed, drawn.T))
     return _subtract(ink, printed, unit), printed, measured
 
 
@@ -39,7 +39,8 @@ def _draw(page: Bytes, into: Bytes, line: PrintedLine, unit: float) -> PrintedLi
     thin = slice(0, len(x), stride)
     maps = (np.repeat(x[thin][None, :].astype(np.float32), len(offsets), 0), (y[thin][None, :] + offsets[:, None]).astype(np.float32))
     top, low = int(max(y.min() - half - 2, 0)), int(min(y.max() + half + 3, height))
-    band = cv2.remap(page[top:low].astype(np.float32), maps[0], maps[1] - top, cv2.INTER_LINEAR, borderMode=cv2.BORDER_REPLICATE) / 255.0
+    band = cv2.remap(page[top:low].astype(np.float32), maps[0], maps[1] - top, cv2.INTER_LINEAR, borderMode=cv2.BORDER_REPLICATE)
+    band = np.asarray(band, dtype=np.float32) * np.float32(1 / 255)
     # The 60th percentile sees a dashed line with half its length inked; curves that cross are rare along one line.
     profile = np.percentile(band, 60, axis=1)
     base = float(np.median(np.r_[profile[: len(offsets) // 5], profile[-(len(offsets) // 5) :]]))

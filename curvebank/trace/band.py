@@ -24,7 +24,7 @@ def sample(image: npt.NDArray[np.uint8], axis: Axis, s: FloatArray, offsets: Flo
     if shrink > 1.01:
         w, h = max(int(round((x1 - x0) / shrink)), 1), max(int(round((y1 - y0) / shrink)), 1)
         kx, ky = w / (x1 - x0), h / (y1 - y0)
-        part = cv2.resize(part, (w, h), interpolation=cv2.INTER_AREA)
+        part = np.asarray(cv2.resize(part, (w, h), interpolation=cv2.INTER_AREA), dtype=np.uint8)
     mx = ((x - x0 + 0.5) * kx - 0.5).astype(np.float32)
     my = ((y - y0 + 0.5) * ky - 0.5).astype(np.float32)
     out = cv2.remap(part, mx, my, cv2.INTER_LINEAR, borderMode=cv2.BORDER_CONSTANT, borderValue=0)

@@ -80,9 +80,9 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
             code="off-panel",
         )
     if clicks.kind == "line":
-        for i, (x, y) in enumerate(points):
+        for k, (x, y) in enumerate(points):
             if not _has_ink(prepared, x, y):
-                raise TraceError(f"The {ordinal(i)} click ({x:.0f}, {y:.0f}) is on blank paper; move it onto the line", code="off-ink")
+                raise TraceError(f"The {ordinal(k)} click ({x:.0f}, {y:.0f}) is on blank paper; move it onto the line", code="off-ink")
     return points
 
 

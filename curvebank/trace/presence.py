@@ -50,7 +50,7 @@ def presence(prepared: Prepared, axis: Axis, shape: Shape, s: FloatArray) -> Pre
     reach = shape.half_extent + 4.0
     offsets = np.arange(-reach, reach + 0.25, 0.5)
     band = sample(prepared.clean, axis, s, offsets, 1.0)
-    band = cv2.blur(band, (1, 3), borderType=cv2.BORDER_REPLICATE)  # single noisy rows do not break a line
+    band = np.asarray(cv2.blur(band, (1, 3), borderType=cv2.BORDER_REPLICATE), dtype=np.float32)  # single noisy rows do not break a line
     under = sample(prepared.printed, axis, s, np.array([-0.5, 0.0, 0.5]), 1.0).max(axis=1)
     core = np.abs(offsets) <= max(0.5 * shape.width - 0.3, 0.5)
     near = (np.abs(offsets) > shape.half_extent) & (np.abs(offsets) <= shape.half_extent + 3.0)

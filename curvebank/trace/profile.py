@@ -182,7 +182,7 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
             for j in range(i, 3):
                 lhs[:, i, j] = lhs[:, j, i] = np.bincount(block, wi * terms[j], count)
         now = np.stack([base, height - shape.height, shift], axis=1)
-        inverse = np.linalg.inv(lhs + np.diag(1 / prior**2))
+        inverse = np.linalg.inv(lhs + np.diag(1 / prior**2)).astype(np.float64)
         change = np.einsum("nij,nj->ni", inverse, right - now / prior**2)
         base = base + change[:, 0]
         height = np.clip(height + change[:, 1], 0.02, 2.0)
