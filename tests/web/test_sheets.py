@@ -1,15 +1,20 @@
 """Sheets: what is taken, what is refused, and that tiles are the page's own pixels."""
 
 import io
+import sqlite3
 import struct
 import zlib
+from contextlib import closing
+from datetime import UTC, datetime, timedelta
 
 import numpy as np
 import pypdfium2
 import pytest
 from PIL import Image
 
+from curvebank_web import create_app
 from curvebank_web.api.sheets import bare_name
+from curvebank_web.desk_file import written
 from curvebank_web.page_store import PageKey, halve, max_zoom
 
 
@@ -181,8 +186,6 @@ def test_a_bomb_is_refused_before_it_is_decoded(upload, is_problem):
 
 
 def test_a_refused_file_leaves_nothing_on_the_desk(app, upload):
-    import sqlite3
-
     upload(b"no image at all")
     db = sqlite3.connect(app.extensions["curvebank"].desk)
     assert db.execute("SELECT count(*) FROM sheet").fetchone() == (0,)
@@ -196,6 +199,69 @@ def test_a_sheet_survives_a_lost_cache(app, client, sheet, gradient):
     shutil.rmtree(services.cache)
     services.pages._open.clear()
     assert np.array_equal(assemble(client, sheet["page"], 2), gradient)
+
+
+class TestForgotten:
+    """Sheets that never became a draft leave the desk a week later, when the server starts."""
+
+    @pytest.fixture
+    def aged(self, app):
+        """Make a sheet look as if it was added some days ago."""
+
+        def age(sha256, days):
+            with closing(sqlite3.connect(app.extensions["curvebank"].desk)) as db, db:
+                moment = written(datetime.now(UTC) - timedelta(days=days))
+                assert db.execute("UPDATE sheet SET added_at = ? WHERE sha256 = ?", (moment, sha256)).rowcount == 1
+
+        return age
+
+    @pytest.fixture
+    def kept(self, app):
+        """Start a server again on the same desk: the sheets that are still there."""
+
+        def restart():
+            s = app.extensions["curvebank"]
+            create_app({"BANK": str(s.bank), "CACHE": str(s.cache)}).extensions["curvebank"].close()
+            with closing(sqlite3.connect(s.desk)) as db:
+                return {sha for (sha,) in db.execute("SELECT sha256 FROM sheet")}
+
+        return restart
+
+    @pytest.mark.parametrize(("days", "stays"), [(0, True), (6.9, True), (7.1, False), (400, False)])
+    def test_only_the_old_go(self, sheet, aged, kept, days, stays):
+        aged(sheet["sha256"], days)
+        assert kept() == ({sheet["sha256"]} if stays else set())
+
+    def test_a_sheet_of_a_draft_stays_however_old(self, client, draft, aged, kept):
+        aged(draft["sheet_sha256"], 400)
+        assert kept() == {draft["sheet_sha256"]}
+        client.delete(f"/api/drafts/{draft['id']}")
+        assert kept() == set()
+
+    def test_a_sheet_that_only_an_earlier_step_names_stays(self, draft, put, aged, kept, upload, gradient):
+        """Undo must be able to lead back to it."""
+        other = upload(png(255 - gradient)).json["sha256"]
+        doc = {**draft["doc"], "sheet": {**draft["doc"]["sheet"], "sha256": other}}
+        assert put(draft["id"], doc, 1).status_code == 200
+        for sha in (draft["sheet_sha256"], other):
+            aged(sha, 400)
+        assert kept() == {draft["sheet_sha256"], other}
+
+    def test_adding_it_again_makes_it_new(self, sheet, upload, gradient, aged, kept):
+        aged(sheet["sha256"], 400)
+        out = io.BytesIO()
+        Image.fromarray(gradient).save(out, "PNG", dpi=(300, 300))
+        assert upload(out.getvalue()).json["sha256"] == sheet["sha256"]
+        assert kept() == {sheet["sha256"]}
+
+    def test_a_desk_that_is_held_is_no_reason_not_to_start(self, app, sheet, aged, kept, monkeypatch):
+        aged(sheet["sha256"], 400)
+        monkeypatch.setattr("curvebank_web.desk_file.BUSY_MS", 10)
+        with closing(sqlite3.connect(app.extensions["curvebank"].desk, isolation_level=None)) as other:
+            other.execute("BEGIN IMMEDIATE")
+            assert kept() == {sheet["sha256"]}
+            other.execute("ROLLBACK")
+        assert kept() == set()
 
 
 class TestPyramid:

@@ -51,7 +51,12 @@ class DeskError(CurvebankError):
 
 def now() -> str:
     """Wall clock as stored everywhere: UTC, milliseconds, ``Z``."""
-    return datetime.now(UTC).isoformat(timespec="milliseconds").replace("+00:00", "Z")
+    return written(datetime.now(UTC))
+
+
+def written(moment: datetime) -> str:
+    """A moment in UTC as text that sorts like time."""
+    return moment.isoformat(timespec="milliseconds").replace("+00:00", "Z")
 
 
 def connect(path: Path) -> sqlite3.Connection:

@@ -1,6 +1,7 @@
 """What the views work with: paths, page store, jobs, and the desk connection of the current request."""
 
 import sqlite3
+from contextlib import closing, suppress
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -9,7 +10,7 @@ from flask import Flask, current_app, g
 
 from curvebank.errors import CurvebankError
 
-from . import bank_access, desk_file, sources
+from . import bank_access, desk_file, desk_sheets, sources
 from .jobs import Registry
 from .page_store import PageStore, prune
 from .problems import Problem
@@ -71,6 +72,7 @@ def start(app: Flask) -> Services:
         cache = platformdirs.user_cache_path("curvebank", appauthor=False)
     bank_access.make_if_missing(bank)
     desk_file.prepare(desk)
+    _clear_desk(desk)
     cache = Path(cache).absolute()
     services = Services(
         bank=bank, desk=desk, cache=cache, jobs=Registry(app.config.get("WORKERS", 1)), prepare_ahead=app.config.get("PREPARE_AHEAD", True)
@@ -84,6 +86,12 @@ def start(app: Flask) -> Services:
             db.close()
 
     return services
+
+
+def _clear_desk(desk: Path) -> None:
+    """Before anyone asks for them: remove forgotten sheets. A desk that cannot be written now is cleared at another start."""
+    with closing(desk_file.connect(desk)) as db, suppress(sqlite3.OperationalError):
+        desk_sheets.clear_forgotten(db)
 
 
 def services() -> Services:
