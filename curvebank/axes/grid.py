@@ -178,55 +178,91 @@ def _log_ticks(level: FloatArray) -> FloatArray:
 def _best_degree(
     d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float
 ) -> Bend | None:
-    best: tuple[float, int] | None = None
+    """The bend whose degree does best on lines it has not seen; None where the lines do not agree with each other."""
+    best: tuple[float, _System] | None = None
     for degree in DEGREES:
         if len(lines) < degree + 2:
             break
-        misses = []
-        for k in range(len(lines)):
-            rest = [*lines[:k], *lines[k + 1 :]]
-            a = _solve(d, rest, marks, centre, half, px, degree)[0]
-            left = lines[k]
-            miss = (left.uv[:, d] + terms((left.uv - centre) / half, degree) @ a - left.target) * px
-            misses.append(float(np.sqrt(np.mean(miss**2))))
-        # A line that is none (a table rule, a curve) must not decide: the worst tenth is left out, the ends are not.
-        score = float(np.sqrt(np.mean(np.sort(misses)[: max(len(misses) - len(misses) // 10, 1)] ** 2)))
+        system = _System(d, lines, marks, centre, half, px, degree)
+        score = system.left_out()
         if best is None or (score < 0.7 * best[0] and score < best[0] - LEAST_GAIN_PX):
-            best = (score, degree)
+            best = (score, system)
     if best is None:
         return None
-    degree = best[1]
-    a, rms, weight, information = _solve(d, lines, marks, centre, half, px, degree)
-    used = tuple(line for line, w in zip(lines, weight, strict=True) if w > 0.3)
+    system = best[1]
+    kept = system.line_weight > 0.3
+    used = tuple(line for line, keep in zip(lines, kept, strict=True) if keep)
+    rms = float(np.sqrt(np.mean(system.line_miss_px[kept] ** 2))) if kept.any() else np.inf
     if len(used) < max(FEWEST_LINES, 0.7 * len(lines)) or rms > WORST_RMS_PX:
         return None
     sigma = np.hypot(rms, LEAST_SIGMA_PX) / px
-    covariance = np.linalg.pinv(information, hermitian=True) * sigma**2 * (PLACES / READINGS_A_LINE)
-    return Bend(degree, a, covariance, centre, half, used, rms, px)
+    covariance = np.linalg.pinv(system.information(), hermitian=True) * sigma**2 * (PLACES / READINGS_A_LINE)
+    return Bend(system.degree, system.coefficients, covariance, centre, half, used, rms, px)
 
 
-def _solve(
-    d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float, degree: int
-) -> tuple[FloatArray, float, FloatArray, FloatArray]:
-    """Coefficients, rms over the lines kept [px], weight of each line, information for unit variance of a point."""
-    blocks = [terms((line.uv - centre) / half, degree) for line in lines]
-    misses = [line.target - line.uv[:, d] for line in lines]
-    mark_rows = terms((marks[0] - centre) / half, degree) * 0.1
-    mark_miss = (marks[1] - marks[0][:, d]) * 0.1
-    weight = np.ones(len(lines))
-    a = np.zeros(blocks[0].shape[1])
-    point = [np.ones(len(b)) for b in blocks]
-    for _ in range(8):
-        w = [np.sqrt(wk * pw) for pw, wk in zip(point, weight, strict=True)]
-        rows = np.concatenate([*(b * k[:, None] for b, k in zip(blocks, w, strict=True)), mark_rows])
-        y = np.concatenate([*(m * k for m, k in zip(misses, w, strict=True)), mark_miss])
-        a = np.linalg.lstsq(rows, y, rcond=1e-10)[0]
-        off = [np.abs(m - b @ a) * px for b, m in zip(blocks, misses, strict=True)]
-        size = np.array([np.sqrt(np.median(o**2)) * 1.4826 for o in off])
-        scale = max(float(np.median(size)), 0.1)
-        weight = np.maximum(1 - (size / (6 * scale)) ** 2, 0.0) ** 2
-        point = [np.maximum(1 - (o / (6 * scale)) ** 2, 0.0) ** 2 for o in off]
-    kept = weight > 0.3
-    rms = float(np.sqrt(np.mean(size[kept] ** 2))) if kept.any() else np.inf
-    information = np.sum([(b.T * pw) @ b * wk for b, wk, pw in zip(blocks, weight, point, strict=True)], axis=0)
-    return a, rms, weight, information
+class _System:
+    """The linear equations of all lines of one direction for one degree, solved robustly over points and over whole lines.
+
+    Points stand in arrays [lines, places] padded to one length, so that every step is one array operation. The marks join with a small
+    weight: they hold the bend where lines are few.
+    """
+
+    MARK_WEIGHT = 0.1
+    ROUNDS = 8
+    FOLDS = 12
+
+    def __init__(
+        self, d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float, degree: int
+    ):
+        self.degree, self.px = degree, px
+        count = np.array([len(line.uv) for line in lines])
+        self.there = np.arange(count.max()) < count[:, None]
+        uv = np.zeros((*self.there.shape, 2)) + centre
+        uv[self.there] = np.concatenate([line.uv for line in lines])
+        self.rows = terms(((uv - centre) / half).reshape(-1, 2), degree).reshape(*self.there.shape, -1)
+        self.miss = np.array([line.target for line in lines])[:, None] - uv[..., d]
+        self.mark_rows = terms((marks[0] - centre) / half, degree) * self.MARK_WEIGHT
+        self.mark_miss = (marks[1] - marks[0][:, d]) * self.MARK_WEIGHT
+        self.line_weight = np.ones(len(lines))
+        self.point_weight = self.there.astype(np.float64)
+        for _ in range(self.ROUNDS):
+            self.coefficients = self._solve(self.line_weight)
+            off = self._off_px(self.coefficients)
+            self.line_miss_px = 1.4826 * _medians(off, self.there)
+            scale = max(float(np.median(self.line_miss_px)), 0.1)
+            self.line_weight = np.maximum(1 - (self.line_miss_px / (6 * scale)) ** 2, 0.0) ** 2
+            self.point_weight = np.maximum(1 - (off / (6 * scale)) ** 2, 0.0) ** 2 * self.there
+
+    def _solve(self, line_weight: FloatArray) -> FloatArray:
+        w = np.sqrt(line_weight[:, None] * self.point_weight)
+        use = w > 0
+        rows = np.concatenate([self.rows[use] * w[use][:, None], self.mark_rows])
+        return np.linalg.lstsq(rows, np.concatenate([self.miss[use] * w[use], self.mark_miss]), rcond=1e-10)[0]
+
+    def _off_px(self, coefficients: FloatArray) -> FloatArray:
+        return np.abs(self.miss - self.rows @ coefficients) * self.px
+
+    def left_out(self) -> float:
+        """Miss of lines left out in turn [px rms]. The worst tenth is not counted: a line that is none must not decide."""
+        n = len(self.line_weight)
+        fold = np.arange(n) % min(n, self.FOLDS)
+        misses = np.zeros(n)
+        for k in range(fold.max() + 1):
+            out = fold == k
+            off = self._off_px(self._solve(np.where(out, 0.0, self.line_weight)))[out]
+            there = self.there[out]
+            misses[out] = np.sqrt((off**2 * there).sum(axis=1) / there.sum(axis=1))
+        return float(np.sqrt(np.mean(np.sort(misses)[: max(n - n // 10, 1)] ** 2)))
+
+    def information(self) -> FloatArray:
+        """Information on the coefficients for unit variance of a point."""
+        w = self.line_weight[:, None] * self.point_weight
+        return np.asarray(np.einsum("lpi,lp,lpj->ij", self.rows, w, self.rows))
+
+
+def _medians(values: FloatArray, there: np.ndarray) -> FloatArray:
+    """Root of the median square of each row's present values [lines]."""
+    order = np.sort(np.where(there, values, np.inf), axis=1)
+    n = there.sum(axis=1)
+    i = np.arange(len(values))
+    return np.sqrt((order[i, (n - 1) // 2] ** 2 + order[i, n // 2] ** 2) / 2)
