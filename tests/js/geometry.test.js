@@ -7,7 +7,7 @@ import { spread, weights } from "../../web/curvebank_web/static/js/geometry/labe
 import { decimalsFor, parseNumber, plain, withDoubt } from "../../web/curvebank_web/static/js/geometry/number.js";
 import { fromMarks, fromResult } from "../../web/curvebank_web/static/js/geometry/panelmap.js";
 import { atIndex, crossings, endStrokes, insidePolygon, nearest, path, strokes, thin } from "../../web/curvebank_web/static/js/geometry/polyline.js";
-import { linear, linearTicks, log10, logTicks, nearestRound, roundStep, tickText } from "../../web/curvebank_web/static/js/geometry/scale.js";
+import { commonTicks, linear, linearTicks, log10, logTicks, nearestRound, roundStep, tickText } from "../../web/curvebank_web/static/js/geometry/scale.js";
 import { dip, snap } from "../../web/curvebank_web/static/js/geometry/snap.js";
 import { factor, UNITS } from "../../web/curvebank_web/static/js/geometry/units.js";
 
@@ -199,4 +199,9 @@ test("units agree with their definitions (NIST SP 811, appendix B)", () => {
   near(factor({ quantity: "head", unit: "bar", density_kgm3: 1000 }), 10.197162, 1e-6);
   assert.ok(Number.isNaN(factor({ quantity: "head", unit: "bar" })));
   assert.equal(factor({ quantity: "power", unit: "kW", multiplier: 100 }), 100);
+});
+
+test("two scales share one division where both come out round", () => {
+  assert.deepEqual(commonTicks([[0, 64], [0, 160]], 9), [[0, 8, 16, 24, 32, 40, 48, 56, 64], [0, 20, 40, 60, 80, 100, 120, 140, 160]]);
+  assert.equal(commonTicks([[0, 64], [0, 97]], 9), null);
 });

@@ -18,7 +18,7 @@ export function finding(f, { chosen = false, onChoose = null } = {}) {
   const icon = onChoose
     ? h("button", { type: "button", class: "place", "aria-label": `Show the place of finding ${f.number}`, onclick: () => onChoose(f) }, placeIcon(f.severity, f.number))
     : h("span", { class: "place" }, placeIcon(f.severity, f.number));
-  const ways = (f.ways ?? []).map(([words, fn], i, all) => [i === 0 ? " " : i === all.length - 1 ? " or " : ", ", h("button", { type: "button", class: "link", onclick: fn }, words)]);
+  const ways = (f.ways ?? []).map(([words, fn], i, all) => [i === 0 ? " " : i === all.length - 1 ? " or " : ", ", h("button", { type: "button", class: "link", onclick: fn }, i ? words.charAt(0).toLowerCase() + words.slice(1) : words)]);
   return h("li", { class: `finding ${chosen ? "chosen" : ""} ${f.cured ? "cured" : ""}`, "data-number": f.number }, icon,
     h("div", {}, h("strong", {}, `${SEVERITY_WORDS[f.severity] ?? f.severity}. `), f.text, ways, ways.length ? "." : null,
       f.buttons?.length ? h("div", { class: "ways" }, f.buttons) : null));

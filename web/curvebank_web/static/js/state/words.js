@@ -9,10 +9,9 @@ export function axisWords(axis) {
 export function suspect(axis, s) {
   const word = QUANTITY_WORDS[axis.quantity] ?? axis.quantity;
   const unit = written(axis.unit);
-  const fits = niceFit(axis, s);
-  if (Number.isInteger(s.swapped_with)) return `The ${word} marks typed ${plain(s.typed)} and ${plain(axis.marks[s.swapped_with]?.value)} stand the wrong way round. Exchange them, or move the marks.`;
+  if (Number.isInteger(s.swapped_with)) return `The ${word} marks typed ${plain(s.typed)} and ${plain(axis.marks[s.swapped_with]?.value)} stand the wrong way round.`;
   if (s.sure === false) return `Perhaps the ${word} mark typed ${plain(s.typed)} is the wrong one: it sits where ${plain(s.fits, 3)} ${unit} would fit the others. Look which of the marks is right.`;
-  return `The ${word} mark typed ${plain(s.typed)} sits where ${plain(s.fits, 3)} ${unit} belongs. Change it to ${plain(fits)}, or move the mark.`;
+  return `The ${word} mark typed ${plain(s.typed)} sits where ${plain(s.fits, 3)} ${unit} belongs.`;
 }
 
 /** The value to offer instead of the typed one: the roundest number within 0.4 % of the axis's range of what would fit. */
