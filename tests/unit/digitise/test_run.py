@@ -73,7 +73,9 @@ def test_result_document_is_strict_and_complete(made):
     panel = doc["panels"][0]
     assert len(panel["map"]["pixels"]) == 81 and set(panel["map"]["values"]) == {"flow", "head", "eta"}
     at, flow = np.array(panel["map"]["pixels"]), np.array(panel["map"]["values"]["flow"])
-    assert flow == pytest.approx((at[:, 0] - chart.X0) / (chart.X1 - chart.X0) * chart.TOP_FLOW, abs=0.02)
+    marked = (at[:, 0] > chart.X0) & (at[:, 0] < chart.X1)
+    miss_px = (flow / chart.TOP_FLOW * (chart.X1 - chart.X0) + chart.X0 - at[:, 0])[marked]
+    assert np.sqrt(np.mean(miss_px**2)) < 0.1
 
 
 def test_same_input_same_bytes(chart_png, made):
