@@ -24,20 +24,26 @@ function frameAndTicks(svg, { frame: [x0, y0, x1, y1], x, ys }) {
       g.append(s("text", { class: "tick", x: px, y: y1 + 17, "text-anchor": "middle" }, xText[i]));
     }
   });
+  const drawn = [];
   ys.forEach((y, k) => {
     const yt = y.ticks ?? ticks(y.kind ?? "linear", y.lo, y.hi, y.most ?? Math.max(3, Math.min(10, Math.floor((y1 - y0) / 42))));
     const text = y.text ?? tickText(yt);
     const right = y.side === "right";
-    yt.forEach((v, i) => {
+    const twin = drawn.filter((d) => d.right === right).find((d) => d.same === text.join() + yt.map((v) => Math.round(y.map(v))).join());
+    const aside = right && !twin ? 36 * drawn.filter((d) => d.right && !d.twin).length : 0;
+    const level = drawn.filter((d) => d.right === right).length;
+    drawn.push({ right, twin: Boolean(twin), same: text.join() + yt.map((v) => Math.round(y.map(v))).join() });
+    if (aside) g.append(s("line", { class: "tickmark", x1: x1 + aside, x2: x1 + aside, y1: y0, y2: y1 }));
+    if (!twin) yt.forEach((v, i) => {
       const py = y.map(v);
       if (py < y0 - 2.5 || py > y1 + 2.5) return;
       if (k === 0 && py > y0 + 1 && py < y1 - 1) g.append(s("line", { class: "grid", x1: x0, y1: py, x2: x1, y2: py }));
-      const at = right ? x1 : x0;
+      const at = right ? x1 + aside : x0;
       const out = right ? 4 : -4;
       g.append(s("line", { class: "tickmark", x1: at, y1: py, x2: at + out, y2: py }));
       g.append(s("text", { class: "tick", x: at + 1.8 * out, y: py + 4, "text-anchor": right ? "start" : "end" }, text[i]));
     });
-    if (y.title) g.append(s("text", { class: "title halo", x: right ? x1 - 9 : x0 + 9, y: y0 + 17, "text-anchor": right ? "end" : "start" }, y.title));
+    if (y.title) g.append(s("text", { class: "title halo", x: right ? x1 - 9 : x0 + 9, y: y0 + 17 + 16 * level, "text-anchor": right ? "end" : "start" }, y.title));
   });
   g.append(s("rect", { class: "frame", x: x0, y: y0, width: x1 - x0, height: y1 - y0 }));
   if (x.title) g.append(s("text", { class: "title", x: x.titleAt === "end" ? x1 : (x0 + x1) / 2, y: y1 + 35, "text-anchor": x.titleAt === "end" ? "end" : "middle" }, x.title));
@@ -98,7 +104,9 @@ export function drawChart(svg, chart) {
       const end = line.labelAt === "top" ? seen.reduce((a, b) => (b[1] < a[1] ? b : a)) : seen.reduce((a, b) => (b[0] > a[0] ? b : a));
       const w = line.label.length * 7 + (line.arrow ? 24 : 0);
       const top = line.labelAt === "top";
-      labels.push({ x: top ? end[0] - w / 2 : Math.min(end[0] + 7, x1 + 62 - w), y: top ? end[1] - 7 : end[1] + 4, w, line });
+      const room = x1 + (chart.room ?? 62);
+      const inside = !top && end[0] + 7 + w > room;
+      labels.push({ x: top ? end[0] - w / 2 : inside ? room - w - 4 : end[0] + 7, y: top ? end[1] - 7 : inside ? end[1] - 8 : end[1] + 4, w, line });
     }
   }
   for (const b of chart.brackets ?? []) {

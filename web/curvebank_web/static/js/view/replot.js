@@ -45,7 +45,7 @@ export function alignedScales({ view, paper, plot, axes, flow }) {
   let [q0, q1] = clampRange(qAt(2), qAt(paper.width - 2), ext.flow[0], ext.flow[1]);
   if (!(q1 > q0)) [q0, q1] = ext.flow;
   const x0 = EDGE.left;
-  const x1 = plot.width - (axes.length > 1 ? EDGE.right : 62);
+  const x1 = plot.width - (axes.length > 1 ? EDGE.right + 36 * (axes.length - 2) : 62);
   const x = { ...(kind === "log10" ? log10(q0, q1, x0, x1) : linear(q0, q1, x0, x1)), lo: q0, hi: q1, title: `flow, ${written(flow.unit)}` };
   const qRef = kind === "log10" ? Math.sqrt(q0 * q1) : (q0 + q1) / 2;
   const at = (m, v) => toScreen(view, m.toPixel([qRef, v]))[1];
@@ -85,7 +85,7 @@ export function drawReplot(svg, scales, scene) {
     if (item.fitLine) lines.push({ id: `${item.id}-fit`, y, points: item.fitLine, tone: "ink", width: 1.2 });
   }
   if (scene.showGhosts) for (const g of scene.ghosts) lines.push({ points: g.points, tone: "construct", form: "ghost", width: 1.6, y: Math.max(0, scene.axes.findIndex((a) => a.id === g.y)) });
-  const { clip } = drawChart(svg, { frame: scales.frame, x: scales.x, ys: scales.ys, lines, bands });
+  const { clip } = drawChart(svg, { frame: scales.frame, x: scales.x, ys: scales.ys, lines, bands, room: scales.ys.length > 1 ? 0 : 62 });
   const toPlot = (y) => ([q, v]) => [scales.x.map(q), scales.ys[y].map(v)];
   if (scene.showGhosts) {
     for (const g of scene.ghosts) {
