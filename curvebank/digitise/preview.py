@@ -1,5 +1,8 @@
 """A quick look while the user still clicks: one panel's calibration and one curve, nothing stored, nothing judged."""
 
+import json
+import threading
+from collections import OrderedDict
 from typing import Any
 
 from .. import axes, trace
@@ -11,6 +14,25 @@ from . import curves as curve_maker
 from .result import curve_json, panel_json
 from .run import clicks, pump_info
 from .threads import one_thread
+
+KEPT = 16
+_kept: OrderedDict[tuple[int, str], tuple[Any, Any]] = OrderedDict()
+_guard = threading.Lock()
+
+
+def _placed(area: PanelModel, key: str, prepared: Any) -> Any:
+    """The panel's map, remembered while its marks stay as they are: between two clicks on a curve only the curve changes."""
+    at = (id(prepared), key)  # the sheet is kept beside the map, so its id cannot pass to another
+    with _guard:
+        if at in _kept:
+            _kept.move_to_end(at)
+            return _kept[at][1]
+    panel_map = axes.calibrate(area, prepared)
+    with _guard:
+        _kept[at] = (prepared, panel_map)
+        while len(_kept) > KEPT:
+            _kept.popitem(last=False)
+    return panel_map
 
 
 @one_thread
@@ -39,7 +61,7 @@ def preview(
         The panel cannot be used yet; the path is relative to the panel. Errors of the curve stay in the curve.
     """
     area = validate_part(PanelModel, panel, "$.panel")
-    panel_map = axes.calibrate(area, prepared)
+    panel_map = _placed(area, json.dumps(panel, sort_keys=True), prepared)
     out: dict[str, Any] = {
         "panel": panel_json(panel_map.panel_result())
         | {

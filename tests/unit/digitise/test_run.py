@@ -226,3 +226,20 @@ def test_power_drawn_on_the_efficiency_axis(chart_png, chart_recipe):
     c = by_id(digitise.run(chart_recipe, chart_png))["E-320"]
     assert c.points[:, 1].max() == pytest.approx(0.78, rel=2e-3)
     assert "mixed-axis" in [n.code for n in c.warnings]
+
+
+def test_preview_places_a_panel_once_while_its_marks_stay(chart_png, monkeypatch):
+    from curvebank import axes
+
+    loaded = sheet.load(chart_png)
+    prepared = sheet.prepare(loaded)
+    doc = chart.document()
+    placed = []
+    real = axes.calibrate
+    monkeypatch.setattr(axes, "calibrate", lambda *a, **k: placed.append(1) or real(*a, **k))
+    first = digitise.preview(doc["panels"][0], doc["curves"][0], prepared, loaded.info, doc["pump"])
+    digitise.preview(doc["panels"][0], doc["curves"][1], prepared, loaded.info, doc["pump"])
+    assert len(placed) == 1
+    doc["panels"][0]["axes"]["head"]["marks"][1]["at"][1] += 0.5
+    moved = digitise.preview(doc["panels"][0], None, prepared, loaded.info, doc["pump"])
+    assert len(placed) == 2 and moved["panel"]["mark_residuals"] != first["panel"]["mark_residuals"]
