@@ -73,7 +73,8 @@ def directions_of(axes: dict[str, AxisMarks], path: str) -> tuple[FloatArray, di
         if grow[d] is None:
             # Scattered marks of the other direction show it: lines of equal v are level where v does not change.
             flat = [_gradient(axes[n]) for n in of[1 - d] if not lined[n] and len(axes[n].typed) >= 3 and lines[n][2] > 0.05 * lines[n][1]]
-            reference = grow[1 - d] if grow[1 - d] is not None else (_gradient(axes[of[1 - d][0]]))
+            other_way = grow[1 - d]
+            reference = other_way if other_way is not None else _gradient(axes[of[1 - d][0]])
             base = flat[0] if flat else reference
             grow[d] = np.array([-base[1], base[0]])
     return np.array(grow), lined, notices
