@@ -16,7 +16,7 @@ collect_ignore_glob = [] if BROWSER else ["test_*.py"]
 
 ROOT = Path(__file__).resolve().parents[2]
 FLAGS = [
-    "--no-sandbox",
+    *(["--no-sandbox"] if hasattr(os, "geteuid") and os.geteuid() == 0 else []),  # Chromium refuses to start as root with its sandbox
     "--disable-gpu",
     "--disable-quic",
     "--no-first-run",
