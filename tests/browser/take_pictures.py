@@ -27,10 +27,9 @@ WANTED = {
 
 
 def keep(png: bytes, name: str) -> None:
-    """Store a picture with a palette: a drawing needs no more. Coverage keeps the few strokes of a rare colour."""
+    """Store a picture in full colour: a palette would lose either the paper or the few strokes of a rare colour."""
     OUT.mkdir(exist_ok=True)
-    picture = Image.open(io.BytesIO(png)).convert("RGB")
-    picture.quantize(256, Image.Quantize.MAXCOVERAGE, dither=Image.Dither.NONE).save(OUT / f"{name}.png", optimize=True)
+    Image.open(io.BytesIO(png)).convert("RGB").save(OUT / f"{name}.png", optimize=True)
     print(f"web/pictures/{name}.png", (OUT / f"{name}.png").stat().st_size // 1024, "kB")
 
 
