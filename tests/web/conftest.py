@@ -25,9 +25,9 @@ def empty(tmp_path_factory):
 @pytest.fixture(scope="session")
 def jobs():
     """One worker process for all tests: starting one costs seconds."""
-    registry = Registry(1)
-    yield registry
-    registry.close()
+    foreman = Registry(1)
+    yield foreman
+    foreman.close()
 
 
 @pytest.fixture

@@ -1,4 +1,4 @@
-"""The job registry: states, order, progress, stopping, and workers that die."""
+"""The job foreman: states, order, progress, stopping, and workers that die."""
 
 import multiprocessing
 import textwrap
@@ -59,14 +59,14 @@ def tasks(tmp_path_factory):
 
 
 @pytest.fixture(scope="module")
-def registry(tasks):
-    registry = Registry(1, tasks=tasks, grace_s=0.3)
-    yield registry
-    registry.close()
+def foreman(tasks):
+    foreman = Registry(1, tasks=tasks, grace_s=0.3)
+    yield foreman
+    foreman.close()
 
 
-def ended(registry, job, seconds=60):
-    assert registry.wait(job, seconds), (job.state, job.text)
+def ended(foreman, job, seconds=60):
+    assert foreman.wait(job, seconds), (job.state, job.text)
     return job
 
 
@@ -77,89 +77,89 @@ def until(condition, seconds=60):
         time.sleep(0.01)
 
 
-def test_a_job_runs_and_hands_its_value_over(registry):
+def test_a_job_runs_and_hands_its_value_over(foreman):
     kept = []
-    job = registry.submit("double", "double-21", {"value": 21}, on_done=lambda job, value: kept.append(value))
-    assert ended(registry, job).state == "done" and kept == [42] and (job.share, job.text) == (1.0, "Done")
-    assert registry.get(job.id) is job and registry.get("nothing") is None
+    job = foreman.submit("double", "double-21", {"value": 21}, on_done=lambda job, value: kept.append(value))
+    assert ended(foreman, job).state == "done" and kept == [42] and (job.share, job.text) == (1.0, "Done")
+    assert foreman.get(job.id) is job and foreman.get("nothing") is None
 
 
-def test_progress_is_seen_from_outside(registry):
-    job = registry.submit("slow", "slow-1", {"seconds": 5})
+def test_progress_is_seen_from_outside(foreman):
+    job = foreman.submit("slow", "slow-1", {"seconds": 5})
     until(lambda: job.share > 0.05 and job.text.startswith("step "))
     assert job.state == "running"
-    registry.cancel(job)
-    assert ended(registry, job).state == "cancelled" and job.text == "Stopped" and job.share < 1
+    foreman.cancel(job)
+    assert ended(foreman, job).state == "cancelled" and job.text == "Stopped" and job.share < 1
 
 
-def test_one_works_while_the_others_wait_in_line(registry):
-    first = registry.submit("slow", "line-1", {"seconds": 30})
+def test_one_works_while_the_others_wait_in_line(foreman):
+    first = foreman.submit("slow", "line-1", {"seconds": 30})
     until(lambda: first.state == "running")
-    second = registry.submit("double", "line-2", {"value": 1})
-    third = registry.submit("double", "line-3", {"value": 1})
-    urgent = registry.submit("double", "line-0", {"value": 1}, first=True)
-    assert [registry.place(j) for j in (first, urgent, second, third)] == [0, 1, 2, 3]
-    registry.cancel(third)
-    assert third.state == "cancelled" and registry.place(third) == 0
-    registry.cancel(first)
-    assert [ended(registry, j).state for j in (first, urgent, second)] == ["cancelled", "done", "done"]
+    second = foreman.submit("double", "line-2", {"value": 1})
+    third = foreman.submit("double", "line-3", {"value": 1})
+    urgent = foreman.submit("double", "line-0", {"value": 1}, first=True)
+    assert [foreman.place(j) for j in (first, urgent, second, third)] == [0, 1, 2, 3]
+    foreman.cancel(third)
+    assert third.state == "cancelled" and foreman.place(third) == 0
+    foreman.cancel(first)
+    assert [ended(foreman, j).state for j in (first, urgent, second)] == ["cancelled", "done", "done"]
 
 
-def test_the_same_key_is_worked_on_once_until_it_has_ended(registry):
-    first = registry.submit("slow", "same", {"seconds": 30})
-    assert registry.submit("slow", "same", {"seconds": 30}) is first
-    registry.cancel(first)
-    assert registry.submit("double", "same", {"value": 1}) is not first
-    ended(registry, first)
+def test_the_same_key_is_worked_on_once_until_it_has_ended(foreman):
+    first = foreman.submit("slow", "same", {"seconds": 30})
+    assert foreman.submit("slow", "same", {"seconds": 30}) is first
+    foreman.cancel(first)
+    assert foreman.submit("double", "same", {"value": 1}) is not first
+    ended(foreman, first)
 
 
-def test_a_library_error_keeps_its_code_and_words(registry):
-    job = ended(registry, registry.submit("bad_sheet", "bad", {}))
+def test_a_library_error_keeps_its_code_and_words(foreman):
+    job = ended(foreman, foreman.submit("bad_sheet", "bad", {}))
     assert job.state == "failed" and job.error == {"code": "truncated", "message": "Scan it again.", "path": "$.sheet"}
 
 
-def test_a_fault_of_the_program_is_told_in_short(registry):
-    job = ended(registry, registry.submit("bug", "bug", {}))
+def test_a_fault_of_the_program_is_told_in_short(foreman):
+    job = ended(foreman, foreman.submit("bug", "bug", {}))
     assert job.state == "failed" and job.error["code"] == "internal" and "ZeroDivision" not in job.error["message"]
 
 
-def test_a_worker_that_dies_fails_its_job_and_no_other(registry):
-    job = registry.submit("die", "die", {})
-    after = registry.submit("double", "after", {"value": 2})
-    assert ended(registry, job).error["code"] == "worker-died"
-    assert ended(registry, after).state == "done"
+def test_a_worker_that_dies_fails_its_job_and_no_other(foreman):
+    job = foreman.submit("die", "die", {})
+    after = foreman.submit("double", "after", {"value": 2})
+    assert ended(foreman, job).error["code"] == "worker-died"
+    assert ended(foreman, after).state == "done"
 
 
-def test_a_task_that_does_not_listen_is_ended(registry):
-    job = registry.submit("deaf", "deaf", {"seconds": 600})
+def test_a_task_that_does_not_listen_is_ended(foreman):
+    job = foreman.submit("deaf", "deaf", {"seconds": 600})
     until(lambda: job.state == "running")
-    registry.cancel(job)
-    assert ended(registry, job, 30).state == "cancelled"
-    assert ended(registry, registry.submit("double", "next", {"value": 1})).state == "done"
+    foreman.cancel(job)
+    assert ended(foreman, job, 30).state == "cancelled"
+    assert ended(foreman, foreman.submit("double", "next", {"value": 1})).state == "done"
 
 
-def test_a_result_that_cannot_be_kept_is_a_failure(registry):
+def test_a_result_that_cannot_be_kept_is_a_failure(foreman):
     def refuse(job, value):
         raise OSError("disk full")
 
-    job = ended(registry, registry.submit("double", "unkept", {"value": 1}, on_done=refuse))
+    job = ended(foreman, foreman.submit("double", "unkept", {"value": 1}, on_done=refuse))
     assert job.state == "failed" and job.error["code"] == "not-kept" and "disk full" in job.error["message"]
 
 
-def test_ended_jobs_are_forgotten_in_the_end(registry, monkeypatch):
+def test_ended_jobs_are_forgotten_in_the_end(foreman, monkeypatch):
     monkeypatch.setattr("curvebank_web.jobs.KEPT", 2)
-    jobs = [ended(registry, registry.submit("double", f"many-{n}", {"value": n})) for n in range(6)]
-    assert registry.get(jobs[0].id) is None and registry.get(jobs[-1].id) is jobs[-1]
+    jobs = [ended(foreman, foreman.submit("double", f"many-{n}", {"value": n})) for n in range(6)]
+    assert foreman.get(jobs[0].id) is None and foreman.get(jobs[-1].id) is jobs[-1]
 
 
 def test_closing_stops_the_work_and_the_processes(tasks, tmp_path):
     before = {p.pid for p in multiprocessing.active_children()}
-    registry = Registry(1, tasks=tasks)
-    running = registry.submit("swallow", "a", {"mark": str(tmp_path / "mark")})
-    waiting = registry.submit("double", "b", {"value": 1})
+    foreman = Registry(1, tasks=tasks)
+    running = foreman.submit("swallow", "a", {"mark": str(tmp_path / "mark")})
+    waiting = foreman.submit("double", "b", {"value": 1})
     until(lambda: running.share > 0)
     assert {p.pid for p in multiprocessing.active_children()} - before
-    registry.close()
+    foreman.close()
     assert (running.state, waiting.state) == ("cancelled", "cancelled")
     assert (tmp_path / "mark").read_text() == "left"
     assert not {p.pid for p in multiprocessing.active_children()} - before
