@@ -30,7 +30,7 @@ from curvebank.errors import CurvebankError, LawError, NumberError
         np.array(["2026-11-01"], dtype="datetime64[D]"),
         np.array([5], dtype="timedelta64[s]"),
         {"flow": 50.0},
-        object(),
+        Ellipsis,
     ],
     ids=repr,
 )
