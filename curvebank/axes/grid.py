@@ -65,17 +65,19 @@ def bend_of(d: int, layout: Layout, solution: Solution, printed: tuple, ink: np.
     low, high = marks_uv.min(0), marks_uv.max(0)
     centre, half = (low + high) / 2, np.maximum((high - low) / 2, 1e-9)
     px = np.array([np.hypot(*solution.theta[2:4]), np.hypot(*solution.theta[4:6])]) * layout.size
-    found = _lines_along(d, layout, solution, printed, ink, centre, half, px)
+    name, slot = next((n, s) for n, s in layout.slots.items() if s.marks.direction == d and s.own is None and s.twin is None)
+    rows = [i for i, pair in enumerate(layout.terms) if pair[d][0] == name]
+    axis_at = float(np.mean(marks_uv[rows, 1 - d]))
+    found = _lines_along(d, layout, solution, printed, ink, centre, half, px, axis_at)
     if len(found) < FEWEST_LINES:
         return f"{'no' if not found else 'only ' + str(len(found))} printed lines cross the panel"
-    name, slot = next((n, s) for n, s in layout.slots.items() if s.marks.direction == d and s.own is None and s.twin is None)
+    found = _corrected(found, marks_uv[rows, d], np.array([layout.terms[i][d][1] for i in rows]), float(px[d]))
     lines = _valued(found, slot.centre, slot.half, slot.marks.log, px[d], slot.marks.typed)
     if len(lines) < FEWEST_LINES:
         return "the printed lines do not sit on round values of the marks"
     reach = max(line.c for line in lines) - min(line.c for line in lines)
     if reach < 1.2 * half[d]:
         return "the printed lines cover only a part of the panel"
-    rows = [i for i, pair in enumerate(layout.terms) if pair[d][0] == name]
     marks = (marks_uv[rows], np.array([layout.terms[i][d][1] for i in rows]))
     bend = _best_degree(d, lines, marks, centre, half, float(px[d]))
     if bend is None:
@@ -95,15 +97,19 @@ def _lines_along(
     centre: FloatArray,
     half: FloatArray,
     px: FloatArray,
+    axis_at: float,
 ) -> list[tuple[FloatArray, float]]:
-    """Printed lines on which coordinate d stays: base coordinates inside the marked area and their middle."""
+    """Printed lines on which coordinate d stays: base coordinates inside the marked area, and the coordinate where they meet the marks.
+
+    Where the marks stand the marks' map is good; on a photo taken at an angle it may be several lines off at the far side.
+    """
     out: list[tuple[FloatArray, float]] = []
     e = 1 - d
     for line in printed:
         uv = plane.coordinates(solution.theta, (line.points() - layout.shift) / layout.size)
         if np.ptp(uv[:, d]) * px[d] > 0.25 * np.ptp(uv[:, e]) * px[e]:
             continue
-        if abs(np.median(uv[:, d]) - centre[d]) > half[d] + 6 / px[d]:
+        if abs(_meets(uv, d, axis_at) - centre[d]) > half[d] + 6 / px[d]:
             continue
         inside = np.abs(uv[:, e] - centre[e]) <= half[e] - 2 / px[e]
         if inside.sum() < 4 or np.ptp(uv[inside, e]) < SHORTEST_SHARE * 2 * half[e]:
@@ -112,10 +118,29 @@ def _lines_along(
         if len(points) < 4:
             continue
         uv = plane.coordinates(solution.theta, (points - layout.shift) / layout.size)
-        c = float(np.median(uv[:, d]))
+        c = _meets(uv, d, axis_at)
         if abs(c - centre[d]) <= half[d] + 4 / px[d]:
             out.append((uv, c))
     return sorted(out, key=lambda pair: pair[1])
+
+
+def _corrected(found: list[tuple[FloatArray, float]], marked: FloatArray, typed: FloatArray, px: float) -> list[tuple[FloatArray, float]]:
+    """Lines with their meeting places carried through three or more marks where a straight scale misses those by more than a click."""
+    miss = typed - marked
+    if len(np.unique(np.round(typed, 9))) < 3 or np.abs(miss).max() * px <= 2 * CLICK_SIGMA_PX:
+        return found
+    bow = np.polyfit(marked, miss, 2)
+    return [(uv, c + float(np.polyval(bow, c))) for uv, c in found]
+
+
+def _meets(uv: FloatArray, d: int, axis_at: float) -> float:
+    """Coordinate d of a line where the other coordinate is ``axis_at``: straight on from its nearer half."""
+    e = uv[:, 1 - d]
+    near = np.argsort(np.abs(e - axis_at))[: max(len(e) // 2, min(len(e), 4))]
+    if np.ptp(e[near]) <= 0:
+        return float(np.median(uv[near, d]))
+    slope, level = np.polyfit(e[near] - axis_at, uv[near, d], 1)
+    return float(level)
 
 
 def _valued(found: list[tuple[FloatArray, float]], centre: float, half: float, log: bool, px: float, typed: FloatArray) -> list[Line]:

@@ -42,7 +42,8 @@ class Layout:
 
     ``position`` [n, 2] are the clicks in oblique coordinates along ``directions`` (rows), shifted and scaled like the plane's
     pixels; ``open_direction`` and ``lined_up`` tell of each open coordinate its direction and whether several clicks share it;
-    ``rows_of`` gives the clicks of each axis's marks.
+    ``rows_of`` gives the clicks of each axis's marks; ``alignments`` are (direction, click, click) whose coordinate is one printed line
+    although their terms differ (a flow axis whose ends are clicked as ticks of two value axes).
     """
 
     slots: dict[str, Slot]
@@ -56,6 +57,7 @@ class Layout:
     size: float
     rows_of: dict[str, tuple[int, ...]]
     notices: tuple[tuple[str, str], ...] = ()
+    alignments: tuple[tuple[int, int, int], ...] = ()
 
     @property
     def scales(self) -> int:
@@ -208,7 +210,15 @@ def _observations(
             open_direction.append(d)
             lined_up.append(len(group) > 1)
     pairs = tuple((u, v) for u, v in terms if u is not None and v is not None)
-    return Layout(slots, points, pairs, tuple(open_direction), tuple(lined_up), position, directions, shift, size, rows_of, notices)
+    aligned: list[tuple[int, int, int]] = []
+    for name, a in axes.items():
+        if lined[name]:
+            d = 1 - a.direction
+            one_each = list({terms[r][d]: r for r in rows_of[name]}.values())
+            aligned += [(d, r, q) for r, q in zip(one_each, one_each[1:], strict=False)]
+    return Layout(
+        slots, points, pairs, tuple(open_direction), tuple(lined_up), position, directions, shift, size, rows_of, notices, tuple(aligned)
+    )
 
 
 def _clusters(rows: list[int], position: FloatArray, reach: float) -> list[list[int]]:

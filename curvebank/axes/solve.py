@@ -25,6 +25,8 @@ TILT_SIGMA = 0.15
 """Expected size of the perspective terms of a hand-held photo: relative change of scale over half the marked range."""
 TIE_SIGMA_PX = 0.3
 HUBER_SIGMAS = 3.5
+ALIGN_SIGMA_PX = 1.0
+"""An axis line is drawn straight, but paper curls: its marks share its coordinate this well."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,6 +146,12 @@ class _System:
             a, row_a = layout.term_row(t.first, p, len(x))
             b, row_b = layout.term_row(t.second, p, len(x))
             self.tie_fixed[k], self.tie_rows[k] = a - b, row_a - row_b
+        # Clicks of one axis line; where their terms hold no unknown there is nothing to align.
+        free = [(d, i, j) for d, i, j in layout.alignments if np.any(self.by_x[i, d] != self.by_x[j, d])]
+        self.tie_fixed = np.concatenate([self.tie_fixed, [self.fixed[i, d] - self.fixed[j, d] for d, i, j in free]])
+        self.tie_rows = np.concatenate([self.tie_rows, np.reshape([self.by_x[i, d] - self.by_x[j, d] for d, i, j in free], (-1, len(x)))])
+        self.tie_weight = np.concatenate([self.tie_weight, np.full(len(free), layout.size / ALIGN_SIGMA_PX)])
+        self.tie_direction = np.concatenate([self.tie_direction, np.array([d for d, _, _ in free], dtype=int)])
 
     def __call__(self, x: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray, float]:
         p = self.p
