@@ -57,7 +57,8 @@ def panel_of(truth: dict[str, Any], panel_id: str, recipe: dict[str, Any] | None
     return Outline(entry["polygon"], 0.0)
 
 
-def page_of(path: Path | None, picture: np.ndarray | None) -> tuple[sheet.Sheet, bytes]:
+def page_of(path: Path | None, picture: np.ndarray | None, about: dict[str, Any]) -> tuple[sheet.Sheet, bytes]:
+    """The page that ``about`` (a recipe's "sheet") names, from a file or from a drawn picture."""
     if path is not None:
         data = path.read_bytes()
     else:
@@ -68,7 +69,7 @@ def page_of(path: Path | None, picture: np.ndarray | None) -> tuple[sheet.Sheet,
         buffer = io.BytesIO()
         Image.fromarray(picture).save(buffer, "PNG")
         data = buffer.getvalue()
-    return sheet.load(data), data
+    return sheet.load(data, **{key: about[key] for key in ("page", "dpi", "turn") if key in about}), data
 
 
 def shortest_path_seconds(page: sheet.Sheet, clicks: np.ndarray) -> float:
@@ -207,11 +208,11 @@ def main() -> int:
         if file is None:
             kind, seed = name.rsplit("-", 1)
             picture, truth = drawn.draw(kind, int(seed))
-            page, data = page_of(None, picture)
+            page, data = page_of(None, picture, {})
         else:
             truth = json.loads(file.read_text())
             recipe = json.loads(file.with_name(f"{name}.recipe.json").read_text())
-            page, data = page_of(file.with_name(recipe["sheet"]["file"]), None)
+            page, data = page_of(file.with_name(recipe["sheet"]["file"]), None, recipe["sheet"])
         try:
             mine, about = run_sheet(name, page, truth, recipe, asked.clicks, not asked.no_speed)
         except CurvebankError as fault:
