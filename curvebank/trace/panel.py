@@ -3,6 +3,8 @@
 from collections.abc import Callable, Sequence
 from typing import Any
 
+import numpy as np
+
 from ..errors import TraceError
 from ..records import Trace
 from ..sheet import Prepared
@@ -19,6 +21,9 @@ FAR_PX = 1.2
 Progress = Callable[[float, str], Any]
 LOST = 0.25
 """Share of readings that must show the line; with fewer there is no line to speak of between the clicks."""
+STUB = 0.1
+"""A trace cut back at the ends of its ink to less than this share of the way from click to click has found no line."""
+NOTHING = "No line was found between the clicks; check that they lie on one line, or add clicks along it"
 
 
 def trace_panel(
@@ -75,7 +80,9 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace
         axis, shape, far = align(prepared, axis, points)
     if not clicks.closed and clicks.ends == "ink":
         axis = to_ink(prepared, panel_map, axis, shape)
+        if axis.length < STUB * np.hypot(*np.diff(points, axis=0).T).sum():
+            raise TraceError(NOTHING, code="lost")
     fine = refine(prepared, axis, shape, points)
     if fine.blocks.good.mean() < LOST and found.cost > 0.5:
-        raise TraceError("No line was found between the clicks; check that they lie on one line, or add clicks along it", code="lost")
+        raise TraceError(NOTHING, code="lost")
     return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(prepared, found, fine)

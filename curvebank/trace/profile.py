@@ -100,12 +100,17 @@ def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
     y = np.rint(points[:, 1:] + normals[:, 1:] * d).astype(np.int64)
     ok = ((x >= 0) & (x < width) & (y >= 0) & (y < height)).ravel()
     flat = (y * width + x).ravel()[ok]
-    _, first = np.unique(flat, return_index=True)
-    at = np.repeat(s, len(d))[ok][first]
-    px = np.stack([x.ravel()[ok][first], y.ravel()[ok][first]], axis=1).astype(np.float64)
-    base, normal = axis.at(at)
-    gap = px - base
-    at = at + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
+    # Each pixel once: the last place written to it is the one that keeps it. Only touched cells of the page are ever read.
+    order = np.arange(len(flat), dtype=np.int32)
+    owner = np.empty(height * width, np.int32)
+    owner[flat] = order
+    first = np.flatnonzero(owner[flat] == order)
+    place = np.flatnonzero(ok)[first]
+    px = np.stack([x.ravel()[place], y.ravel()[place]], axis=1).astype(np.float64)
+    row = place // len(d)
+    normal = normals[row]
+    gap = px - points[row]
+    at = s[row] + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
     base, normal = axis.at(at)
     across = ((px - base) * normal).sum(axis=1)
     if axis.closed:
@@ -128,23 +133,25 @@ def first_shape(pixels: Pixels, width_px: float) -> Shape:
     if keep.sum() < 0.3 * len(keep):
         keep = np.ones(len(keep), bool)
     bins, ink = bins[keep] - low, pixels.ink[keep]
-    # Medians of all bins at once: sorted by bin, then by ink, the middle of each run.
-    order = np.argsort(bins + 0.4 * ink)
-    edges = np.flatnonzero(np.diff(bins[order], prepend=-1))
-    sizes = np.diff(np.r_[edges, len(order)])
-    at = (bins[order][edges] + low) / 3.0
-    profile = ink[order][edges + sizes // 2]
-    best = (np.inf, max(width_px, 1.0), 0.9, 1.0)
-    mean = profile.mean()
-    for width in np.clip(width_px * WIDTHS, 0.6, 30):
-        for blur in BLURS:
-            g = Shape(float(width), blur, 0.0, 1.0).value(at)
-            g0 = g - g.mean()
-            height = float(g0 @ profile) / max(float(g0 @ g0), 1e-12)
-            miss = float(np.abs(profile - mean - height * g0).sum())
-            if miss < best[0] and height > 0.02:
-                best = (miss, float(width), blur, height)
-    return Shape(best[1], best[2], 0.05, best[3])
+    # Medians of all bins at once: counted by bin and ink step, the middle of each bin's count.
+    count = int(bins.max()) + 1
+    table = np.bincount(bins * 256 + np.rint(255.0 * ink).astype(np.int64), minlength=256 * count).reshape(count, 256)
+    sizes = table.sum(axis=1)
+    held = np.flatnonzero(sizes)
+    at = (held + low) / 3.0
+    profile = np.argmax(np.cumsum(table[held], axis=1) > (sizes[held] // 2)[:, None], axis=1) / 255.0
+    width = np.repeat(np.clip(width_px * WIDTHS, 0.6, 30), len(BLURS))[:, None]
+    blur = np.tile(BLURS, len(WIDTHS))[:, None]
+    edge = 0.5 * width / blur
+    u = at / blur
+    g = (ndtr(u + edge) - ndtr(u - edge)) / np.maximum(2 * ndtr(edge) - 1, 1e-6)
+    g -= g.mean(axis=1, keepdims=True)
+    heights = (g @ profile) / np.maximum((g * g).sum(axis=1), 1e-12)
+    miss = np.where(heights > 0.02, np.abs(profile - profile.mean() - heights[:, None] * g).sum(axis=1), np.inf)
+    k = int(np.argmin(miss))
+    if not np.isfinite(miss[k]):
+        return Shape(max(width_px, 1.0), 0.9, 0.05, 1.0)
+    return Shape(float(width[k, 0]), float(blur[k, 0]), 0.05, float(heights[k]))
 
 
 def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, block_px: float, rounds: int = 4) -> Blocks:
@@ -285,12 +292,17 @@ def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) ->
     )  # fmt: skip
 
 
+def _good_near(good: FloatArray, width: int) -> FloatArray:
+    """Good readings within an odd window round each one; as many values as readings, also where the window is the longer."""
+    return np.convolve(np.pad(good, width // 2), np.ones(width), "valid")
+
+
 def _shown(blocks: Blocks, axis: Axis) -> FloatArray:
     """Weight of each axis sample: 1 where the line is shown by a run of good readings, 0 in a label gap."""
     good = blocks.good.astype(float)
-    solid = np.convolve(good, np.ones(5), "same") >= 3
+    solid = _good_near(good, 5) >= 3
     if (solid & blocks.good).mean() < 0.3:
-        solid = blocks.good | (np.convolve(good, np.ones(9), "same") >= 2)
+        solid = blocks.good | (_good_near(good, 9) >= 2)
     if solid.mean() < 0.3:
         return np.ones(len(axis.s))
     return (np.interp(axis.s, blocks.s, solid.astype(float)) > 0.5).astype(float)

@@ -1,10 +1,16 @@
 """Traces of drawn lines whose truth is exact: accuracy, ends, loops, crossings, kinds, refusals."""
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 
 from curvebank.errors import Cancelled, TraceError
+from curvebank.sheet import load, prepare
 from curvebank.trace import Clicks, trace_panel
+from curvebank.trace.profile import _good_near
+
+SAMPLES = Path(__file__).parents[3] / "samples"
 
 X = np.linspace(0, 1, 300)
 ARCH = np.stack([60 + 560 * X, 400 - 900 * X * (1 - X) * 0.9], 1)
@@ -154,6 +160,21 @@ def test_wrong_clicks_are_named_and_cost_only_their_own_curve(tools, box, points
     bad, fine = trace_panel(tools["prepared_of"](pixels), box, [Clicks(id="bad", points=points, **options), good])
     assert isinstance(bad, TraceError) and bad.code == code and says in bad.message
     assert not tools["score"](line, False, fine.pixels)["failed"]
+
+
+def test_clicks_over_bare_paper_say_that_there_is_no_line(tools):
+    """Between faint grid lines of a real page: words about the paper, never about arrays, and no crumb of a trace."""
+    page = load((SAMPLES / "ebbrook-vl-200.pdf").read_bytes(), page=2)
+    plot = tools["Box"](np.array([401, 614]), np.array([2078, 1747]))
+    clicks = Clicks(id="c", points=np.array([[1700.0, 700.0], [1900.0, 720.0], [2000.0, 690.0]]))
+    (got,) = trace_panel(prepare(page), plot, [clicks])
+    assert isinstance(got, TraceError)
+    assert got.code == "lost" and got.message.startswith("No line was found between the clicks")
+
+
+def test_fewer_readings_than_the_window_that_looks_at_them():
+    near = _good_near(np.array([1.0, 0.0, 1.0, 1.0]), 5)
+    assert near.tolist() == [2, 3, 3, 2]
 
 
 def test_progress_is_told_and_may_cancel(tools, box):
