@@ -193,6 +193,20 @@ test("the printed crossing near a click is found, and a blank patch holds nothin
   assert.equal(dip([200, 200, 200, 200, 200, 200], 3, 2), null);
 });
 
+test("the line under the hand goes before a stronger one at the edge of the reach, on a blueprint too", () => {
+  const [width, height] = [41, 41];
+  const paper = (ground, faint, strong) => {
+    const grey = new Float64Array(width * height).fill(ground);
+    for (let i = 0; i < 41; i++) {
+      grey[i * width + 21] = faint;
+      grey[i * width + 29] = strong;
+    }
+    return { width, height, grey };
+  };
+  nearPoint(snap(paper(235, 150, 60), [20, 20], 12).at, [21, 20], 0.05);
+  nearPoint(snap(paper(70, 150, 230), [20, 20], 12).at, [21, 20], 0.05);
+});
+
 test("units agree with their definitions (NIST SP 811, appendix B)", () => {
   near(UNITS.flow["gal/min(US)"], 3.785411784e-3 * 60, 1e-12);
   near(UNITS.flow["ft3/s"], 0.3048 ** 3 * 3600, 1e-9);

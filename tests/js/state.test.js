@@ -3,7 +3,8 @@ import assert from "node:assert/strict";
 import test from "node:test";
 import { Outbox } from "../../web/curvebank_web/static/js/net/outbox.js";
 import { rank, unknowns } from "../../web/curvebank_web/static/js/state/catalogue.js";
-import { calibrated, curveLabel, liveFindings, panelCurves, progress, usablePanel } from "../../web/curvebank_web/static/js/state/derive.js";
+import { calibrated, curveLabel, liveFindings, panelCurves, panelToWorkOn, progress, usablePanel } from "../../web/curvebank_web/static/js/state/derive.js";
+import { likelyAxes } from "../../web/curvebank_web/static/js/panels/sentences.js";
 import { apply, curveId, desk, freshId, insertClick, newPanel, recipeOf } from "../../web/curvebank_web/static/js/state/doc.js";
 import { gapOf, ghostsOf, runFindings } from "../../web/curvebank_web/static/js/state/family.js";
 import { acknowledge, fromDraft, head, moveTo, push, redoTarget, undoTarget, unkept } from "../../web/curvebank_web/static/js/state/history.js";
@@ -251,4 +252,49 @@ test("the catalogue puts the nearest to the duty first and names what is not kno
 test("the bar says where the work is kept", () => {
   assert.equal(words.kept({ at: "13:42", step: 47, waiting: 0 }), "Kept 13:42, step 47");
   assert.equal(words.kept({ away: true, waiting: 4 }), "Kept in this browser, 4 steps not yet in the file");
+});
+
+test("a step forward lands on the first panel that wants it", () => {
+  const marks = (n) => Array.from({ length: n }, (_, k) => ({ at: [k, k], value: k }));
+  const panel = (id, n) => ({ id, axes: { flow: { quantity: "flow", unit: "m3/h", marks: marks(n) }, head: { quantity: "head", unit: "m", marks: marks(n) } } });
+  const doc = frozen({ panels: [panel("a", 2), panel("b", 0), panel("c", 2)], curves: [{ id: "H1", panel: "a" }, { id: "H2", panel: "a" }] });
+  assert.equal(panelToWorkOn("marks", doc, "c"), "b");
+  assert.equal(panelToWorkOn("curves", doc, "a"), "c");
+  assert.equal(panelToWorkOn("fit", doc, "b"), "b");
+  const run = { family: { head: { curves: [{ id: "H1", ghosts: [{ to_id: "H2" }] }, { id: "H2", ghosts: [] }] } } };
+  assert.equal(panelToWorkOn("family", doc, "c", run), "a");
+  assert.equal(panelToWorkOn("family", doc, "c"), "c");
+  assert.equal(panelToWorkOn("marks", { panels: [] }, null), null);
+});
+
+test("a mark asks first for the scale that does not know its line yet", () => {
+  const outline = [[100, 100], [900, 100], [900, 700], [100, 700]];
+  const axis = (quantity, marks) => ({ quantity, marks });
+  const panel = (flow, head) => ({ id: "p", outline, axes: { flow: axis("flow", flow), head: axis("head", head) } });
+  const foot = [{ at: [100, 700], value: 0 }, { at: [900, 700], value: 400 }];
+  assert.deepEqual(likelyAxes(panel([], []), [100, 700]), ["flow", "head"]);
+  assert.deepEqual(likelyAxes(panel(foot, [{ at: [100, 700], value: 0 }]), [101, 100]), ["head", "flow"]);
+  assert.deepEqual(likelyAxes(panel(foot.slice(0, 1), [{ at: [100, 700], value: 0 }]), [900, 700]), ["flow"]);
+});
+
+test("findings leave with the curves and panels they speak of", () => {
+  const run = { findings: [{ severity: "error", message: "One.", subject: "curve:H1" }, { severity: "note", message: "Two.", subject: "curve:H2" }, { severity: "warning", message: "Three.", subject: "axis:p/flow" }, { severity: "note", message: "Four.", subject: "sheet" }] };
+  const doc = { panels: [{ id: "p" }], curves: [{ id: "H1" }] };
+  assert.deepEqual(runFindings(run, doc).map((f) => f.text), ["One.", "Three.", "Four."]);
+  assert.deepEqual(runFindings(run, { panels: [], curves: [] }), []);
+  assert.equal(runFindings(run).length, 4);
+});
+
+test("one diameter at several speeds is named by speed; two lines of one name are told apart by a warning", () => {
+  const panel = { id: "p", axes: { flow: { quantity: "flow", unit: "m3/h", marks: [] }, head: { quantity: "head", unit: "m", marks: [] } } };
+  const curve = (id, speed) => ({ id, panel: "p", x: "flow", y: "head", quantity: "head", diameter_mm: 480, speed_rpm: speed, clicks: [] });
+  const bySpeed = { panels: [panel], curves: [curve("a", 585), curve("b", 485)] };
+  assert.deepEqual(panelCurves(bySpeed, panel, () => null).map((i) => i.label), ["585 1/min", "485 1/min"]);
+  const said = (curves) => liveFindings({ panels: [panel], curves }, () => null, () => null, words);
+  assert.deepEqual(said(bySpeed.curves), []);
+  const [twin, ...rest] = said([curve("a", 585), curve("b", 585)]);
+  assert.equal(rest.length, 0);
+  assert.equal(twin.severity, "warning");
+  assert.equal(twin.where.curve, "b");
+  assert.match(twin.text, /already called Ø 480 at 585 1\/min/);
 });

@@ -18,9 +18,11 @@ export function dip(values, centre, reach, least = 6) {
   let score = 0;
   for (let i = Math.max(1, Math.ceil(centre - reach)); i <= Math.min(values.length - 2, Math.floor(centre + reach)); i++) {
     const depth = ground - values[i];
-    if (depth > least && depth - 0.4 * Math.abs(i - centre) > score && values[i] <= values[i - 1] && values[i] <= values[i + 1]) {
+    // The line under the hand goes before a stronger one at the edge of the reach: there it must be several times as strong.
+    const worth = depth / (1 + (3 * Math.abs(i - centre)) / Math.max(reach, 1));
+    if (depth > least && worth > score && values[i] <= values[i - 1] && values[i] <= values[i + 1]) {
       best = i;
-      score = depth - 0.4 * Math.abs(i - centre);
+      score = worth;
     }
   }
   if (best < 0) return null;
@@ -34,11 +36,19 @@ export function dip(values, centre, reach, least = 6) {
   return sum > 0 ? { at: moment / sum, depth: ground - values[best] } : null;
 }
 
+/** The patch with dark lines on a light ground: where the few pixels that stand out are the light ones (a blueprint), turned over. */
+export function darkOnLight(patch) {
+  const sorted = Uint8Array.from(patch.grey).sort();
+  const at = (share) => sorted[Math.floor(share * (sorted.length - 1))];
+  return at(0.98) - at(0.5) > at(0.5) - at(0.02) ? { ...patch, grey: patch.grey.map((v) => 255 - v) } : patch;
+}
+
 /**
  * patch: {width, height, grey (row by row, 0 black .. 255 white)}; centre in patch pixels; reach in patch pixels.
  * Gives {at: [x, y], kind: "crossing" | "upright line" | "level line"} or null.
  */
-export function snap(patch, [cx, cy], reach) {
+export function snap(print, [cx, cy], reach) {
+  const patch = darkOnLight(print);
   const x = dip(profile(patch, "x"), cx, reach);
   const y = dip(profile(patch, "y"), cy, reach);
   if (x && y) return { at: [x.at, y.at], kind: "crossing" };

@@ -177,6 +177,7 @@ export class DeskDraw {
     if (!this.scales && desk.axes.length) return say("The panel is out of sight.", "Press 0 to see it whole.");
     if (!this.scales) return say("Nothing to redraw yet.", "Two marks on each scale, and the grid stands here.");
     if (desk.items.some((i) => i.curve.clicks?.length > 1 && !i.result)) return say("Following the ink …", desk.previews.state === "preparing" ? "The sheet is being levelled first; you can go on working." : "The lines stand here in a moment.");
+    if (desk.items.some((i) => i.failed)) return say("No line was found here.", "The finding says why. Set the clicks on the ink, or draw the line with your clicks.");
     return say("No curves yet.", desk.step === "marks" ? "A stroke ending in a ring: how far the mark stands off the axis, 20 times." : "Click twice along a printed line.");
   }
 
@@ -279,7 +280,11 @@ export class DeskDraw {
     const { desk } = this;
     const list = desk.findings.map((f) => desk.withWays(f));
     const small = innerWidth < 1200 || innerHeight < 860;
-    drawFindings($("findings"), { title: desk.step === "family" ? "Findings on this family" : "Findings on this sheet", list, most: small ? 1 : 2, chosen: desk.chosenFinding, onChoose: (f) => desk.chooseFinding(f.number) });
+    const none = desk.run?.fresh || !desk.doc.curves?.length ? "none" : "none so far; the curves are not checked yet";
+    const say = (most) => drawFindings($("findings"), { title: desk.step === "family" ? "Findings on this family" : "Findings on this sheet", list, most, none, chosen: desk.chosenFinding, onChoose: (f) => desk.chooseFinding(f.number) });
+    say(small ? 1 : 2);
+    // A finding stands there whole or not at all: half a sentence helps no one.
+    if (!small && list.length > 1 && $("findings").scrollHeight > $("findings").clientHeight + 1) say(1);
     drawBeside($("beside"), desk, this.scales);
     const { doc, page } = desk;
     const marks = this.scene?.marks.filter((m) => m.panel === desk.panel?.id) ?? [];

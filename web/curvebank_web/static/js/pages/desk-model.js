@@ -4,7 +4,7 @@ import { follow } from "../net/jobs.js";
 import { Previews } from "../net/previews.js";
 import { axisIds, panelMap } from "../geometry/panelmap.js";
 import { desk as deskPart, recipeOf } from "../state/doc.js";
-import { calibrated, liveFindings, panelCurves, progress, STEPS } from "../state/derive.js";
+import { calibrated, liveFindings, panelCurves, panelToWorkOn, progress, STEPS } from "../state/derive.js";
 import { ghostsOf, runFindings } from "../state/family.js";
 import { extents } from "../view/replot.js";
 import * as words from "../state/words.js";
@@ -66,6 +66,7 @@ export class Desk {
 
   go(step) {
     if (!STEPS.includes(step)) return;
+    if (STEPS.indexOf(step) > STEPS.indexOf(this.step)) this.panelId = panelToWorkOn(step, this.doc, this.panelId, this.run);
     this.step = step;
     history.replaceState(null, "", `#${step}`);
     this.chosenMark = null;
@@ -101,6 +102,11 @@ export class Desk {
     const doc = this.doc;
     const panel = this.panel;
     if (panel && this.panelId !== panel.id) this.panelId = panel.id;
+    if (this.shownPanel !== (panel?.id ?? null)) {
+      // Undo and redo may bring another panel, or the first one: the paper goes there unless it was moved by hand.
+      if (this.shownPanel !== undefined && !this.moved) this.view = null;
+      this.shownPanel = panel?.id ?? null;
+    }
     this.previews.want(doc, this.openCurve, panel?.id);
     const ids = panel ? axisIds(panel) : { flow: [], value: [] };
     this.axes = [];
@@ -124,7 +130,7 @@ export class Desk {
     if (this.saved && this.saved.recipe !== JSON.stringify(recipeOf(doc))) this.saved = null;
     this.ghosts = this.step === "family" && this.run && panel ? ghostsOf(this.run, doc, panel, this.carry) : [];
     const live = liveFindings(doc, this.panelResult, this.curveResult, words);
-    this.findings = mergeFindings(live, this.run ? runFindings(this.run) : []).map((f, i) => ({ ...f, number: i + 1, cured: false }));
+    this.findings = mergeFindings(live, this.run ? runFindings(this.run, doc) : []).map((f, i) => ({ ...f, number: i + 1, cured: false }));
     const wrong = new Set(this.findings.filter((f) => f.severity === "error" && f.subject?.startsWith("curve:")).map((f) => f.subject.slice(6)));
     for (const item of this.items) item.wrong = wrong.has(item.id);
     this.progress = progress(doc, { page: this.page, panelResultOf: this.panelResult, resultOf: this.curveResult, run: this.run, saved: this.saved });

@@ -8,7 +8,7 @@ const arrow = () => s("svg", { width: 9, height: 6, viewBox: "0 0 9 6", "aria-hi
  * A blank that takes a number. onValue(number | null); `offer` is a value that Tab takes when the blank is empty; `words(text)` may
  * accept a text in place of a number (a letter for a diameter).
  */
-export function numberBlank({ name, label, value, example = "", offer = null, width = 52, onValue, onEnter, least = null, whole = false, words = null }) {
+export function numberBlank({ name, label, value, example = "", offer = null, width = 52, onValue, onEnter, least = null, most = null, whole = false, words = null }) {
   const shown = value === null || value === undefined ? "" : typeof value === "string" ? value : typed(value);
   const input = h("input", { name, type: "text", inputmode: "decimal", autocomplete: "off", spellcheck: "false", "aria-label": label, value: shown, placeholder: offer !== null ? `${typed(offer)}` : example, style: { width: `${Math.max(width, 16 + 9 * shown.length)}px` } });
   const wrap = h("span", { class: "blank" }, input);
@@ -17,6 +17,7 @@ export function numberBlank({ name, label, value, example = "", offer = null, wi
     const got = said ? { value: said } : parseNumber(input.value);
     let error = got.error ?? null;
     if (!error && !said && got.value !== null && least !== null && !(got.value >= least)) error = `“${input.value}” is too small here. Type ${typed(least)} or more.`;
+    if (!error && !said && got.value !== null && most !== null && !(got.value <= most)) error = `“${input.value}” is too large here. Type ${typed(most)} or less.`;
     if (!error && got.value !== null && whole && got.value !== Math.round(got.value)) error = `“${input.value}” is not a whole number.`;
     wrap.classList.toggle("wrong", Boolean(error));
     input.toggleAttribute("aria-invalid", Boolean(error));
@@ -69,8 +70,12 @@ function sayUnder(wrap, name, error) {
   wrap.querySelector("input").setAttribute("aria-describedby", id);
 }
 
+/** A blank grows with its text, up to a third of a small window. */
+const roomFor = (text, least) => Math.max(least, Math.min(300, 18 + 8 * text.length));
+
 export function textBlank({ name, label, value, example = "", width = 120, onValue, list = null }) {
-  const input = h("input", { name, type: "text", autocomplete: "off", spellcheck: "false", "aria-label": label, value: value ?? "", placeholder: example, list: list ? `${name}-list` : null, style: { width: `${width}px` } });
+  const input = h("input", { name, type: "text", autocomplete: "off", spellcheck: "false", "aria-label": label, value: value ?? "", placeholder: example, list: list ? `${name}-list` : null, style: { width: `${roomFor(value ?? "", width)}px` } });
+  input.addEventListener("input", () => (input.style.width = `${roomFor(input.value, width)}px`));
   input.addEventListener("change", () => input.value !== (value ?? "") && onValue?.(input.value.trim()));
   input.addEventListener("keydown", (e) => {
     if (e.key !== "Enter") return;

@@ -2,9 +2,9 @@
 import { h, placeIcon, put, SEVERITY_WORDS } from "../view/dom.js";
 
 /** list = [{number, severity, text, waysInline: [[words, fn]], buttons: [[words, fn]], chosen, cured}] */
-export function drawFindings(root, { title, list, most = 3, chosen, onChoose, hint = true }) {
+export function drawFindings(root, { title, list, most = 3, chosen, onChoose, hint = true, none = "none" }) {
   const head = h("div", { class: "below-head" }, h("h2", {}, title),
-    list.length ? h("span", { class: "count" }, `${list.length}${hint ? " · step through with " : ""}`, hint ? h("kbd", {}, "N") : null) : h("span", { class: "count" }, "none"));
+    list.length ? h("span", { class: "count" }, `${list.length}${hint ? " · step through with " : ""}`, hint ? h("kbd", {}, "N") : null) : h("span", { class: "count" }, none));
   const at = Math.max(0, list.findIndex((f) => f.number === chosen));
   const from = Math.min(Math.max(0, at - most + 1), Math.max(0, list.length - most));
   const shown = list.slice(from, from + most);

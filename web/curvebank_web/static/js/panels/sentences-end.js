@@ -43,7 +43,7 @@ function needsRun(desk, next) {
 
 export function familySentence(desk) {
   const wait = needsRun(desk, "family");
-  if (wait && !desk.run) return wait;
+  if (wait && (!desk.run || !(desk.doc.curves ?? []).length)) return wait;
   const pairs = pairsOf(desk.run, desk.panel, desk.doc);
   const many = (desk.doc.panels ?? []).length > 1;
   return {
@@ -61,7 +61,7 @@ const name = (c) => `${CONTOURS[c.quantity] ? "" : `${QUANTITY_WORDS[c.quantity]
 
 export function fitSentence(desk) {
   const wait = needsRun(desk, "fit");
-  if (wait && !desk.run) return wait;
+  if (wait && (!desk.run || !(desk.doc.curves ?? []).length)) return wait;
   const curves = (desk.doc.curves ?? []).filter((c) => !(c.quantity in CONTOURS));
   if (!curves.length) return { sentence: [t("Contours carry no fit. There is nothing to choose here.")], does: [button("Go on to submit", { main: true, onClick: () => desk.go("submit") })] };
   const chosen = curves.find((c) => c.id === desk.selected) ?? null;

@@ -23,7 +23,7 @@ export function sheetSentence(desk) {
   return {
     sentence: [
       t("Page"),
-      pages > 1 ? numberBlank({ name: "page", label: `Page of this file, 1 to ${pages}`, value: sheet.page ?? 1, width: 40, least: 1, whole: true, onValue: (v) => v && v <= pages && set({ page: v }) }) : h("b", {}, "1"),
+      pages > 1 ? numberBlank({ name: "page", label: `Page of this file, 1 to ${pages}`, value: sheet.page ?? 1, width: 40, least: 1, most: pages, whole: true, onValue: (v) => v && set({ page: v }) }) : h("b", {}, "1"),
       t(`of ${pages}, turned`),
       choice({ name: "turn", label: "Turned clockwise by", value: sheet.turn ?? 0, options: [0, 90, 180, 270].map((v) => [v, `${v}°`]), onValue: (v) => set({ turn: v }) }),
       t(". It shows the"),
@@ -93,7 +93,13 @@ export function likelyAxes(panel, at) {
   if (near(at[0] - x0, w) || at[0] < x0) list.push(ids.value[0]);
   if ((near(at[0] - x1, w) || at[0] > x1) && ids.value.length > 1) list.push(ids.value[ids.value.length - 1]);
   if (!list.length) list.push(ids.flow[0], ids.value[0]);
-  return list.filter(Boolean);
+  // A scale already marked on this very line is asked last: at the top left corner the flow is known from the foot, the head is not.
+  const known = (id) => {
+    const k = panel.axes[id].quantity === "flow" ? 0 : 1;
+    return (panel.axes[id].marks ?? []).some((m) => Math.abs(m.at[k] - at[k]) < 0.015 * (k ? hgt : w));
+  };
+  const asked = list.filter(Boolean);
+  return [...asked.filter((id) => !known(id)), ...asked.filter(known)];
 }
 
 function offered(desk, panel, axis, at) {

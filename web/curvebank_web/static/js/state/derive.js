@@ -21,14 +21,29 @@ export function calibrated(panel) {
   return ids.flow.length > 0 && ids.value.length > 0;
 }
 
-/** What a curve is called at its end: "Ø 345", "η Ø 345", "75 %", "all". */
-export function curveLabel(curve, mixed = false) {
+/** The panel a step forward lands on: the first that still wants what the step does, else the one at hand. */
+export function panelToWorkOn(step, doc, at, run = null) {
+  const panels = doc.panels ?? [];
+  const curvesOf = (p) => (doc.curves ?? []).filter((c) => c.panel === p.id);
+  const carried = new Set(Object.values(run?.family ?? {}).flatMap((f) => (f.curves ?? []).filter((c) => c.ghosts?.length).map((c) => c.id)));
+  const wants = {
+    marks: (p) => Object.values(p.axes).some((a) => (a.marks ?? []).length < 2),
+    curves: (p) => calibrated(p) && !curvesOf(p).length,
+    family: (p) => curvesOf(p).some((c) => carried.has(c.id)),
+  }[step];
+  const here = panels.find((p) => p.id === at);
+  if (!wants || (here && step === "family" && wants(here))) return at;
+  return panels.find(wants)?.id ?? at;
+}
+
+/** What a curve is called at its end: "Ø 345", "η Ø 345", "75 %", "all"; "585 1/min" where one diameter is drawn at several speeds. */
+export function curveLabel(curve, mixed = false, bySpeed = false) {
   if (CONTOURS[curve.quantity]) {
     const v = curve.value;
     if (v === undefined || v === null) return "level ?";
     return curve.quantity === "efficiency_contour" ? `${plain(v * 100, 1)} %` : `${plain(v, 2)} ${curve.quantity === "power_contour" ? "kW" : "m"}`;
   }
-  const about = curve.diameter_mm ? `Ø ${plain(curve.diameter_mm, 1)}` : curve.label?.printed ?? "";
+  const about = bySpeed && curve.speed_rpm ? `${plain(curve.speed_rpm, 0)} 1/min` : curve.diameter_mm ? `Ø ${plain(curve.diameter_mm, 1)}` : curve.label?.printed ?? "";
   const sign = QUANTITY_SIGNS[curve.quantity] ?? curve.quantity;
   if (mixed || !about) return `${sign} ${about}`.trim();
   return about;
@@ -66,6 +81,8 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
   const all = open && draft?.panel === panel.id ? [...kept, { curve: draft, kept: false }] : kept;
   const byQuantity = {};
   for (const { curve } of all) if (curve.diameter_mm) (byQuantity[curve.quantity] ??= new Set()).add(curve.diameter_mm);
+  const speeds = {};
+  for (const { curve } of all) if (curve.speed_rpm) (speeds[`${curve.quantity}/${curve.diameter_mm}`] ??= new Set()).add(curve.speed_rpm);
   const mixed = new Set(all.map((c) => CONTOURS[c.curve.quantity] ?? c.curve.quantity)).size > 1;
   return all.map(({ curve, kept: isKept }) => {
     const result = resultOf(panel, curve);
@@ -89,7 +106,7 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
       sigma: (result?.sigma ?? []).map((s) => s / ky),
       stretches: stretchesOf(result),
       weight: contour ? 1 : at >= 0 ? w[at] : 1.6,
-      label: curveLabel(curve, mixed && curve.quantity !== "head"),
+      label: curveLabel(curve, mixed && curve.quantity !== "head", speeds[`${curve.quantity}/${curve.diameter_mm}`]?.size > 1),
       fx: kx,
       fy: ky,
     };
@@ -132,6 +149,20 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
     for (const w of result.warnings ?? []) {
       out.push(place("warning", `${curveLabel(curve)}: ${sentence(w.message)}`, { where: { panel: curve.panel, curve: curve.id, stretch: w.stretch ?? null }, subject: `curve:${curve.id}`, code: w.code }));
     }
+  }
+  out.push(...namesakes(doc, words));
+  return out;
+}
+
+/** Two curves of one panel that claim to be the same line: whoever reads them later could not tell which is meant. */
+function namesakes(doc, words) {
+  const first = new Map();
+  const out = [];
+  for (const c of doc.curves ?? []) {
+    if (CONTOURS[c.quantity]) continue;
+    const key = [c.panel, c.quantity, c.diameter_mm, c.diameter_mm ? "" : c.label?.printed, c.speed_rpm].join("|");
+    if (first.has(key)) out.push(place("warning", words.namesake(c, curveLabel(c)), { where: { panel: c.panel, curve: c.id }, subject: `curve:${c.id}` }));
+    else first.set(key, c);
   }
   return out;
 }

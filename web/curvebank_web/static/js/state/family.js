@@ -4,8 +4,13 @@ import { factor } from "../geometry/units.js";
 import { plain } from "../geometry/number.js";
 
 /** Run findings as desk findings; the place comes from `where` or, failing that, from the subject. */
-export function runFindings(run) {
-  return (run.findings ?? []).map((f) => {
+export function runFindings(run, doc = null) {
+  const here = (kind, name) => !doc || (kind === "curve" ? doc.curves : kind === "panel" || kind === "axis" ? doc.panels : null)?.some((k) => k.id === name.split("/")[0]) !== false;
+  const gone = (f) => {
+    const [kind, name = ""] = (f.subject ?? "").split(/:(.*)/s);
+    return !here(kind, name) || (doc && !doc.curves?.length);
+  };
+  return (run.findings ?? []).filter((f) => !gone(f)).map((f) => {
     const where = { ...(f.where ?? {}) };
     const [kind, name = ""] = (f.subject ?? "").split(/:(.*)/s);
     if (kind === "curve") where.curve ??= name;

@@ -14,6 +14,11 @@ export function suspect(axis, s) {
   return `The ${word} mark typed ${plain(s.typed)} sits where ${plain(s.fits, 3)} ${unit} belongs.`;
 }
 
+export function namesake(curve, label) {
+  const name = [label, curve.speed_rpm ? `at ${plain(curve.speed_rpm)} 1/min` : ""].filter(Boolean).join(" ");
+  return `Another ${QUANTITY_WORDS[curve.quantity] ?? curve.quantity} curve of this panel is already called ${name}. Look at the paper, then give one of them its own diameter or speed, or remove it.`;
+}
+
 /** The value to offer instead of the typed one: the roundest number within 0.4 % of the axis's range of what would fit. */
 export function niceFit(axis, s) {
   const values = [...axis.marks.map((m) => m.value).filter((v) => v !== s.typed), s.fits];

@@ -121,13 +121,16 @@ export function leader(svg, pts, words, tone) {
 }
 
 export function drawPlaces(svg, places, map) {
+  const taken = [];
   for (const p of places) {
     if (p.strokes) {
-      const pts = p.points.map(map);
+      const pts = p.points.map((point) => map(point, p));
       for (const st of strokes(pts, p.strokes[0], p.strokes[1], { every: 6, half: 7 })) svg.append(s("path", { d: path(st), class: "k-finding", "stroke-width": 1.2 }));
     }
-    const at = map(p.at);
+    const at = map(p.at, p);
     const end = [at[0] + (p.side ?? 0), at[1] + (p.drop ?? 46)];
+    while (taken.some((q) => Math.abs(q[0] - end[0]) < 25 && Math.abs(q[1] - end[1]) < 25)) end[0] += 26;
+    taken.push(end);
     svg.append(s("path", { d: path([at, end]), class: p.severity === "note" ? "k-ink" : "k-finding", "stroke-width": 1 }));
     const mark = placeMark(p.severity, p.number, { x: end[0], y: end[1] });
     mark.setAttribute("data-finding", p.number);

@@ -94,7 +94,7 @@ export function drawReplot(svg, scales, scene) {
       if (g.words) leader(svg, g.points.map(to), g.words, "construct");
     }
   }
-  for (const p of scene.plotPlaces) drawPlaces(svg, [p], toPlot(Math.max(0, scene.axes.findIndex((a) => a.id === p.y))));
+  drawPlaces(svg, scene.plotPlaces, (at, p) => toPlot(Math.max(0, scene.axes.findIndex((a) => a.id === p.y)))(at));
   if (scene.step === "marks") {
     for (const m of scene.marks.filter((k) => k.panel === scene.panelId)) {
       const y = m.flow ? 0 : Math.max(0, scene.axes.findIndex((a) => a.id === m.axis));
