@@ -33,6 +33,12 @@ class SheetError(CurvebankError, ValueError):
     code = "sheet"
 
 
+class OutputError(CurvebankError, OSError):
+    """A file or folder cannot be written: full disk, no right to write, a name that is taken."""
+
+    code = "output"
+
+
 class RecipeError(CurvebankError, ValueError):
     """The recipe is not valid; ``path`` names the place, ``details["errors"]`` lists every fault."""
 

@@ -54,6 +54,8 @@ class Bank:
         """Rows of a read-only query as tuples; SQLite's errors come out in words."""
         try:
             return self.connection.execute(sql, values).fetchall()
+        except OverflowError:
+            return []  # a number that SQLite cannot hold is in no row
         except sqlite3.ProgrammingError as error:
             raise BankError(f"{self.path} is closed, or is used from another thread. Open it again there.", code="closed") from error
         except sqlite3.Error as error:

@@ -30,6 +30,13 @@ class Group(click.Group):
             # The reader of a pipe went away (head, less): not an error, and nothing more can be said.
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
             ctx.exit(0)
+        except KeyboardInterrupt:
+            click.echo("curvebank: stopped. What was finished is kept; nothing is left half written.", err=True)
+            ctx.exit(130)
+        except OSError as e:
+            place = f"{e.filename}: " if e.filename else ""
+            click.echo(f"curvebank: {place}{e.strerror or e}. Check the path, the right to use it and the space on the disk.", err=True)
+            ctx.exit(1)
 
 
 def default_bank() -> Path:

@@ -139,6 +139,7 @@ def read_at(pump: Any, at: dict[str, float | None]) -> dict[str, dict[str, Any]]
 def export(key: str, bank: Path | None, revision: int | None, form: str, out: Path | None) -> None:
     """Write the curves of pump KEY as CSV tables (points and fits) or one JSON document."""
     from ..desk import export as use_case
+    from ..desk.files import write_text
 
     if form == "csv" and out is None:
         raise click.UsageError("csv makes two files: give their folder with --out DIR.")
@@ -147,9 +148,8 @@ def export(key: str, bank: Path | None, revision: int | None, form: str, out: Pa
     if out is None:
         click.echo(next(iter(texts.values())), nl=False)
         return
-    out.mkdir(parents=True, exist_ok=True)
     for name, text in texts.items():
-        (out / name).write_text(text, encoding="utf-8", newline="")
+        write_text(out / name, text)
         click.echo(str(out / name))
 
 

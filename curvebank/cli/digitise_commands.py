@@ -6,6 +6,7 @@ from typing import Any
 
 import click
 
+from ..errors import CurvebankError, OutputError
 from .app import Bar, bank_option, default_bank, emit, json_option
 
 SIGNS = {"error": "Error.", "warning": "Warning.", "note": "Note."}
@@ -42,39 +43,68 @@ def digitise(
         raise click.UsageError("--save needs --who NAME and --why TEXT.")
     if (release or who or why) and not save:
         raise click.UsageError("--release, --who and --why go with --save.")
+    if not ((who or "x").strip() and (why or "x").strip()):
+        raise click.UsageError("--who and --why must not be blank: every change of a bank has a person and a reason.")
+    _refuse_same_names(recipes)
+    try:
+        files.make_folder(out)
+    except OutputError as e:
+        raise click.UsageError(e.message) from None
     rows, bad, doubtful = [], False, False
     for path in recipes:
         bar = Bar(path.name)
         done = files.digitise_file(path, progress=bar)
         bar.close()
-        target = files.write_result(done, out)
         made = done.made
+        unwritten = unsaved = None
+        try:
+            target = str(files.write_result(done, out))
+        except OutputError as e:
+            target, unwritten = None, e.to_dict()
         row: dict[str, Any] = {
             "recipe": str(path),
-            "result": str(target),
+            "result": target,
             "curves": len(made.curves),
             "failed": sum(c.error is not None for c in made.curves),
             "flagged": sum(bool(c.trace and c.trace.flagged) for c in made.curves),
             "findings": {s: sum(f.severity == s for f in made.findings) for s in SIGNS},
             "error": made.error,
+            "unwritten": unwritten,
         }
-        bad |= made.error is not None
         doubtful |= row["findings"]["error"] > 0
         if save and made.error is None:
             from ..desk import storing
 
-            row["saved"] = storing.save_file(bank or default_bank(), done, who=who or "", why=why or "", release=release)
+            try:
+                row["saved"] = storing.save_file(bank or default_bank(), done, who=who or "", why=why or "", release=release)
+            except CurvebankError as e:
+                row["unsaved"] = unsaved = e.to_dict()
+        bad |= any(fault is not None for fault in (made.error, unwritten, unsaved))
         rows.append(row)
         if not as_json:
             click.echo(line_of(row))
+        for fault in (unwritten, unsaved):
+            if fault:
+                click.echo(f"curvebank: {path.name}: {fault['message']}", err=True)
     if as_json:
         emit(rows)
     sys.exit(1 if bad or (strict and doubtful) else 0)
 
 
+def _refuse_same_names(recipes: tuple[Path, ...]) -> None:
+    """Two recipes of one name would write one result: the first would be lost."""
+    from ..desk import files
+
+    seen: dict[str, Path] = {}
+    for path in recipes:
+        first = seen.setdefault(files.result_name(path), path)
+        if first != path:
+            raise click.UsageError(f"{first} and {path} would both write {files.result_name(path)}. Give each its own --out folder.")
+
+
 def line_of(row: dict[str, Any]) -> str:
     """One recipe's outcome in one line."""
-    name = Path(row["recipe"]).name
+    name = " ".join(Path(row["recipe"]).name.split())
     if row["error"]:
         return f"{name}: not digitised. {row['error']['message']}"
     good = row["curves"] - row["failed"]

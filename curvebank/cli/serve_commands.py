@@ -18,8 +18,10 @@ def serve(bank: Path | None, port: int | None, no_browser: bool) -> None:
     """Serve the app on this machine; a missing bank is created. The address is printed alone on one line."""
     from curvebank_web.server import serve as serve_app
 
+    from ..desk.files import make_folder
+
     path = bank or default_bank()
-    path.parent.mkdir(parents=True, exist_ok=True)
+    make_folder(path.parent)
     serve_app(path, port, open_browser=not no_browser)
 
 
@@ -33,10 +35,11 @@ def serve(bank: Path | None, port: int | None, no_browser: bool) -> None:
 def demo(bank: Path | None, samples: Path | None, no_serve: bool, port: int | None, no_browser: bool, as_json: bool) -> None:
     """Digitise the sample sheets into a fresh bank, release what the checks allow, and open the app."""
     from ..desk import demo as use_case
+    from ..desk.files import make_folder
 
     folder = use_case.find_samples(samples)
     path = use_case.fresh_bank(bank, Path(platformdirs.user_data_dir("curvebank", appauthor=False)))
-    path.parent.mkdir(parents=True, exist_ok=True)
+    make_folder(path.parent)
     bar = tqdm(desc="digitising the samples", unit="sheet", leave=False, disable=not sys.stderr.isatty())
 
     def show(done: int, total: int, name: str) -> None:

@@ -1,13 +1,14 @@
 """Recipes on disk: each with its scan beside it, each to its result, one failure never stopping the others."""
 
+import contextlib
 import hashlib
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 from .. import digitise, recipe
-from ..errors import CurvebankError, RecipeError, SheetError
+from ..errors import CurvebankError, OutputError, RecipeError, SheetError
 from ..records import Digitised
 
 Progress = Callable[[float, str], None]
@@ -27,12 +28,17 @@ class Done:
     @property
     def name(self) -> str:
         """NAME of NAME.recipe.json."""
-        return self.path.name.removesuffix(RECIPE_SUFFIX) if self.path.name.endswith(RECIPE_SUFFIX) else self.path.stem
+        return result_name(self.path).removesuffix(RESULT_SUFFIX)
 
     def save_key(self, who: str, why: str) -> str:
         """The same files, person and reason give the same key, so that a repeated command stores once."""
         parts = (self.recipe_bytes, self.sheet_bytes or b"", who.encode(), why.encode())
         return "file-" + hashlib.sha256(b"".join(hashlib.sha256(p).digest() for p in parts)).hexdigest()[:40]
+
+
+def result_name(path: Path) -> str:
+    """NAME.result.json of NAME.recipe.json; of any other file its name without the last ending."""
+    return (path.name.removesuffix(RECIPE_SUFFIX) if path.name.endswith(RECIPE_SUFFIX) else path.stem) + RESULT_SUFFIX
 
 
 def failed(error: CurvebankError, recipe_bytes: bytes = b"", file: str | None = None) -> Digitised:
@@ -71,21 +77,41 @@ def digitise_file(path: Path, settings: dict[str, Any] | None = None, *, progres
     except RecipeError as e:
         return Done(path, failed(e, recipe_bytes), recipe_bytes, None)
     except SheetError as e:
-        made = digitise.run(recipe_bytes, None, settings) if doc.panels else failed(e, recipe_bytes)
-        return Done(path, with_error(made, e), recipe_bytes, None)
+        return Done(path, with_error(digitise.run(recipe_bytes, None, settings), e), recipe_bytes, None)
     return Done(path, digitise.run(recipe_bytes, sheet_bytes, settings, progress=progress), recipe_bytes, sheet_bytes)
 
 
 def with_error(made: Digitised, error: CurvebankError) -> Digitised:
-    """The same result with a better-informed error of the whole."""
-    return Digitised(**{name: getattr(made, name) for name in made.__dataclass_fields__} | {"error": error.to_dict()})
+    """The same result with a better-informed error of the whole, also in the curves that failed by it."""
+    told = error.to_dict()
+    curves = tuple(replace(c, error=told) if c.error is not None and c.error == made.error else c for c in made.curves)
+    return replace(made, curves=curves, error=told)
 
 
 def write_result(done: Done, folder: Path) -> Path:
-    """Write NAME.result.json (through a temporary name, so that a reader never sees half a file)."""
-    folder.mkdir(parents=True, exist_ok=True)
-    target = folder / (done.name + RESULT_SUFFIX)
-    temporary = target.with_suffix(".part")
-    temporary.write_text(digitise.dumps(done.made), encoding="utf-8")
-    temporary.replace(target)
+    """Write NAME.result.json; OutputError where that cannot be done, and then no part of it is left."""
+    target = folder / result_name(done.path)
+    write_text(target, digitise.dumps(done.made))
     return target
+
+
+def make_folder(folder: Path) -> None:
+    """The folder and those above it; OutputError says what stands in the way."""
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as e:
+        raise OutputError(f"The folder {folder} cannot be made: {e.strerror or e}. Give another folder.") from None
+
+
+def write_text(target: Path, text: str) -> None:
+    """Write a file through a temporary name, so that a reader never sees half of it, whatever interrupts the writing."""
+    make_folder(target.parent)
+    temporary = target.with_name(target.name + ".part")
+    try:
+        temporary.write_text(text, encoding="utf-8", newline="")
+        temporary.replace(target)
+    except OSError as e:
+        raise OutputError(f"{target} cannot be written: {e.strerror or e}. Free some space or give another folder.") from None
+    finally:
+        with contextlib.suppress(OSError):
+            temporary.unlink(missing_ok=True)

@@ -4,7 +4,7 @@ from pathlib import Path
 from typing import Any
 
 from ..bank.store import Store
-from .files import Done
+from .files import Done, make_folder
 
 
 def save_file(bank: Path, done: Done, *, who: str, why: str, release: bool = False) -> dict[str, Any]:
@@ -20,7 +20,7 @@ def save_file(bank: Path, done: Done, *, who: str, why: str, release: bool = Fal
     BankError
         The bank cannot be written; nothing was stored.
     """
-    bank.parent.mkdir(parents=True, exist_ok=True)
+    make_folder(bank.parent)
     with Store.open(bank) as store:
         key, revision = store.save(
             done.made, done.recipe_bytes, done.sheet_bytes, who=who, why=why, save_key=done.save_key(who, why), release=release

@@ -26,7 +26,7 @@ def result_json(made: Digitised) -> dict[str, Any]:
             "pump": pump,
             "error": made.error,
             "panels": [panel_json(p) for p in made.panels],
-            "curves": [curve_json(c) for c in made.curves],
+            "curves": [curve_json(c, stages=made.pump.stages if made.pump else 1) for c in made.curves],
             "findings": [finding_json(f) for f in made.findings],
         }
     )
@@ -50,13 +50,13 @@ def panel_json(p: PanelResult) -> dict[str, Any]:
     }
 
 
-def curve_json(c: Curve) -> dict[str, Any]:
+def curve_json(c: Curve, *, stages: int = 1) -> dict[str, Any]:
     """One curve. A typed table has no place on paper: its ``pixels`` are the rows as printed, so each point keeps what was typed."""
     t = c.trace
     if t is not None:
         pixels, sigma_px = places(t.pixels), places(t.sigma_px)
     else:
-        pixels, sigma_px = _typed_rows(c), [0.0] * len(c.points)
+        pixels, sigma_px = _typed_rows(c, stages), [0.0] * len(c.points)
     return {
         "id": c.id,
         "quantity": c.quantity,
@@ -86,11 +86,12 @@ def curve_json(c: Curve) -> dict[str, Any]:
     }
 
 
-def _typed_rows(c: Curve) -> list[Any]:
+def _typed_rows(c: Curve, stages: int) -> list[Any]:
     if not len(c.points):
         return []
     q = units.from_canonical(c.points[:, 0], "flow", c.printed_x_unit)
-    v = units.from_canonical(c.points[:, 1] * c.factor, c.quantity, c.printed_y_unit)
+    whole = stages if c.head_is == "per stage" and c.quantity == "head" else 1
+    v = units.from_canonical(c.points[:, 1] * c.factor / whole, c.quantity, c.printed_y_unit)
     return digits(np.column_stack([q, v]))
 
 

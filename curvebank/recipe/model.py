@@ -9,7 +9,7 @@ import re
 import unicodedata
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, model_validator
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
 
 from .. import units
 from ..records import CONTOURS
@@ -17,8 +17,22 @@ from ..records import CONTOURS
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=-1e12, le=1e12)]
 """Any pixel or printed value; beyond 1e12 a number is a slip, and squares of it would overflow."""
 Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=1e-12, le=1e12)]
-Text = Annotated[str, Field(strict=True, min_length=1, max_length=500)]
 Pair = tuple[Number, Number]
+
+
+def _not_blank(text: str) -> str:
+    if not text.strip():
+        raise ValueError("This text is blank.")
+    return text
+
+
+def _no_truth_value(value: Any) -> Any:
+    if isinstance(value, bool):
+        raise ValueError(f"{str(value).lower()} is not a number.")
+    return value
+
+
+Text = Annotated[str, Field(strict=True, min_length=1, max_length=500), AfterValidator(_not_blank)]
 
 
 def _plain_id(text: str) -> str:
@@ -95,7 +109,7 @@ class LabelModel(Node):
 class FitModel(Node):
     """``order`` 1 to 8 or "auto"; ``through_zero`` only where the curve starts at no flow, no value (efficiency)."""
 
-    order: Literal["auto", 1, 2, 3, 4, 5, 6, 7, 8] = "auto"
+    order: Annotated[Literal["auto", 1, 2, 3, 4, 5, 6, 7, 8], BeforeValidator(_no_truth_value)] = "auto"
     through_zero: bool = False
 
 
@@ -168,7 +182,7 @@ class SheetModel(Node):
     file: Annotated[Text, AfterValidator(_bare_name)]
     page: Annotated[int, Field(strict=True, ge=1)] = 1
     dpi: Annotated[float, Field(strict=True, ge=36, le=1200)] = 300
-    turn: Literal[0, 90, 180, 270] = 0
+    turn: Annotated[Literal[0, 90, 180, 270], BeforeValidator(_no_truth_value)] = 0
     sha256: Annotated[str, Field(pattern=r"^[0-9a-fA-F]{64}$")] | None = None
     liquid: LiquidModel | None = None
     document: Text | None = None

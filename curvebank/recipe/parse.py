@@ -3,6 +3,7 @@
 import difflib
 import hashlib
 import json
+import re
 from typing import Any
 
 from pydantic import ValidationError
@@ -15,13 +16,19 @@ from .model import CurveModel, Node, PanelModel, Recipe
 MAX_BYTES = 20_000_000
 """A recipe is clicks and names; anything larger is another kind of file."""
 
+HALF_CHARACTER = re.compile(r"\\u[dD][89a-fA-F]|[\ud800-\udfff]")
+"""Where a text may hold half of a surrogate pair, escaped or bare: looked at closely only then."""
+
 
 def to_bytes(doc: bytes | str | dict[str, Any]) -> bytes:
     """The bytes a recipe is stored and hashed as: given bytes unchanged, a dict as compact UTF-8 JSON in its own order."""
     if isinstance(doc, bytes):
         return doc
     if isinstance(doc, str):
-        return doc.encode()
+        try:
+            return doc.encode()
+        except UnicodeEncodeError:
+            raise _half_character() from None
     try:
         return json.dumps(doc, ensure_ascii=False, separators=(",", ":"), allow_nan=False).encode()
     except (TypeError, ValueError) as e:
@@ -57,13 +64,33 @@ def load_json(data: bytes | str) -> Any:
 
     try:
         text = data.decode("utf-8-sig") if isinstance(data, bytes) else data
-        return json.loads(text, object_pairs_hook=pairs, parse_constant=refuse)
+        if HALF_CHARACTER.search(text):
+            _refuse_halves(json.loads(text, parse_int=float))
+        return json.loads(text, object_pairs_hook=pairs, parse_constant=refuse, parse_int=_whole)
     except UnicodeDecodeError as e:
         raise RecipeError(f"The recipe is not UTF-8 text (byte {e.start}). Save it as UTF-8.", path="$", code="recipe-json") from None
     except json.JSONDecodeError as e:
         raise RecipeError(f"The recipe is not JSON: {e.msg} at line {e.lineno}, column {e.colno}.", path="$", code="recipe-json") from None
     except RecursionError:
         raise RecipeError("The recipe is nested too deeply to be a recipe.", path="$", code="recipe-json") from None
+
+
+def _whole(digits: str) -> int:
+    if len(digits) > 400:
+        raise RecipeError(f"A number of {len(digits)} digits begins {digits[:12]}. Write it in fewer.", path="$", code="recipe-json")
+    return int(digits)
+
+
+def _half_character() -> RecipeError:
+    message = "The recipe holds half a character (a lone \\ud800 to \\udfff), which no file can keep. Type the text again."
+    return RecipeError(message, path="$", code="recipe-json")
+
+
+def _refuse_halves(value: Any) -> None:
+    try:
+        json.dumps(value, ensure_ascii=False).encode()
+    except UnicodeEncodeError:
+        raise _half_character() from None
 
 
 def parse(doc: bytes | str | dict[str, Any]) -> Recipe:
@@ -153,6 +180,12 @@ def _words(fault: Any) -> str:
         return "This text is empty."
     if kind == "finite_number":
         return f"{shown} is not a finite number."
+    if kind in ("too_short", "too_long"):
+        least = kind == "too_short"
+        wanted = f"at {'least' if least else 'most'} {ctx['min_length' if least else 'max_length']}"
+        return f"{shown} has {ctx.get('actual_length') or 'more'} items; {wanted} belong here."
+    if kind == "string_too_long":
+        return f"This text is longer than {ctx['max_length']} characters."
     if kind in ("greater_than", "greater_than_equal", "less_than_equal"):
         word = {"greater_than": "above", "greater_than_equal": "at least", "less_than_equal": "at most"}[kind]
         return f"{shown} must be {word} {ctx.get('gt', ctx.get('ge', ctx.get('le'))):g}."
