@@ -21,7 +21,7 @@ from pathlib import Path
 
 ROOT = Path(__file__).resolve().parent.parent
 VENV = ROOT / ".venv-test"
-FOLDERS = ("unit", "external", "bank", "web", "cli")
+FOLDERS = ("unit", "external", "bank", "web", "cli", "fuzz")
 BROWSERS = ("chromium", "chromium-browser", "google-chrome", "google-chrome-stable", "microsoft-edge", "msedge")
 
 
