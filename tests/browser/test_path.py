@@ -365,3 +365,34 @@ def test_dark_and_small_pages_are_accessible(open_page, desk_of, server, chart_p
         page.wait_for_timeout(300)
         axe_is_content(page)
     watch.complaints = [c for c in watch.complaints if "status of 404" not in c]
+
+
+def test_a_line_begun_on_a_kept_trace_leaves_that_trace_alone(desk, server, chart_png):
+    """Contours begin on head curves: the kept curve is chosen, never bent, and the two clicks begin a line; a guide is asked for by name."""
+    page = desk.page
+    desk.upload("chart.png", chart_png)
+    set_up_axes(desk)
+    desk.step("curves")
+    trace(desk, "H-320")
+    desk.kept()
+    before = document_of(server, page)["curves"]
+    flow, share = chart.LINES["H-320"]
+    on, off = chart.to_px(flow[200], share(flow[200])), chart.to_px(flow[200], share(flow[200]) - 0.1)
+    page.wait_for_selector("#over [data-curve='H-320'] path.k-trace")
+    desk.click(on)
+    page.wait_for_selector("#slip button:has-text('Draw a guide')")
+    desk.click(off)
+    page.wait_for_selector("#slip button:has-text('Keep curve')")
+    desk.kept()
+    after = document_of(server, page)
+    assert after["curves"] == before
+    begun = after["x-desk"]["curve"]["clicks"]
+    assert [begun[0], begun[1]] == [pytest.approx(list(on), abs=1.5), pytest.approx(list(off), abs=1.5)]
+    page.click("#slip button:has-text('Let go')")
+    page.wait_for_selector("#slip [name=quantity]", state="detached")
+    desk.click(on)
+    page.click("#slip button:has-text('Draw a guide')")
+    desk.click(off)
+    desk.kept()
+    (curve,) = document_of(server, page)["curves"]
+    assert len(curve["clicks"]) == len(before[0]["clicks"]) + 1

@@ -285,17 +285,24 @@ export class DeskTools {
     }
     const chosen = (desk.doc.curves ?? []).find((c) => c.id === desk.selected);
     const trace = this.traceAt(screen);
-    const away = chosen && this.#awayFrom(chosen.id, screen);
-    if (chosen && !e.shiftKey && away < 40 && !(trace && trace.id !== chosen.id)) {
+    const off = !(trace && trace.id !== chosen?.id);
+    if (chosen && desk.guiding && !e.shiftKey && off && this.#awayFrom(chosen.id, screen) < 40) {
       return desk.act({ type: "curve/set", curve: chosen.id, change: { clicks: insertClick(chosen.clicks, at) } });
     }
-    if (trace && !e.shiftKey) return desk.select(trace.id);
+    // A line that begins on a kept trace: that click chose the trace, this one leaves it. A kept curve is never bent by the way.
+    const begun = chosen && !trace && desk.touched?.curve === chosen.id && !e.shiftKey ? desk.touched.at : null;
+    if (trace && !e.shiftKey) {
+      desk.select(trace.id);
+      desk.touched = { curve: trace.id, at };
+      return undefined;
+    }
     const here = (desk.doc.panels ?? []).filter((p) => calibrated(p) && inside(desk, p, sheet));
     const panel = here.find((p) => p.id === desk.panel?.id) ?? here[0] ?? desk.panel;
     if (!panel || !calibrated(panel)) return desk.say("This panel has no scales yet: give each two marks.");
     desk.selected = null;
     desk.panelId = panel.id;
-    return desk.act({ type: "curve/open", curve: this.fresh(panel, [at]) });
+    if (begun) desk.focusBlank = "curve";
+    return desk.act({ type: "curve/open", curve: this.fresh(panel, begun ? [begun, at] : [at]) });
   }
 
   /** A new curve that carries over what the last one on this panel was. */

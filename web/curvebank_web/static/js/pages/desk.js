@@ -92,7 +92,7 @@ function abilities(desk, draw, tools, invalidate) {
       tools.stepped(desk.step);
       redo("all");
     },
-    select(id) { desk.selected = id; desk.focusedGuide = null; redo("all"); },
+    select(id, guiding = false) { Object.assign(desk, { selected: id, guiding, touched: null, focusedGuide: null }); redo("all"); },
     chooseMark(mark) { desk.chosenMark = mark; $("paper").focus({ preventScroll: true }); redo("all"); },
     removeChosenMark() { const { panel, axis, index } = desk.chosenMark; desk.chosenMark = null; desk.act({ type: "mark/remove", panel, axis, index }); },
     keepMark(panel, mark, values) {
@@ -156,7 +156,7 @@ function abilities(desk, draw, tools, invalidate) {
         const v = Number(agrees.toFixed(Math.abs(agrees - Math.round(agrees)) < 0.35 ? 0 : 1));
         buttons.push(button(`File it as ${plain(v)} mm`, { onClick: () => { desk.act({ type: "curve/set", curve: curve.id, change: { diameter_mm: v, label: { by: "diameter", printed: plain(curve.diameter_mm) } } }); desk.checkAndGo("family"); } }));
       }
-      if (curve && desk.step === "curves" && !desk.openCurve) ways.push(["draw a guide", () => { desk.select(curve.id); desk.chooseFinding(f.number); $("paper").focus(); }]);
+      if (curve && desk.step === "curves" && !desk.openCurve) ways.push(["draw a guide", () => { desk.select(curve.id, true); desk.chooseFinding(f.number); $("paper").focus(); }]);
       return { ...f, ways, buttons };
     },
     fillForm(change) { Object.assign(desk.form, change); if (change.who !== undefined) keepSetting("who", change.who); redo("slip"); },

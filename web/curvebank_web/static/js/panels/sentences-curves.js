@@ -89,7 +89,7 @@ export function curvesSentence(desk) {
     return {
       key: JSON.stringify(chosen),
       sentence: curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }),
-      does: [button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) })],
+      does: [desk.guiding ? h("span", { class: "hint" }, "Click the ink beside the trace.") : button("Draw a guide", { quiet: true, onClick: () => desk.select(chosen.id, true) }), button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) })],
     };
   }
   const n = (doc.curves ?? []).length;
