@@ -1,3 +1,4 @@
+import { settleLabels } from "../../web/curvebank_web/static/js/view/chart.js";
 // Geometry modules: round trips, known figures, and small hand-made cases whose answer can be seen.
 import assert from "node:assert/strict";
 import test from "node:test";
@@ -218,4 +219,15 @@ test("units agree with their definitions (NIST SP 811, appendix B)", () => {
 test("two scales share one division where both come out round", () => {
   assert.deepEqual(commonTicks([[0, 64], [0, 160]], 9), [[0, 8, 16, 24, 32, 40, 48, 56, 64], [0, 20, 40, 60, 80, 100, 120, 140, 160]]);
   assert.equal(commonTicks([[0, 64], [0, 97]], 9), null);
+});
+
+test("labels on one another settle whatever the last digits of their places", () => {
+  let odd = 0;
+  for (let k = 0; k < 400; k++) {
+    const y = 1.1 + k * 0.7137;
+    odd += y + 14 - y < 14;
+    const [a, b] = settleLabels([{ x: 0, w: 40, y }, { x: 0, w: 40, y: y + 0.1 }]);
+    assert.ok(b.y - a.y > 13.99);
+  }
+  assert.ok(odd > 0, "places whose sum rounds down are among them");
 });

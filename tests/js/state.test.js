@@ -2,6 +2,7 @@
 import assert from "node:assert/strict";
 import test from "node:test";
 import { Outbox } from "../../web/curvebank_web/static/js/net/outbox.js";
+import { missingWords } from "../../web/curvebank_web/static/js/view/pump-plots.js";
 import { rank, unknowns } from "../../web/curvebank_web/static/js/state/catalogue.js";
 import { calibrated, curveLabel, liveFindings, panelCurves, panelToWorkOn, progress, usablePanel } from "../../web/curvebank_web/static/js/state/derive.js";
 import { likelyAxes } from "../../web/curvebank_web/static/js/panels/sentences.js";
@@ -297,4 +298,10 @@ test("one diameter at several speeds is named by speed; two lines of one name ar
   assert.equal(twin.severity, "warning");
   assert.equal(twin.where.curve, "b");
   assert.match(twin.text, /already called Ø 480 at 585 1\/min/);
+});
+
+test("an empty plot does not deny what the paper shows as contours", () => {
+  assert.match(missingWords("efficiency", []), /not printed/);
+  assert.match(missingWords("efficiency", [{ quantity: "efficiency_contour" }]), /lines of constant value/);
+  assert.match(missingWords("power", [{ quantity: "efficiency_contour" }]), /not printed/);
 });

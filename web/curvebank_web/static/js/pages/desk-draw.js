@@ -164,6 +164,9 @@ export class DeskDraw {
     const empty = $("plot-empty");
     const nothing = !this.scales || !desk.items.some((i) => i.points.length);
     empty.hidden = !nothing;
+    // Over a low plot the words would lie on its numbers: there they stand below it.
+    const low = this.scales && this.scales.frame[3] - this.scales.frame[1] < 170 && this.scales.frame[3] + 110 < plot.height;
+    empty.style.top = low ? `${this.scales.frame[3] + 48}px` : "";
     if (nothing) put(empty, ...this.#emptyWords());
     if (!this.scales) svg.replaceChildren();
     else drawReplot(svg, this.scales, { ...this.scene, showGhosts: desk.step === "family" && ["both", "plot"].includes(desk.over), curves: desk.items });

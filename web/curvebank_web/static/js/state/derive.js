@@ -49,6 +49,14 @@ export function curveLabel(curve, mixed = false, bySpeed = false) {
   return about;
 }
 
+/** Which curves only their speed tells apart: (curve) => boolean. */
+export function speedNamed(curves) {
+  const speeds = {};
+  const key = (c) => `${c.quantity}/${c.diameter_mm}`;
+  for (const c of curves) if (c.speed_rpm) (speeds[key(c)] ??= new Set()).add(c.speed_rpm);
+  return (c) => (speeds[key(c)]?.size ?? 0) > 1;
+}
+
 /** Maps of every value axis of a panel, with the flow axis each goes with. */
 export function panelMaps(panel, panelResult) {
   const ids = axisIds(panel);
@@ -81,8 +89,7 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
   const all = open && draft?.panel === panel.id ? [...kept, { curve: draft, kept: false }] : kept;
   const byQuantity = {};
   for (const { curve } of all) if (curve.diameter_mm) (byQuantity[curve.quantity] ??= new Set()).add(curve.diameter_mm);
-  const speeds = {};
-  for (const { curve } of all) if (curve.speed_rpm) (speeds[`${curve.quantity}/${curve.diameter_mm}`] ??= new Set()).add(curve.speed_rpm);
+  const bySpeed = speedNamed(all.map((c) => c.curve));
   const mixed = new Set(all.map((c) => CONTOURS[c.curve.quantity] ?? c.curve.quantity)).size > 1;
   return all.map(({ curve, kept: isKept }) => {
     const result = resultOf(panel, curve);
@@ -106,7 +113,7 @@ export function panelCurves(doc, panel, resultOf, { open = true } = {}) {
       sigma: (result?.sigma ?? []).map((s) => s / ky),
       stretches: stretchesOf(result),
       weight: contour ? 1 : at >= 0 ? w[at] : 1.6,
-      label: curveLabel(curve, mixed && curve.quantity !== "head", speeds[`${curve.quantity}/${curve.diameter_mm}`]?.size > 1),
+      label: curveLabel(curve, mixed && curve.quantity !== "head", bySpeed(curve)),
       fx: kx,
       fy: ky,
     };

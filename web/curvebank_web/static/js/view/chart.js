@@ -62,7 +62,8 @@ export function settleLabels(labels, gap = 14) {
     for (let k = 0; k < placed.length; k++) {
       const o = placed[k];
       const apart = l.x > o.x + o.w || o.x > l.x + l.w;
-      if (!apart && Math.abs(o.y - y) < gap) {
+      // A hair less than the gap, or rounding would move a label to where it stands, for ever.
+      if (!apart && Math.abs(o.y - y) < gap - 1e-6) {
         y = o.y + gap;
         k = -1;
       }

@@ -129,7 +129,7 @@ export function drawPlaces(svg, places, map) {
     }
     const at = map(p.at, p);
     const end = [at[0] + (p.side ?? 0), at[1] + (p.drop ?? 46)];
-    while (taken.some((q) => Math.abs(q[0] - end[0]) < 25 && Math.abs(q[1] - end[1]) < 25)) end[0] += 26;
+    for (let k = 0; k < places.length && taken.some((q) => Math.abs(q[0] - end[0]) < 25 && Math.abs(q[1] - end[1]) < 25); k++) end[0] += 26;
     taken.push(end);
     svg.append(s("path", { d: path([at, end]), class: p.severity === "note" ? "k-ink" : "k-finding", "stroke-width": 1 }));
     const mark = placeMark(p.severity, p.number, { x: end[0], y: end[1] });

@@ -2,7 +2,7 @@
 import { linear } from "../geometry/scale.js";
 import { plain } from "../geometry/number.js";
 import { CONTOURS } from "../geometry/units.js";
-import { curveLabel } from "../state/derive.js";
+import { curveLabel, speedNamed } from "../state/derive.js";
 import { flowRange, lineWeights, SHOWN, SIGN, valueRange } from "../state/pump.js";
 import { drawChart } from "./chart.js";
 import { h, put, s } from "./dom.js";
@@ -50,6 +50,7 @@ function drawOne(figure, q, m) {
   const { height } = m;
   const [unit, k] = m.units[q];
   const curves = m.detail.curves.filter((c) => c.quantity === q && c.points.length);
+  const bySpeed = speedNamed(curves);
   const contours = q === "head" ? m.detail.curves.filter((c) => c.quantity in CONTOURS && c.points.length) : [];
   const values = m.values[q];
   const band = values ? bandOf(values, m.fu, k) : null;
@@ -60,7 +61,7 @@ function drawOne(figure, q, m) {
   const y = { ...linear(range[0], range[1], frame[3], frame[1]), lo: range[0], hi: range[1], title: `${SIGN[q]}, ${unit}`, most: q === "head" ? 8 : Math.max(3, Math.round((frame[3] - frame[1]) / 17)), ticks: has ? undefined : [] };
   const x = { ...m.scaleX, lo: 0, hi: m.qHi * m.fu, labels: q === "head", title: q === "head" ? `flow, ${m.units.flow[0]}` : null, titleAt: "end" };
   const svg = s("svg", { class: "plot", viewBox: `0 0 ${m.width} ${height}`, width: m.width, height, role: "img", "aria-labelledby": `says-${q}` });
-  const lines = curves.map((c) => ({ points: c.points.map(([a, b]) => [a * m.fu, b * k]), width: m.weight[`${q}/${c.diameter_mm}`] ?? 1.4, label: q === "head" || curves.length > 1 ? curveLabel(c) : "" }));
+  const lines = curves.map((c) => ({ points: c.points.map(([a, b]) => [a * m.fu, b * k]), width: m.weight[`${q}/${c.diameter_mm}`] ?? 1.4, label: q === "head" || curves.length > 1 ? curveLabel(c, false, bySpeed(c)) : "" }));
   for (const c of contours) lines.push({ points: c.points.map(([a, b]) => [a * m.fu, b * k]), tone: "edge", width: 1, label: curveLabel({ ...c, value: c.level }), labelAt: "top", small: true, labelTone: "edge" });
   if (sys) lines.push({ points: sys, tone: "yours", form: "system", width: 1.6, label: "system" });
   const traced = curves.some((c) => c.diameter_mm === m.asked.diameter && (!c.speed_rpm || c.speed_rpm === m.asked.speed));
@@ -70,7 +71,15 @@ function drawOne(figure, q, m) {
   if (band && q === "head" && m.asked.diameter) askedLabel(svg, values, m, k, y, traced);
   if (m.flow !== null && has) pointer(svg, frame, x, y, m, q, k);
   const says = h("figcaption", { class: "unseen", id: `says-${q}` }, summary(q, curves, unit, k));
-  put(figure, svg, has ? null : h("p", { class: "empty" }, NOT_PRINTED[q] ?? "Not printed on any sheet kept here."), says);
+  put(figure, svg, has ? null : h("p", { class: "empty" }, missingWords(q, m.detail.curves)), says);
+}
+
+/** What stands in an empty plot. A quantity drawn as contours over the head is on the paper, though not as a curve over flow. */
+export function missingWords(q, curves) {
+  const level = (curves ?? []).some((c) => c.quantity === `${q}_contour`);
+  const name = { efficiency: "Efficiency", power: "Shaft power", npshr: "NPSH required" }[q];
+  if (level) return `${name} is printed as lines of constant value, drawn over the head above.`;
+  return NOT_PRINTED[q] ?? "Not printed on any sheet kept here.";
 }
 
 function bandOf(values, fu, k) {
@@ -109,5 +118,6 @@ function pointer(svg, [x0, y0, , y1], x, y, m, q, k) {
 
 function summary(q, curves, unit, k) {
   if (!curves.length) return `${SIGN[q]}: not printed.`;
-  return `${SIGN[q]} over flow. ${curves.map((c) => { const [a, b] = [c.points[0], c.points[c.points.length - 1]]; return `${curveLabel(c)}: ${plain(a[1] * k, 1)} to ${plain(b[1] * k, 1)} ${unit}`; }).join("; ")}. The same numbers stand in the table below.`;
+  const bySpeed = speedNamed(curves);
+  return `${SIGN[q]} over flow. ${curves.map((c) => { const [a, b] = [c.points[0], c.points[c.points.length - 1]]; return `${curveLabel(c, false, bySpeed(c))}: ${plain(a[1] * k, 1)} to ${plain(b[1] * k, 1)} ${unit}`; }).join("; ")}. The same numbers stand in the table below.`;
 }
