@@ -19,8 +19,8 @@ from . import curves as curve_maker
 from .threads import one_thread
 
 Progress = Callable[[float, str], None]
-ALGORITHM = "ribbon-1"
-"""Changes whenever the same recipe and sheet would give other numbers."""
+ALGORITHM = f"trace {trace.ALGORITHM}, sheet {sheet.ALGORITHM}"
+"""Changes whenever the same recipe and sheet would give other traces: the names come from the parts that decide them."""
 
 cv2.setNumThreads(1)
 cv2.ocl.setUseOpenCL(False)
@@ -35,7 +35,7 @@ def made_by() -> dict[str, str]:
             out[key] = importlib.metadata.version(package)
         except importlib.metadata.PackageNotFoundError:
             out[key] = cv2.__version__ if key == "opencv" else "not installed"
-    return out | {"algorithm": f"{ALGORITHM} {sheet.ALGORITHM}"}
+    return out | {"algorithm": ALGORITHM}
 
 
 def pump_info(doc: Recipe) -> PumpInfo:

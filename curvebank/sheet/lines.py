@@ -160,7 +160,7 @@ def _robust_poly(x: Floats, y: Floats, width: int) -> tuple[Floats, float] | Non
     coefficients: Floats = np.zeros(degree + 1)
     scale = np.inf
     for _ in range(6):
-        coefficients = np.linalg.lstsq(basis * weight[:, None], y * weight, rcond=None)[0]
+        coefficients = np.linalg.lstsq(basis * weight[:, None], y * weight, rcond=None)[0].astype(np.float64)
         miss = y - basis @ coefficients
         scale = 1.4826 * float(np.median(np.abs(miss))) + 0.02
         weight = np.sqrt(np.maximum(1 - (miss / (5 * scale)) ** 2, 0) ** 2)

@@ -3,4 +3,7 @@
 from .clicks import Clicks
 from .panel import trace_panel
 
-__all__ = ["Clicks", "trace_panel"]
+ALGORITHM = "ribbon-4"
+"""Name of the tracing; changes whenever the same clicks on the same prepared sheet would give other numbers."""
+
+__all__ = ["ALGORITHM", "Clicks", "trace_panel"]

@@ -38,8 +38,9 @@ class Axis:
         u = t * ((len(self.s) - 1) / self.length)
         cell = np.minimum(u.astype(np.int64), len(self.s) - 2)
         table = np.concatenate([self.points, self.tangents], axis=1)
-        out = np.take(table, cell, axis=0)
-        out += (u - cell)[:, None] * np.take(np.diff(table, axis=0), cell, axis=0)
+        out = np.take(np.diff(table, axis=0), cell, axis=0)
+        out *= (u - cell)[:, None]
+        out += np.take(table, cell, axis=0)
         if not self.closed:
             beyond = s - t
             if beyond.any():

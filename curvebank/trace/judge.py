@@ -128,7 +128,9 @@ def settle(trace: Trace, doubt: Doubt) -> Trace:
 
 def overlap(a: FloatArray, b: FloatArray, within: float) -> list[tuple[int, int]]:
     """Runs of rows of ``a`` that lie within ``within`` px of ``b``."""
-    near = cKDTree(b).query(a, distance_upper_bound=within)[0] <= within
+    near = ((a >= b.min(axis=0) - within) & (a <= b.max(axis=0) + within)).all(axis=1)
+    if near.any():
+        near[near] = cKDTree(b).query(a[near], distance_upper_bound=within)[0] <= within
     edge = np.flatnonzero(np.diff(np.r_[0, near.astype(np.int8), 0])).reshape(-1, 2)
     return [(int(p), int(q - 1)) for p, q in edge]
 

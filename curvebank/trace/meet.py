@@ -34,6 +34,9 @@ def _tail_to(points: FloatArray, trace: Trace, other: Trace) -> tuple[int, Float
     look = min(int(120 * unit), len(points) // 2)
     if look < 20:
         return None
+    # Most ends lie far from most lines: the end itself tells at once.
+    if float(((other.pixels - points[-1]) ** 2).sum(axis=1).min()) >= (width + 4.0 * unit) ** 2:
+        return None
     gap = cKDTree(other.pixels).query(points[-look:])[0]
     near = gap < width + 1.0 * unit
     rim = int(12 * unit)

@@ -102,9 +102,10 @@ def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
     flat = (y * width + x).ravel()[ok]
     # Each pixel once: the last place written to it is the one that keeps it. Only touched cells of the page are ever read.
     order = np.arange(len(flat), dtype=np.int32)
-    owner = np.empty(height * width, np.int32)
-    owner[flat] = order
-    first = np.flatnonzero(owner[flat] == order)
+    low = int(flat.min(initial=0))
+    owner = np.empty(int(flat.max(initial=0)) - low + 1, np.int32)
+    owner[flat - low] = order
+    first = np.flatnonzero(owner[flat - low] == order)
     place = np.flatnonzero(ok)[first]
     px = np.stack([x.ravel()[place], y.ravel()[place]], axis=1).astype(np.float64)
     row = place // len(d)
@@ -167,6 +168,7 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
     eye = np.eye(3)
     prior = np.array([0.15, 0.6 * shape.height, 1.5])
     weight = given
+    clear = given > 0.3
     # The profile is even and its slope odd: both are looked up from a fine table.
     table = (np.arange(int((shape.half_extent + 8.0) * PER_PX)) + 0.5) / PER_PX
     level, tilt = shape.value(table), -shape.slope(table)
@@ -184,18 +186,18 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
         lhs = np.empty((count, 3, 3))
         right = np.empty((count, 3))
         for i in range(3):
-            wi = weight * terms[i]
+            wi = weight * terms[i] if i else weight
             right[:, i] = np.bincount(block, wi * miss, count)
             for j in range(i, 3):
-                lhs[:, i, j] = lhs[:, j, i] = np.bincount(block, wi * terms[j], count)
+                lhs[:, i, j] = lhs[:, j, i] = np.bincount(block, wi * terms[j] if j else wi, count)
         now = np.stack([base, height - shape.height, shift], axis=1)
         inverse = np.linalg.inv(lhs + np.diag(1 / prior**2)).astype(np.float64)
         change = np.einsum("nij,nj->ni", inverse, right - now / prior**2)
         base = base + change[:, 0]
         height = np.clip(height + change[:, 1], 0.02, 2.0)
         shift = np.clip(shift + np.clip(change[:, 2], -1.0, 1.0), -4.0, 4.0)
-        core = np.abs(local) < shape.half_extent
-        spread = 1.4826 * float(np.median(np.abs(miss[core & (given > 0.3)]))) if (core & (given > 0.3)).any() else noise
+        core = (np.abs(local) < shape.half_extent) & clear
+        spread = 1.4826 * float(np.median(np.abs(miss[core]))) if core.any() else noise
         noise = float(np.clip(spread, 0.01, 0.3))
     total = np.bincount(block, given, count)
     chi = np.sqrt(np.bincount(block, given * np.minimum(miss**2, 0.25), count) / np.maximum(total, 1e-9))

@@ -31,8 +31,12 @@ def segment_costs(likeness: Floats32, segments: int, reach: int) -> Floats32:
         for j, shift in enumerate(shifts):
             total += rows_first[j, :, shift : shift + width]
         out[move + reach] = total
-    mean = out * np.float32(1 / per)
-    return (1.0 - np.minimum(mean * np.float32(1 / FULL), 1.0) - np.float32(0.08) * mean).astype(np.float32)
+    out *= np.float32(1 / per)
+    full = np.minimum(out * np.float32(1 / FULL), np.float32(1))
+    out *= np.float32(-0.08)
+    out -= full
+    out += np.float32(1)
+    return out
 
 
 def best_path(

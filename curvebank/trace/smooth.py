@@ -17,20 +17,33 @@ from ..records import FloatArray
 LOG_LAMBDAS = np.arange(-6.0, 12.01, 0.5)
 
 
-def basis(t: FloatArray, pieces: int, periodic: bool, derivative: bool = False) -> FloatArray:
-    """Cubic B-splines (or their slopes) on ``pieces`` even intervals of 0..1 at ``t``: [n, pieces + 3], or [n, pieces] when periodic."""
+def _four(t: FloatArray, pieces: int, periodic: bool, derivative: bool = False) -> tuple[npt.NDArray[np.intp], FloatArray]:
+    """The four B-splines that are not zero at each ``t``: their columns [n, 4] and values [n, 4]."""
     t = np.asarray(t, dtype=np.float64)
     u = np.mod(t, 1.0) * pieces if periodic else np.clip(t, 0.0, 1.0) * pieces
-    cell = np.minimum(u.astype(int), pieces - 1)
+    cell = np.minimum(u.astype(np.intp), pieces - 1)
     f = u - cell
-    parts = ((1 - f) ** 3 / 6, (3 * f**3 - 6 * f**2 + 4) / 6, (-3 * f**3 + 3 * f**2 + 3 * f + 1) / 6, f**3 / 6)
+    g = 1 - f
+    parts = np.empty((len(t), 4))
     if derivative:
-        parts = (-((1 - f) ** 2) / 2, (3 * f**2 - 4 * f) / 2, (-3 * f**2 + 2 * f + 1) / 2, f**2 / 2)
-        parts = tuple(part * pieces for part in parts)
-    out = np.zeros((len(t), pieces if periodic else pieces + 3))
-    rows = np.arange(len(t))
-    for k, part in enumerate(parts):
-        out[rows, (cell + k) % pieces if periodic else cell + k] += part
+        parts[:, 0], parts[:, 1] = -0.5 * g * g, (1.5 * f - 2) * f
+        parts[:, 2], parts[:, 3] = (1 - 1.5 * f) * f + 0.5, 0.5 * f * f
+        parts *= pieces
+    else:
+        ff, gg = f * f, g * g
+        parts[:, 0], parts[:, 1] = gg * g / 6, (0.5 * f - 1) * ff + 2 / 3
+        parts[:, 2], parts[:, 3] = (0.5 * g - 1) * gg + 2 / 3, ff * f / 6
+    columns = cell[:, None] + np.arange(4)
+    return (columns % pieces if periodic else columns), parts
+
+
+def basis(t: FloatArray, pieces: int, periodic: bool) -> FloatArray:
+    """Cubic B-splines on ``pieces`` even intervals of 0..1 at ``t``: [n, pieces + 3], or [n, pieces] when periodic."""
+    columns, parts = _four(t, pieces, periodic)
+    out = np.zeros((len(columns), pieces if periodic else pieces + 3))
+    rows = np.arange(len(columns))
+    for k in range(4):
+        out[rows, columns[:, k]] += parts[:, k]
     return out
 
 
@@ -58,16 +71,22 @@ class Smooth:
 
     def value(self, t: FloatArray) -> FloatArray:
         """The spline at ``t``: [n, d]."""
-        return basis(t, self.pieces, self.periodic) @ self.coefficients
+        return self._sum(*_four(t, self.pieces, self.periodic))
 
     def slope(self, t: FloatArray) -> FloatArray:
         """Derivative over ``t``: [n, d]."""
-        return basis(t, self.pieces, self.periodic, derivative=True) @ self.coefficients
+        return self._sum(*_four(t, self.pieces, self.periodic, derivative=True))
+
+    def _sum(self, columns: npt.NDArray[np.intp], parts: FloatArray) -> FloatArray:
+        out = parts[:, :1] * self.coefficients[columns[:, 0]]
+        for k in (1, 2, 3):
+            out += parts[:, k : k + 1] * self.coefficients[columns[:, k]]
+        return out
 
     def sigma(self, t: FloatArray) -> FloatArray:
         """Standard uncertainty at ``t``: [n]."""
         b = basis(t, self.pieces, self.periodic)
-        return np.sqrt(np.maximum(np.einsum("ij,jk,ik->i", b, self.covariance, b, optimize=True), 0.0))
+        return np.sqrt(np.maximum(((b @ self.covariance) * b).sum(axis=1), 0.0))
 
 
 def fit(
