@@ -368,7 +368,7 @@ def test_dark_and_small_pages_are_accessible(open_page, desk_of, server, chart_p
 
 
 def test_a_line_begun_on_a_kept_trace_leaves_that_trace_alone(desk, server, chart_png):
-    """Contours begin on head curves: the kept curve is chosen, never bent, and the two clicks begin a line; a guide is asked for by name."""
+    """Contours begin on head curves: the kept curve is chosen, never bent, the two clicks begin a line; guides are asked for by name."""
     page = desk.page
     desk.upload("chart.png", chart_png)
     set_up_axes(desk)
