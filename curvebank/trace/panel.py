@@ -1,14 +1,16 @@
 """The door of tracing: all wanted curves of a panel, one result each, in order."""
 
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
 
 from ..errors import TraceError
-from ..records import Trace
+from ..records import FloatArray, Trace
 from ..sheet import Prepared
-from .clicks import Clicks, PanelMap, checked
+from .clicks import Clicks, PanelMap, checked, same_clicks
+from .direction import one_way
 from .ends import to_ink
 from .follow import follow
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
@@ -38,11 +40,15 @@ def trace_panel(
     traces: list[Trace | None] = []
     doubts: list[Doubt | None] = []
     faults: list[TraceError | None] = []
+    as_clicked: list[Callable[[Trace], Trace]] = [lambda trace: trace] * len(wanted)
     for i, clicks in enumerate(wanted):
         tell(i / len(wanted), f"Tracing {clicks.id}")
         trace, doubt, fault = None, None, None
         try:
-            trace, doubt = _one(prepared, panel_map, clicks)
+            points = checked(clicks, prepared, panel_map)
+            if clicks.kind == "line":
+                points, as_clicked[i] = one_way(points, clicks.closed)
+            trace, doubt = _one(prepared, panel_map, clicks, points)
         except TraceError as refused:
             fault = refused
         except (ValueError, ArithmeticError, IndexError) as broken:
@@ -58,18 +64,23 @@ def trace_panel(
             others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
             traces[i] = end_on_others(trace, others)
     pair_test([c.id for c in wanted], traces, doubts, list(fixed))
+    for i, notices in enumerate(same_clicks(wanted, prepared.unit)):
+        trace, doubt = traces[i], doubts[i]
+        if notices and doubt is not None:
+            doubt.notices.extend(notices)
+        elif notices and trace is not None:
+            traces[i] = replace(trace, warnings=trace.warnings + notices)
     tell(1.0, "Traced")
     out: list[Trace | TraceError] = []
-    for trace, doubt, fault in zip(traces, doubts, faults, strict=True):
+    for trace, doubt, fault, turned in zip(traces, doubts, faults, as_clicked, strict=True):
         if trace is None:
             out.append(fault or TraceError("The line could not be followed; add clicks along it", code="lost"))
         else:
-            out.append(trace if doubt is None else settle(trace, doubt))
+            out.append(turned(trace if doubt is None else settle(trace, doubt)))
     return out
 
 
-def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks) -> tuple[Trace, Doubt | None]:
-    points = checked(clicks, prepared, panel_map)
+def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatArray) -> tuple[Trace, Doubt | None]:
     if clicks.kind == "hand":
         return by_hand(prepared, points, clicks.closed), None
     if clicks.kind == "points":
