@@ -48,10 +48,9 @@ def base(model: CurveModel, pump: PumpInfo | None, *, x_unit: str = "m3/h", y_un
 
 def unused(model: CurveModel) -> tuple[Notice, ...]:
     """What the recipe states for this line and nothing reads: said, not passed over."""
-    names = [name for name in ("guides", "locked") if getattr(model, name)]
-    if not names:
+    if not model.locked:
         return ()
-    text = f"The {' and '.join(names)} of this line are kept in the recipe but not used for the trace. Add clicks where it strays."
+    text = "The locked stretches of this line are kept in the recipe but not used for the trace. Add clicks where it strays."
     return (Notice(code="unused-keys", message=text),)
 
 

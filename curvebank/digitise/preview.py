@@ -3,21 +3,43 @@
 import json
 import threading
 from collections import OrderedDict
+from collections.abc import Sequence
+from dataclasses import replace
 from typing import Any
 
-from .. import axes, trace
+from .. import axes, sheet, trace
 from ..errors import CurvebankError
 from ..jsonable import clean
-from ..recipe import CurveModel, PanelModel, Recipe, validate_part
+from ..recipe import CurveModel, MaskModel, PanelModel, Recipe, validate_part
 from ..records import PageInfo
 from . import curves as curve_maker
+from . import masking
 from .result import curve_json, panel_json
-from .run import clicks, pump_info
+from .run import clicks, placed, pump_info
 from .threads import one_thread
 
 KEPT = 16
 _kept: OrderedDict[tuple[int, str], tuple[Any, Any]] = OrderedDict()
+KEPT_MASKED = 2
+_covered: OrderedDict[tuple[int, str], tuple[Any, Any]] = OrderedDict()
 _guard = threading.Lock()
+
+
+def _masked(prepared: Any, masks: Sequence[dict[str, Any]]) -> Any:
+    """The sheet under its masks, remembered while they stay as they are."""
+    if not masks:
+        return prepared
+    at = (id(prepared), json.dumps(masks, sort_keys=True))
+    with _guard:
+        if at in _covered:
+            _covered.move_to_end(at)
+            return _covered[at][1]
+    covered = sheet.mask(prepared, [validate_part(MaskModel, m, f"$.sheet.masks[{i}]") for i, m in enumerate(masks)])
+    with _guard:
+        _covered[at] = (prepared, covered)
+        while len(_covered) > KEPT_MASKED:
+            _covered.popitem(last=False)
+    return covered
 
 
 def _placed(area: PanelModel, key: str, prepared: Any) -> Any:
@@ -37,7 +59,13 @@ def _placed(area: PanelModel, key: str, prepared: Any) -> Any:
 
 @one_thread
 def preview(
-    panel: dict[str, Any], curve: dict[str, Any] | None, prepared: Any, page: PageInfo | None, pump: dict[str, Any] | None = None
+    panel: dict[str, Any],
+    curve: dict[str, Any] | None,
+    prepared: Any,
+    page: PageInfo | None,
+    pump: dict[str, Any] | None = None,
+    *,
+    masks: Sequence[dict[str, Any]] = (),
 ) -> dict[str, Any]:
     """Calibrate one panel and, if asked, trace one curve on it.
 
@@ -49,6 +77,8 @@ def preview(
         The prepared sheet.
     pump : dict, optional
         The recipe's pump, for stages and speed.
+    masks : sequence of dict
+        The recipe's ``sheet.masks``.
 
     Returns
     -------
@@ -57,13 +87,15 @@ def preview(
 
     Raises
     ------
-    RecipeError, CalibrationError
-        The panel cannot be used yet; the path is relative to the panel. Errors of the curve stay in the curve.
+    RecipeError, CalibrationError, SheetError
+        The panel or a mask cannot be used; the path is relative to the panel, or begins ``$.sheet.masks``. Errors of the curve stay
+        in the curve.
     """
     area = validate_part(PanelModel, panel, "$.panel")
+    prepared = _masked(prepared, masks)
     panel_map = _placed(area, json.dumps(panel, sort_keys=True), prepared)
     out: dict[str, Any] = {
-        "panel": panel_json(panel_map.panel_result())
+        "panel": panel_json(placed(area, panel_map, prepared))
         | {
             "mark_residuals": {k: [float(r) for r in v] for k, v in panel_map.mark_residuals.items()},
             "suspects": list(panel_map.suspects),
@@ -82,6 +114,7 @@ def preview(
         if isinstance(got, CurvebankError):
             raise got
         made = curve_maker.from_trace(line, area.axes, got, panel_map, info, prepared.width_px)
+        made = replace(made, warnings=made.warnings + masking.on_curve(line, got, prepared))
     except CurvebankError as e:
         made = curve_maker.failed(line, info, e, "$.curve.clicks")
     out["curve"] = curve_json(made)

@@ -6,6 +6,7 @@ and only what spoils everything (no sheet, no recipe) becomes the error of the w
 
 import importlib.metadata
 from collections.abc import Callable
+from dataclasses import replace
 from typing import Any
 
 import cv2
@@ -13,9 +14,10 @@ import scipy.linalg  # noqa: F401 - its BLAS must be loaded before threads are l
 
 from .. import axes, checks, recipe, sheet, trace
 from ..errors import CurvebankError, SheetError, TraceError
-from ..recipe import CurveModel, Recipe
-from ..records import Curve, Digitised, PageInfo, PumpInfo
+from ..recipe import CurveModel, PanelModel, Recipe
+from ..records import Curve, Digitised, PageInfo, PanelResult, PumpInfo, frozen
 from . import curves as curve_maker
+from . import masking
 from .threads import one_thread
 
 Progress = Callable[[float, str], None]
@@ -124,6 +126,8 @@ def _run(
         prepared = sheet.prepare(loaded, progress=lambda share, text: tell(0.05 + 0.30 * share, text))
     elif page is not None:
         _check_identity(doc, page)
+    if doc.sheet is not None and prepared is not None:
+        prepared = sheet.mask(prepared, doc.sheet.masks)
 
     maps: dict[str, Any] = {}
     panel_errors: dict[str, CurvebankError] = {}
@@ -161,7 +165,7 @@ def _run(
             made[c.id] = finish(doc, c, got, maps[panel.id], pump, prepared)
         done += len(wanted)
 
-    panels = tuple(maps[panel.id].panel_result() for panel in doc.panels if panel.id in maps)
+    panels = tuple(placed(panel, maps[panel.id], prepared) for panel in doc.panels if panel.id in maps)
     error = None
     if doc.panels and not maps and all(c.kind != "table" for c in doc.curves):
         error = next(iter(panel_errors.values())).to_dict()
@@ -178,7 +182,7 @@ def _run(
     tell(0.96, "checking against the laws of pumps")
     findings = tuple(checks.run(result, settings)) if error is None else ()
     tell(1.0, "done")
-    return Digitised(**{name: getattr(result, name) for name in result.__dataclass_fields__} | {"findings": findings})
+    return replace(result, findings=findings)
 
 
 def clicks(c: CurveModel) -> trace.Clicks:
@@ -188,7 +192,14 @@ def clicks(c: CurveModel) -> trace.Clicks:
         points = points[:-1]
     if c.kind == "table":
         raise TraceError("A typed table is not traced.", code="table")
-    return trace.Clicks(id=c.id, points=points, closed=c.closed, ends=c.ends, kind=c.kind)
+    locked = tuple(trace.Locked(pixels=frozen(part.pixels, (-1, 2)), sigma_px=part.sigma_px) for part in c.locked)
+    return trace.Clicks(id=c.id, points=points, closed=c.closed, ends=c.ends, kind=c.kind, guides=c.guides, locked=locked)
+
+
+def placed(panel: PanelModel, panel_map: Any, prepared: Any) -> PanelResult:
+    """A calibrated panel with what its masks cost it."""
+    result: PanelResult = panel_map.panel_result()
+    return replace(result, warnings=result.warnings + masking.on_marks(panel, prepared))
 
 
 def finish(doc: Recipe, c: CurveModel, got: Any, panel_map: Any, pump: PumpInfo, prepared: Any) -> Curve:
@@ -199,7 +210,8 @@ def finish(doc: Recipe, c: CurveModel, got: Any, panel_map: Any, pump: PumpInfo,
     panel = doc.panel(c.panel)
     assert panel is not None
     try:
-        return curve_maker.from_trace(c, panel.axes, got, panel_map, pump, prepared.width_px)
+        made = curve_maker.from_trace(c, panel.axes, got, panel_map, pump, prepared.width_px)
+        return replace(made, warnings=made.warnings + masking.on_curve(c, got, prepared))
     except CurvebankError as e:
         return curve_maker.failed(c, pump, e, f"$.curves[{i}]")
     except (ValueError, ArithmeticError) as e:

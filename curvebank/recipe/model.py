@@ -113,6 +113,13 @@ class FitModel(Node):
     through_zero: bool = False
 
 
+class LockedModel(Node):
+    """A stretch of the trace that stays exactly as it is: its pixels in order along the line, and their standard uncertainty [px]."""
+
+    pixels: Annotated[tuple[Pair, ...], Field(min_length=2)]
+    sigma_px: Positive | None = None
+
+
 class CurveModel(Node):
     """One wanted line, contour, hand-drawn curve, set of test points or typed table."""
 
@@ -146,7 +153,7 @@ class CurveModel(Node):
     closed: bool = False
     ends: Literal["ink", "click"] = "ink"
     guides: tuple[Pair, ...] = ()
-    locked: tuple[Pair, ...] = ()
+    locked: tuple[LockedModel, ...] = ()
     rows: tuple[Pair, ...] = ()
     x_unit: Text | None = None
     y_unit: Text | None = None
@@ -176,14 +183,34 @@ class LiquidModel(Node):
     stated: bool | Text | None = None
 
 
+class MaskModel(Node):
+    """An area of the sheet that hides what is printed: a ``brush`` stroke ``width_px`` wide, or an ``outline`` polygon.
+
+    What lies under a mask is not known; it is never taken for blank paper.
+    """
+
+    brush: Annotated[tuple[Pair, ...], Field(min_length=1)] | None = None
+    width_px: Annotated[float, Field(strict=True, allow_inf_nan=False, ge=1, le=4000)] | None = None
+    outline: Annotated[tuple[Pair, ...], Field(min_length=3)] | None = None
+
+    @model_validator(mode="after")
+    def _one_form(self) -> "MaskModel":
+        if (self.brush is None) == (self.outline is None):
+            raise ValueError("A mask is either a brush (points and width_px) or an outline (three points or more).")
+        if (self.brush is None) != (self.width_px is None):
+            raise ValueError("A brush needs its width_px; an outline has none.")
+        return self
+
+
 class SheetModel(Node):
-    """The scan: a bare file name beside the recipe, a page, and the paper register."""
+    """The scan: a bare file name beside the recipe, a page, masked areas, and the paper register."""
 
     file: Annotated[Text, AfterValidator(_bare_name)]
     page: Annotated[int, Field(strict=True, ge=1)] = 1
     dpi: Annotated[float, Field(strict=True, ge=36, le=1200)] = 300
     turn: Annotated[Literal[0, 90, 180, 270], BeforeValidator(_no_truth_value)] = 0
     sha256: Annotated[str, Field(pattern=r"^[0-9a-fA-F]{64}$")] | None = None
+    masks: tuple[MaskModel, ...] = ()
     liquid: LiquidModel | None = None
     document: Text | None = None
     issue: Text | None = None

@@ -183,7 +183,10 @@ def _words(fault: Any) -> str:
     if kind in ("too_short", "too_long"):
         least = kind == "too_short"
         wanted = f"at {'least' if least else 'most'} {ctx['min_length' if least else 'max_length']}"
-        return f"{shown} has {ctx.get('actual_length') or 'more'} items; {wanted} belong here."
+        count = ctx.get("actual_length")
+        has = "is empty" if count == 0 else f"has {count or 'more'} item{'s' if count != 1 else ''}"
+        one = ctx["min_length" if least else "max_length"] == 1
+        return f"{shown} {has}; {wanted} belong{'s' if one else ''} here."
     if kind == "string_too_long":
         return f"This text is longer than {ctx['max_length']} characters."
     if kind in ("greater_than", "greater_than_equal", "less_than_equal"):
@@ -250,8 +253,9 @@ def _table_faults(c: CurveModel, at: str) -> Any:
             yield f"{at}.{key}", e.message
     if c.is_contour:
         yield f"{at}.kind", "A contour is drawn, not typed as a table."
-    if c.clicks:
-        yield f"{at}.clicks", "A typed table has rows, not clicks."
+    for key in ("clicks", "guides", "locked"):
+        if getattr(c, key):
+            yield f"{at}.{key}", f"A typed table has rows, not {key if key != 'locked' else 'locked stretches'}."
 
 
 def _drawn_faults(recipe: Recipe, c: CurveModel, at: str) -> Any:

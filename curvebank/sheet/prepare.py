@@ -29,6 +29,7 @@ class Prepared:
 
     ``ink`` [h, w]; ``clean`` is ink without printed lines; ``printed`` the modelled ink of those lines; ``colour`` [h, w, 3] the ink
     of each channel (red, green, blue) or None for a grey sheet. ``width_px`` is the typical width of a line on the sheet.
+    ``masked`` [h, w] is True where a mask hides what is printed (not known, not paper), or None where nothing is masked.
     """
 
     ink: Bytes
@@ -38,6 +39,7 @@ class Prepared:
     lines: tuple[PrintedLine, ...]
     width_px: float
     light_on_dark: bool
+    masked: npt.NDArray[np.bool_] | None = None
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -60,6 +62,8 @@ class Prepared:
         }  # fmt: skip
         if self.colour is not None:
             out["colour"] = self.colour
+        if self.masked is not None:
+            out["masked"] = self.masked
         return out
 
     @classmethod
@@ -74,6 +78,7 @@ class Prepared:
         return cls(
             ink=arrays["ink"], clean=arrays["clean"], printed=arrays["printed"], colour=arrays.get("colour"), lines=tuple(lines),
             width_px=float(arrays["scalars"][0]), light_on_dark=bool(arrays["scalars"][1]),
+            masked=arrays.get("masked"),
         )  # fmt: skip
 
 

@@ -9,7 +9,7 @@ import numpy.typing as npt
 
 from ..errors import TraceError
 from ..records import FloatArray, Notice
-from ..sheet import Prepared
+from ..sheet import Prepared, under_mask
 from .guides import in_order
 
 Kind = Literal["line", "hand", "points"]
@@ -93,8 +93,9 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
     _on_panel(points, "click", prepared, panel)
     _on_panel(guides, "guide", prepared, panel)
     if clicks.kind == "line":
+        hidden = under_mask(prepared, points)
         for k, (x, y) in enumerate(points):
-            if not _has_ink(prepared, x, y):
+            if not hidden[k] and not _has_ink(prepared, x, y):
                 raise TraceError(f"The {ordinal(k)} click ({x:.0f}, {y:.0f}) is on blank paper; move it onto the line", code="off-ink")
     return in_order(points, guides, clicks.closed, SAME_PLACE_PX)
 

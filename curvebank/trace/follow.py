@@ -6,7 +6,7 @@ import cv2
 import numpy as np
 
 from ..records import FloatArray
-from ..sheet import Prepared
+from ..sheet import Prepared, under_mask
 from . import smooth
 from .axis import Axis, from_polyline, through
 from .band import ridge, sample
@@ -15,6 +15,8 @@ from .route import best_path, click_pull, segment_costs
 WIDE = {2: (0.42, 1.6), 3: (0.25, 1.1), 4: (0.2, 1.0)}
 """Half width of the first band in parts of the longest gap between clicks, and its steepest slope, by number of clicks."""
 WIDE_MANY = (0.18, 0.9)
+UNKNOWN = np.float32(0.3)
+"""Likeness to a line [0..1] of a place that a mask hides."""
 Path = tuple[FloatArray, FloatArray, FloatArray]
 
 
@@ -135,6 +137,9 @@ def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, 
     flank = max(2, int(round(6.0 * max(prepared.unit, 0.6) / how.across)))
     # Lines that merge make one broad stroke: a wider flank sees it too, at less weight.
     likeness = np.maximum(ridge(band, flank, cap), np.float32(0.6) * ridge(band, 2 * flank + flank // 2, cap))
+    if prepared.masked is not None:
+        # Under a mask the line may run anywhere: dearer than ink, cheaper than bare paper, so the path goes straight on.
+        likeness = np.where(under_mask(prepared, _places(axis, s_rows, offsets)).reshape(likeness.shape), UNKNOWN, likeness)
     step = how.along * how.rows
     reach = max(int(np.ceil(how.slope * step / how.across)), 3)
     costs = segment_costs(likeness, segments, reach)
@@ -150,6 +155,12 @@ def _search(prepared: Prepared, axis: Axis, at: FloatArray, clicks: FloatArray, 
     trust = _trust(seen)
     whole = slice(start, start + int(pulls_at[-1][0]) + 1)
     return (s_nodes[whole], offsets[path[whole]], trust[whole]), float(chosen[whole.start : whole.stop - 1].mean())
+
+
+def _places(axis: Axis, s_rows: FloatArray, offsets: FloatArray) -> FloatArray:
+    """Pixels [rows * offsets, 2] of a band's cells."""
+    points, normals = axis.at(s_rows)
+    return (points[:, None] + normals[:, None] * offsets[:, None]).reshape(-1, 2)
 
 
 def _trust(seen: FloatArray) -> FloatArray:

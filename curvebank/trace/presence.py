@@ -7,7 +7,7 @@ import numpy as np
 import numpy.typing as npt
 
 from ..records import FloatArray
-from ..sheet import Prepared
+from ..sheet import Prepared, under_mask
 from .axis import Axis
 from .band import sample
 from .profile import Shape
@@ -62,6 +62,8 @@ def presence(prepared: Prepared, axis: Axis, shape: Shape, s: FloatArray) -> Pre
     state = np.where(rise > 0.45, INKED, EMPTY)
     state = np.where((crowd > 0.35) & (middle > 0.45 * full), CROSSED, state)
     state = np.where((under > 0.45) & (state == EMPTY), HIDDEN, state)
+    if prepared.masked is not None:
+        state = np.where(under_mask(prepared, axis.at(s)[0]), HIDDEN, state)
     inner = np.abs(offsets) <= shape.half_extent
     lean = (band[:, inner] * offsets[inner]).sum(axis=1) / np.maximum(band[:, inner].sum(axis=1), 0.2 * full)
     beside = (np.abs(offsets) > shape.half_extent) & (np.abs(offsets) <= shape.half_extent + 2.0)

@@ -123,16 +123,20 @@ def pixels_near(prepared: Prepared, axis: Axis, half: float) -> Pixels:
     ink = prepared.clean.ravel()[pick] / 255.0
     printed = prepared.printed.ravel()[pick] / 255.0
     # A light line divides out well, a dark one hides what lies below: trust falls with its strength.
-    return Pixels(at, across, ink, 1.0 / (1.0 + (printed / 0.10) ** 2), printed)
+    weight = 1.0 / (1.0 + (printed / 0.10) ** 2)
+    if prepared.masked is not None:
+        weight = np.where(prepared.masked.ravel()[pick], 0.0, weight)
+    return Pixels(at, across, ink, weight, printed)
 
 
 def first_shape(pixels: Pixels, width_px: float) -> Shape:
     """Line width and blur from the median profile of all pixels."""
     bins = np.rint(pixels.d * 3).astype(np.int64)
     low = int(bins.min())
+    known = pixels.weight > 0  # not under a mask
     keep = pixels.weight > 0.4
-    if keep.sum() < 0.3 * len(keep):
-        keep = np.ones(len(keep), bool)
+    if keep.sum() < 0.3 * known.sum() or not keep.any():
+        keep = known if known.any() else np.ones(len(keep), bool)
     bins, ink = bins[keep] - low, pixels.ink[keep]
     # Medians of all bins at once: counted by bin and ink step, the middle of each bin's count.
     count = int(bins.max()) + 1
@@ -202,8 +206,11 @@ def read_blocks(pixels: Pixels, d: FloatArray, shape: Shape, length: float, bloc
     total = np.bincount(block, given, count)
     chi = np.sqrt(np.bincount(block, given * np.minimum(miss**2, 0.25), count) / np.maximum(total, 1e-9))
     seen = np.bincount(block, minlength=count)
-    usual = float(np.median(height[height > 0.3 * shape.height])) if (height > 0.3 * shape.height).any() else shape.height
-    usual_chi = float(np.median(chi[height > 0.4 * usual])) if (height > 0.4 * usual).any() else 0.1
+    told = total > 0  # not wholly under a mask
+    strong = told & (height > 0.3 * shape.height)
+    usual = float(np.median(height[strong])) if strong.any() else shape.height
+    strong = told & (height > 0.4 * usual)
+    usual_chi = float(np.median(chi[strong])) if strong.any() else 0.1
     sigma = np.sqrt(inverse[:, 2, 2])
     masked = total < 0.35 * np.maximum(seen, 1)
     good = (

@@ -99,6 +99,15 @@ def put(doc, path, value):
         (["pump", "key"], "lower-case", "$.pump.key", "capital"),
         (["pump", "maker"], ..., "$.pump.maker", "missing"),
         (["recipe"], 2, "$.recipe", "version"),
+        (["sheet", "masks"], [{"brush": [], "width_px": 4}], "$.sheet.masks[0].brush", "at least 1 belongs here"),
+        (["sheet", "masks"], [{"brush": [[1, 2]]}], "$.sheet.masks[0]", "width_px"),
+        (["sheet", "masks"], [{"outline": [[1, 2], [3, 4]]}], "$.sheet.masks[0].outline", "at least 3 belong here"),
+        (["sheet", "masks"], [{"outline": [[1, 2], [3, 4], [5, 6]], "width_px": 4}], "$.sheet.masks[0]", "an outline has none"),
+        (["sheet", "masks"], [{}], "$.sheet.masks[0]", "either a brush"),
+        (["sheet", "masks"], [{"brush": [[1, 2]], "width_px": 0}], "$.sheet.masks[0].width_px", "at least 1"),
+        (["curves", 0, "locked"], [[5, 6]], "$.curves[0].locked[0]", "not an object"),
+        (["curves", 0, "locked"], [{"pixels": [[1, 2]]}], "$.curves[0].locked[0].pixels", "at least 2"),
+        (["curves", 0, "guides"], [[5]], "$.curves[0].guides[0][1]", "missing"),
     ],
 )
 def test_each_fault_names_its_place(path, value, json_path, words):
@@ -108,6 +117,16 @@ def test_each_fault_names_its_place(path, value, json_path, words):
         recipe.parse(json.dumps(doc))
     assert caught.value.path == json_path
     assert words in caught.value.message
+
+
+def test_guides_locked_stretches_and_masks_are_kept():
+    doc = document()
+    doc["curves"][0] |= {"guides": [[5, 6]], "locked": [{"pixels": [[1, 2], [3, 4]], "sigma_px": 0.03}, {"pixels": [[7, 8], [9, 9]]}]}
+    doc["curves"][1 if len(doc["curves"]) > 1 else 0].setdefault("locked", [])
+    doc["sheet"]["masks"] = [{"brush": [[10, 20]], "width_px": 40}, {"outline": [[1, 2], [3, 4], [5, 6]]}]
+    got = recipe.parse(doc)
+    assert got.curves[0].guides == ((5, 6),) and got.curves[0].locked[0].sigma_px == 0.03 and got.curves[0].locked[1].sigma_px is None
+    assert got.sheet.masks[0].width_px == 40 and got.sheet.masks[1].brush is None
 
 
 def test_every_fault_is_listed():
