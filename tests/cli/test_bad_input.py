@@ -240,7 +240,7 @@ def test_one_bad_curve_never_sinks_its_sheet(name, prepared):
 
 def test_what_is_kept_but_not_used_is_said(prepared):
     doc = chart.document()
-    doc["curves"] = [doc["curves"][0] | {"guides": [[300, 300]]}]
+    doc["curves"] = [doc["curves"][0] | {"locked": [{"pixels": [[300, 300], [301, 300]]}]}]
     codes = [w["code"] for w in digitise.result_json(digitise.run(doc, None, **prepared))["curves"][0]["warnings"]]
     assert "unused-keys" in codes
 
