@@ -1,4 +1,4 @@
-"""Draw invented charts with exact truth, then spoil them the way paper and scanners do. For finding failures; seeds make it repeatable.
+"""Small drawn charts of sixteen kinds, quick to trace: for unit tests and a first look (`drawing` draws sheets with axes and recipes).
 
 Lines are painted by their distance to every pixel (no raster engine, no resampling), so the truth is exact to rounding. Paper stretch,
 rotation and perspective act on the geometry before painting.
@@ -9,7 +9,8 @@ from typing import Any
 
 import cv2
 import numpy as np
-from scipy.spatial import cKDTree
+from drawing.paint import project
+from drawing.scene import arc, resample
 from scipy.special import ndtr
 
 KINDS = (
@@ -85,35 +86,6 @@ class Page:
             self.ink *= 1 - box
         small = cv2.GaussianBlur(tile, (0, 0), 2.0)
         self.ink = np.maximum(self.ink, cv2.warpAffine(small, turn, size_px, flags=cv2.INTER_LINEAR).astype(np.float32) / 255)
-
-
-def arc(line: np.ndarray) -> np.ndarray:
-    """Arc length along a polyline."""
-    return np.r_[0.0, np.cumsum(np.hypot(*np.diff(line, axis=0).T))]
-
-
-def resample(line: np.ndarray, step: float) -> np.ndarray:
-    """A polyline with vertices about ``step`` apart."""
-    s = arc(line)
-    at = np.linspace(0, s[-1], max(int(s[-1] / step), 1) + 1)
-    return np.stack([np.interp(at, s, line[:, k]) for k in (0, 1)], 1)
-
-
-def project(px: np.ndarray, line: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Distance of points to a dense polyline (endless at its ends) and arc length of the foot."""
-    s = arc(line)
-    _, i = cKDTree(line).query(px)
-    best, along = np.full(len(px), np.inf), np.zeros(len(px))
-    for a in (np.clip(i - 1, 0, len(line) - 2), np.clip(i, 0, len(line) - 2)):
-        e = line[a + 1] - line[a]
-        n = np.maximum((e**2).sum(1), 1e-12)
-        t = ((px - line[a]) * e).sum(1) / n
-        inner = np.clip(t, np.where(a == 0, -np.inf, 0.0), np.where(a == len(line) - 2, np.inf, 1.0))
-        d = np.hypot(*(px - line[a] - inner[:, None] * e).T)
-        closer = d < best
-        best = np.where(closer, d, best)
-        along = np.where(closer, s[a] + inner * np.sqrt(n), along)
-    return best, along
 
 
 def pattern(along: np.ndarray, length: float, dash: tuple[float, ...], blur: float) -> np.ndarray:
