@@ -52,13 +52,14 @@ def to_bytes(dark: Floats, scale: float) -> Bytes:
     return np.asarray(cv2.convertScaleAbs(np.maximum(dark, 0.0, out=dark), alpha=255.0 / scale), dtype=np.uint8)
 
 
-def line_width(ink: Bytes) -> float:
+def line_width(ink: Bytes, turned: Bytes) -> float:
     """Typical width of a drawn line [px]: the commonest length of short runs of ink, across and down the page.
 
-    Text stems and grid lines count too: the figure sets search scales, it is not a measurement of any one curve.
+    ``turned`` is the transpose of ``ink``. Text stems and grid lines count too: the figure sets search scales, it is not a measurement
+    of any one curve.
     """
     counts = np.zeros(64)
-    for rows in (ink[::2], np.ascontiguousarray(ink[:, ::2].T)):
+    for rows in (ink[::2], turned[::2]):
         dark = rows > 96
         dark[:, 0] = dark[:, -1] = False
         edges = np.flatnonzero(np.diff(dark.ravel().view(np.int8)))

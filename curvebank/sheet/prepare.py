@@ -108,12 +108,13 @@ def prepare(sheet: Sheet, *, progress: Progress | None = None) -> Prepared:
         ink = colour.max(axis=2)
         if not _is_coloured(colour):
             colour = None
-    width = levels.line_width(ink)
+    turned = np.asarray(cv2.transpose(ink), dtype=np.uint8)
+    width = levels.line_width(ink, turned)
     unit = unit_of(width)
     tell(0.35, "Finding printed lines")
-    lines = find_lines(ink, unit)
+    lines = find_lines(ink, turned, unit)
     tell(0.75, "Taking printed lines out")
-    clean, printed, measured = remove_lines(ink, lines, unit)
+    clean, printed, measured = remove_lines(ink, turned, lines, unit)
     tell(1.0, "Prepared")
     for a in (ink, clean, printed, colour):
         if a is not None:
