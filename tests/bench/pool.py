@@ -16,7 +16,7 @@ from PIL import Image
 HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 
-from drawing import KINDS, sheet_of  # noqa: E402
+from drawing.kinds import KINDS, sheet_of  # noqa: E402
 from drawing.record import recipe_of  # noqa: E402
 
 

@@ -9,7 +9,8 @@ import pytest
 sys.path.insert(0, str(Path(__file__).resolve().parents[1] / "bench"))
 
 pytest.importorskip("matplotlib")
-from drawing import agg, paint, sheet_of  # noqa: E402
+from drawing import agg, paint  # noqa: E402
+from drawing.kinds import sheet_of  # noqa: E402
 from drawing.scene import Scene, Stroke  # noqa: E402
 
 ENGINES = {"distance to every pixel": paint.render, "area coverage": agg.render}

@@ -2,9 +2,5 @@
 
 A chart (``chart``) is a list of strokes and words, placed on the page by smooth geometry (``geometry``), painted by one of two engines
 that differ in how they turn lines to pixels (``paint``: distance to every pixel; ``agg``: area coverage) and spoiled (``damage``).
-Truth is the geometry, never the picture. Pixel convention: the centre of the top-left pixel is (0, 0).
+``kinds`` is the door. Truth is the geometry, never the picture. Pixel convention: the centre of the top-left pixel is (0, 0).
 """
-
-from .kinds import KINDS, sheet_of
-
-__all__ = ["KINDS", "sheet_of"]

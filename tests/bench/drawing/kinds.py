@@ -16,19 +16,19 @@ A5, A5L, A4, A4L = (148.0, 210.0), (210.0, 148.0), (210.0, 297.0), (297.0, 210.0
 OWN = ("heads", "efficiencies", "power", "npshr")
 
 KINDS: dict[str, Look] = {
-    "clean": Look(content=("heads", "efficiency", "power"), damage=Damage(noise=2.0, jpeg=None), hard=False, clean=True),
-    "ordinary": Look(content=("heads", "efficiency", "power"), grid="light", hard=False, damage=Damage(jpeg=80)),
+    "clean": Look(content=("heads", "efficiency", "power"), damage=Damage(noise=2.0, jpeg=None), clean=True),
+    "ordinary": Look(content=("heads", "efficiency", "power"), grid="light", damage=Damage(jpeg=80)),
     "worn": Look(
-        content=("heads", "efficiency", "npshr"), grid="same", dashed_share=0.25, styles=("dashed", "dashdot"), gaps=0.4, hard=False,
+        content=("heads", "efficiency", "npshr"), grid="same", dashed_share=0.25, styles=("dashed", "dashdot"), gaps=0.4,
         paper_moves={"stretch": 3.0}, damage=Damage(noise=6.0, jpeg=75, post_blur=0.7),
     ),
     "poor": Look(
         content=("heads", "efficiency", "power"), grid="same", line_mm=(0.17, 0.34), gaps=0.3, paper_moves={"stretch": 8.0, "turn": 1.0},
         damage=Damage(noise=8.0, jpeg=50, drop_out=0.35, post_blur=0.7),
     ),
-    "a4-clean": Look(page_mm=A4, dpi=300, content=(*OWN, "contours"), clean=True, hard=False, damage=Damage(noise=2.0, jpeg=90)),
+    "a4-clean": Look(page_mm=A4, dpi=300, content=(*OWN, "contours"), clean=True, damage=Damage(noise=2.0, jpeg=90)),
     "a4-worn": Look(
-        page_mm=A4, dpi=300, content=(*OWN, "contours"), grid="same", dashed_share=0.25, styles=("dashed", "dashdot"), gaps=0.4, hard=False,
+        page_mm=A4, dpi=300, content=(*OWN, "contours"), grid="same", dashed_share=0.25, styles=("dashed", "dashdot"), gaps=0.4,
         paper_moves={"stretch": 3.0}, damage=Damage(noise=6.0, jpeg=75, post_blur=0.8),
     ),
     "a4-poor": Look(
@@ -103,6 +103,12 @@ KINDS: dict[str, Look] = {
     ),
 }  # fmt: skip
 
+HARD = (
+    "poor", "a4-poor", "mm", "stamp", "curl", "photo", "fold", "copy", "copy-of-copy", "fax-fine", "fax-normal", "one-bit", "halftone",
+    "blueprint", "microfilm", "hairline", "plotter", "dpi70", "dpi100", "dpi150", "dpi600",
+)  # fmt: skip
+"""Old paper and poor scans; the other kinds stress what is printed, not how it was kept."""
+
 
 @dataclass
 class Drawing:
@@ -139,7 +145,7 @@ def sheet_of(kind: str, seed: int, name: str | None = None) -> Drawing:
     about = {
         "name": name, "image": file, "width": pixels.shape[1], "height": pixels.shape[0], "dpi": look.dpi,
         "mode": "bit" if look.damage.one_bit else "colour" if pixels.ndim == 3 else "gray", "title": f"Drawn: {kind}",
-        "kind": kind, "seed": seed, "engine": engine, "hard": look.hard, "damage": chart.place.words,
+        "kind": kind, "seed": seed, "engine": engine, "hard": kind in HARD, "damage": chart.place.words,
         "wobble_px": look.wobble_mm * look.dpi / 25.4,
         "grid": look.grid, "class": _class(look),
     }  # fmt: skip

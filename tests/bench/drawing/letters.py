@@ -4,7 +4,6 @@ from functools import lru_cache
 
 import cv2
 import numpy as np
-from matplotlib import font_manager
 from PIL import Image, ImageDraw, ImageFont
 
 from .scene import Words
@@ -14,6 +13,8 @@ SCALE = 4
 
 @lru_cache(maxsize=64)
 def _font(size: int) -> ImageFont.FreeTypeFont:
+    from matplotlib import font_manager
+
     return ImageFont.truetype(font_manager.findfont("DejaVu Sans"), size)
 
 

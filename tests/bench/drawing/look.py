@@ -61,5 +61,4 @@ class Look:
     wobble_mm: float = 0.0
     paper_moves: dict[str, float] = field(default_factory=dict)
     damage: Damage = field(default_factory=Damage)
-    hard: bool = True
     clean: bool = False
