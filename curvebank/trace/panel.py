@@ -63,7 +63,7 @@ def trace_panel(
         if trace is not None and on_ink[i]:
             others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
             traces[i] = end_on_others(trace, others)
-    pair_test([c.id for c in wanted], traces, doubts, list(fixed))
+    pair_test([c.id for c in wanted], traces, doubts, list(fixed), prepared.unit)
     for i, notices in enumerate(same_clicks(wanted, prepared.unit)):
         trace, doubt = traces[i], doubts[i]
         if notices and doubt is not None:
@@ -96,4 +96,6 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatA
     fine = refine(prepared, axis, shape, points)
     if fine.blocks.good.mean() < LOST and found.cost > 0.5:
         raise TraceError(NOTHING, code="lost")
-    return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(prepared, found, fine)
+    return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(
+        prepared, fine, points, clicks.closed, clicks.ends == "ink", found.cost
+    )

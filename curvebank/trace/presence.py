@@ -85,3 +85,30 @@ def rhythm(seen: Presence, unit: float) -> Rhythm:
         return Rhythm(True, float(np.percentile(regular, 90)) * 1.4 + 3.0 * unit, 0.6 * float(np.percentile(inked, 15)))
     # A solid line may fade for a while; what resumes it must be long and straight, so letters behind its end do not.
     return Rhythm(False, 10.0 * unit, 14.0 * unit)
+
+
+def style_change(seen: Presence, beat: Rhythm, unit: float) -> tuple[int, bool] | None:
+    """Where a line printed solid goes over into dashes, or the other way round: (row, solid first). None where it has one style.
+
+    Both parts must be long and clear: the dashed one has at least four gaps of one kind, the solid one none of them.
+    """
+    gaps = seen.runs(seen.state == EMPTY)
+    lengths = (gaps[:, 1] - gaps[:, 0]).astype(float)
+    inner = (lengths >= 2.0 * unit) & (gaps[:, 0] > 0) & (gaps[:, 1] < len(seen.s))
+    gaps, lengths = gaps[inner], lengths[inner]
+    usual = float(np.median(lengths)) if len(lengths) >= 4 else 0.0
+    own = gaps[(lengths > 0.4 * usual) & (lengths < 2.5 * usual + 3)] if usual else gaps[:0]
+    if len(own) < 4:
+        return None
+    period = float(np.median(np.diff(own[:, 0])))
+    total, first, last = len(seen.s), int(own[0, 0]), int(own[-1, 1])
+    before, after = first, total - last
+    # What is called solid must be many periods long, and the gaps must follow each other without a break.
+    need = max(6.0 * period, 0.15 * total)
+    steady = float(np.diff(own[:, 0]).max()) < 4.0 * period and last - first > 0.1 * total
+    inked = lambda a, b: float((seen.state[a:b] != EMPTY).mean()) > 0.9  # noqa: E731
+    if steady and before > need and after < need and inked(0, first):
+        return first, True
+    if steady and after > need and before < need and inked(last, total):
+        return last, False
+    return None

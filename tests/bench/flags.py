@@ -1,10 +1,12 @@
 """Benchmark: does a trace know when it went wrong? Failed and good traces by cause, how many are flagged, and what confidence is worth.
 
-    python tests/bench/flags.py [--sheets DIR ...] [--drawn SEEDS] [--kinds ...] [--half 0|1] [--json FILE]
+    python tests/bench/flags.py [--sheets DIR ...] [--drawn SEEDS] [--kinds ...] [--half 0|1] [--fit] [--json FILE]
 
 Each DIR (default: samples/) holds NAME.recipe.json, the scan and NAME.truth.json; ``--drawn N`` adds N sheets of each kind of
 tests/bench/drawn.py. Every curve is traced with 2, 3 and 5 good clicks and with clicks gone wrong (tests/bench/wrong.py). Failed: see
-measures.score. Half of the sheets are for fitting, half for checking; the check half is what counts. Truth is read here and nowhere else.
+measures.score. Half of the sheets are for fitting, half for checking; the check half is what counts. ``--fit`` fits the weights of
+curvebank/trace/confidence.py to the fitting half, prints them, and shows both halves judged with them. Truth is read here and nowhere
+else.
 """
 
 import argparse
@@ -31,9 +33,12 @@ import wrong  # noqa: E402
 from curvebank import sheet, trace  # noqa: E402
 from curvebank.errors import TraceError  # noqa: E402
 from curvebank.records import Trace  # noqa: E402
+from curvebank.trace import confidence, evidence, judge  # noqa: E402
 
-FAILING_SHARE = 0.1
-"""Share of failed traces that confidence is weighed for; the pool holds far more of them than a day's work does."""
+FAILING_SHARE = 0.25
+"""Share of failed traces that confidence is weighed for."""
+SAVED_WEIGHT = 0.3
+"""Weight in the fit of a trace that came out right although its clicks were wrong: a click that is passed over deserves a look."""
 
 
 def sheets_of(folders: list[Path], seeds: int, kinds: list[str]) -> Any:
@@ -59,14 +64,14 @@ def row_of(name: str, case: wrong.Case, got: Trace | TraceError) -> dict[str, An
     row.update(
         sheet=name, half=wrong.half_of(name), curve=case.curve, cause=case.cause, clicks=len(case.clicks), refused=refused,
         flagged=refused or got.flagged, confidence=0.0 if refused else got.confidence,
-        codes=[got.code] if refused else [n.code for n in got.warnings], hint=None if refused else got.hint_click,
+        honest=case.cause[0].isdigit(), hint=None if refused else got.hint_click,
+        codes=[got.code] if refused else [n.code for n in got.warnings],
     )  # fmt: skip
     return row
 
 
-def cases_of_sheet(name: str, page: sheet.Sheet, truth: dict[str, Any], recipe: dict[str, Any] | None) -> Any:
-    """Trace everything on one sheet: (case, result, prepared sheet, panel, fixed traces) for each."""
-    prepared = sheet.prepare(page)
+def cases_of_sheet(name: str, prepared: sheet.Prepared, truth: dict[str, Any], recipe: dict[str, Any] | None, most: int) -> Any:
+    """Trace everything on one sheet, at most ``most`` wrong cases a panel: (case, result, prepared sheet, panel, fixed traces) for each."""
     rng = np.random.default_rng([wrong.seed_of(name)])
     for panel in truth["panels"]:
         curves = [c for c in truth["curves"] if c["panel"] == panel["id"]]
@@ -74,23 +79,74 @@ def cases_of_sheet(name: str, page: sheet.Sheet, truth: dict[str, Any], recipe: 
             continue
         outline = run.panel_of(truth, panel["id"], recipe)
         kept: dict[str, Trace] = {}
-        for count in ("3", "2", "5"):
-            mine = [c for c in curves if count in c["clicks"] and not (c["closed"] and count == "2")]
-            wanted = [trace.Clicks(id=c["id"], points=c["clicks"][count], closed=c["closed"]) for c in mine]
+        for count in (3, 2, 5):
+            mine = [c for c in curves if not (c["closed"] and count == 2)]
+            wanted = [trace.Clicks(id=c["id"], points=wrong.good_clicks(c, count, rng), closed=c["closed"]) for c in mine]
             results = trace.trace_panel(prepared, outline, wanted) if wanted else []
             for c, w, got in zip(mine, wanted, results, strict=True):
                 line = wrong.line_of(c)
                 cause = f"{count} clicks" + (", loop" if c["closed"] else "")
                 case = wrong.Case(cause, c["id"], np.asarray(w.points, float), c["closed"], line, c["closed"])
-                if count == "3" and isinstance(got, Trace):
+                if count == 3 and isinstance(got, Trace):
                     kept[c["id"]] = got
                 yield case, got, prepared, outline, ()
-        for case in wrong.wrong_cases(prepared, curves, rng, max(prepared.unit, 0.6)):
+        gone_wrong = list(wrong.wrong_cases(prepared, curves, rng, max(prepared.unit, 0.6)))
+        rng.shuffle(gone_wrong)
+        for case in gone_wrong[:most]:
             fixed = () if case.alone else tuple(t for key, t in kept.items() if key != case.curve)
             clicks = trace.Clicks(id=case.curve, points=case.clicks, closed=case.closed)
             on = case.prepared or prepared
             (got,) = trace.trace_panel(on, outline, [clicks], fixed=fixed)
             yield case, got, on, outline, fixed
+
+
+class Vectors:
+    """Keeps the evidence that confidence is made from, in the order in which traces are settled."""
+
+    def __init__(self) -> None:
+        self.kept: list[np.ndarray] = []
+        self.chance = judge.chance
+        judge.chance = self
+
+    def __call__(self, vector: np.ndarray) -> float:
+        self.kept.append(np.array(vector))
+        return self.chance(vector)
+
+
+def fitted(rows: list[dict[str, Any]], ridge: float = 0.02) -> tuple[float, dict[str, float]]:
+    """Bias and weights, none below zero, of the penalised weighted logistic regression of failure on the evidence."""
+    from scipy.optimize import minimize
+
+    rows = [r for r in rows if not r["refused"]]
+    x = np.array([r["vector"] for r in rows])
+    y = np.array([r["failed"] for r in rows], float)
+    weight = weights_of(rows) * np.where([r["failed"] or r["honest"] for r in rows], 1.0, SAVED_WEIGHT)
+    weight /= weight.mean()
+    scale = x.std(axis=0) + 1e-9
+    a = np.c_[np.ones(len(x)), x / scale]
+
+    def loss(b: np.ndarray) -> tuple[float, np.ndarray]:
+        z = a @ b
+        value = float((weight * (np.logaddexp(0, z) - y * z)).mean() + 0.5 * ridge * (b[1:] ** 2).sum())
+        return value, a.T @ (weight * (1 / (1 + np.exp(-z)) - y)) / len(y) + np.r_[0.0, ridge * b[1:]]
+
+    b = minimize(loss, np.zeros(a.shape[1]), jac=True, method="L-BFGS-B", bounds=[(None, None)] + [(0, None)] * x.shape[1]).x
+    return float(b[0]), {name: round(float(v), 3) for name, v in zip(evidence.NAMES, b[1:] / scale, strict=True)}
+
+
+def weights_of(rows: list[dict[str, Any]]) -> np.ndarray:
+    """Weights that make failed traces FAILING_SHARE of all."""
+    failed = np.array([r["failed"] for r in rows])
+    return np.where(failed, FAILING_SHARE / max(failed.mean(), 1e-9), (1 - FAILING_SHARE) / max((~failed).mean(), 1e-9))
+
+
+def judged_anew(rows: list[dict[str, Any]], bias: float, weights: dict[str, float]) -> None:
+    """Confidence and flags of all rows by other weights."""
+    step = np.array([weights[name] for name in evidence.NAMES])
+    for r in rows:
+        if not r["refused"]:
+            r["confidence"] = float(1 / (1 + np.exp(np.clip(bias + r["vector"] @ step, -30, 30))))
+            r["flagged"] = r["confidence"] < confidence.FLAG_BELOW
 
 
 def auc(failed: np.ndarray, confidence: np.ndarray) -> float:
@@ -113,7 +169,8 @@ def table(rows: list[dict[str, Any]]) -> dict[str, Any]:
         refused = sum(r["refused"] for r in rows if r["cause"] == cause)
         bad, fine = mine & failed, mine & ~failed
         print(f"{cause:22s} {bad.sum():7d} {(bad & flagged).sum():8d} {refused:8d} {fine.sum():6d} {(fine & flagged).sum():8d}")
-    weight = np.where(failed, FAILING_SHARE / max(failed.mean(), 1e-9), (1 - FAILING_SHARE) / max((~failed).mean(), 1e-9))
+    weight = weights_of(rows)
+    honest = np.array([r["honest"] for r in rows])
     print("confidence   n  said  true (weighed)")
     for low, high in zip((0, 0.2, 0.5, 0.8, 0.9, 0.95, 0.98), (0.2, 0.5, 0.8, 0.9, 0.95, 0.98, 1.01), strict=True):
         inside = (confidence >= low) & (confidence < high)
@@ -125,7 +182,8 @@ def table(rows: list[dict[str, Any]]) -> dict[str, Any]:
         "failed": int(failed.sum()), "good": int((~failed).sum()),
         "failed_flagged": float(flagged[failed].mean()) if failed.any() else None,
         "failed_flagged_not_refused": float(np.mean([r["flagged"] for r in rows if r["failed"] and not r["refused"]])),
-        "good_flagged": float(flagged[~failed].mean()) if (~failed).any() else None, "auc": auc(failed, confidence),
+        "good_flagged": float(flagged[~failed & honest].mean()), "saved_flagged": float(flagged[~failed & ~honest].mean()),
+        "auc_of_good_clicks": auc(failed[failed | honest], confidence[failed | honest]), "auc": auc(failed, confidence),
         "brier": float((weight * (confidence - ~failed) ** 2).sum() / weight.sum()),
     }  # fmt: skip
     print(json.dumps(out))
@@ -138,23 +196,34 @@ def main() -> int:
     ask.add_argument("--drawn", type=int, default=4, help="sheets of each kind to draw")
     ask.add_argument("--kinds", nargs="*", default=list(drawn.KINDS))
     ask.add_argument("--half", type=int, choices=(0, 1), help="only the fitting (0) or the checking (1) half")
+    ask.add_argument("--most", type=int, default=30, help="wrong cases a panel")
+    ask.add_argument("--fit", action="store_true", help="fit the weights to the fitting half and judge with them")
     ask.add_argument("--json", type=Path)
     asked = ask.parse_args()
-    rows = []
+    rows: list[dict[str, Any]] = []
+    vectors = Vectors()
     for name, page, truth, recipe in sheets_of(asked.sheets, asked.drawn, asked.kinds):
         if asked.half is not None and wrong.half_of(name) != asked.half:
             continue
-        mine = [row_of(name, case, got) for case, got, *_ in cases_of_sheet(name, page, truth, recipe)]
+        vectors.kept.clear()
+        mine = [row_of(name, case, got) for case, got, *_ in cases_of_sheet(name, sheet.prepare(page), truth, recipe, asked.most)]
+        kept = iter(vectors.kept)
+        for r in mine:
+            r["vector"] = None if r["refused"] else next(kept)
         rows += mine
         bad = [r for r in mine if r["failed"]]
         print(f"{name:24s} {len(mine):4d} traces {len(bad):4d} failed {sum(r['flagged'] for r in bad):4d} flagged", flush=True)
+    if asked.fit:
+        bias, weights = fitted([r for r in rows if r["half"] == 0])
+        print(f"\nBIAS = {bias:.3f}\nWEIGHTS = {json.dumps(weights, indent=4)}")
+        judged_anew(rows, bias, weights)
     for half, title in ((0, "fitting half"), (1, "checking half")):
         part = [r for r in rows if r["half"] == half]
         if part:
             print(f"\n{title}: {len(part)} traces")
             table(part)
     if asked.json:
-        asked.json.write_text(json.dumps(rows, default=float))
+        asked.json.write_text(json.dumps(rows, default=lambda v: v.tolist()))
     return 0
 
 

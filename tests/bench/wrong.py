@@ -57,6 +57,16 @@ def along(line: np.ndarray, share: float) -> np.ndarray:
     return np.array([np.interp(share * s[-1], s, line[:, k]) for k in (0, 1)])
 
 
+def good_clicks(curve: dict[str, Any], count: int, rng: np.random.Generator) -> np.ndarray:
+    """Clicks [count, 2] spread along a curve, each coordinate within 3 px of it."""
+    line = line_of(curve)
+    shares = rng.uniform() + np.arange(count) / count if curve["closed"] else np.linspace(0.01, 0.99, count)
+    if not curve["closed"] and rng.random() < 0.3:
+        shares[0], shares[-1] = rng.uniform(0.01, 0.05), rng.uniform(0.95, 0.99)
+    at = np.stack([along(line, share % 1.0) for share in shares])
+    return at + rng.uniform(-3, 3, at.shape)
+
+
 def wrong_cases(prepared: Prepared, curves: list[dict[str, Any]], rng: np.random.Generator, scale: float) -> Iterator[Case]:
     """All wrong cases of the curves [truth entries] of one panel; ``scale`` is 1 for lines 3 px wide."""
     trees = {c["id"]: cKDTree(line_of(c)) for c in curves}
@@ -67,7 +77,7 @@ def wrong_cases(prepared: Prepared, curves: list[dict[str, Any]], rng: np.random
             yield from _loops(base, line, rng)
             continue
         for count in (3, 5):
-            given = np.array(curve["clicks"][str(count)], float)
+            given = good_clicks(curve, count, rng)
             which = int(rng.integers(0, count))
             moved = _onto_neighbour(given[which], curve["id"], curves, trees, rng, scale)
             if moved is not None:
@@ -81,8 +91,8 @@ def wrong_cases(prepared: Prepared, curves: list[dict[str, Any]], rng: np.random
                 yield _with(base, "crossing curve", given, inner, moved)
         yield from _mixed(base, curve, curves, rng)
         hidden = _obliterated(prepared, line, rng, scale)
-        yield replace(base, cause="obliterated", clicks=np.array(curve["clicks"]["3" if number % 2 else "2"], float), prepared=hidden)
-        sloppy = np.array(curve["clicks"]["3"], float)
+        yield replace(base, cause="obliterated", clicks=good_clicks(curve, 3 if number % 2 else 2, rng), prepared=hidden)
+        sloppy = good_clicks(curve, 3, rng)
         yield replace(base, cause="sloppy clicks", clicks=sloppy + rng.uniform(-6, 6, sloppy.shape) * scale)
 
 
@@ -156,7 +166,7 @@ def _mixed(base: Case, curve: dict[str, Any], curves: list[dict[str, Any]], rng:
     middle = along(line, 0.5)
     others.sort(key=lambda c: float(np.hypot(*(line_of(c) - middle).T).min()))
     for cause, count, other in (("two curves", 2, others[int(rng.integers(len(others)))]), ("swapped neighbours", 5, others[0])):
-        mine, theirs = np.array(curve["clicks"][str(count)], float), np.array(other["clicks"][str(count)], float)
+        mine, theirs = good_clicks(curve, count, rng), good_clicks(other, count, rng)
         k = count - count // 2
         clicks = np.vstack([mine[:k], theirs[k:]])
         if np.hypot(*np.diff(clicks, axis=0).T).min() > 20:
