@@ -11,6 +11,8 @@ from .presence import CROSSED, EMPTY, HIDDEN, INKED, Presence, Rhythm, presence,
 from .profile import Shape, pixels_near, read_blocks
 
 CHUNK_PX = 30.0
+FADED = 1.6
+"""A solid line near its end may be gone for this many times its usual gap, if enough of it comes back."""
 
 
 def to_ink(prepared: Prepared, panel: PanelMap, axis: Axis, shape: Shape, fixed_ends: tuple[bool, bool] = (False, False)) -> Axis:
@@ -34,7 +36,7 @@ def _reversed(axis: Axis) -> Axis:
 def _carry_on(prepared: Prepared, panel: PanelMap, axis: Axis, shape: Shape, beat: Rhythm, unit: float) -> Axis:
     """Extend beyond the last point chunk by chunk, then cut at the last ink."""
     points = axis.points
-    chunk = CHUNK_PX * unit + (beat.gap_px if beat.dashed else 0.0)
+    chunk = CHUNK_PX * unit + _longest_gap(beat)
     original = len(points)
     for _ in range(60):
         grown = _one_chunk(prepared, panel, points, shape, chunk, beat, unit)
@@ -43,7 +45,7 @@ def _carry_on(prepared: Prepared, panel: PanelMap, axis: Axis, shape: Shape, bea
         candidate = from_polyline(np.vstack([points, grown]), False)
         stop = _last_ink(prepared, candidate, shape, beat, unit, from_s=max(_length(points) - 5.0, 0.0))
         points = np.vstack([points, grown])
-        if stop < _length(points) - beat.gap_px - 3.0 * unit:
+        if stop < _length(points) - _longest_gap(beat) - 3.0 * unit:
             break
     whole = from_polyline(points, False)
     stop = _last_ink(prepared, whole, shape, beat, unit, from_s=min(_length(axis.points), whole.length))
@@ -57,6 +59,10 @@ def cut(axis: Axis, first: float, last: float) -> Axis:
     last = min(last, axis.length)
     s = np.linspace(first, last, max(int(round(last - first)), 8) + 1)
     return from_polyline(axis.at(s)[0], False)
+
+
+def _longest_gap(beat: Rhythm) -> float:
+    return beat.gap_px if beat.dashed else FADED * beat.gap_px
 
 
 def _length(points: FloatArray) -> float:
@@ -128,15 +134,18 @@ def walk(seen: Presence, beat: Rhythm, unit: float, begin: int) -> float:
         row -= 1
     last = row
     gap = hidden = 0
+    longest = _longest_gap(beat)
     row += 1
     while row < len(state):
         if state[row] == INKED:
-            if gap > 1.5 * unit and not _resumes(seen, row, beat):
+            vouched = last < begin and row - begin <= 10 * max(unit, 1.0) and (state[row : row + need] == INKED).all()
+            if gap > 1.5 * unit and not vouched and not _resumes(seen, row, beat, gap):
                 break
             last, gap, hidden = row, 0, 0
         elif state[row] == EMPTY:
-            gap += 1
-            if gap > beat.gap_px:
+            # A faded stretch that holds the click is the line's: the gap counts from the click on.
+            gap += row > begin
+            if gap > longest:
                 break
         elif row <= begin:
             last = row  # up to the click the user vouches for the line, even where others lie on it
@@ -146,7 +155,7 @@ def walk(seen: Presence, beat: Rhythm, unit: float, begin: int) -> float:
                 break
         row += 1
     meeting = _meeting(seen, last, unit)
-    if meeting is not None:
+    if meeting is not None and meeting > seen.s[begin] - 12 * unit:
         return meeting
     # An end against a printed line (an axis) lies within that line: half way through it.
     after = last + 1
@@ -187,11 +196,13 @@ def _meeting(seen: Presence, last: int, unit: float) -> float | None:
     return float(np.interp(point, np.arange(len(seen.s)), seen.s))
 
 
-def _resumes(seen: Presence, row: int, beat: Rhythm) -> bool:
+def _resumes(seen: Presence, row: int, beat: Rhythm, gap: float) -> bool:
     """Enough ink after a gap, and lying straight along the path, to be the line again and not a stroke of a letter."""
     rest = seen.state[row:]
     run = int(np.argmax(rest == EMPTY)) if (rest == EMPTY).any() else len(rest)
-    if run < beat.ink_px and run < len(rest):
+    # The longer a solid line has been away, the more of it must follow.
+    enough = beat.ink_px if beat.dashed else max(beat.ink_px, 1.6 * gap)
+    if run < enough and run < len(rest):
         return False
     ahead = slice(row, row + min(run, max(int(round(beat.ink_px)), 8)))
     state, lean = seen.state[ahead], seen.lean[ahead]

@@ -62,7 +62,7 @@ def trace_panel(
     for i, trace in enumerate(traced):
         if trace is not None and on_ink[i]:
             others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
-            traces[i] = end_on_others(trace, others)
+            traces[i] = end_on_others(trace, others, np.asarray(wanted[i].points, dtype=np.float64).reshape(-1, 2))
     pair_test([c.id for c in wanted], traces, doubts, list(fixed), prepared.unit)
     for i, notices in enumerate(same_clicks(wanted, prepared.unit)):
         trace, doubt = traces[i], doubts[i]
