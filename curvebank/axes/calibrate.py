@@ -59,17 +59,19 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
     page = page_size or _page_size(prepared)
     given = get(panel, "outline")
     parameters, covariance, scales = _scales(layout, solution)
-    used, report = gridmap.bends(layout, solution, prepared, get(panel, "grid", None) or "auto")
-    warps = None
-    if used:
-        parameters, covariance, warps = gridmap.with_bends(layout, solution, used, parameters, covariance, scales)
-        residuals = gridmap.mark_misses(residuals, layout, solution, used, scales, parameters)
+    placed = gridmap.look(layout, solution, prepared, get(panel, "grid", None) or "auto")
+    report = gridmap.report(placed)
+    warps, plane_size = None, solution.plane_size
+    if not isinstance(placed, str) and placed.bends:
+        parameters, covariance, scales, warps = gridmap.with_bends(layout, solution, placed, parameters, covariance, scales)
+        residuals = gridmap.mark_misses(residuals, layout, placed, scales, parameters)
+        plane_size = len(placed.theta)
     return PanelMap(
         panel_id,
         parameters,
         covariance,
         scales,
-        plane_size=solution.plane_size,
+        plane_size=plane_size,
         shift=layout.shift,
         size=layout.size,
         outline=outlines.given(given, path) if given else outlines.derive(layout, solution, page),

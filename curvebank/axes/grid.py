@@ -1,293 +1,301 @@
-"""Calibration from the printed grid: lines found on the sheet get their values from the marks, then the lines place the axes.
+"""Calibration from the printed grid: lines get their values from the marks, then the lines place the axes.
 
-Each line with a value is a row of linear equations for a low-order bend of the marks' plane (robust least squares, no
-intersections needed). The degree is chosen by leaving lines out. A direction with too few lines, with lines that do not sit on
-round values, or with marks that contradict them stays as the marks have it, and the report says why.
+1. Lines inside the panel are measured (`found`). Two families of them give the shape of the plane without the marks (`shape`).
+2. Along each direction the lines are read by the marks of each axis (`values`): which value each stands for, which mark contradicts.
+3. Lines the sheet's own search missed, and ticks, are looked for in the panel laid out straight (`search`), and read again.
+4. All lines of a direction place it by least squares (`bend`). A direction with too few lines, with lines that do not sit on round
+   values, or with two readings that are nearly as good stays as the marks have it, and the report says why.
 """
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 
 from ..records import FloatArray
-from . import plane
-from .layout import Layout
-from .lines import PLACES, measure
-from .solve import CLICK_SIGMA_PX, Solution
-from .warp import REACH, terms
+from . import found as finds
+from . import plane, shape, values
+from .bend import Bend, Line, fit
+from .found import Area, Found, area_of
+from .layout import Layout, Slot
+from .solve import Solution
 
-MATCH_SIGMA_PX = 1.5
-LEAST_PITCH_PX = 7.0
-FEWEST_LINES = 3
-SHORTEST_SHARE = 0.5
-"""A line counts where it covers this share of the panel across."""
-READINGS_A_LINE = 3.0
-"""A printed line is this many independent readings: its own waviness is common to long stretches."""
-LEAST_SIGMA_PX = 0.08
-WORST_RMS_PX = 0.6
-LEAST_LOG_ODDS = 8.0
-"""Chance that lines fall on some round step by accident: e^-8, with about twenty steps tried 1 in 150."""
-DEGREES = (1, 2, 3)
-LEAST_GAIN_PX = 0.06
-"""A higher degree must bring left-out lines closer by this much, and by three tenths."""
+ENOUGH_LINES = 6
+"""With so many lines of the sheet's own on round values nothing more is looked for."""
+SAME_LINE_PX = 3.0
+COVER_SHARE = 1.2
+"""Lines must reach over this share of the half panel, else they say too little about the rest."""
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class Line:
-    """A printed line of one direction: base coordinates ``uv`` [n, 2], its middle ``c`` and its value's coordinate ``target``."""
+@dataclass(frozen=True, slots=True)
+class Doubt:
+    """Two readings of one axis that lines and marks support about equally, the line on which they differ most, and the place of a mark
+    that would settle it."""
 
-    uv: FloatArray
-    c: float
-    target: float
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Bend:
-    """The bend of one direction from its lines: ``coefficients`` and ``covariance`` in `warp.terms`, residual over the lines [px]."""
-
-    degree: int
-    coefficients: FloatArray
-    covariance: FloatArray
-    centre: FloatArray
-    half: FloatArray
-    lines: tuple[Line, ...]
-    rms_px: float
-    px: float
-
-    def at(self, uv: FloatArray) -> FloatArray:
-        return terms(np.clip((uv - self.centre) / self.half, -REACH, REACH), self.degree) @ self.coefficients
+    axis: str
+    best: values.Reading
+    rival: values.Reading
+    far: int
+    at: tuple[float, float]
 
 
-def bend_of(d: int, layout: Layout, solution: Solution, printed: tuple, ink: np.ndarray) -> Bend | str:
-    """The bend of direction d (0: flow, 1: values), or the reason why the lines do not give one."""
-    at = (layout.at - layout.shift) / layout.size
-    marks_uv = plane.coordinates(solution.theta, at)
-    low, high = marks_uv.min(0), marks_uv.max(0)
-    centre, half = (low + high) / 2, np.maximum((high - low) / 2, 1e-9)
-    px = np.array([np.hypot(*solution.theta[2:4]), np.hypot(*solution.theta[4:6])]) * layout.size
-    name, slot = next((n, s) for n, s in layout.slots.items() if s.marks.direction == d and s.own is None and s.twin is None)
-    rows = [i for i, pair in enumerate(layout.terms) if pair[d][0] == name]
-    axis_at = float(np.mean(marks_uv[rows, 1 - d]))
-    found = _lines_along(d, layout, solution, printed, ink, centre, half, px, axis_at)
-    if len(found) < FEWEST_LINES:
-        return f"{'no' if not found else 'only ' + str(len(found))} printed lines cross the panel"
-    found = _corrected(found, marks_uv[rows, d], np.array([layout.terms[i][d][1] for i in rows]), float(px[d]))
-    lines = _valued(found, slot.centre, slot.half, slot.marks.log, px[d], slot.marks.typed)
-    if len(lines) < FEWEST_LINES:
-        return "the printed lines do not sit on round values of the marks"
-    reach = max(line.c for line in lines) - min(line.c for line in lines)
-    if reach < 1.2 * half[d]:
-        return "the printed lines cover only a part of the panel"
-    marks = (marks_uv[rows], np.array([layout.terms[i][d][1] for i in rows]))
-    bend = _best_degree(d, lines, marks, centre, half, float(px[d]))
-    if bend is None:
-        return "the printed lines do not agree with each other"
-    miss = (marks[0][:, d] + bend.at(marks[0]) - marks[1]) * px[d]
-    if np.sqrt(np.mean(miss**2)) > 2.2 * CLICK_SIGMA_PX or np.abs(miss).max() > 4.5:
-        return f"the marks miss the printed lines by up to {np.abs(miss).max():.1f} px"
-    return bend
+@dataclass(frozen=True, slots=True)
+class Wrong:
+    """A mark that the grid refutes, with the printed value that belongs where it stands."""
+
+    axis: str
+    mark: int
+    typed: float
+    fits: float
 
 
-def _lines_along(
-    d: int,
-    layout: Layout,
-    solution: Solution,
-    printed: tuple,
-    ink: np.ndarray,
-    centre: FloatArray,
-    half: FloatArray,
-    px: FloatArray,
-    axis_at: float,
-) -> list[tuple[FloatArray, float]]:
-    """Printed lines on which coordinate d stays: base coordinates inside the marked area, and the coordinate where they meet the marks.
+@dataclass(slots=True, eq=False)
+class Placed:
+    """What the grid says: the base plane to use, a bend or the reason why there is none for each direction, wrong marks and doubts.
 
-    Where the marks stand the marks' map is good; on a photo taken at an angle it may be several lines off at the far side.
+    ``scales`` holds (alpha, beta) of further axes that read the same lines: their relation to the first is exact.
     """
-    out: list[tuple[FloatArray, float]] = []
-    e = 1 - d
-    for line in printed:
-        uv = plane.coordinates(solution.theta, (line.points() - layout.shift) / layout.size)
-        if np.ptp(uv[:, d]) * px[d] > 0.25 * np.ptp(uv[:, e]) * px[e]:
-            continue
-        if abs(_meets(uv, d, axis_at) - centre[d]) > half[d] + 6 / px[d]:
-            continue
-        inside = np.abs(uv[:, e] - centre[e]) <= half[e] - 2 / px[e]
-        if inside.sum() < 4 or np.ptp(uv[inside, e]) < SHORTEST_SHARE * 2 * half[e]:
-            continue
-        points = measure(line.points()[inside], ink)
-        if len(points) < 4:
-            continue
-        uv = plane.coordinates(solution.theta, (points - layout.shift) / layout.size)
-        c = _meets(uv, d, axis_at)
-        if abs(c - centre[d]) <= half[d] + 4 / px[d]:
-            out.append((uv, c))
-    return sorted(out, key=lambda pair: pair[1])
+
+    theta: FloatArray
+    bends: dict[int, Bend] = field(default_factory=dict)
+    reasons: dict[int, str] = field(default_factory=dict)
+    read_by: dict[int, str] = field(default_factory=dict)
+    wrong: list[Wrong] = field(default_factory=list)
+    agreed: set[str] = field(default_factory=set)
+    doubts: list[Doubt] = field(default_factory=list)
+    scales: dict[str, FloatArray] = field(default_factory=dict)
 
 
-def _corrected(found: list[tuple[FloatArray, float]], marked: FloatArray, typed: FloatArray, px: float) -> list[tuple[FloatArray, float]]:
-    """Lines with their meeting places carried through three or more marks where a straight scale misses those by more than a click."""
-    miss = typed - marked
-    if len(np.unique(np.round(typed, 9))) < 3 or np.abs(miss).max() * px <= 2 * CLICK_SIGMA_PX:
-        return found
-    bow = np.polyfit(marked, miss, 2)
-    return [(uv, c + float(np.polyval(bow, c))) for uv, c in found]
+@dataclass(frozen=True, slots=True, eq=False)
+class _Direction:
+    """Lines of one direction in order of their coordinate on an area's plane, and how they are read."""
+
+    found: list[Found]
+    c: FloatArray
+    readings: dict[str, values.Readings]
+    axis: str | None
+
+    @property
+    def best(self) -> values.Reading | None:
+        return None if self.axis is None else self.readings[self.axis].best
 
 
-def _meets(uv: FloatArray, d: int, axis_at: float) -> float:
-    """Coordinate d of a line where the other coordinate is ``axis_at``: straight on from its nearer half."""
-    e = uv[:, 1 - d]
-    near = np.argsort(np.abs(e - axis_at))[: max(len(e) // 2, min(len(e), 4))]
-    if np.ptp(e[near]) <= 0:
-        return float(np.median(uv[near, d]))
-    slope, level = np.polyfit(e[near] - axis_at, uv[near, d], 1)
-    return float(level)
-
-
-def _valued(found: list[tuple[FloatArray, float]], centre: float, half: float, log: bool, px: float, typed: FloatArray) -> list[Line]:
-    """Lines with the coordinate of the round value they stand for; lines between ticks are left out."""
-    c = np.array([pair[1] for pair in found])
-    level = centre + half * c
-    if log:
-        tick = _log_ticks(level)
-        gap = float(np.median(np.diff(np.unique(tick)))) if len(np.unique(tick)) > 1 else 0.0
-        if _odds((level - tick) / (half / px), gap * px / abs(half)).sum() < LEAST_LOG_ODDS:
-            return []
-    else:
-        per_px = half / px
-        best, tick = -np.inf, level
-        for step in _steps(typed, abs(half) * 2, abs(per_px) * LEAST_PITCH_PX):
-            off = (level - np.round(level / step) * step) / per_px
-            odds = _odds(off, step / abs(per_px))
-            if odds.sum() > best:
-                best, tick = float(odds.sum()), np.round(level / step) * step
-        if best < LEAST_LOG_ODDS:
-            return []
-    target = (tick - centre) / half
-    off = np.abs(c - target) * px
-    gap = np.min(np.abs(np.diff(np.unique(np.round(target, 9)))), initial=np.inf) * px
-    lines: dict[float, tuple[float, Line]] = {}
-    for k, (uv, middle) in enumerate(found):
-        if off[k] <= min(5.0, 0.3 * gap):
-            key = round(float(target[k]), 9)
-            if key not in lines or off[k] < lines[key][0]:
-                lines[key] = (off[k], Line(uv, middle, float(target[k])))
-    return [pair[1] for pair in lines.values()]
-
-
-def _odds(off_px: FloatArray, pitch_px: float) -> FloatArray:
-    """Log odds of each line: on a tick with a click-sized miss, against anywhere within the pitch."""
-    return np.log(0.95 * pitch_px / (MATCH_SIGMA_PX * 2.5066) * np.exp(-0.5 * (off_px / MATCH_SIGMA_PX) ** 2) + 0.05)
-
-
-def _steps(typed: FloatArray, span: float, least: float) -> list[float]:
-    """Grid steps to try: round numbers, and decimal parts of the marks' common step (8 m may be drawn as 20 mm)."""
-    common = 0.0
-    for value in typed:
-        a, b = abs(float(value)), common
-        while a > 1e-6 * span:
-            a, b = (b % a if b % a < a * (1 - 1e-9) else 0.0), a
-        common = b
-    round_steps = [
-        h * 10.0**p for p in range(int(np.floor(np.log10(span))) + 1, int(np.floor(np.log10(span))) - 4, -1) for h in (5.0, 2.5, 2.0, 1.0)
-    ]
-    parts = [common / n for n in (1, 2, 4, 5, 8, 10, 16, 20, 25, 40, 50, 80, 100, 200)]
-    return sorted({float(f"{s:.9g}") for s in (*round_steps, *parts) if least <= s <= span}, reverse=True)
-
-
-def _log_ticks(level: FloatArray) -> FloatArray:
-    whole = np.floor(level)
-    digits = np.log10(np.array([1.0, 1.5, 2, 2.5, 3, 4, 5, 6, 7, 8, 9, 10]))
-    return whole + digits[np.argmin(np.abs((level - whole)[:, None] - digits), axis=1)]
-
-
-def _best_degree(
-    d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float
-) -> Bend | None:
-    """The bend whose degree does best on lines it has not seen; None where the lines do not agree with each other."""
-    best: tuple[float, _System] | None = None
-    for degree in DEGREES:
-        if len(lines) < degree + 2:
+def place(layout: Layout, solution: Solution, prepared: Any, width_px: float, unit: float) -> Placed:
+    """Read and measure the grid of a panel whose marks have given ``solution``."""
+    start = area_of(solution.theta, layout)
+    families = finds.from_sheet(start, layout, prepared)
+    theta = _shape(families, layout, start)
+    area = area_of(theta, layout)
+    read = [_read(d, families[d], area, layout) for d in (0, 1)]
+    placed = Placed(solution.theta)
+    for turn in range(2):
+        placed = Placed(_base(layout, solution, area, read))
+        base = area_of(placed.theta, layout)
+        for d in (0, 1):
+            _place_direction(d, read[d], base, layout, placed)
+        if len(placed.bends) < 2 and placed.theta is not solution.theta:
+            # A direction left to the marks has the marks' plane.
+            placed = Placed(solution.theta)
+            base = area_of(placed.theta, layout)
+            for d in (0, 1):
+                _place_direction(d, read[d], base, layout, placed)
+        if turn == 1:
             break
-        system = _System(d, lines, marks, centre, half, px, degree)
-        score = system.left_out()
-        if best is None or (score < 0.7 * best[0] and score < best[0] - LEAST_GAIN_PX):
-            best = (score, system)
-    if best is None:
+        fresh = False
+        for d in (0, 1):
+            bend = placed.bends.get(d)
+            if bend is not None and sum(not line.tick for line in bend.lines) >= ENOUGH_LINES:
+                continue
+            more = finds.looked_for(d, base, layout, prepared, _to_pixels(d, base, layout, placed), read[1 - d].found, width_px, unit)
+            union = _union(families[d], more, base, layout, d)
+            if len(union) > len(families[d]):
+                families[d][:] = union
+                fresh = True
+        if not fresh:
+            break
+        area = area_of(_shape(families, layout, start), layout)
+        read = [_read(d, families[d], area, layout) for d in (0, 1)]
+    _judge_marks(layout, read, area, placed)
+    return placed
+
+
+def _shape(families: tuple[list[Found], list[Found]], layout: Layout, start: Area) -> FloatArray:
+    """The plane from lines alone, or the marks' where lines are few."""
+    points = tuple([(f.at - layout.shift) / layout.size for f in family if not f.tick] for family in families)
+    theta = shape.plane_of((points[0], points[1]))
+    if theta is None:
+        return start.theta
+    # Both coordinates grow as on the marks' plane and have its size, so that pixels per unit stay comparable.
+    at = (layout.at - layout.shift) / layout.size
+    want, have = plane.coordinates(start.theta, at), plane.coordinates(theta, at)
+    return _rescaled(theta, np.array([np.polyfit(have[:, d], want[:, d], 1) for d in (0, 1)]))
+
+
+def _rescaled(theta: FloatArray, lines: FloatArray) -> FloatArray:
+    """The same plane with coordinates c' = slope c + zero, (slope, zero) in the rows of ``lines``."""
+    slope, zero = lines[:, 0], lines[:, 1]
+    g = theta[6:8] if len(theta) == 8 else np.zeros(2)
+    e = np.stack([theta[2:4], theta[4:6]])
+    back, at_zero = 1 / slope, -zero / slope
+    o = theta[0:2] + at_zero @ e
+    depth = 1 + at_zero @ g
+    out = np.concatenate([o, e[0] * back[0], e[1] * back[1], g * back]) / depth
+    return out if len(theta) == 8 else out[:6]
+
+
+def _read(d: int, family: list[Found], area: Area, layout: Layout) -> _Direction:
+    """Lines in order, read by each axis of the direction; the first axis on whose round values they sit is the one that counts."""
+    c = np.array([f.meets(area.theta, layout, d, area.axis_at[d]) for f in family])
+    order = np.argsort(c, kind="stable")
+    family, c = [family[k] for k in order], c[order]
+    near = np.abs(c - area.centre[d]) <= area.half[d] * 1.05 + 6 / area.px[d] if len(c) else np.zeros(0, dtype=bool)
+    readings: dict[str, values.Readings] = {}
+    for name, slot in layout.slots.items():
+        if slot.marks.direction != d or slot.twin is not None:
+            continue
+        at = plane.coordinates(area.theta, (slot.marks.at - layout.shift) / layout.size)[:, d]
+        got = values.read(c[near], at, slot.marks.level, slot.marks.log, float(area.px[d]))
+        readings[name] = got
+    sure = [n for n, r in readings.items() if r.best is not None]
+    # An axis whose marks all agree with the lines comes before one whose marks do not.
+    sure.sort(key=lambda n: (readings[n].rival is not None, len(readings[n].best.wrong) > 0))  # type: ignore[union-attr]
+    return _Direction([f for f, k in zip(family, near, strict=True) if k], c[near], readings, sure[0] if sure else None)
+
+
+def _base(layout: Layout, solution: Solution, area: Area, read: list[_Direction]) -> FloatArray:
+    """The lines' own plane, scaled to the values they were read to, where both directions are read; else the marks' plane."""
+    if area.theta is solution.theta or any(r.best is None or r.readings[str(r.axis)].rival is not None for r in read):
+        return solution.theta
+    lines = np.empty((2, 2))
+    for d, r in enumerate(read):
+        assert r.best is not None
+        slot = layout.slots[str(r.axis)]
+        if slot.own is not None:
+            return solution.theta
+        ends = np.array([area.centre[d] - area.half[d], area.centre[d] + area.half[d]])
+        target = (r.best.level(ends) - slot.centre) / slot.half
+        lines[d] = np.polyfit(ends, target, 1)
+    return _rescaled(area.theta, lines)
+
+
+def _place_direction(d: int, read: _Direction, base: Area, layout: Layout, placed: Placed) -> None:
+    if read.axis is None or read.best is None:
+        count = sum(not f.tick for f in read.found)
+        few = ("no printed lines cross", "only 1 printed line crosses", "only 2 printed lines cross")[min(count, 2)] + " the panel"
+        placed.reasons[d] = few if count < 3 else "the printed lines do not sit on round values of the marks"
+        return
+    slot, got = layout.slots[read.axis], read.readings[read.axis]
+    if got.rival is not None:
+        placed.reasons[d] = "the printed lines can be read in two ways"
+        placed.doubts.append(_doubt(d, read, slot, got, layout))
+        return
+    if slot.own is not None:
+        placed.reasons[d] = f"the printed lines belong to the {read.axis} axis"
+        placed.read_by[d] = read.axis
+        return
+    lines = []
+    for f, c, level in zip(read.found, read.c, read.best.levels, strict=True):
+        if np.isfinite(level):
+            uv = plane.coordinates(base.theta, (f.at - layout.shift) / layout.size)
+            lines.append(Line(uv, f.sigma_px, float(c), float((level - slot.centre) / slot.half), f.tick, f.height))
+    lines = _one_a_value(lines)
+    at = plane.coordinates(base.theta, (slot.marks.at - layout.shift) / layout.size)
+    keep = [i for i in range(len(at)) if i not in read.best.wrong]
+    reach = [line.target for line in lines] + [float((slot.marks.level[i] - slot.centre) / slot.half) for i in keep]
+    if len(lines) < 2 or np.ptp(reach) < COVER_SHARE * base.half[d]:
+        placed.reasons[d] = "the printed lines cover only a part of the panel"
+        return
+    bend = fit(d, lines, (at[keep], slot.z[keep]), base.centre, base.half, float(base.px[d]))
+    if bend is None:
+        placed.reasons[d] = "the printed lines do not agree with each other"
+        return
+    placed.bends[d] = bend
+
+
+def _one_a_value(lines: list[Line]) -> list[Line]:
+    """The strongest whole line of each value, or the ticks where there is none."""
+    best: dict[float, list[Line]] = {}
+    for line in lines:
+        best.setdefault(round(line.target, 9), []).append(line)
+    out: list[Line] = []
+    for group in best.values():
+        whole = [line for line in group if not line.tick]
+        out += [max(whole, key=lambda line: line.height)] if whole else group
+    return out
+
+
+def _to_pixels(d: int, base: Area, layout: Layout, placed: Placed) -> Any:
+    """Pixels of own coordinate and the other one on the bent plane, by a few fixed-point steps."""
+
+    def at(c: FloatArray, e: FloatArray) -> FloatArray:
+        want = np.stack([c, e] if d == 0 else [e, c], -1)
+        flat = want.copy()
+        for _ in range(4 if placed.bends else 0):
+            bent = flat.copy()
+            for k, bend in placed.bends.items():
+                bent[:, k] += bend.at(flat)
+            flat += want - bent
+        return plane.pixels(base.theta, flat) * layout.size + layout.shift
+
+    return at
+
+
+def _union(family: list[Found], more: Sequence[Found], area: Area, layout: Layout, d: int) -> list[Found]:
+    """Lines with those found anew that are not among them."""
+    out = list(family)
+    have = [f.meets(area.theta, layout, d, area.axis_at[d]) for f in out]
+    whole = [not f.tick for f in out]
+    for f in sorted(more, key=lambda f: f.tick):
+        c = f.meets(area.theta, layout, d, area.axis_at[d])
+        if any(w and abs(c - h) * area.px[d] < SAME_LINE_PX for h, w in zip(have, whole, strict=True)):
+            continue
+        out.append(f)
+        have.append(c)
+        whole.append(not f.tick)
+    return out
+
+
+def _judge_marks(layout: Layout, read: list[_Direction], area: Area, placed: Placed) -> None:
+    """Marks of every axis against the lines: the axis that reads them, and further ones on whose values lines sit as well."""
+    for d, r in enumerate(read):
+        for name, got in r.readings.items():
+            if got.best is None or got.rival is not None or d not in placed.bends:
+                continue
+            slot = layout.slots[name]
+            placed.agreed.add(name)
+            if slot.own is not None and r.axis is not None:
+                pair = _same_lines(r, name, layout)
+                if pair is not None:
+                    placed.scales[name] = pair
+            at = plane.coordinates(area.theta, (slot.marks.at - layout.shift) / layout.size)[:, d]
+            per_px = abs(got.best.slope(float(area.centre[d]))) / area.px[d]
+            for i in got.best.wrong:
+                fits = values.fitting(float(got.best.level(at[i])), got.best.step, per_px, slot.marks.log)
+                placed.wrong.append(Wrong(name, i, float(slot.marks.typed[i]), fits))
+
+
+def _same_lines(r: _Direction, name: str, layout: Layout) -> FloatArray | None:
+    """(alpha, beta) of an axis from lines that both it and the first axis give a round value; None where they share no two."""
+    first, mine = r.readings[str(r.axis)].best, r.readings[name].best
+    assert first is not None and mine is not None
+    both = np.isfinite(first.levels) & np.isfinite(mine.levels)
+    if both.sum() < 3:
         return None
-    system = best[1]
-    kept = system.line_weight > 0.3
-    used = tuple(line for line, keep in zip(lines, kept, strict=True) if keep)
-    rms = float(np.sqrt(np.mean(system.line_miss_px[kept] ** 2))) if kept.any() else np.inf
-    if len(used) < max(FEWEST_LINES, 0.7 * len(lines)) or rms > WORST_RMS_PX:
+    a, b = layout.slots[str(r.axis)], layout.slots[name]
+    target = (first.levels[both] - a.centre) / a.half
+    z = (mine.levels[both] - b.centre) / b.half
+    if np.ptp(z) < 0.5:
         return None
-    sigma = np.hypot(rms, LEAST_SIGMA_PX) / px
-    covariance = np.linalg.pinv(system.information(), hermitian=True) * sigma**2 * (PLACES / READINGS_A_LINE)
-    return Bend(system.degree, system.coefficients, covariance, centre, half, used, rms, px)
+    beta, alpha = np.polyfit(z, target, 1)
+    return np.array([alpha, beta]) if np.abs(target - alpha - beta * z).max() < 1e-6 else None
 
 
-class _System:
-    """The linear equations of all lines of one direction for one degree, solved robustly over points and over whole lines.
-
-    Points stand in arrays [lines, places] padded to one length, so that every step is one array operation. The marks join with a small
-    weight: they hold the bend where lines are few.
-    """
-
-    MARK_WEIGHT = 0.1
-    ROUNDS = 8
-    FOLDS = 12
-
-    def __init__(
-        self, d: int, lines: list[Line], marks: tuple[FloatArray, FloatArray], centre: FloatArray, half: FloatArray, px: float, degree: int
-    ):
-        self.degree, self.px = degree, px
-        count = np.array([len(line.uv) for line in lines])
-        self.there = np.arange(count.max()) < count[:, None]
-        uv = np.zeros((*self.there.shape, 2)) + centre
-        uv[self.there] = np.concatenate([line.uv for line in lines])
-        self.rows = terms(((uv - centre) / half).reshape(-1, 2), degree).reshape(*self.there.shape, -1)
-        self.miss = np.array([line.target for line in lines])[:, None] - uv[..., d]
-        self.mark_rows = terms((marks[0] - centre) / half, degree) * self.MARK_WEIGHT
-        self.mark_miss = (marks[1] - marks[0][:, d]) * self.MARK_WEIGHT
-        self.line_weight = np.ones(len(lines))
-        self.point_weight = self.there.astype(np.float64)
-        for _ in range(self.ROUNDS):
-            self.coefficients = self._solve(self.line_weight)
-            off = self._off_px(self.coefficients)
-            self.line_miss_px = 1.4826 * _medians(off, self.there)
-            scale = max(float(np.median(self.line_miss_px)), 0.1)
-            self.line_weight = np.maximum(1 - (self.line_miss_px / (6 * scale)) ** 2, 0.0) ** 2
-            self.point_weight = np.maximum(1 - (off / (6 * scale)) ** 2, 0.0) ** 2 * self.there
-
-    def _solve(self, line_weight: FloatArray) -> FloatArray:
-        w = np.sqrt(line_weight[:, None] * self.point_weight)
-        use = w > 0
-        rows = np.concatenate([self.rows[use] * w[use][:, None], self.mark_rows])
-        return np.linalg.lstsq(rows, np.concatenate([self.miss[use] * w[use], self.mark_miss]), rcond=1e-10)[0]
-
-    def _off_px(self, coefficients: FloatArray) -> FloatArray:
-        return np.abs(self.miss - self.rows @ coefficients) * self.px
-
-    def left_out(self) -> float:
-        """Miss of lines left out in turn [px rms]. The worst tenth is not counted: a line that is none must not decide."""
-        n = len(self.line_weight)
-        fold = np.arange(n) % min(n, self.FOLDS)
-        misses = np.zeros(n)
-        for k in range(fold.max() + 1):
-            out = fold == k
-            off = self._off_px(self._solve(np.where(out, 0.0, self.line_weight)))[out]
-            there = self.there[out]
-            misses[out] = np.sqrt((off**2 * there).sum(axis=1) / there.sum(axis=1))
-        return float(np.sqrt(np.mean(np.sort(misses)[: max(n - n // 10, 1)] ** 2)))
-
-    def information(self) -> FloatArray:
-        """Information on the coefficients for unit variance of a point."""
-        w = self.line_weight[:, None] * self.point_weight
-        return np.asarray(np.einsum("lpi,lp,lpj->ij", self.rows, w, self.rows))
-
-
-def _medians(values: FloatArray, there: np.ndarray) -> FloatArray:
-    """Root of the median square of each row's present values [lines]."""
-    order = np.sort(np.where(there, values, np.inf), axis=1)
-    n = there.sum(axis=1)
-    i = np.arange(len(values))
-    return np.sqrt((order[i, (n - 1) // 2] ** 2 + order[i, n // 2] ** 2) / 2)
+def _doubt(d: int, read: _Direction, slot: Slot, got: values.Readings, layout: Layout) -> Doubt:
+    """The far end is the line on which both readings differ most; the mark that settles it is that line."""
+    assert got.best is not None and got.rival is not None
+    gap = np.abs(got.best.level(read.c) - got.rival.level(read.c))
+    far = int(np.argmax(gap))
+    line = read.found[far].at
+    near = line[np.argmin(np.hypot(*(line - slot.marks.at.mean(0)).T))]
+    return Doubt(slot.marks.id, got.best, got.rival, far, (float(near[0]), float(near[1])))

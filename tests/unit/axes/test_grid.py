@@ -105,10 +105,12 @@ def test_lines_off_round_values_are_not_used(chart):
     np.testing.assert_array_equal(m.from_pixels(at, ("q", "h")), alone.from_pixels(at, ("q", "h")))
 
 
-def test_too_few_lines_leave_the_marks(chart):
+def test_the_frame_alone_helps_and_no_lines_leave_the_marks(chart):
     c, rng = chart(), np.random.default_rng(8)
-    m = calibrate(_panel(c, rng), _sheet(c, lines=2))
-    assert not m.grid.used and "only 2 printed lines" in m.grid.why
+    panel = _panel(c, rng)
+    m, alone = calibrate(panel, _sheet(c, lines=2)), calibrate({**panel, "grid": "off"})
+    assert m.grid.used and m.grid.lines == 4
+    assert max(_rms_px(c, m, 0.0)) < 0.2 * max(_rms_px(c, alone, 0.0))
     assert calibrate(_panel(c, rng), SimpleNamespace(ink=None, lines=())).grid.why.startswith("No printed lines")
 
 
