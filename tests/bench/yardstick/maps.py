@@ -89,9 +89,8 @@ class Maps:
         out = []
         for r in sorted(self.rows, key=lambda r: -(r["auto"] or 1e9)):
             auto, off = (f"{r[k]:8.3f}" if r.get(k) is not None else "       -" for k in ("auto", "off"))
-            out.append(
-                f"{r['sheet']:20s} {r['panel']} {r['class']:10s} {r['grid']:12s} rms {auto} alone {off} lines {r.get('lines', 0)} {r.get('why') or ''}"
-            )
+            name = f"{r['sheet']:20s} {r['panel']} {r['class']:10s} {r['grid']:12s}"
+            out.append(f"{name} rms {auto} alone {off} lines {r.get('lines', 0)} {r.get('why') or ''}")
         return out
 
 
