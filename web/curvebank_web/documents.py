@@ -52,6 +52,12 @@ def page_key(doc: dict[str, Any], laid: str | None = None) -> PageKey | None:
     return PageKey(sha, page, float(dpi), turn)
 
 
+def masks_of(doc: dict[str, Any]) -> list[dict[str, Any]]:
+    """The masks of the document's sheet, as they stand; what is wrong with one is said where it is used."""
+    masks = part(doc, "sheet").get("masks")
+    return [m for m in masks if isinstance(m, dict)] if isinstance(masks, list) else []
+
+
 def pump_facts(doc: dict[str, Any]) -> dict[str, Any]:
     """Stages, speed and density of the pump as far as they make sense, for a preview of an unfinished document."""
     pump, facts = part(doc, "pump"), {}

@@ -4,11 +4,12 @@ import itertools
 import threading
 from collections import OrderedDict
 from collections.abc import Callable
+from dataclasses import dataclass, field
 from typing import Any
 
 from curvebank.errors import CurvebankError
 
-from . import documents, prepared_cache
+from . import prepared_cache
 from .jobs import Job
 from .page_store import PageKey
 from .problems import Problem
@@ -16,6 +17,18 @@ from .services import Services
 
 KEPT_OPEN = 4
 """Prepared pages held open; they are memory-mapped, so this costs little."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Question:
+    """What is looked at: a panel and perhaps a curve of it, on a page under its masks."""
+
+    key: PageKey
+    panel: dict[str, Any]
+    curve: dict[str, Any] | None
+    pump: dict[str, Any]
+    masks: list[dict[str, Any]] = field(default_factory=list)
+    live: bool = False
 
 
 class Previews:
@@ -51,26 +64,31 @@ class Previews:
         arguments = {"desk": str(services.desk), "bank": str(services.bank), "cache": str(services.cache), "page": tuple(key)}
         return services.jobs.submit("prepare", f"prepare:{key.name}", arguments, first=True)
 
-    def look(self, subject: tuple[str, ...], key: PageKey, doc: dict[str, Any], panel: dict[str, Any], curve: dict[str, Any] | None) -> Any:
+    def ready(self, key: PageKey) -> Any:
+        """The prepared page, or the job that prepares it."""
+        prepared = self.prepared(key)
+        if prepared is not None:
+            return prepared
+        return self.ahead(key) or self.prepared(key)
+
+    def look(self, subject: tuple[str, ...], question: Question) -> Any:
         """Calibrate the panel and trace the curve. Gives ``{panel, curve}``, or the job that prepares the sheet.
 
         ``subject`` names what the question is about; of several waiting questions about one subject only the last is answered.
         """
-        prepared = self.prepared(key)
-        if prepared is None:
-            job = self.ahead(key)
-            if job is not None:
-                return job
-            prepared = self.prepared(key)
-        return self._in_turn(subject, lambda: self._digitise(key, doc, panel, curve, prepared))
+        prepared = self.ready(question.key)
+        if isinstance(prepared, Job):
+            return prepared
+        return self._in_turn(subject, lambda: self._digitise(subject, question, prepared))
 
-    def _digitise(self, key: PageKey, doc: dict[str, Any], panel: dict[str, Any], curve: dict[str, Any] | None, prepared: Any) -> Any:
+    def _digitise(self, subject: tuple[str, ...], question: Question, prepared: Any) -> Any:
         from curvebank import digitise
 
+        page = self.services.pages.info(question.key)
         try:
-            return digitise.preview(panel, curve, prepared, self.services.pages.info(key), documents.pump_facts(doc))
+            return digitise.preview(question.panel, question.curve, prepared, page, question.pump, masks=question.masks)
         except CurvebankError as error:
-            if error.path and not error.path.startswith(("$.panel", "$.curve")):
+            if error.path and not error.path.startswith(("$.panel", "$.curve", "$.sheet")):
                 error.path = error.path.replace("$", "$.panel", 1)  # as the question has it
             raise
 

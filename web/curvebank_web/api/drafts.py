@@ -7,8 +7,10 @@ from flask_openapi import APIBlueprint, Tag
 
 from curvebank.errors import SheetError
 
-from .. import desk_drafts, desk_results, documents, running, saving
+from .. import desk_drafts, desk_results, documents, found_lines, running, saving
 from ..jobs import Job
+from ..page_store import PageKey
+from ..previews import Question
 from ..problems import Problem
 from ..services import desk_db, services
 from ..starting import starting_point
@@ -80,18 +82,36 @@ def head(path: DraftPath, body: Head) -> dict[str, Any]:
 @blueprint.post("/<draft>/preview")
 def preview(path: DraftPath, body: PreviewQuestion) -> tuple[dict[str, Any], int]:
     """A quick look at one panel and perhaps one curve; 202 with a job while the sheet is being prepared."""
+    doc, key = _page_of(path.draft)
+    subject = (path.draft, str(body.panel.get("id")), str(body.curve.get("id")) if body.curve else "")
+    masks = documents.masks_of(doc) if body.masks is None else body.masks
+    question = Question(key=key, panel=body.panel, curve=body.curve, pump=documents.pump_facts(doc), masks=masks, live=body.live)
+    answer = services().previews.look(subject, question)
+    if isinstance(answer, Job):
+        return {"seq": body.seq, "pending": True, "job": serialise(answer)}, 202
+    return {"seq": body.seq, **answer}, 200
+
+
+@blueprint.get("/<draft>/lines")
+def lines(path: DraftPath) -> tuple[dict[str, Any], int]:
+    """The printed lines found on the draft's page [px], level and upright ones; 202 with a job while the sheet is being prepared."""
+    _, key = _page_of(path.draft)
+    prepared = services().previews.ready(key)
+    if isinstance(prepared, Job):
+        return {"pending": True, "job": serialise(prepared)}, 202
+    return found_lines.serialise(prepared), 200
+
+
+def _page_of(draft_id: str) -> tuple[dict[str, Any], PageKey]:
+    """The document at the head and the page it works on, which can be read; or a problem."""
     db = desk_db()
-    draft = desk_drafts.row_of(db, path.draft)
-    doc = desk_drafts.doc_at(db, path.draft, draft["head"])
+    draft = desk_drafts.row_of(db, draft_id)
+    doc = desk_drafts.doc_at(db, draft_id, draft["head"])
     key = documents.page_key(doc, draft["sheet_sha256"])
     if key is None:
         raise Problem(422, "no-sheet", "The draft has no sheet", "Lay a sheet on the desk first.", path="$.sheet")
     services().pages.info(key)
-    subject = (path.draft, str(body.panel.get("id")), str(body.curve.get("id")) if body.curve else "")
-    answer = services().previews.look(subject, key, doc, body.panel, body.curve)
-    if isinstance(answer, Job):
-        return {"seq": body.seq, "pending": True, "job": serialise(answer)}, 202
-    return {"seq": body.seq, **answer}, 200
+    return doc, key
 
 
 @blueprint.post("/<draft>/run")

@@ -124,10 +124,16 @@ class JobPath(BaseModel):
 
 
 class PreviewQuestion(Strict):
-    """A panel and perhaps a curve, as a recipe has them; ``seq`` comes back, so that late answers can be dropped."""
+    """A panel and perhaps a curve, as a recipe has them; ``seq`` comes back, so that late answers can be dropped.
+
+    ``masks`` are the sheet's (those of the draft where left out). ``live``: a point is under the hand, and what it does not touch of the
+    curve's last trace may stay; the answer is for the eye, the next question without ``live`` follows the line as a whole.
+    """
 
     panel: dict[str, Any]
     curve: dict[str, Any] | None = None
+    masks: list[dict[str, Any]] | None = None
+    live: bool = False
     seq: Annotated[int, Field(ge=0, le=2**53)] = 0
 
 

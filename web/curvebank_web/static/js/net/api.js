@@ -75,6 +75,7 @@ export const keepStep = (id, json) => call("PUT", `/api/drafts/${enc(id)}`, { js
 export const dropDraft = (id) => call("DELETE", `/api/drafts/${enc(id)}`);
 export const moveHead = (id, step) => call("POST", `/api/drafts/${enc(id)}/head`, { json: { step } });
 export const preview = (id, json, signal) => call("POST", `/api/drafts/${enc(id)}/preview`, { json, signal });
+export const lines = (id) => call("GET", `/api/drafts/${enc(id)}/lines`);
 export const run = (id) => call("POST", `/api/drafts/${enc(id)}/run`, { json: {} });
 export const result = (id, step) => call("GET", `/api/drafts/${enc(id)}/result${query({ step })}`);
 export const save = (id, json) => call("POST", `/api/drafts/${enc(id)}/save`, { json });

@@ -1,6 +1,7 @@
 // Live answers of the engine for panels and curves: asked one at a time, newest question first, kept by what was asked.
 import * as api from "./api.js";
 import { calibrated, usablePanel } from "../state/derive.js";
+import { clicksWanted } from "../state/stretch.js";
 
 const ENGINE_KEYS = ["id", "quantity", "kind", "panel", "x", "y", "value", "clicks", "closed", "ends", "guides", "locked", "factor", "rows", "x_unit", "y_unit", "fit", "diameter_mm", "speed_rpm", "head_is"];
 
@@ -11,8 +12,9 @@ function curveAsked(curve) {
   return out;
 }
 
-const lineKey = (panel, curve) => JSON.stringify([usablePanel(panel), curve.kind, curve.clicks, curve.guides, curve.locked, curve.closed, curve.ends, curve.x, curve.y, curve.factor, curve.fit, curve.quantity]);
-const panelKey = (panel) => JSON.stringify(usablePanel(panel));
+const lineText = (panel, curve) => JSON.stringify([usablePanel(panel), curve.kind, curve.clicks, curve.guides, curve.locked, curve.closed, curve.ends, curve.x, curve.y, curve.factor, curve.fit, curve.quantity]);
+const panelText = (panel) => JSON.stringify(usablePanel(panel));
+const masksOf = (doc) => doc.sheet?.masks ?? [];
 
 export class Previews {
   constructor(draftId, onAnswer) {
@@ -26,10 +28,25 @@ export class Previews {
     this.wanted = [];
     this.busy = null;
     this.state = "idle";
+    this.masks = [];
+    this.live = false;
+  }
+
+  /** What an answer belongs to: the masks change what every line and scale is read from. */
+  #under(text) {
+    return this.masks.length ? `${JSON.stringify(this.masks)}|${text}` : text;
+  }
+
+  #panelKey(panel) {
+    return this.#under(panelText(panel));
+  }
+
+  #lineKey(panel, curve) {
+    return this.#under(lineText(panel, curve));
   }
 
   panel(panel) {
-    return this.panels.get(panelKey(panel)) ?? null;
+    return this.panels.get(this.#panelKey(panel)) ?? null;
   }
 
   /** The newest answer for this panel even if marks have moved since: an old picture stays until the new one is there. */
@@ -38,15 +55,16 @@ export class Previews {
   }
 
   curve(panel, curve) {
-    return this.curves.get(lineKey(panel, curve)) ?? null;
+    return this.curves.get(this.#lineKey(panel, curve)) ?? null;
   }
 
   curveSoon(panel, curve) {
-    return this.curve(panel, curve) ?? (curve.clicks.length >= 2 ? this.lastCurve.get(curve.id) ?? null : null);
+    return this.curve(panel, curve) ?? (curve.clicks.length >= clicksWanted(curve) ? this.lastCurve.get(curve.id) ?? null : null);
   }
 
   /** Fill the cache from a finished run. */
   learn(doc, result) {
+    this.masks = masksOf(doc);
     for (const panel of doc.panels ?? []) {
       const known = result.panels?.find((p) => p.id === panel.id);
       if (known && !this.panel(panel)) this.lastPanel.set(panel.id, known);
@@ -55,26 +73,36 @@ export class Previews {
       const panel = doc.panels.find((p) => p.id === curve.panel);
       const known = result.curves?.find((c) => c.id === curve.id);
       if (panel && known) {
-        this.curves.set(lineKey(panel, curve), known);
+        this.curves.set(this.#lineKey(panel, curve), known);
         this.lastCurve.set(curve.id, known);
       }
     }
   }
 
-  /** Say what is on the desk now; what is not known yet is asked, the open curve first. */
-  want(doc, open, panelId) {
+  /**
+   * Say what is on the desk now; what is not known yet is asked, the open curve first. `live`: a click or guide is under the hand, so
+   * the question under way is let finish and shown, and the newest place is asked right after it.
+   */
+  want(doc, open, panelId, live = false) {
+    this.masks = masksOf(doc);
+    this.live = live;
     const list = [];
     const panels = [...(doc.panels ?? [])].sort((a, b) => (b.id === panelId) - (a.id === panelId));
     for (const panel of panels) {
       if (!calibrated(panel)) continue;
       const usable = usablePanel(panel);
-      if (open?.panel === panel.id && open.clicks.length >= 2 && usable.axes[open.x] && usable.axes[open.y] && !this.curve(panel, open)) list.unshift({ panel, curve: open });
+      if (open?.panel === panel.id && open.clicks.length >= clicksWanted(open) && usable.axes[open.x] && usable.axes[open.y] && !this.curve(panel, open)) list.unshift({ panel, curve: open });
       if (!this.panel(panel)) list.push({ panel, curve: null });
       for (const curve of (doc.curves ?? []).filter((c) => c.panel === panel.id)) {
-        if (curve.clicks?.length >= 2 && usable.axes[curve.x] && usable.axes[curve.y] && !this.curve(panel, curve)) list.push({ panel, curve });
+        if (curve.clicks?.length >= clicksWanted(curve) && usable.axes[curve.x] && usable.axes[curve.y] && !this.curve(panel, curve)) list.push({ panel, curve });
       }
     }
     this.wanted = list;
+    if (live) {
+      this.wanted = list.slice(0, 1);
+      if (!this.busy) this.#next();
+      return;
+    }
     if (this.busy && !list.some((q) => this.#key(q) === this.busy.key)) this.busy.abort.abort();
     clearTimeout(this.timer);
     if (list.length) this.timer = setTimeout(() => this.#next(), 60);
@@ -86,7 +114,7 @@ export class Previews {
   }
 
   #key(q) {
-    return q.curve ? lineKey(q.panel, q.curve) : panelKey(q.panel);
+    return q.curve ? this.#lineKey(q.panel, q.curve) : this.#panelKey(q.panel);
   }
 
   async #next() {
@@ -95,6 +123,8 @@ export class Previews {
     const key = this.#key(q);
     const abort = new AbortController();
     const seq = ++this.seq;
+    const { live, masks } = this;
+    const at = this.#panelKey(q.panel);
     this.busy = { key, abort };
     const slow = setTimeout(() => {
       this.state = "asking";
@@ -102,7 +132,7 @@ export class Previews {
     }, 500);
     let retry = false;
     try {
-      const answer = await api.preview(this.id, { panel: usablePanel(q.panel), curve: q.curve ? curveAsked(q.curve) : null, seq }, abort.signal);
+      const answer = await api.preview(this.id, { panel: usablePanel(q.panel), curve: q.curve ? curveAsked(q.curve) : null, seq, masks, live: live && Boolean(q.curve) }, abort.signal);
       if (answer.pending) {
         this.state = "preparing";
         this.onAnswer("slow");
@@ -110,7 +140,7 @@ export class Previews {
         await new Promise((r) => setTimeout(r, 300));
       } else {
         this.state = "idle";
-        this.#store(q, answer.panel, answer.curve);
+        this.#store(q, { key, at }, answer.panel, answer.curve, live);
       }
     } catch (problem) {
       if (problem.name === "AbortError" || problem.code === "superseded") retry = true;
@@ -119,8 +149,8 @@ export class Previews {
         await new Promise((r) => setTimeout(r, 1500));
       } else {
         const error = { code: problem.code || "preview", message: problem.detail || problem.title, path: null };
-        if (q.curve) this.#store(q, null, { id: q.curve.id, pixels: [], points: [], sigma: [], warnings: [], error });
-        else this.#store(q, { id: q.panel.id, error, warnings: [], suspects: [] }, null);
+        if (q.curve) this.#store(q, { key, at }, null, { id: q.curve.id, pixels: [], points: [], sigma: [], warnings: [], error });
+        else this.#store(q, { key, at }, { id: q.panel.id, error, warnings: [], suspects: [] }, null);
       }
     }
     clearTimeout(slow);
@@ -131,13 +161,14 @@ export class Previews {
     if (this.wanted.length) setTimeout(() => this.#next(), 0);
   }
 
-  #store(q, panel, curve) {
+  /** Keep an answer under what was asked. A live one is only shown: when the hand lets go the line is followed once more as a whole. */
+  #store(q, { key, at }, panel, curve, live = false) {
     if (panel) {
-      this.panels.set(panelKey(q.panel), panel);
+      this.panels.set(at, panel);
       this.lastPanel.set(q.panel.id, panel);
     }
     if (q.curve && curve) {
-      this.curves.set(lineKey(q.panel, q.curve), curve);
+      if (!live) this.curves.set(key, curve);
       this.lastCurve.set(q.curve.id, curve);
     }
   }

@@ -9,12 +9,14 @@ import { drawFindings } from "../panels/findings.js";
 import { fillSlip } from "../panels/blank.js";
 import { drawSteps } from "../panels/steps.js";
 import { marksSentence, panelSentence, sheetSentence } from "../panels/sentences.js";
+import { maskSentence } from "../panels/sentence-mask.js";
 import { curvesSentence } from "../panels/sentences-curves.js";
 import { familySentence, fitSentence, jobSentence, submitSentence } from "../panels/sentences-end.js";
 import { drawBeside } from "../panels/beside.js";
 import { $, h, put, s } from "../view/dom.js";
 import { drawFold } from "../view/fold.js";
 import { drawOverlay, sceneMarks } from "../view/overlay.js";
+import { brushEdge } from "../view/veil.js";
 import { alignedScales, drawReplot, EDGE } from "../view/replot.js";
 
 const SENTENCES = { sheet: sheetSentence, panel: panelSentence, marks: marksSentence, curves: curvesSentence, family: familySentence, fit: fitSentence, submit: submitSentence };
@@ -91,7 +93,7 @@ export function sceneOf(desk) {
   return {
     step: desk.step, bare: desk.bare, panelId: desk.panel?.id ?? null, panels: (doc.panels ?? []).map((p, i) => ({ ...p, outline: desk.outlineOf(p), name: `Panel ${i + 1}` })),
     box: desk.box, marks: sceneMarks(doc, desk.panelResult, desk.map, desk.chosenMark), openMark: desk.step === "marks" ? desk.openMark : null,
-    curves: ["curves", "family", "fit", "submit"].includes(desk.step) ? desk.items : [], selected: desk.selected ?? (desk.step === "curves" ? desk.openCurve?.id : null), focused: desk.focusedGuide, grabbed: desk.grabbed,
+    curves: ["curves", "family", "fit", "submit"].includes(desk.step) ? desk.items : [], selected: desk.selected ?? (desk.step === "curves" ? desk.openCurve?.id : null), focused: desk.focused, grabbed: desk.grabbed, locking: desk.locking, veil: desk.masks?.scene() ?? { masks: [] }, found: desk.step === "marks" && desk.showFound ? desk.lines.found : null,
     ghosts: desk.ghosts, showGhosts: desk.step === "family" && ["both", "paper"].includes(desk.over), places: desk.step === "sheet" ? [] : places.paper, plotPlaces: places.plot, axes: desk.axes,
   };
 }
@@ -205,6 +207,8 @@ export class DeskDraw {
     over.replaceChildren();
     plot.replaceChildren();
     if (desk.hand) over.append(...handMark(desk.hand));
+    const edge = desk.masks?.edge();
+    if (edge) over.append(...brushEdge(edge.at, edge.width, desk.masks.erasing));
     const fold = size("fold");
     const c = desk.cursor;
     if (!scales || !c || !Number.isFinite(c.q)) {
@@ -274,7 +278,7 @@ export class DeskDraw {
   slip() {
     const { desk } = this;
     const running = desk.job && !desk.job.over && !["done", "failed", "cancelled"].includes(desk.job.state);
-    const content = running ? jobSentence(desk) : SENTENCES[desk.step](desk);
+    const content = running ? jobSentence(desk) : desk.masks?.on ? maskSentence(desk) : SENTENCES[desk.step](desk);
     fillSlip($("slip"), content);
     desk.focusBlank = null;
   }

@@ -1,6 +1,7 @@
 // The desk while one works: the session's document, what is looked at, and everything worked out from both.
 import * as api from "../net/api.js";
 import { follow } from "../net/jobs.js";
+import { FoundLines } from "../net/lines.js";
 import { Previews } from "../net/previews.js";
 import { axisIds, panelMap } from "../geometry/panelmap.js";
 import { desk as deskPart, recipeOf } from "../state/doc.js";
@@ -19,7 +20,9 @@ export class Desk {
     this.bare = false;
     this.panelId = null;
     this.selected = null;
-    this.focusedGuide = null;
+    this.focused = null;
+    this.locking = null;
+    this.lines = new FoundLines(session.id, () => hooks.invalidate("paper"));
     this.chosenMark = null;
     this.chosenFinding = null;
     this.cursor = null;
@@ -70,6 +73,7 @@ export class Desk {
     this.step = step;
     history.replaceState(null, "", `#${step}`);
     this.chosenMark = null;
+    this.focused = null;
     if (step !== "curves" && step !== "fit") this.selected = null;
     this.hooks.stepped(step);
     this.hooks.invalidate("all");
@@ -107,7 +111,8 @@ export class Desk {
       if (this.shownPanel !== undefined && !this.moved) this.view = null;
       this.shownPanel = panel?.id ?? null;
     }
-    this.previews.want(doc, this.openCurve, panel?.id);
+    this.previews.want(doc, this.openCurve, panel?.id, Boolean(this.drag));
+    if (this.step === "marks") this.lines.want(this.page);
     const ids = panel ? axisIds(panel) : { flow: [], value: [] };
     this.axes = [];
     this.items = panelCurves(doc, panel, this.curveResult);

@@ -1,9 +1,11 @@
 // The tools on the paper, and which of them is in the hand at each step.
 import { nudge, toScreen, toSheet, zoomAt } from "../geometry/affine.js";
+import { hold } from "../geometry/lines.js";
 import { nearest } from "../geometry/polyline.js";
 import { snap } from "../geometry/snap.js";
-import { clickChange, desk as deskPart, insertClick, newPanel, apply } from "../state/doc.js";
+import { clickChange, newPanel, apply } from "../state/doc.js";
 import { axisIds } from "../geometry/panelmap.js";
+import { heldWords } from "../state/words.js";
 import { axisFor } from "../panels/sentences-curves.js";
 import { calibrated } from "../state/derive.js";
 import { insidePolygon } from "../geometry/polyline.js";
@@ -13,9 +15,11 @@ import { Navigate } from "../tools/navigate.js";
 import { Place } from "../tools/place.js";
 import { Straightedge } from "../tools/straightedge.js";
 import { $ } from "../view/dom.js";
+import { curveOf, findHandle, moveAction, placeOf, removeAction, round, stops } from "./desk-handles.js";
+import { Locks } from "./desk-locks.js";
+import { Masks } from "./desk-masks.js";
 
 const inside = (desk, panel, sheet) => insidePolygon(sheet, desk.outlineOf(panel) ?? []);
-const round = (p) => p.map((v) => Math.round(v * 100) / 100);
 
 export class DeskTools {
   constructor(desk, draw, tiles, invalidate) {
@@ -24,11 +28,14 @@ export class DeskTools {
     const at = (e) => this.at(e);
     const view = { view: () => desk.view, setView: (v) => { desk.view = v; desk.moved = true; invalidate("view"); } };
     this.navigate = new Navigate(paper, at, { ...view, spaceHeld: () => this.space, stopOthers: () => this.cancel(), wheel: (e) => this.#wheel(e) }).enable();
-    this.grab = new Grab(paper, at, { find: (p) => this.find(p), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: () => this.drop(), chosen: (hd) => this.chosen(hd), back: () => this.back() }).enable();
+    this.grab = new Grab(paper, at, { find: (p, e) => (desk.masks?.on || this.box.enabled ? null : findHandle(desk, p, e.shiftKey)), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: () => this.drop(), chosen: (hd, p, e) => this.chosen(hd, p, e), back: () => this.back() }).enable();
     this.box = new Box(paper, at, { show: (o) => { desk.box = o; invalidate("paper"); }, done: (o) => this.addPanel(o) });
     this.place = new Place(paper, at, { ...view, place: (p, e) => this.click(p, e), magnify: (screen) => this.#magnify(screen), aim: (screen) => this.#aim(screen) });
     this.edge = new Straightedge([paper, $("replot")], { moved: (m) => this.moved(m), left: () => this.left() }).enable();
     this.plotNavigate = new Navigate($("replot"), (e) => this.#plotAt(e), { view: () => desk.view, setView: view.setView, spaceHeld: () => true, stopOthers: () => {} }).enable();
+    desk.masks = new Masks(desk, paper, at, invalidate);
+    desk.locks = new Locks(desk, invalidate);
+    desk.retool = () => this.retool();
     this.stepped(desk.step);
   }
 
@@ -96,17 +103,25 @@ export class DeskTools {
     this.invalidate("loupe");
   }
 
-  stepped(step) {
+  stepped() {
+    this.desk.locking = null;
+    if (this.desk.masks.on) this.desk.masks.hold(false);
+    else this.retool();
+  }
+
+  /** Put into the hand what this step and what is under way want. */
+  retool() {
+    const { desk } = this;
     this.box.disable();
     this.place.disable();
-    const drawing = step === "panel" && (!this.desk.panel || this.desk.drawingPanel);
+    const drawing = desk.step === "panel" && (!desk.panel || desk.drawingPanel);
     if (drawing) this.box.enable();
-    else this.place.enable();
-    $("paper").dataset.tool = drawing ? "box" : step === "marks" || step === "curves" ? "point" : "hand";
+    else if (!desk.masks.on) this.place.enable();
+    $("paper").dataset.tool = desk.masks.on ? "brush" : drawing ? "box" : desk.step === "marks" || desk.step === "curves" ? "point" : "hand";
   }
 
   cancel() {
-    for (const t of [this.grab, this.box, this.place]) t.cancel();
+    for (const t of [this.grab, this.box, this.place, this.desk.masks.brush]) t.cancel();
   }
 
   moved({ surface, screen }) {
@@ -146,89 +161,94 @@ export class DeskTools {
     this.stepped("panel");
   }
 
-  /** The nearest handle within 12 screen px. */
-  find({ screen }) {
-    const { desk } = this;
-    const near = (p) => Math.hypot(...toScreen(desk.loupe ? desk.loupe.view : desk.view, p).map((v, i) => v - screen[i]));
-    const list = [];
-    if (desk.step === "panel" && desk.panel?.outline && !desk.drawingPanel) desk.panel.outline.forEach((p, i) => list.push({ kind: "corner", index: i, d: near(p) }));
-    if (desk.step === "marks") {
-      if (desk.openMark) list.push({ kind: "open", d: near(desk.openMark.at) });
-      for (const panel of desk.doc.panels ?? []) for (const [axis, a] of Object.entries(panel.axes)) (a.marks ?? []).forEach((m, index) => list.push({ kind: "mark", panel: panel.id, axis, index, d: near(m.at) + (panel.id === desk.panel?.id ? 0 : 6) }));
-    }
-    if (desk.step === "curves") {
-      for (const item of desk.items) if (item.id === desk.selected || !item.kept) (item.curve.clicks ?? []).forEach((p, index) => list.push({ kind: "guide", curve: item.id, kept: item.kept, index, d: near(p) }));
-    }
-    const best = list.sort((a, b) => a.d - b.d)[0];
-    return best && best.d < 12 ? best : null;
-  }
-
   choose(handle) {
     const { desk } = this;
     if (handle.kind === "mark") {
       desk.panelId = handle.panel;
       desk.chosenMark = { panel: handle.panel, axis: handle.axis, index: handle.index };
     }
-    if (handle.kind === "guide") desk.focusedGuide = { curve: handle.curve, index: handle.index, kept: handle.kept };
-    desk.grabbed = handle.kind === "guide" ? { curve: handle.curve, index: handle.index } : null;
+    if (handle.kind === "point") desk.focused = { kind: "point", curve: handle.curve, part: handle.part, index: handle.index, kept: handle.kept };
+    desk.grabbed = handle.kind === "point" ? desk.focused : null;
     this.invalidate("doc");
   }
 
-  chosen() {
-    this.desk.grabbed = null;
-    this.invalidate("all");
+  /** A press that did not move: a trace takes it as a click there, the ring is accepted, a lock sign chooses its stretch. */
+  chosen(handle, point, e) {
+    const { desk } = this;
+    desk.grabbed = null;
+    if (handle.kind === "line") return this.click(point, e);
+    if (handle.kind === "hint") return this.acceptHint(handle, point.sheet);
+    if (handle.kind === "lock") {
+      desk.select(handle.curve);
+      desk.focused = { kind: "lock", curve: handle.curve, index: handle.index, kept: true };
+    } else if (handle.kind === "point" && handle.kept && desk.selected !== handle.curve) desk.selected = handle.curve;
+    return this.invalidate("all");
   }
 
-  action(handle, sheet) {
+  /** The one extra click that settles a doubt, where the user put it. */
+  acceptHint(handle, at) {
     const { desk } = this;
-    const at = round(sheet);
-    if (handle.kind === "mark") return { type: "marks/move", panel: handle.panel, from: desk.session.doc.panels.find((p) => p.id === handle.panel).axes[handle.axis].marks[handle.index].at, at };
-    if (handle.kind === "open") return { type: "mark/open", panel: desk.openMark.panel, at };
-    if (handle.kind === "corner") {
-      const outline = desk.session.doc.panels.find((p) => p.id === desk.panel.id).outline.map((p) => [...p]);
-      const o = (handle.index + 2) % 4;
-      const [ox, oy] = outline[o];
-      const box = [[Math.min(at[0], ox), Math.min(at[1], oy)], [Math.max(at[0], ox), Math.max(at[1], oy)]];
-      return { type: "panel/set", panel: desk.panel.id, change: { outline: [box[0], [box[1][0], box[0][1]], box[1], [box[0][0], box[1][1]]] } };
-    }
-    const curve = handle.kept ? desk.session.doc.curves.find((c) => c.id === handle.curve) : deskPart(desk.session.doc).curve;
-    const clicks = curve.clicks.map((p, i) => (i === handle.index ? at : p));
-    return handle.kept ? { type: "curve/set", curve: handle.curve, change: { clicks } } : { type: "curve/change", change: { clicks } };
+    const action = moveAction(desk, handle, round(at));
+    if (action) desk.act(action);
+    desk.say("The line is followed again through that click.");
   }
 
   drag(handle, { sheet, screen }, e) {
     const { desk } = this;
-    const to = handle.kind === "mark" || handle.kind === "open" ? this.snapped(sheet, e).at : sheet;
-    this.last = this.action(handle, to);
+    const mark = handle.kind === "mark" || handle.kind === "open";
+    const held = mark ? this.snapped(sheet, e) : null;
+    const action = moveAction(desk, handle, held ? held.at : round(sheet));
+    if (!action) {
+      if (handle.kind === "line" && !this.told) desk.say("This stretch is locked. Unlock it first: choose its lock sign.");
+      this.told = true;
+      return;
+    }
+    this.last = handle.kind === "open" ? { ...action, held: held.held } : action;
+    if (handle.kind === "line") desk.grabbed = { curve: handle.curve, part: "guides", index: (curveOf(desk.session.doc, handle).guides ?? []).length, kept: handle.kept };
     desk.drag = { doc: apply(desk.session.doc, this.last) };
     this.moved({ surface: "paper", screen });
     this.invalidate("doc");
   }
 
-  drop() {
+  drop(handle) {
     const { desk } = this;
+    const made = desk.grabbed;
     desk.drag = null;
     desk.grabbed = null;
+    this.told = false;
     if (this.last) desk.act(this.last);
+    if (this.last && handle.kind === "line") {
+      if (handle.kept) desk.selected = handle.curve;
+      desk.focused = { kind: "point", ...made };
+    }
     this.last = null;
+    this.invalidate("all");
   }
 
   back() {
     this.desk.drag = null;
     this.desk.grabbed = null;
     this.last = null;
+    this.told = false;
     this.invalidate("doc");
   }
 
-  /** A place held to the printed crossing, line or tick within 8 screen px, unless Shift is down. */
+  /** A place held to the printed crossing, line or tick within 8 screen px, unless Shift or Alt is down. {at, held: {kind, moved_px, sigma_px} | undefined} */
   snapped(sheet, e) {
     const { desk } = this;
-    if (e?.shiftKey) return { at: round(sheet), held: undefined };
+    if (e?.shiftKey || e?.altKey) return { at: round(sheet), held: undefined };
     const scale = desk.loupe ? desk.loupe.view.scale : desk.view.scale;
     const reach = Math.max(2.5, Math.min(14, 8 / scale));
+    const lines = desk.lines?.found;
+    const found = lines && hold(lines, sheet, reach);
+    if (found?.kind === "crossing") return { at: round(found.at), held: { kind: found.kind, moved_px: found.moved_px, sigma_px: found.sigma_px } };
     const patch = this.tiles.patch(sheet, Math.ceil(reach) + 12);
     const got = patch && snap(patch, [sheet[0] - patch.origin[0], sheet[1] - patch.origin[1]], reach);
-    return got ? { at: round([got.at[0] + patch.origin[0], got.at[1] + patch.origin[1]]), held: got.kind } : { at: round(sheet), held: undefined };
+    if (got && (got.kind === "crossing" || !found)) {
+      const at = round([got.at[0] + patch.origin[0], got.at[1] + patch.origin[1]]);
+      return { at, held: { kind: got.kind, moved_px: Math.hypot(at[0] - sheet[0], at[1] - sheet[1]) } };
+    }
+    return found ? { at: round(found.at), held: { kind: found.kind, moved_px: found.moved_px, sigma_px: found.sigma_px } } : { at: round(sheet), held: undefined };
   }
 
   click({ sheet, screen }, e) {
@@ -268,6 +288,7 @@ export class DeskTools {
     const { desk } = this;
     if (!desk.panel) return;
     const { at, held } = this.snapped(sheet, e);
+    if (held) desk.say(heldWords(held));
     const inOther = (desk.doc.panels ?? []).find((p) => p.id !== desk.panel.id && inside(desk, p, sheet) && !inside(desk, desk.panel, sheet));
     if (inOther && !desk.openMark) desk.panelId = inOther.id;
     desk.chosenMark = null;
@@ -278,16 +299,25 @@ export class DeskTools {
   #curveAt(sheet, screen, e) {
     const { desk } = this;
     const at = round(sheet);
+    if (desk.locking) return desk.locks.at(screen);
     if (desk.openCurve) {
-      const change = clickChange(desk.openCurve, at);
-      if (change.clicks.length >= 2) desk.focusBlank = "curve";
-      return desk.act({ type: "curve/change", change });
+      const open = desk.openCurve;
+      const [x, y] = toScreen(desk.view, open.clicks[0]);
+      if (open.quantity.endsWith("_contour") && open.clicks.length >= 3 && !open.closed && Math.hypot(x - screen[0], y - screen[1]) < 9) {
+        desk.say("The line is closed.");
+        return desk.act({ type: "curve/change", change: { closed: true } });
+      }
+      const more = clickChange(open, at);
+      if (more.clicks.length >= 2) desk.focusBlank = "curve";
+      return desk.act({ type: "curve/change", change: more });
     }
     const chosen = (desk.doc.curves ?? []).find((c) => c.id === desk.selected);
     const trace = this.traceAt(screen);
     const off = !(trace && trace.id !== chosen?.id);
     if (chosen && desk.guiding && !e.shiftKey && off && this.#awayFrom(chosen.id, screen) < 40) {
-      return desk.act({ type: "curve/set", curve: chosen.id, change: { clicks: insertClick(chosen.clicks, at) } });
+      const handle = { kind: "line", curve: chosen.id, kept: true, locked: -1 };
+      desk.act(chosen.kind === "hand" || chosen.kind === "points" ? { ...moveAction(desk, { ...handle, kind: "hint" }, at), did: "click set" } : moveAction(desk, handle, at));
+      return undefined;
     }
     // A line that begins on a kept trace: that click chose the trace, this one leaves it. A kept curve is never bent by the way.
     const begun = chosen && !trace && desk.touched?.curve === chosen.id && !e.shiftKey ? desk.touched.at : null;
@@ -312,7 +342,8 @@ export class DeskTools {
     const last = [...(desk.doc.curves ?? [])].reverse().find((c) => c.panel === panel.id);
     const quantity = last?.quantity ?? panel.axes[ids.value[0]].quantity;
     const any = [...(desk.doc.curves ?? [])].reverse()[0];
-    const curve = { id: `open-${Date.now().toString(36)}`, panel: panel.id, x: ids.flow[0], y: last?.y && panel.axes[last.y] ? last.y : axisFor(panel, quantity), quantity, clicks };
+    const kind = last?.kind === "points" ? "points" : undefined;
+    const curve = { id: `open-${Date.now().toString(36)}`, panel: panel.id, x: ids.flow[0], y: last?.y && panel.axes[last.y] ? last.y : axisFor(panel, quantity), quantity, clicks, ...(kind ? { kind } : {}) };
     const speed = last?.speed_rpm ?? any?.speed_rpm ?? desk.doc.pump?.speed_rpm;
     if (speed) curve.speed_rpm = speed;
     return curve;
@@ -323,15 +354,17 @@ export class DeskTools {
     const { desk } = this;
     const [dx, dy] = { ArrowLeft: [-1, 0], ArrowRight: [1, 0], ArrowUp: [0, -1], ArrowDown: [0, 1] }[e.key];
     const step = e.shiftKey ? 1 : 0.1;
-    const handle = desk.focusedGuide ? { kind: "guide", ...desk.focusedGuide } : desk.chosenMark ? { kind: "mark", ...desk.chosenMark } : desk.step === "marks" && desk.openMark ? { kind: "open" } : null;
-    if (handle && document.activeElement === $("paper")) {
-      const at = handle.kind === "mark" ? desk.doc.panels.find((p) => p.id === handle.panel)?.axes[handle.axis]?.marks[handle.index]?.at : handle.kind === "open" ? desk.openMark.at : (handle.kept ? desk.doc.curves.find((c) => c.id === handle.curve) : desk.openCurve)?.clicks[handle.index];
+    const handle = desk.focused ?? (desk.chosenMark ? { kind: "mark", ...desk.chosenMark } : desk.step === "marks" && desk.openMark ? { kind: "open" } : null);
+    if (handle && document.activeElement === $("paper") && !desk.masks.on && handle.kind !== "lock") {
+      const at = placeOf(desk, handle);
       if (at) {
-        desk.act(this.action(handle, nudge(desk.view, at, dx * step, dy * step)));
-        return;
+        const action = moveAction(desk, handle, nudge(desk.view, at, dx * step, dy * step));
+        if (handle.kind === "hint") desk.focused = { kind: "point", part: "clicks", curve: handle.curve, kept: handle.kept, index: action.change.clicks.findIndex((p) => Math.hypot(p[0] - at[0], p[1] - at[1]) < 2) };
+        desk.act(action);
+        return undefined;
       }
     }
-    if (document.activeElement === $("paper") && ["panel", "marks", "curves"].includes(desk.step)) return this.moveHand(dx, dy, e.shiftKey ? 1 : 8);
+    if (document.activeElement === $("paper") && (desk.masks.on || ["panel", "marks", "curves"].includes(desk.step))) return this.moveHand(dx, dy, e.shiftKey ? 1 : 8);
     const { scales } = this.draw;
     if (!scales) return;
     const [x0, y0, x1, y1] = scales.frame;
@@ -351,6 +384,7 @@ export class DeskTools {
     this.moved({ surface: "paper", screen: desk.hand });
     desk.hand = desk.pointer.screen;
     if (this.box.enabled) this.box.hoverAt(this.#handPoint());
+    desk.masks.moved(desk.hand);
     this.invalidate("cursor");
   }
 
@@ -365,6 +399,7 @@ export class DeskTools {
     const { desk } = this;
     const here = this.#handPoint();
     if (!here) return desk.say("Arrow keys move the hand first; P then puts a point down.");
+    if (desk.masks.on) return desk.masks.press(here.screen);
     if (this.box.enabled) return this.box.corner(here);
     if (["marks", "curves"].includes(desk.step)) return this.click(here, { target: $("paper"), shiftKey: e.shiftKey });
     return undefined;
@@ -372,30 +407,35 @@ export class DeskTools {
 
   removeFocused() {
     const { desk } = this;
-    const g = desk.focusedGuide;
-    if (g) {
-      const curve = g.kept ? desk.doc.curves.find((c) => c.id === g.curve) : desk.openCurve;
-      if (!curve) return;
-      const clicks = curve.clicks.filter((_, i) => i !== g.index);
-      desk.focusedGuide = null;
-      if (g.kept) desk.act(clicks.length < 2 ? { type: "curve/remove", curve: curve.id } : { type: "curve/set", curve: curve.id, change: { clicks } });
-      else desk.act(clicks.length ? { type: "curve/change", change: { clicks } } : { type: "curve/drop" });
-    } else if (desk.chosenMark) desk.removeChosenMark();
+    const g = desk.focused;
+    if (desk.masks.on && desk.masks.chosen !== null) desk.masks.remove(desk.masks.chosen);
+    else if (g?.kind === "point") {
+      const action = removeAction(desk, g);
+      desk.focused = null;
+      if (action) desk.act(action);
+    } else if (g?.kind === "lock") desk.locks.unlock(g.curve, g.index);
+    else if (desk.chosenMark) desk.removeChosenMark();
   }
 
-  /** Tab inside the paper walks marks or guides; gives false when there is nothing further. */
+  /** Tab inside the paper walks marks, clicks, guides, lock signs and hint rings; gives false when there is nothing further. */
   walk(back) {
     const { desk } = this;
-    const stops = [];
-    if (desk.step === "marks" && desk.panel) for (const [axis, a] of Object.entries(desk.panel.axes)) (a.marks ?? []).forEach((_, index) => stops.push({ mark: { panel: desk.panel.id, axis, index } }));
-    if (desk.step === "curves") for (const item of desk.items) (item.curve.clicks ?? []).forEach((_, index) => stops.push({ guide: { curve: item.id, index, kept: item.kept } }));
-    const now = JSON.stringify(desk.chosenMark ?? desk.focusedGuide);
-    const at = stops.findIndex((s) => JSON.stringify(s.mark ?? s.guide) === now);
+    const list = stops(desk);
+    const now = JSON.stringify(desk.chosenMark ?? desk.focused);
+    const at = list.findIndex((s) => JSON.stringify(s.mark ?? s.handle) === now);
     const next = at < 0 ? (back ? -1 : 0) : at + (back ? -1 : 1);
-    desk.chosenMark = stops[next]?.mark ?? null;
-    desk.focusedGuide = stops[next]?.guide ?? null;
-    if (desk.focusedGuide?.kept) desk.selected = desk.focusedGuide.curve;
+    desk.chosenMark = list[next]?.mark ?? null;
+    desk.focused = list[next]?.handle ?? null;
+    if (desk.focused?.kept) desk.selected = desk.focused.curve;
+    if (desk.focused) desk.say(this.#stopWords(desk.focused));
     this.invalidate("doc");
-    return next >= 0 && next < stops.length;
+    return next >= 0 && next < list.length;
+  }
+
+  #stopWords(stop) {
+    const label = this.desk.items.find((i) => i.id === stop.curve)?.label || "this line";
+    if (stop.kind === "hint") return `Ring on ${label}: one click here would settle it. Enter puts it there, arrow keys move it.`;
+    if (stop.kind === "lock") return `Locked stretch of ${label}. Delete unlocks it.`;
+    return `${stop.part === "guides" ? "Guide" : "Click"} ${stop.index + 1} of ${label}.`;
   }
 }

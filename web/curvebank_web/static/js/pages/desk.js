@@ -1,8 +1,9 @@
 // The desk page: opens the draft, ties model, drawing, tools and keys together.
 import * as api from "../net/api.js";
 import { Session } from "../net/session.js";
-import { toScreen, panBy } from "../geometry/affine.js";
+import { toScreen, panBy, zoomAt } from "../geometry/affine.js";
 import { curveId } from "../state/doc.js";
+import { clicksWanted } from "../state/stretch.js";
 import { plain } from "../geometry/number.js";
 import * as words from "../state/words.js";
 import { button, choice, watchTyping } from "../panels/blank.js";
@@ -10,6 +11,7 @@ import { closeProblem, fromError, showProblem } from "../panels/problem.js";
 import { keepSetting, setting } from "../panels/keys.js";
 import { $, h } from "../view/dom.js";
 import { TileLayer } from "../view/tiles.js";
+import { placeOf } from "./desk-handles.js";
 import { Desk } from "./desk-model.js";
 import { DeskDraw, homeView, size } from "./desk-draw.js";
 import { DeskTools } from "./desk-tools.js";
@@ -92,8 +94,16 @@ function abilities(desk, draw, tools, invalidate) {
       tools.stepped(desk.step);
       redo("all");
     },
-    select(id, guiding = false) { Object.assign(desk, { selected: id, guiding, touched: null, focusedGuide: null }); redo("all"); },
+    select(id, guiding = false) { Object.assign(desk, { selected: id, guiding, touched: null, focused: null, locking: null }); redo("all"); },
     chooseMark(mark) { desk.chosenMark = mark; $("paper").focus({ preventScroll: true }); redo("all"); },
+    removeFocused: () => tools.removeFocused(),
+    toggleFound() {
+      desk.showFound = !desk.showFound;
+      keepSetting("found", desk.showFound ? "on" : "off");
+      desk.say(desk.showFound ? (desk.lines.found ? "The printed lines found are drawn." : "The printed lines are drawn as soon as the sheet is levelled.") : "The printed lines found are hidden.");
+      redo("all");
+    },
+    showFound: setting("found", "on") === "on",
     removeChosenMark() { const { panel, axis, index } = desk.chosenMark; desk.chosenMark = null; desk.act({ type: "mark/remove", panel, axis, index }); },
     keepMark(panel, mark, values) {
       desk.act({ type: "mark/keep", panel: panel.id, at: mark.at, values });
@@ -101,7 +111,7 @@ function abilities(desk, draw, tools, invalidate) {
     },
     keepCurve() {
       const open = desk.openCurve;
-      if (!open || open.clicks.length < 2) return desk.say("Two clicks or more along the line.");
+      if (!open || open.clicks.length < clicksWanted(open)) return desk.say(`${words.clicksWords(open && clicksWanted(open))} along the line.`);
       if (open.quantity.endsWith("_contour") && open.value === undefined) return desk.say("Give the line its level first.");
       const id = curveId(open, (desk.doc.curves ?? []).map((c) => c.id));
       const known = desk.previews.lastCurve.get(open.id);
@@ -112,6 +122,7 @@ function abilities(desk, draw, tools, invalidate) {
       return undefined;
     },
     enter() {
+      if (desk.step === "curves" && desk.focused?.kind === "hint") { const at = placeOf(desk, desk.focused); const hint = desk.focused; desk.focused = null; return at && tools.acceptHint(hint, at); }
       if (desk.step === "curves" && desk.openCurve) return desk.keepCurve();
       if (desk.step === "curves" && desk.selected) return desk.select(null);
       return desk.step === "submit" ? undefined : $("slip").querySelector(".btn.main")?.click();
@@ -121,6 +132,24 @@ function abilities(desk, draw, tools, invalidate) {
       desk.go(step);
       if (!desk.run?.fresh && !desk.missing() && !desk.unmarked()) await desk.startRun();
       redo("all");
+    },
+    /** Bring sheet places into view; `near` also zooms so that they fill a third of the paper. */
+    travelTo(places, near = false) {
+      if (!places.length || !desk.view) return;
+      const { width, height } = size("paper");
+      const on = places.map((p) => toScreen(desk.view, p));
+      const [xs, ys] = [on.map((p) => p[0]), on.map((p) => p[1])];
+      const box = [Math.min(...xs), Math.min(...ys), Math.max(...xs), Math.max(...ys)];
+      const span = Math.max((box[2] - box[0]) / width, (box[3] - box[1]) / height, 1e-3);
+      if (near && (span < 0.2 || span > 0.8)) {
+        const scale = Math.min(4, Math.max(homeView(desk)?.scale ?? 0, (desk.view.scale * 0.34) / span));
+        const at = [(box[0] + box[2]) / 2, (box[1] + box[3]) / 2];
+        desk.view = panBy(zoomAt(desk.view, scale / desk.view.scale, at), width / 2 - at[0], height / 2 - at[1]);
+        desk.moved = true;
+      } else if (box[0] < 20 || box[1] < 20 || box[2] > width - 20 || box[3] > height - 60) {
+        desk.view = panBy(desk.view, width / 2 - (box[0] + box[2]) / 2, height / 2 - (box[1] + box[3]) / 2);
+      }
+      redo("view");
     },
     chooseFinding(number) {
       desk.chosenFinding = number;
@@ -156,6 +185,11 @@ function abilities(desk, draw, tools, invalidate) {
         const v = Number(agrees.toFixed(Math.abs(agrees - Math.round(agrees)) < 0.35 ? 0 : 1));
         buttons.push(button(`File it as ${plain(v)} mm`, { onClick: () => { desk.act({ type: "curve/set", curve: curve.id, change: { diameter_mm: v, label: { by: "diameter", printed: plain(curve.diameter_mm) } } }); desk.checkAndGo("family"); } }));
       }
+      if (f.masked) ways.push(["take the mask away there", () => desk.masks.uncover(f.masked)]);
+      const ring = f.doubt && desk.step === "curves" && desk.items.find((i) => i.id === f.where?.curve)?.result?.hint_click;
+      if (ring) ways.push(["go to the one click that would settle it", () => { desk.focused = { kind: "hint", curve: f.where.curve, kept: desk.items.find((i) => i.id === f.where.curve).kept }; desk.travelTo([ring]); $("paper").focus(); redo("all"); }]);
+      const known = curve && f.where?.stretch && desk.step === "curves" && desk.items.find((i) => i.id === curve.id && i.pixels.length);
+      if (known) ways.push(["it is right: lock it", () => desk.locks.lock(known, ...f.where.stretch)]);
       if (curve && desk.step === "curves" && !desk.openCurve) ways.push(["draw a guide", () => { desk.select(curve.id, true); desk.chooseFinding(f.number); $("paper").focus(); }]);
       return { ...f, ways, buttons };
     },
@@ -191,13 +225,14 @@ function abilities(desk, draw, tools, invalidate) {
   }
 
   function travel(f) {
-    const item = desk.items.find((i) => i.id === f.where?.curve);
-    const at = f.where?.at ?? (item?.pixels.length ? item.pixels[Math.floor(f.where.stretch ? (f.where.stretch[0] + f.where.stretch[1]) / 2 : item.pixels.length * 0.35)] : null);
     if (f.where?.panel && f.where.panel !== desk.panel?.id && desk.doc.panels.some((p) => p.id === f.where.panel)) { desk.panelId = f.where.panel; desk.view = null; return; }
-    if (!at || !desk.view) return;
-    const { width, height } = size("paper");
-    const [x, y] = toScreen(desk.view, at);
-    if (x < 20 || y < 20 || x > width - 20 || y > height - 60) desk.view = panBy(desk.view, width / 2 - x, height / 2 - y);
+    const item = desk.items.find((i) => i.id === f.where?.curve);
+    if (f.where?.at) return desk.travelTo([f.where.at]);
+    if (!item?.pixels.length) return undefined;
+    const { stretch } = f.where;
+    if (!stretch) return desk.travelTo([item.pixels[Math.floor(item.pixels.length * 0.35)]]);
+    // A doubtful stretch is shown near, with as much again of the line at either side.
+    return desk.travelTo(item.pixels.slice(Math.max(0, Math.floor(stretch[0])), Math.ceil(stretch[1]) + 1), true);
   }
 }
 

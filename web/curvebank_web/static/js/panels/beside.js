@@ -6,8 +6,10 @@ import { fixed, plain, withDoubt } from "../geometry/number.js";
 import { QUANTITY_WORDS, written } from "../geometry/units.js";
 import { drawChart } from "../view/chart.js";
 import { h, put, s } from "../view/dom.js";
+import { maskList } from "./sentence-mask.js";
 
 export function drawBeside(root, desk) {
+  if (desk.masks?.on || (desk.step === "sheet" && desk.masks?.list.length)) return maskList(root, desk);
   if (desk.step === "marks" || desk.step === "panel") return marksTable(root, desk);
   if (desk.step === "family") return exponents(root, desk);
   if (desk.step === "fit") return residuals(root, desk);

@@ -2,12 +2,15 @@
 import { axisIds } from "../geometry/panelmap.js";
 import { CONTOURS, CONTOUR_WORDS, QUANTITY_SIGNS, QUANTITY_WORDS, written } from "../geometry/units.js";
 import { calibrated } from "../state/derive.js";
-import { sideOf } from "../state/words.js";
+import { clicksWanted, flowRange, rangeOf } from "../state/stretch.js";
+import { clicksWords, confidence, KIND_WORDS, sideOf } from "../state/words.js";
+import { plain } from "../geometry/number.js";
 import { h } from "../view/dom.js";
 import { button, choice, numberBlank } from "./blank.js";
 
 const t = (words) => h("span", {}, words);
 const stop = () => h("span", { class: "stop" }, ".");
+const said = (words) => (words ? h("small", { class: "held" }, words) : null);
 const hint = (key, words) => h("span", { class: "hint" }, "hold ", h("kbd", {}, key), ` ${words}`);
 
 /** Quantities that a line on this panel can be, as choices. */
@@ -34,14 +37,14 @@ const ENDINGS = [
 const endingOf = (c) => (c.kind === "hand" || c.kind === "points" ? c.kind : c.ends ?? "ink");
 const endingChange = (v) => (v === "hand" || v === "points" ? { kind: v, ends: undefined } : { kind: undefined, ends: v === "ink" ? undefined : v });
 
-function curveParts(panel, curve, set, onEnter) {
+function curveParts(panel, curve, set, onEnter, offer) {
   const contour = curve.quantity in CONTOURS;
   const parts = [t("This line is"), choice({ name: "quantity", label: "Quantity of this line", value: curve.quantity, options: quantitiesOf(panel), onValue: (q) => set({ quantity: q, y: axisFor(panel, q), ...(q in CONTOURS ? { diameter_mm: undefined, ...(curve["x-clicked"] ? { clicks: curve["x-clicked"] } : {}) } : { value: undefined, closed: undefined }) }) })];
   const blanks = [];
   if (contour) {
     const percent = curve.quantity === "efficiency_contour";
     const unit = percent ? "%" : curve.quantity === "power_contour" ? "kW" : "m";
-    const b = numberBlank({ name: "level", label: `Level of this line in ${unit}`, value: curve.value === undefined ? null : percent ? Math.round(curve.value * 1e6) / 1e4 : curve.value, example: "level", width: 48, onValue: (v) => set({ value: v === null ? undefined : percent ? v / 100 : v }), onEnter: (v) => onEnter({ value: v === null ? undefined : percent ? v / 100 : v }) });
+    const b = numberBlank({ name: "level", label: `Level of this line in ${unit}`, value: curve.value === undefined ? null : percent ? Math.round(curve.value * 1e6) / 1e4 : curve.value, example: "level", offer: offer === undefined ? null : percent ? Math.round(offer * 1e6) / 1e4 : offer, width: 48, onValue: (v) => set({ value: v === null ? undefined : percent ? v / 100 : v }), onEnter: (v) => onEnter({ value: v === null ? undefined : percent ? v / 100 : v }) });
     blanks.push(b);
     parts.push(t("of"), b, t(`${unit},`), choice({ name: "closed", label: "Open or closed line", value: curve.closed ? "closed" : "open", options: [["open", "an open line"], ["closed", "a closed loop"]], onValue: (v) => set({ closed: v === "closed" ? true : undefined }) }), t("at"));
   } else {
@@ -72,30 +75,82 @@ export function curvesSentence(desk) {
       if (change) set(change);
       desk.keepCurve();
     };
-    const few = openCurve.clicks.length < 2;
+    const want = clicksWanted(openCurve);
+    const few = openCurve.clicks.length < want;
     const item = desk.items.find((i) => i.id === openCurve.id);
     const looking = !few && !item?.result;
+    const levels = (doc.curves ?? []).filter((c) => c.quantity === openCurve.quantity && c.value !== undefined).map((c) => c.value);
+    const more = want - openCurve.clicks.length;
+    const wanting = openCurve.kind === "points" ? "Click each point." : more === 1 ? "Click once more along the line." : `${clicksWords(want)} along the line.`;
     return {
-      sentence: [curveParts(own, openCurve, set, keep), item?.failed ? null : looking ? h("small", { class: "held" }, "Following the ink …") : null],
-      does: [few ? h("span", { class: "hint" }, "Click once more along the line.") : null, h("span", { class: "wide" }, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) })), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
+      sentence: [curveParts(own, openCurve, set, keep, levels[levels.length - 1]), said(KIND_WORDS[openCurve.kind]), item?.failed ? null : looking ? said("Following the ink …") : said(sureness(item))],
+      does: [few ? h("span", { class: "hint" }, wanting) : null, h("span", { class: "wide" }, button("Let go", { quiet: true, onClick: () => desk.act({ type: "curve/drop" }) })), button("Keep curve", { main: !few, key: few ? null : "Enter", waiting: few ? "" : null, onClick: () => keep() })],
       key: JSON.stringify(openCurve),
       focus: desk.focusBlank === "curve" ? (openCurve.quantity in CONTOURS ? "level" : "diameter") : null,
     };
   }
   const chosen = (doc.curves ?? []).find((c) => c.id === desk.selected);
-  if (chosen) {
-    const own = doc.panels.find((p) => p.id === chosen.panel) ?? panel;
-    const set = (change) => desk.act({ type: "curve/set", curve: chosen.id, change });
-    return {
-      key: JSON.stringify(chosen),
-      sentence: curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }),
-      does: [desk.guiding ? h("span", { class: "hint" }, "Click the ink beside the trace.") : button("Draw a guide", { quiet: true, onClick: () => desk.select(chosen.id, true) }), button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) })],
-    };
-  }
+  if (chosen) return chosenSentence(desk, chosen);
   const n = (doc.curves ?? []).length;
   const many = doc.panels.length > 1;
   return {
     sentence: [many ? [t("On panel"), choice({ name: "which", label: "Panel", value: panel.id, options: doc.panels.map((p, i) => [p.id, `${i + 1} of ${doc.panels.length}`]), onValue: (v) => desk.choosePanel(v) }), t("click")] : t("Click"), t(n ? "along the next line, or on a trace to change it." : "twice or more along a printed line; the desk follows the ink between.")],
     does: [hint("Z", "magnify"), n ? button(desk.run?.fresh ? "Go on to the family" : "Check the curves", { main: true, onClick: () => desk.checkAndGo("family") }) : null],
+  };
+}
+
+/** "The trace is sure, 0.98." */
+function sureness(item) {
+  const words = item?.result && !item.failed ? confidence(item.result.confidence) : "";
+  return words ? `The trace is ${words}.` : "";
+}
+
+const ORDINALS = ["first", "second", "third", "fourth", "fifth", "sixth", "seventh", "eighth"];
+const ordinal = (i) => ORDINALS[i] ?? `${i + 1}th`;
+
+function chosenSentence(desk, chosen) {
+  const { doc, panel } = desk;
+  const own = doc.panels.find((p) => p.id === chosen.panel) ?? panel;
+  const item = desk.items.find((i) => i.id === chosen.id);
+  const label = item?.label || "this line";
+  const done = button("Done", { main: true, key: "Enter", onClick: () => desk.select(null) });
+  const focused = desk.focused?.curve === chosen.id ? desk.focused : null;
+  const back = () => { desk.focused = null; desk.set({}); };
+  if (desk.locking) {
+    return {
+      sentence: [t(desk.locking.from === null ? `Click on the trace of ${label} where the locked stretch begins.` : "Now click where it ends."), said("A locked stretch stays exactly as it is, whatever changes round it.")],
+      does: [button("Lock the whole trace", { quiet: true, onClick: () => desk.locks.all(chosen.id) }), button("Leave it", { key: "Esc", onClick: () => desk.set({ locking: null }) })],
+      key: `lock-${desk.locking.from}`,
+    };
+  }
+  if (focused?.kind === "point") {
+    const word = focused.part === "guides" ? "guide" : "click";
+    return {
+      sentence: [t(`This is the ${ordinal(focused.index)} ${word} of ${label}.`), said(word === "guide" ? "The line passes near it; drag it, and only what it touches is followed again." : "Drag it, and only what it touches is followed again.")],
+      does: [h("span", { class: "hint" }, h("kbd", {}, "←"), h("kbd", {}, "→"), " 0.1 px"), button(`Remove the ${word}`, { quiet: true, key: "Del", onClick: () => desk.removeFocused() }), button("Done", { main: true, onClick: back })],
+      key: JSON.stringify(focused),
+    };
+  }
+  if (focused?.kind === "lock") {
+    const range = item && chosen.locked?.[focused.index] ? rangeOf(chosen.locked[focused.index], item.pixels) : null;
+    const flow = range ? flowRange(item, range) : null;
+    const unit = own.axes[chosen.x] ? written(own.axes[chosen.x].unit) : "";
+    return {
+      sentence: [t(`This stretch of ${label}${flow ? `, from ${plain(flow[0], 1)} to ${plain(flow[1], 1)} ${unit},` : ""} is locked: it stays as it is.`)],
+      does: [button("Unlock", { key: "L", onClick: () => desk.locks.unlock(chosen.id, focused.index) }), button("Done", { main: true, onClick: back })],
+      key: JSON.stringify(focused),
+    };
+  }
+  const set = (change) => desk.act({ type: "curve/set", curve: chosen.id, change });
+  const locked = (chosen.locked ?? []).length;
+  const can = item?.pixels.length > 2 && chosen.kind !== "points";
+  return {
+    key: JSON.stringify(chosen),
+    sentence: [curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }), said(KIND_WORDS[chosen.kind]), said(`${sureness(item)}${locked ? ` ${locked} ${locked === 1 ? "stretch is" : "stretches are"} locked.` : ""}`)],
+    does: [
+      desk.guiding ? h("span", { class: "hint" }, chosen.kind === "points" ? "Click the next point." : "Click the ink beside the trace, or drag the trace.") : button(chosen.kind === "points" ? "Add a point" : "Draw a guide", { quiet: true, onClick: () => desk.select(chosen.id, true) }),
+      can ? button("Lock a stretch", { quiet: true, onClick: () => desk.locks.start(chosen.id) }) : null,
+      button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), done,
+    ],
   };
 }

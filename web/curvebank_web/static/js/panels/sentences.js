@@ -5,6 +5,7 @@ import { QUANTITY_WORDS, UNITS, needsDensity, written } from "../geometry/units.
 import { boxOf } from "../geometry/polyline.js";
 import { calibrated } from "../state/derive.js";
 import { samePlace } from "../state/doc.js";
+import { heldWords } from "../state/words.js";
 import { h } from "../view/dom.js";
 import { button, choice, numberBlank, textBlank } from "./blank.js";
 import { nameBlanks } from "./sentences-end.js";
@@ -36,7 +37,7 @@ export function sheetSentence(desk) {
       textBlank({ name: "kept", label: "Where the paper is kept", value: sheet.kept_at, example: "where", width: 120, onValue: (v) => set({ kept_at: v || undefined }) }),
       stop(),
     ],
-    does: [button("Go on to the panel", { main: true, onClick: () => desk.go("panel") })],
+    does: [button("Mask a stamp or note", { quiet: true, onClick: () => desk.masks.hold(true) }), button("Go on to the panel", { main: true, onClick: () => desk.go("panel") })],
   };
 }
 
@@ -167,7 +168,7 @@ export function marksSentence(desk) {
       blanks[id] = numberBlank({ name: `mark-${id}`, label: `${QUANTITY_WORDS[axis.quantity]} at this mark, in ${written(axis.unit)}`, value: null, offer, width: 56, onEnter: keep });
       parts.push(blanks[id], t(`${written(axis.unit)} ${QUANTITY_WORDS[axis.quantity]}${i < order.length - 1 ? "," : ""}`));
     });
-    parts.push(stop(), openMark.held ? h("small", { class: "held" }, `It holds to the ${openMark.held} found.`) : null, offers ? h("small", { class: "held" }, h("kbd", {}, "Tab"), " takes the value offered.") : null);
+    parts.push(stop(), openMark.held ? h("small", { class: "held" }, heldWords(openMark.held)) : null, offers ? h("small", { class: "held" }, h("kbd", {}, "Tab"), " takes the value offered.") : null);
     return {
       sentence: parts,
       does: [hint("Z", "magnify"), button("Let go", { quiet: true, onClick: () => desk.act({ type: "mark/drop" }) }), button("Keep mark", { main: true, key: "Enter", onClick: keep })],

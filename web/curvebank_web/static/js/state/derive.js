@@ -3,6 +3,7 @@ import { axisIds, panelMap } from "../geometry/panelmap.js";
 import { CONTOURS, QUANTITY_SIGNS, factor } from "../geometry/units.js";
 import { weights } from "../geometry/labels.js";
 import { plain } from "../geometry/number.js";
+import { maskAt } from "../geometry/brush.js";
 import { desk as deskPart } from "./doc.js";
 
 export const STEPS = ["sheet", "panel", "marks", "curves", "family", "fit", "submit"];
@@ -153,11 +154,38 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
       out.push(place("error", `${curveLabel(curve) || "This line"}: ${sentence(result.error.message)}`, { where: { panel: curve.panel, curve: curve.id }, subject: `curve:${curve.id}`, code: result.error.code }));
       continue;
     }
-    for (const w of result.warnings ?? []) {
-      out.push(place("warning", `${curveLabel(curve)}: ${sentence(w.message)}`, { where: { panel: curve.panel, curve: curve.id, stretch: w.stretch ?? null }, subject: `curve:${curve.id}`, code: w.code }));
+    out.push(...doubts(curve, result, words));
+  }
+  out.push(...namesakes(doc, words), ...underMasks(doc, open, words));
+  return out;
+}
+
+/** What the trace itself says of a curve: its warnings, doubtful stretches that no warning names, and a flag that neither explains. */
+function doubts(curve, result, words) {
+  const name = curveLabel(curve) || "This line";
+  const say = (text, stretch, code) => place("warning", `${name}: ${sentence(text)}`, { where: { panel: curve.panel, curve: curve.id, stretch }, subject: `curve:${curve.id}`, code, doubt: Boolean(result.flagged) });
+  const list = (result.warnings ?? []).filter((w) => w.code !== "mask-over-click").map((w) => say(w.message, w.stretch ?? null, w.code));
+  for (const [i0, i1, reason] of result.stretches ?? []) {
+    if (!(result.warnings ?? []).some((w) => w.stretch && w.stretch[0] <= i1 && w.stretch[1] >= i0)) list.push(say(reason, [i0, i1], "stretch"));
+  }
+  if (result.flagged && !list.length) list.push(say(`the trace is ${words.confidence(result.confidence)}. Look along it, then add a guide where it strays`, null, "flagged"));
+  return list;
+}
+
+/** Marks, clicks and guides that a mask lies over: what is under it is not read. */
+function underMasks(doc, open, words) {
+  const masks = doc.sheet?.masks ?? [];
+  if (!masks.length) return [];
+  const out = [];
+  const look = (at, subject, panel, text) => maskAt(masks, at) >= 0 && out.push(place("warning", text, { where: { panel, at }, subject, masked: at }));
+  for (const panel of doc.panels ?? []) {
+    for (const [id, axis] of Object.entries(panel.axes)) for (const m of axis.marks ?? []) look(m.at, `axis:${panel.id}/${id}`, panel.id, words.maskedMark(axis, m));
+  }
+  for (const curve of [...(doc.curves ?? []), ...(open ? [open] : [])]) {
+    for (const [part, word] of [["clicks", "click"], ["guides", "guide"]]) {
+      (curve[part] ?? []).forEach((at, i) => look(at, `curve:${curve.id}`, curve.panel, words.maskedClick(curveLabel(curve) || "this line", word, i)));
     }
   }
-  out.push(...namesakes(doc, words));
   return out;
 }
 

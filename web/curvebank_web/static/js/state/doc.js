@@ -36,6 +36,7 @@ function inAxis(doc, { panel, axis }, change) {
 
 const HANDLERS = {
   "sheet/set": (doc, a) => ({ ...doc, sheet: clean({ ...doc.sheet, ...a.change }) }),
+  "masks/set": (doc, a) => ({ ...doc, sheet: clean({ ...doc.sheet, masks: a.masks.length ? a.masks : undefined }) }),
   "pump/set": (doc, a) => ({ ...doc, pump: clean({ ...doc.pump, ...a.change }) }),
   "desk/set": (doc, a) => withDesk(doc, a.change),
 

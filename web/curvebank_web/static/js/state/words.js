@@ -19,6 +19,16 @@ export function namesake(curve, label) {
   return `Another ${QUANTITY_WORDS[curve.quantity] ?? curve.quantity} curve of this panel is already called ${name}. Look at the paper, then give one of them its own diameter or speed, or remove it.`;
 }
 
+const ORDINALS = ["first", "second", "third", "fourth", "fifth", "sixth", "seventh", "eighth"];
+
+export function maskedMark(axis, mark) {
+  return `A mask lies over the ${QUANTITY_WORDS[axis.quantity] ?? axis.quantity} mark ${plain(mark.value)}. The printed line there is not read, so the mark stands as you put it. Take the mask away there, or move the mark.`;
+}
+
+export function maskedClick(label, word, index) {
+  return `A mask lies over the ${ORDINALS[index] ?? `${index + 1}th`} ${word} of ${label}. No ink is read there. Take the mask away there, or move the ${word}.`;
+}
+
 /** The value to offer instead of the typed one: the roundest number within 0.4 % of the axis's range of what would fit. */
 export function niceFit(axis, s) {
   const values = [...axis.marks.map((m) => m.value).filter((v) => v !== s.typed), s.fits];
@@ -57,6 +67,7 @@ export function actionLabel(action, doc) {
   const axisName = axis ? QUANTITY_WORDS[axis.quantity] : action.axis;
   switch (action.type) {
     case "sheet/set": return "sheet";
+    case "masks/set": return action.did ?? "masks";
     case "pump/set": return "pump's name";
     case "panel/add": return "panel drawn";
     case "panel/set": return "panel changed";
@@ -71,15 +82,43 @@ export function actionLabel(action, doc) {
     case "mark/remove": return `${axisName} mark removed`;
     case "marks/copy": return `${axisName} marks taken over`;
     case "curve/open": return "curve begun";
-    case "curve/change": return action.change.clicks ? "guide set" : "curve's sentence";
+    case "curve/change": return curveChange(action.change, "click set");
     case "curve/drop": return "curve let go";
     case "curve/keep": return "curve kept";
-    case "curve/set": return action.change.clicks ? "guide moved" : "curve's sentence";
+    case "curve/set": return action.did ?? curveChange(action.change, "click moved");
     case "curves/set": return "fit chosen";
     case "curve/remove": return "curve removed";
     default: return action.type;
   }
 }
+
+const curveChange = (change, clicks) => (change.clicks ? clicks : "guides" in change ? "guide moved" : "locked" in change ? "locked stretches" : "curve's sentence");
+
+/** The estimated chance that a trace follows its line throughout, in words and as a number: "sure, 0.98". */
+export function confidence(value) {
+  if (typeof value !== "number" || !Number.isFinite(value)) return "";
+  const word = value >= 0.95 ? "sure" : value >= 0.85 ? "fairly sure" : value >= 0.6 ? "in doubt" : "very doubtful";
+  return `${word}, ${(Math.floor(value * 100) / 100).toFixed(2)}`;
+}
+
+/** "It holds to the crossing found; moved 1.3 px, ± 0.04 px." */
+export function heldWords(held) {
+  if (!held) return "";
+  if (typeof held === "string") return `It holds to the ${held} found.`;
+  const sigma = held.sigma_px > 0 ? `, ± ${held.sigma_px < 0.095 ? held.sigma_px.toFixed(2) : held.sigma_px.toFixed(1)} px` : "";
+  return `It holds to the ${held.kind} found, moved ${held.moved_px.toFixed(1)} px${sigma}.`;
+}
+
+const COUNTS = ["No click", "One click", "Two clicks", "Three clicks", "Four clicks", "Five clicks", "Six clicks"];
+
+/** "Two clicks or more". */
+export const clicksWords = (n) => `${COUNTS[n] ?? `${n} clicks`} or more`;
+
+/** What a kind of line means, where it is not the ink that is followed. */
+export const KIND_WORDS = {
+  hand: "The clicks are the curve: six or more along it. Between them the ± grows, for no ink is read.",
+  points: "Click each test point; it moves to the middle of its symbol, where the cross stands.",
+};
 
 /** "head and efficiency over flow". */
 export function panelWords(panel) {

@@ -2,7 +2,7 @@
 import { Tool } from "./tool.js";
 
 export class Grab extends Tool {
-  /** hooks: find(point) -> handle | null, drag(handle, point, event), drop(handle, point, event), choose(handle), back(handle) */
+  /** hooks: find(point, event) -> handle | null, choose(handle), drag(handle, point, event), drop(handle, point, event), chosen(handle, point, event), back(handle) */
   constructor(surface, at, hooks) {
     super(surface, at);
     this.hooks = hooks;
@@ -10,7 +10,7 @@ export class Grab extends Tool {
 
   claims(e, here) {
     if (e.button !== 0) return false;
-    this.handle = this.hooks.find(here);
+    this.handle = this.hooks.find(here, e);
     return Boolean(this.handle);
   }
 
@@ -24,7 +24,7 @@ export class Grab extends Tool {
 
   end(to, gesture, e) {
     if (gesture.moved) this.hooks.drop(this.handle, to, e);
-    else this.hooks.chosen?.(this.handle);
+    else this.hooks.chosen?.(this.handle, to, e);
   }
 
   cancelled() {

@@ -4,6 +4,7 @@ import { endStrokes, path, strokes, thin } from "../geometry/polyline.js";
 import { plain } from "../geometry/number.js";
 import { axisIds } from "../geometry/panelmap.js";
 import { placeMark, s } from "./dom.js";
+import { drawVeil } from "./veil.js";
 
 export const RESIDUAL_TIMES = 20;
 
@@ -72,36 +73,105 @@ function drawMarks(svg, view, scene) {
 }
 
 function drawTrace(svg, view, item, scene) {
-  const shown = item.pixels.length ? thin(item.pixels.map((p) => toScreen(view, p)), 1.5) : [];
+  const marks = item.curve.kind === "points";
+  const shown = item.pixels.length && !marks ? thin(item.pixels.map((p) => toScreen(view, p)), 1.5) : [];
   const chosen = scene.selected === item.id;
   const g = s("g", { "data-curve": item.id });
   svg.append(g);
+  if (marks && item.pixels.length) drawPoints(g, view, item);
   if (shown.length > 1) {
     const preview = !item.kept || item.stale;
     line(g, path(shown) + (item.curve.closed ? "Z" : ""), `k-trace ${preview ? "preview" : ""}`, chosen ? 2.4 : 1.7);
     if (item.kept && !item.curve.closed) for (const e of endStrokes(shown)) line(g, path(e), "k-trace", 1.7);
+    drawLocks(g, view, item, scene);
     if (item.kept && item.label) {
       const end = item.contour ? shown.reduce((a, b) => (b[1] < a[1] ? b : a)) : shown.reduce((a, b) => (b[0] > a[0] ? b : a));
       text(g, item.contour ? end[0] : end[0] + 7, item.contour ? end[1] - 7 : end[1] + 4, item.label, item.wrong ? "finding" : "trace", item.contour ? { "text-anchor": "middle" } : {});
     }
-  } else if (item.curve.clicks?.length > 1 && (item.failed || !item.result)) {
+  } else if (!marks && item.curve.clicks?.length > 1 && (item.failed || !item.result)) {
     const pts = item.curve.clicks.map((p) => toScreen(view, p));
     line(g, path(pts), item.failed ? "k-finding" : "k-construct", 1.2);
     g.lastChild.setAttribute("stroke-dasharray", "2 4");
   }
+  const is = (part, i, of) => of?.curve === item.id && of.part === part && of.index === i;
   if (chosen || !item.kept || item.failed) {
     (item.curve.clicks ?? []).forEach((p, i) => {
       const [x, y] = toScreen(view, p);
-      const held = scene.grabbed?.curve === item.id && scene.grabbed.index === i;
       g.append(s("rect", { x: x - 5.6, y: y - 5.6, width: 11.2, height: 11.2, class: "casing", "stroke-width": 2.6 }));
-      g.append(s("rect", { x: x - 4.5, y: y - 4.5, width: 9, height: 9, fill: held ? "var(--construct)" : "var(--sheet)", stroke: "var(--construct)", "stroke-width": 1.8 }));
-      if (scene.focused?.curve === item.id && scene.focused.index === i) g.append(s("rect", { x: x - 9, y: y - 9, width: 18, height: 18, class: "k-ink", "stroke-width": 2 }));
+      g.append(s("rect", { x: x - 4.5, y: y - 4.5, width: 9, height: 9, fill: is("clicks", i, scene.grabbed) ? "var(--construct)" : "var(--sheet)", stroke: "var(--construct)", "stroke-width": 1.8, "data-part": "click" }));
+      if (is("clicks", i, scene.focused)) g.append(focusBox([x, y], 9));
     });
-    if (item.result?.hint_click) {
-      const [x, y] = toScreen(view, item.result.hint_click);
-      g.append(s("circle", { cx: x, cy: y, r: 7, class: "k-construct", "stroke-width": 1.6, "stroke-dasharray": "3 2" }));
-    }
   }
+  if (scene.step === "curves") {
+    (item.curve.guides ?? []).forEach((p, i) => {
+      const at = toScreen(view, p);
+      drawGuide(g, at, is("guides", i, scene.grabbed), chosen || !item.kept);
+      if (is("guides", i, scene.focused)) g.append(focusBox(at, 10));
+    });
+    if (item.result?.hint_click) drawHint(g, toScreen(view, item.result.hint_click), scene.focused?.kind === "hint" && scene.focused.curve === item.id);
+  }
+}
+
+const focusBox = ([x, y], half) => s("rect", { x: x - half, y: y - half, width: 2 * half, height: 2 * half, class: "k-ink", "stroke-width": 2 });
+
+/** A guide is a round handle with a cross in it; a click is a square one. */
+function drawGuide(g, [x, y], held, full) {
+  const r = full ? 6 : 4.5;
+  g.append(s("circle", { cx: x, cy: y, r: r + 1, class: "casing", "stroke-width": 2.6 }), s("circle", { cx: x, cy: y, r, fill: held ? "var(--construct)" : "var(--sheet)", stroke: "var(--construct)", "stroke-width": 1.8, "data-part": "guide" }));
+  g.append(s("path", { d: `M${x - r} ${y}H${x + r}M${x} ${y - r}V${y + r}`, stroke: held ? "var(--sheet)" : "var(--construct)", "stroke-width": 1.3 }));
+}
+
+/** Where one more click would settle a doubt: a dashed ring with its words. */
+function drawHint(g, [x, y], focused) {
+  g.append(s("circle", { cx: x, cy: y, r: 12, class: "casing", "stroke-width": 5 }), s("circle", { cx: x, cy: y, r: 12, class: "k-finding hint-ring", "stroke-width": 2, "stroke-dasharray": "5 3" }), s("circle", { cx: x, cy: y, r: 1.6, fill: "var(--finding)" }));
+  text(g, x + 17, y - 9, "one click here would settle it", "finding");
+  if (focused) g.append(focusBox([x, y], 17));
+}
+
+/** Test points: a cross where the symbol's middle was found, joined to the click that pointed at it. */
+function drawPoints(g, view, item) {
+  item.pixels.forEach((p, i) => {
+    const at = toScreen(view, p);
+    const click = item.curve.clicks?.[i];
+    if (click) line(g, path([toScreen(view, click), at]), "k-construct", 1);
+    const [x, y] = at;
+    line(g, `M${x - 7} ${y - 7}l14 14M${x - 7} ${y + 7}l14 -14`, "k-trace", 1.6);
+  });
+  if (item.kept && item.label) {
+    const end = item.pixels.map((p) => toScreen(view, p)).reduce((a, b) => (b[0] > a[0] ? b : a));
+    text(g, end[0] + 10, end[1] + 4, item.label, "trace");
+  }
+}
+
+/** Locked stretches: a heavier line with square ends and a padlock at the middle. */
+function drawLocks(g, view, item, scene) {
+  (item.curve.locked ?? []).forEach((lock, index) => {
+    const pts = thin(lock.pixels.map((p) => toScreen(view, p)), 1.5);
+    line(g, path(pts), "k-trace", 2.8);
+    for (const [x, y] of [pts[0], pts[pts.length - 1]]) g.append(s("rect", { x: x - 4, y: y - 4, width: 8, height: 8, fill: "var(--trace)", stroke: "var(--casing)", "stroke-width": 1.2 }));
+    const [x, y] = pts[Math.floor(pts.length / 2)];
+    g.append(padlock(x, y - 13));
+    if (scene.focused?.kind === "lock" && scene.focused.curve === item.id && scene.focused.index === index) g.append(focusBox([x, y - 12], 12));
+  });
+}
+
+function padlock(x, y) {
+  return s("g", { "data-part": "lock" }, s("path", { d: `M${x - 3.4} ${y - 1}v-3.4a3.4 3.4 0 0 1 6.8 0v3.4`, class: "casing", "stroke-width": 4.4 }), s("path", { d: `M${x - 3.4} ${y - 1}v-3.4a3.4 3.4 0 0 1 6.8 0v3.4`, fill: "none", stroke: "var(--trace)", "stroke-width": 1.8 }),
+    s("rect", { x: x - 5.5, y: y - 1, width: 11, height: 8.5, fill: "var(--trace)", stroke: "var(--casing)", "stroke-width": 1.2 }));
+}
+
+/** Ends of a stretch that is being locked. */
+function drawLocking(svg, view, scene) {
+  const item = scene.locking && scene.curves.find((c) => c.id === scene.locking.curve);
+  if (!item?.pixels.length || scene.locking.from === null) return;
+  const [x, y] = toScreen(view, item.pixels[Math.round(scene.locking.from)]);
+  svg.append(s("rect", { x: x - 5, y: y - 5, width: 10, height: 10, fill: "var(--trace)", stroke: "var(--casing)", "stroke-width": 1.4 }));
+}
+
+/** The printed lines that were found, over the paper. */
+function drawFound(svg, view, found) {
+  const d = [...found.level, ...found.upright].map((l) => path(l.points.map((p) => toScreen(view, p)))).join("");
+  svg.append(s("path", { d, class: "casing", "stroke-width": 2.6 }), s("path", { d, class: "k-construct found", "stroke-width": 1 }));
 }
 
 function drawGhosts(svg, view, scene) {
@@ -143,9 +213,12 @@ export function drawPlaces(svg, places, map) {
 export function drawOverlay(svg, view, scene) {
   svg.replaceChildren();
   if (scene.bare) return;
+  drawVeil(svg, view, scene.veil);
+  if (scene.found) drawFound(svg, view, scene.found);
   drawPanels(svg, view, scene);
   if (scene.showGhosts) drawGhosts(svg, view, scene);
   for (const item of scene.curves) drawTrace(svg, view, item, scene);
+  drawLocking(svg, view, scene);
   drawMarks(svg, view, scene);
   drawPlaces(svg, scene.places, (p) => toScreen(view, p));
 }
