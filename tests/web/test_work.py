@@ -50,6 +50,26 @@ class TestPreview:
         seen = self.look(client, ready, None, axes=axes).json
         assert any(s["axis"] == "head" for s in seen["panel"]["suspects"])
 
+    def test_a_mask_hides_what_it_covers_and_says_so(self, client, ready):
+        line = ready["doc"]["curves"][1]
+        body = {"panel": ready["doc"]["panels"][0], "curve": line, "masks": [{"brush": [line["clicks"][1]], "width_px": 30}]}
+        seen = client.post(f"/api/drafts/{ready['id']}/preview", json=body).json["curve"]
+        assert seen["error"] is None and "mask-over-click" in [w["code"] for w in seen["warnings"]]
+
+    def test_a_mask_that_is_none_is_a_problem_with_its_path(self, client, ready, is_problem):
+        body = {"panel": ready["doc"]["panels"][0], "masks": [{"brush": [], "width_px": 30}]}
+        answer = client.post(f"/api/drafts/{ready['id']}/preview", json=body)
+        assert is_problem(answer, 422, answer.json["code"])["path"].startswith("$.sheet.masks[0]")
+
+    def test_the_printed_lines_found_stand_where_they_were_drawn(self, client, ready):
+        """The chart's grid: eleven lines each way, 70 px and 54 px apart."""
+        found = client.get(f"/api/drafts/{ready['id']}/lines").json
+        heights = sorted(np.mean([p[1] for p in line["points"]]) for line in found["level"])
+        places = sorted(np.mean([p[0] for p in line["points"]]) for line in found["upright"])
+        assert len(heights) == 11 and np.allclose(heights, 60 + 54 * np.arange(11), atol=0.1)
+        assert len(places) == 11 and np.allclose(places, 100 + 70 * np.arange(11), atol=0.1)
+        assert all(line["sigma_px"] < 0.2 for line in found["level"] + found["upright"])
+
     def test_what_cannot_be_calibrated_is_a_problem_with_its_path(self, client, ready, is_problem):
         axes = json.loads(json.dumps(ready["doc"]["panels"][0]["axes"]))
         axes["head"]["marks"] = axes["head"]["marks"][:1]

@@ -28,7 +28,7 @@ export class DeskTools {
     const at = (e) => this.at(e);
     const view = { view: () => desk.view, setView: (v) => { desk.view = v; desk.moved = true; invalidate("view"); } };
     this.navigate = new Navigate(paper, at, { ...view, spaceHeld: () => this.space, stopOthers: () => this.cancel(), wheel: (e) => this.#wheel(e) }).enable();
-    this.grab = new Grab(paper, at, { find: (p, e) => (desk.masks?.on || this.box.enabled ? null : findHandle(desk, p, e.shiftKey)), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: () => this.drop(), chosen: (hd, p, e) => this.chosen(hd, p, e), back: () => this.back() }).enable();
+    this.grab = new Grab(paper, at, { find: (p, e) => (desk.masks?.on || this.box.enabled ? null : findHandle(desk, p, e.shiftKey)), choose: (hd) => this.choose(hd), drag: (hd, p, e) => this.drag(hd, p, e), drop: (hd) => this.drop(hd), chosen: (hd, p, e) => this.chosen(hd, p, e), back: () => this.back() }).enable();
     this.box = new Box(paper, at, { show: (o) => { desk.box = o; invalidate("paper"); }, done: (o) => this.addPanel(o) });
     this.place = new Place(paper, at, { ...view, place: (p, e) => this.click(p, e), magnify: (screen) => this.#magnify(screen), aim: (screen) => this.#aim(screen) });
     this.edge = new Straightedge([paper, $("replot")], { moved: (m) => this.moved(m), left: () => this.left() }).enable();

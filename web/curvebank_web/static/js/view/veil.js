@@ -5,39 +5,41 @@ import { s } from "./dom.js";
 
 let made = 0;
 
-function hatch(id) {
-  return s("pattern", { id, width: 7, height: 7, patternUnits: "userSpaceOnUse", patternTransform: "rotate(45)" },
-    s("rect", { width: 7, height: 7, fill: "var(--sheet)", "fill-opacity": 0.62 }), s("line", { x1: 0, x2: 0, y1: 0, y2: 7, stroke: "var(--ink-2)", "stroke-width": 2.6 }));
-}
+const hatch = (id) => s("pattern", { id, width: 7, height: 7, patternUnits: "userSpaceOnUse", patternTransform: "rotate(45)" }, s("line", { x1: 0, x2: 0, y1: 0, y2: 7, stroke: "var(--ink-2)", "stroke-width": 3 }));
 
-function shape(mask, view, paint) {
+/** The area of a mask in one paint; `more` widens it on all sides. */
+function shape(mask, view, paint, more = 0) {
   const pts = (mask.brush ?? mask.outline).map((p) => toScreen(view, p));
-  if (mask.outline) return s("path", { d: `${path(pts)}Z`, fill: paint, stroke: "var(--ink-2)", "stroke-width": 1 });
+  if (mask.outline) return s("path", { d: `${path(pts)}Z`, fill: paint, stroke: paint, "stroke-width": 2 * more, "stroke-linejoin": "round" });
   const d = pts.length === 1 ? `M${pts[0][0]} ${pts[0][1]}h0.01` : path(pts);
-  return s("path", { d, fill: "none", stroke: paint, "stroke-width": Math.max(1, mask.width_px * view.scale), "stroke-linecap": "round", "stroke-linejoin": "round" });
+  return s("path", { d, fill: "none", stroke: paint, "stroke-width": Math.max(1, mask.width_px * view.scale) + 2 * more, "stroke-linecap": "round", "stroke-linejoin": "round" });
 }
 
 /** masks of the sheet; `chosen` is an index to point out, `numbered` writes each one's number, `stroke` is the one under the brush. */
 export function drawVeil(svg, view, { masks, chosen = null, numbered = false, stroke = null, erasing = false }) {
-  if (!masks.length && !stroke) return;
+  const list = stroke && !erasing ? [...masks, stroke] : masks;
+  if (!list.length && !stroke) return;
   const id = `veil-${++made}`;
-  const g = s("g", { class: "veil" }, s("defs", {}, hatch(id)));
-  masks.forEach((mask, i) => {
+  const g = s("g", { class: "veil", opacity: 0.8 }, s("defs", {}, hatch(id)));
+  // All rims first, then all grounds: overlapping strokes read as one area.
+  for (const mask of list) g.append(shape(mask, view, "var(--ink-2)", 1.3));
+  for (const mask of list) g.append(shape(mask, view, "var(--sheet)"));
+  list.forEach((mask, i) => {
     const m = shape(mask, view, `url(#${id})`);
     m.setAttribute("data-mask", i);
     g.append(m);
   });
-  if (stroke) g.append(erasing ? shape(stroke, view, "var(--casing)") : shape(stroke, view, `url(#${id})`));
-  if (numbered) {
-    masks.forEach((mask, i) => {
-      const points = mask.brush ?? mask.outline;
-      const [x, y] = toScreen(view, points[Math.floor(points.length / 2)]);
-      const on = i === chosen;
-      g.append(s("rect", { x: x - 10, y: y - 9, width: 20, height: 18, fill: on ? "var(--ink)" : "var(--sheet)", stroke: "var(--ink)", "stroke-width": on ? 2 : 1 }),
-        s("text", { x, y: y + 4.5, "text-anchor": "middle", style: { fill: on ? "var(--sheet)" : "var(--ink)", font: "700 12px var(--text)" } }, String(i + 1)));
-    });
-  }
+  if (stroke && erasing) g.append(shape(stroke, view, "var(--casing)"));
   svg.append(g);
+  if (numbered) masks.forEach((mask, i) => svg.append(number(mask, view, i, i === chosen)));
+}
+
+/** A mask's number beside where it begins. */
+function number(mask, view, index, on) {
+  const [x, y] = toScreen(view, (mask.brush ?? mask.outline)[0]);
+  const up = y - (mask.width_px ?? 0) * view.scale * 0.5 - 12;
+  return s("g", {}, s("rect", { x: x - 9, y: up - 8.5, width: 18, height: 17, fill: on ? "var(--ink)" : "var(--sheet)", stroke: "var(--ink)", "stroke-width": on ? 2 : 1 }),
+    s("text", { x, y: up + 4.2, "text-anchor": "middle", style: { fill: on ? "var(--sheet)" : "var(--ink)", font: "700 12px var(--text)" } }, String(index + 1)));
 }
 
 /** The round edge of the brush at the pointer. */

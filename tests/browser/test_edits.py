@@ -1,0 +1,150 @@
+"""Edits on the paper: masks, guides dragged from a trace, locked stretches, the one click that settles a doubt; by mouse and keyboard."""
+
+import json
+import urllib.request
+
+import chart
+import pytest
+from axe_playwright_python.sync_playwright import Axe
+
+pytestmark = pytest.mark.browser
+
+
+def axe_is_content(page):
+    found = Axe().run(page, options={"runOnly": ["wcag2a", "wcag2aa", "wcag21a", "wcag21aa", "wcag22aa", "best-practice"]})
+    assert [f"{v['id']}: {[n['html'][:120] for n in v['nodes'][:3]]}" for v in found.response["violations"]] == []
+
+
+def ask(server, path, body=None):
+    data = None if body is None else json.dumps(body).encode()
+    request = urllib.request.Request(server.address + path, data=data, headers={"Content-Type": "application/json"})
+    with urllib.request.urlopen(request) as answer:
+        return json.load(answer)
+
+
+def lay(server, data, doc):
+    """A draft with a whole recipe on an uploaded sheet; its id."""
+    edge = b'--edge\r\nContent-Disposition: form-data; name="file"; filename="chart.png"\r\nContent-Type: image/png\r\n\r\n'
+    request = urllib.request.Request(
+        f"{server.address}/api/sheets",
+        data=edge + data + b"\r\n--edge--\r\n",
+        headers={"Content-Type": "multipart/form-data; boundary=edge"},
+    )
+    with urllib.request.urlopen(request) as answer:
+        sha = json.load(answer)["sha256"]
+    return ask(server, "/api/drafts", {"doc": doc, "sheet_sha256": sha})["id"]
+
+
+@pytest.fixture
+def traced(desk, server, chart_png, chart_recipe):
+    """A window on a draft with three traced curves; the draft's id."""
+    draft = lay(server, chart_png, chart_recipe)
+    desk.page.goto(f"{server.address}/desk/{draft}#curves")
+    desk.page.wait_for_selector("#over [data-curve='H-290'] path.k-trace:not(.preview)")
+    desk.page.wait_for_selector("#over [data-curve='H-320'] path.k-trace:not(.preview)")
+    return draft
+
+
+def place(name, i, off=0.0):
+    flow, share = chart.LINES[name]
+    return chart.to_px(flow[i], share(flow[i]) + off)
+
+
+def doc_of(server, desk, draft):
+    desk.kept()
+    return ask(server, f"/api/drafts/{draft}")["doc"]
+
+
+def drag(desk, *places):
+    page = desk.page
+    page.mouse.move(*desk.screen(places[0]))
+    page.mouse.down()
+    for p in places[1:]:
+        page.mouse.move(*desk.screen(p), steps=4)
+    page.mouse.up()
+
+
+def test_a_guide_is_drawn_from_the_trace_moved_and_taken_away(desk, server, traced):
+    page = desk.page
+    drag(desk, place("H-320", 150), place("H-320", 150, 0.012))
+    page.wait_for_selector("#slip >> text=This is the first guide of")
+    curve = doc_of(server, desk, traced)["curves"][0]
+    assert curve["guides"] == [pytest.approx(list(place("H-320", 150, 0.012)), abs=1.5)]
+    assert curve["clicks"] == [list(c) for c in curve["clicks"]] and len(curve["clicks"]) == 3
+    shapes = page.locator("#over [data-curve='H-320'] [data-part]").evaluate_all("marks => marks.map(m => [m.tagName, m.dataset.part])")
+    assert ["circle", "guide"] in shapes and ["rect", "click"] in shapes
+    page.locator("#paper").focus()
+    page.keyboard.press("Shift+ArrowUp")
+    page.wait_for_function("() => !document.querySelector(\"#over [data-curve='H-320'] path.preview\")")
+    moved = doc_of(server, desk, traced)["curves"][0]["guides"][0]
+    assert moved[1] == pytest.approx(curve["guides"][0][1] - 1.0, abs=0.05)
+    axe_is_content(page)
+    page.click("#slip button:has-text('Remove the guide')")
+    assert "guides" not in doc_of(server, desk, traced)["curves"][0]
+    page.locator("#paper").focus()
+    page.keyboard.press("u")
+    assert doc_of(server, desk, traced)["curves"][0]["guides"] == [moved]
+
+
+def test_a_stretch_is_locked_and_unlocked(desk, server, traced):
+    """Two points on the trace lock what lies between; the padlock is drawn; dragging there is refused; the key unlocks."""
+    page = desk.page
+    desk.click(place("H-320", 200))
+    page.click("#slip button:has-text('Lock a stretch')")
+    desk.click(place("H-320", 220))
+    page.wait_for_selector("#slip >> text=Now click where it ends")
+    desk.click(place("H-320", 330))
+    page.wait_for_selector("#over [data-part=lock]")
+    (lock,) = doc_of(server, desk, traced)["curves"][0]["locked"]
+    assert lock["pixels"][0] == pytest.approx(list(place("H-320", 220)), abs=2)
+    assert lock["pixels"][-1] == pytest.approx(list(place("H-320", 330)), abs=2)
+    assert 0 < lock["sigma_px"] < 1
+    drag(desk, place("H-320", 280), place("H-320", 280, 0.05))
+    assert "guides" not in doc_of(server, desk, traced)["curves"][0]
+    page.mouse.move(*desk.screen(place("H-320", 280)))
+    page.locator("#paper").focus()
+    page.keyboard.press("l")
+    page.wait_for_selector("#over [data-part=lock]", state="detached")
+    assert "locked" not in doc_of(server, desk, traced)["curves"][0]
+
+
+def test_masks_are_brushed_listed_erased_and_undone(desk, server, traced):
+    """A mask over a click is said at its place; the eraser takes it away there; undo brings it back."""
+    page = desk.page
+    page.locator("#paper").focus()
+    page.keyboard.press("x")
+    page.wait_for_selector("#slip [name=brush]")
+    before = float(page.input_value("#slip [name=width]"))
+    page.keyboard.press("]")
+    width = float(page.input_value("#slip [name=width]"))
+    assert width > before
+    at = place("H-320", 200)
+    drag(desk, at + [-40, 0], at, at + [40, 0])
+    page.wait_for_selector("#over [data-mask]", state="attached")
+    (mask,) = doc_of(server, desk, traced)["sheet"]["masks"]
+    assert mask["width_px"] == width and mask["brush"][0] == pytest.approx(list(at + [-40, 0]), abs=1.5)
+    page.wait_for_selector("#findings >> text=A mask lies over the second click of Ø 320")
+    page.wait_for_function("() => !document.querySelector(\"#over [data-curve='H-320'] path.preview\")")
+    axe_is_content(page)
+    page.select_option("#slip [name=brush]", "erase")
+    page.locator("#paper").focus()
+    drag(desk, at + [0, -30], at + [0, 30])
+    page.wait_for_function("() => document.querySelectorAll('#over [data-mask]').length === 2")
+    page.wait_for_selector("#findings >> text=A mask lies over", state="detached")
+    page.keyboard.press("u")
+    page.wait_for_function("() => document.querySelectorAll('#over [data-mask]').length === 1")
+    page.click("#beside button:has-text('remove')")
+    page.wait_for_selector("#over [data-mask]", state="detached")
+    assert "masks" not in doc_of(server, desk, traced)["sheet"]
+    page.mouse.move(*desk.screen(at + [0, 60]))
+    page.locator("#paper").focus()
+    page.keyboard.press("e")
+    page.wait_for_selector("#slip >> text=stamps, notes and stains")
+    page.keyboard.press("p")
+    for _ in range(4):
+        page.keyboard.press("ArrowRight")
+    page.keyboard.press("p")
+    page.wait_for_selector("#over [data-mask]", state="attached")
+    page.keyboard.press("Escape")
+    page.wait_for_selector("#slip [name=brush]", state="detached")
+    assert len(doc_of(server, desk, traced)["sheet"]["masks"]) == 1
