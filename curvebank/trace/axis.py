@@ -1,6 +1,6 @@
 """A smooth axis in the plane with arc length and normals: what bands are laid along."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.interpolate import CubicSpline
@@ -19,6 +19,10 @@ class Axis:
     s: FloatArray
     tangents: FloatArray
     closed: bool
+    table: FloatArray = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "table", np.concatenate([self.points, self.tangents], axis=1))
 
     @property
     def length(self) -> float:
@@ -37,16 +41,24 @@ class Axis:
         # Samples are even in arc length, so the cell is found by division.
         u = t * ((len(self.s) - 1) / self.length)
         cell = np.minimum(u.astype(np.int64), len(self.s) - 2)
-        table = np.concatenate([self.points, self.tangents], axis=1)
-        out = np.take(np.diff(table, axis=0), cell, axis=0)
-        out *= (u - cell)[:, None]
-        out += np.take(table, cell, axis=0)
+        out = np.take(self.table, cell, axis=0)
+        step = np.take(self.table, cell + 1, axis=0)
+        step -= out
+        step *= (u - cell)[:, None]
+        out += step
         if not self.closed:
             beyond = s - t
             if beyond.any():
                 out[:, :2] += beyond[:, None] * out[:, 2:]
         # Between neighbouring unit tangents the length is 1 to second order in their tiny angle.
         return out[:, :2], np.stack([-out[:, 3], out[:, 2]], axis=1)
+
+    def curvature_at(self, s: FloatArray) -> FloatArray:
+        """Signed curvature [1/px] at arc lengths ``s``, positive where the axis bends towards its normal."""
+        a, b = self.tangents[:-1], self.tangents[1:]
+        bend = (a[:, 0] * b[:, 1] - a[:, 1] * b[:, 0]) * ((len(self.s) - 1) / self.length)
+        cell = (np.asarray(s) * ((len(self.s) - 1) / self.length)).astype(np.int64)
+        return bend[np.clip(cell, 0, len(bend) - 1)]
 
     def arc_of(self, xy: FloatArray) -> FloatArray:
         """Arc length of the nearest axis sample to each point [n, 2]."""
@@ -63,17 +75,21 @@ class Axis:
 
 def from_polyline(points: FloatArray, closed: bool, step: float = 1.0) -> Axis:
     """An axis through dense points, resampled about ``step`` px apart."""
-    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(points, axis=0).T))]
+    x, y = np.ascontiguousarray(points[:, 0]), np.ascontiguousarray(points[:, 1])
+    s = np.zeros(len(x))
+    np.cumsum(np.hypot(x[1:] - x[:-1], y[1:] - y[:-1]), out=s[1:])
     count = max(int(round(s[-1] / step)), 8)
     at = np.linspace(0.0, s[-1], count + 1)
-    xy = np.stack([np.interp(at, s, points[:, k]) for k in (0, 1)], axis=1)
-    if closed:
-        ring = xy[:-1]
-        tangents = np.roll(ring, -1, axis=0) - np.roll(ring, 1, axis=0)
-        tangents = np.vstack([tangents, tangents[:1]])
-    else:
-        tangents = np.gradient(xy, axis=0, edge_order=2)
-    tangents /= np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+    xy, tangents = np.empty((count + 1, 2)), np.empty((count + 1, 2))
+    for k, values in enumerate((x, y)):
+        xy[:, k] = even = np.interp(at, s, values)
+        tangents[1:-1, k] = even[2:] - even[:-2]
+        if closed:
+            tangents[[0, -1], k] = even[1] - even[-2]
+        else:
+            tangents[0, k] = -3 * even[0] + 4 * even[1] - even[2]
+            tangents[-1, k] = 3 * even[-1] - 4 * even[-2] + even[-3]
+    tangents /= np.maximum(np.hypot(tangents[:, 0], tangents[:, 1]), 1e-12)[:, None]
     return Axis(xy, at, tangents, closed)
 
 

@@ -11,24 +11,29 @@ Floats32 = npt.NDArray[np.float32]
 
 
 def sample(image: npt.NDArray[np.uint8], axis: Axis, s: FloatArray, offsets: FloatArray, shrink: float) -> Floats32:
-    """Ink 0..1 [rows, offsets] at arc lengths ``s`` and ``offsets`` [px] across, from the image averaged down by ``shrink``."""
+    """Ink 0..1 [rows, offsets] at arc lengths ``s`` and ``offsets`` [px] across, from the image averaged down by about ``shrink``."""
     xy, normal = axis.at(s)
-    x = xy[:, :1] + normal[:, :1] * offsets[None, :]
-    y = xy[:, 1:] + normal[:, 1:] * offsets[None, :]
     height, width = image.shape
-    pad = 4
-    x0, x1 = int(np.clip(x.min() - pad, 0, width - 2)), int(np.clip(x.max() + pad + 1, 2, width))
-    y0, y1 = int(np.clip(y.min() - pad, 0, height - 2)), int(np.clip(y.max() + pad + 1, 2, height))
-    part = image[y0:y1, x0:x1]
-    kx = ky = 1.0
-    if shrink > 1.01:
-        w, h = max(int(round((x1 - x0) / shrink)), 1), max(int(round((y1 - y0) / shrink)), 1)
-        kx, ky = w / (x1 - x0), h / (y1 - y0)
-        part = np.asarray(cv2.resize(part, (w, h), interpolation=cv2.INTER_AREA), dtype=np.uint8)
-    mx = ((x - x0 + 0.5) * kx - 0.5).astype(np.float32)
-    my = ((y - y0 + 0.5) * ky - 0.5).astype(np.float32)
+    reach = max(abs(float(offsets[0])), abs(float(offsets[-1]))) + 4.0
+    x0, y0 = (max(int(v - reach), 0) for v in xy.min(axis=0))
+    x1, y1 = (int(v + reach) + 2 for v in xy.max(axis=0))
+    x0, y0 = min(x0, width - 2), min(y0, height - 2)
+    x1, y1 = min(max(x1, x0 + 2), width), min(max(y1, y0 + 2), height)
+    k = max(int(round(shrink)), 1)
+    if k > 1:
+        # Whole cells of k x k pixels: averaging is fastest there, and every cell means the same.
+        x1, y1 = (b - (b - a) % k if b - a >= k else b for a, b in ((x0, x1), (y0, y1)))
+        part = image[y0:y1, x0:x1]
+        size = (max((x1 - x0) // k, 1), max((y1 - y0) // k, 1))
+        part = np.asarray(cv2.resize(part, size, interpolation=cv2.INTER_AREA), dtype=np.uint8)
+    else:
+        part = image[y0:y1, x0:x1]
+    start = ((xy - (x0, y0) + 0.5) / k - 0.5).astype(np.float32)
+    step, across = (normal / k).astype(np.float32), offsets.astype(np.float32)
+    mx = start[:, :1] + step[:, :1] * across
+    my = start[:, 1:] + step[:, 1:] * across
     out = cv2.remap(part, mx, my, cv2.INTER_LINEAR, borderMode=cv2.BORDER_CONSTANT, borderValue=0)
-    return out.astype(np.float32) * np.float32(1 / 255)
+    return out * np.float32(1 / 255)
 
 
 def ridge(band: Floats32, flank: int, cap: float) -> Floats32:

@@ -17,7 +17,7 @@ from scipy.linalg import lapack
 from ..records import FloatArray
 
 LEAST, MOST = -6.0, 12.0
-COARSE = tuple(np.arange(LEAST, MOST + 0.1, 2.0).tolist())
+COARSE = (-6.0, -3.0, 0.0, 3.0, 6.0, 9.0, 12.0)
 """Decades of smoothness looked at first, against the scale at which penalty and data weigh the same."""
 BAND = 4
 
@@ -144,7 +144,8 @@ class Design:
     def system(self, y: FloatArray, w: FloatArray) -> "System":
         """Normal equations of readings [n, d] with weights [n]."""
         size, wide = self.size, self.size + 3
-        band: FloatArray = np.bincount(self.pair_bins, (self.products * w).ravel(), BAND * wide).reshape(BAND, wide)
+        counted = np.bincount(self.pair_bins, (self.products * w).ravel(), BAND * wide)
+        band = counted.reshape(BAND, wide).astype(np.float64, copy=False)
         weighted = self.parts * w
         right: FloatArray = np.stack([np.bincount(self.bins, (weighted * column).ravel(), wide) for column in y.T], axis=1)
         if self.periodic:
@@ -279,7 +280,9 @@ def _solve(design: Design, y: FloatArray, w: FloatArray, correlation: float, nea
     null = 1 if design.periodic else 3
     # What passes free is taken out first and put back exactly: neither page coordinates nor steep lines swamp the residuals.
     weighted = design.free * w[:, None]
-    plain = np.linalg.lstsq(weighted.T @ design.free, weighted.T @ y, rcond=1e-12)[0]
+    square = weighted.T @ design.free
+    square[np.diag_indices(len(square))] += 1e-12 * max(float(square[0, 0]), 1e-300)
+    plain = np.linalg.solve(square, weighted.T @ y)
     y = y - design.free @ plain
     system = design.system(y, w)
     rank = design.size - null
@@ -299,7 +302,7 @@ def _solve(design: Design, y: FloatArray, w: FloatArray, correlation: float, nea
         return kept[decade][0]
 
     best = min(COARSE, key=score) if near is None else near
-    step = 1.0 if near is None else 0.5
+    step = 2.0 if near is None else 0.5
     while step >= 0.5:
         lower = [d for d in (best - step, best + step) if LEAST <= d <= MOST and score(d) < score(best)]
         if lower:
