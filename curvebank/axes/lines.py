@@ -1,8 +1,9 @@
 """The middle of printed lines, measured anew inside the panel: the track found on the sheet is only a guide.
 
-Each pixel near the guide keeps its own place; nothing is resampled. In a stretch along the line a Gaussian cross profile of the line's
-width is moved, scaled and lifted until it fits (Gauss-Newton with robust weights, all stretches of all lines at once), so a curve or a
-label that crosses the stretch counts little and each stretch has its own uncertainty.
+Each pixel near the guide keeps its own place; nothing is resampled. In a stretch along the line the middle is the centroid of the ink
+under a Gaussian window that follows it: for ink gathered over whole pixels that is free of bias whatever the line's profile, where a
+profile fitted to a line narrower than two pixels is drawn towards whole pixels. A curve or a label that crosses a stretch differs from the
+median along it and is left out.
 """
 
 from dataclasses import dataclass
@@ -16,7 +17,7 @@ PLACES = 20
 ALONG_PX = 10
 """A stretch reaches this many pixels to either side."""
 ACROSS_PX = 5
-ROUNDS = 5
+ROUNDS = 6
 LEAST_SIGNIFICANCE = 3.0
 """Height of a stretch's line over its uncertainty below which it is not believed."""
 LEAST_SHARE = 0.4
@@ -95,16 +96,17 @@ def _measure_lying(
         x[k] = middle[:, None] + offsets
         y[k] = np.interp(x[k], g[:, 0], g[:, 1])
         slope[k] = (g[-1, 1] - g[0, 1]) / max(g[-1, 0] - g[0, 0], 1.0)
-    across = np.arange(-ACROSS_PX, ACROSS_PX + 1)
+    half_rows = int(np.ceil(max(ACROSS_PX, reach_px + 1.2 * min(max(widths_px), 12.0) + 1.0)))
+    across = np.arange(-half_rows, half_rows + 1)
     row = np.rint(y)[..., None] + across
     column = np.broadcast_to(x[..., None], row.shape)
     known = (row >= 0) & (row < height) & (column >= 0) & (column < width)
     at = (np.clip(row, 0, height - 1).astype(np.intp), np.clip(column, 0, width - 1).astype(np.intp))
-    lean = 1.0 / np.hypot(1.0, slope)[..., None]
-    d = ((row - y[..., None]) * lean).reshape(len(guides), places, -1)
+    lean = 1.0 / np.hypot(1.0, slope)
+    d = ((row - y[..., None]) * lean[..., None]).astype(np.float32)
     if hidden is not None:
         known &= ~hidden[at]
-    shift, sigma, level = _fitted(d, page[at].reshape(d.shape).astype(np.float64), known.reshape(d.shape), widths_px, reach_px)
+    shift, sigma, level = _centred(d, page[at].astype(np.float32), known, widths_px, reach_px)
     out = []
     for k in range(len(guides)):
         good = np.isfinite(sigma[k]) & (np.abs(shift[k]) < reach_px)
@@ -114,61 +116,43 @@ def _measure_lying(
             out.append(NOTHING)
             continue
         middle_at = slice(middle_of, middle_of + 1)
-        normal = np.stack([-slope[k, :, 0], np.ones(places)], -1) * lean[k, :, 0]
+        normal = np.stack([-slope[k, :, 0], np.ones(places)], -1) * lean[k, :, 0, None]
         points = np.stack([x[k, :, middle_at][:, 0], y[k, :, middle_at][:, 0]], -1) + shift[k][:, None] * normal
         out.append(Measured(points[good], sigma[k][good], float(np.median(level[k][good]))))
     return out
 
 
-def _fitted(
+def _centred(
     d: FloatArray, value: FloatArray, known: npt.NDArray[np.bool_], widths_px: list[float], reach_px: float
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Shift, its sigma (inf where nothing is seen) and height of each stretch [lines, places]."""
-    spread = np.sqrt(np.clip(np.array(widths_px), 1.0, 12.0) ** 2 / 12 + 0.45)[:, None]
-    n = d.shape[:2]
-    near = known & (np.abs(d) <= reach_px + 2.2 * spread[..., None] + 1.0)
-    weight = near.astype(np.float64)
-    enough = weight.sum(-1) >= 0.6 * np.maximum((np.abs(d) <= reach_px + 1.0).sum(-1), 1)
-    shift, height, base = _first(d, value, weight, reach_px)
-    # Pixels are few and the same ones throughout: only what can be reached takes part.
-    robust, noise = weight, np.ones(n)
-    information = np.zeros((*n, 3, 3))
-    miss = value
-    for turn in range(ROUNDS):
-        q = (d - shift[..., None]) / spread[..., None]
-        g = np.exp(-0.5 * q * q)
-        miss = value - base[..., None] - height[..., None] * g
-        if turn:
-            noise = np.maximum(1.4826 * np.median(np.where(near, np.abs(miss), 0.0), axis=-1), 1.5)
-            robust = weight * np.maximum(1 - (miss / (4.5 * noise[..., None])) ** 2, 0.0) ** 2
-        rows = np.stack([np.ones_like(g), g, height[..., None] * g * q / spread[..., None]], -2)
-        information = (rows * robust[..., None, :]) @ np.swapaxes(rows, -1, -2) + 1e-6 * np.eye(3)
-        step = np.linalg.solve(information, (rows @ (robust * miss)[..., None]))[..., 0]
-        base, height = base + step[..., 0], np.maximum(height + step[..., 1], 0.5)
-        shift = np.clip(shift + np.clip(step[..., 2], -0.7, 0.7), -reach_px - 0.5, reach_px + 0.5)
-    rms = np.sqrt((robust * miss**2).sum(-1) / np.maximum(robust.sum(-1) - 3, 1.0))
-    covariance = np.linalg.inv(information) * (np.maximum(rms, 0.5 * noise) ** 2 * READINGS_A_STRETCH)[..., None, None]
-    sigma = np.sqrt(covariance[..., 2, 2])
-    seen = enough & (height > LEAST_SIGNIFICANCE * np.sqrt(covariance[..., 1, 1])) & (height > 3.0)
+    """Shift, its sigma (inf where nothing is seen) and height of each stretch [lines, places]; ``d`` [lines, places, along, across]."""
+    spread2 = (np.clip(np.array(widths_px), 1.0, 12.0) ** 2 / 12 + 0.45)[:, None]
+    window2 = 1.7 * spread2 + 0.4
+    place = np.median(d, axis=2)
+    profile = np.median(value, axis=2)
+    noise = np.maximum(1.4826 * np.median(np.abs(value - profile[:, :, None]), axis=(2, 3)), 1.0)
+    base = np.percentile(profile, 25, axis=2)
+    wide = np.pad(profile, ((0, 0), (0, 0), (2, 2)), mode="edge")
+    rows = profile.shape[2]
+    smooth = wide[..., 2 : 2 + rows] + sum(k * wide[..., 2 + j : 2 + j + rows] for j, k in ((-2, 0.25), (-1, 0.7), (1, 0.7), (2, 0.25)))
+    best = np.argmax(np.where(np.abs(place) <= reach_px + 0.5, smooth, -np.inf), axis=2)[..., None]
+    shift = np.take_along_axis(place, best, 2)[..., 0]
+    height = np.maximum(np.max(np.where(np.abs(place - shift[..., None]) <= 1.6, profile, -np.inf), axis=2) - base, 0.5)
+    strange = np.abs(value - profile[:, :, None]) > (0.6 * height + 4 * noise)[..., None, None]
+    weight = (known & ~strange).astype(np.float64)
+    enough = weight.mean(axis=(2, 3)) > 0.5
+    ink = weight * (value - base[..., None, None])
+    gain = 1.0 + spread2 / window2
+    for _ in range(ROUNDS):
+        q = d - shift[..., None, None]
+        g = np.exp(-0.5 * q * q / window2[..., None, None])
+        mass = (ink * g).sum(axis=(2, 3))
+        moment = (ink * g * q).sum(axis=(2, 3))
+        step = gain * moment / np.maximum(mass, 1e-6)
+        shift = np.clip(shift + np.clip(step, -0.8, 0.8), -reach_px - 0.5, reach_px + 0.5)
+    n = np.maximum(weight.sum(axis=(2, 3)), 1.0)
+    significance = mass / (noise * np.sqrt(READINGS_A_STRETCH * np.maximum((weight * g * g).sum(axis=(2, 3)), 1e-9)))
+    scatter = noise * np.sqrt(READINGS_A_STRETCH * (weight * (g * q) ** 2).sum(axis=(2, 3)))
+    sigma = gain * scatter / np.maximum(mass, 1e-6)
+    seen = enough & (significance > LEAST_SIGNIFICANCE) & (height > 3.0) & (n > 20)
     return shift, np.where(seen, sigma, np.inf), height
-
-
-def _first(d: FloatArray, value: FloatArray, weight: FloatArray, reach_px: float) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """First shift, height and base of each stretch: the highest place of its cross profile in half pixels."""
-    n = d.shape[0] * d.shape[1]
-    low = float(np.floor(d.min() * 2)) - 1
-    bins = int(np.ceil(d.max() * 2) - low) + 2
-    at = (np.rint(2 * d) - low).astype(np.intp).reshape(n, -1) + np.arange(n)[:, None] * bins
-    count = np.bincount(at.ravel(), weight.ravel(), minlength=n * bins).reshape(n, bins)
-    total = np.bincount(at.ravel(), (weight * value).ravel(), minlength=n * bins).reshape(n, bins)
-    kernel = np.array([0.25, 0.5, 1.0, 0.5, 0.25])
-    smooth = np.stack(
-        [np.convolve(t, kernel, "same") / np.maximum(np.convolve(c, kernel, "same"), 0.3) for t, c in zip(total, count, strict=True)]
-    )
-    place = (np.arange(bins) + low) / 2
-    inside = np.abs(place) <= reach_px
-    best = np.argmax(np.where(inside, smooth, -np.inf), axis=1)
-    base = np.percentile(smooth[:, np.abs(place) <= reach_px + 3], 25, axis=1)
-    height = np.maximum(smooth[np.arange(n), best] - base, 1.0)
-    shape = d.shape[:2]
-    return place[best].reshape(shape), height.reshape(shape), base.reshape(shape)
