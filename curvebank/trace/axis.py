@@ -72,6 +72,24 @@ class Axis:
         bend = np.convolve(turn, np.ones(5), "same") / np.convolve(step, np.ones(5), "same")
         return float(1.0 / max(bend.max(initial=0.0), 1e-6))
 
+    def turning(self) -> float:
+        """Total turning [rad], to both sides alike."""
+        step = np.diff(self.tangents[:: max(len(self.s) // 60, 1)], axis=0)
+        return float(np.hypot(*step.T).sum())
+
+    def unevenness(self, window: float) -> float:
+        """How much the curvature changes along the curve, seen through a window [px]: rms of its derivative times length squared."""
+        k = max(int(window / max(self.length / (len(self.s) - 1), 1e-9)), 1)
+        angle = np.unwrap(np.arctan2(self.tangents[:, 1], self.tangents[:, 0]))
+        if self.closed:
+            angle = np.r_[angle, angle[1:] + (angle[-1] - angle[0])]
+        if len(angle) < 6 * k:
+            return 0.0
+        mean = np.convolve(angle, np.ones(k) / k, "valid")
+        bend = (mean[2 * k :] - mean[: -2 * k]) / (2 * k)
+        change = (bend[k:] - bend[:-k]) / k
+        return float(np.sqrt((change**2).mean()) * self.length**2)
+
 
 def from_polyline(points: FloatArray, closed: bool, step: float = 1.0) -> Axis:
     """An axis through dense points, resampled about ``step`` px apart."""

@@ -11,13 +11,21 @@ from . import smooth
 from .axis import Axis, from_polyline, through
 from .band import ridge, sample
 from .route import best_path, click_pull, segment_costs
+from .strokes import find_way
 
 WIDE = {2: (0.42, 1.6), 3: (0.25, 1.1), 4: (0.2, 1.0)}
 """Half width of the first band in parts of the longest gap between clicks, and its steepest slope, by number of clicks."""
 WIDE_MANY = (0.18, 0.9)
 UNKNOWN = np.float32(0.3)
 """Likeness to a line [0..1] of a place that a mask hides."""
+DOUBTFUL = 0.03
+"""Mean cost of a band's best path from which it may not have held the line at all."""
+BENT = 1.6
+"""Turning [rad] of the spline through a few clicks from which a band along it may be too narrow."""
+UNEVEN = 1e-4
+"""Weight of a path's unevenness against its mean cost, where two ways were found."""
 Path = tuple[FloatArray, FloatArray, FloatArray]
+Try = tuple[float, Path, Axis, FloatArray]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -49,7 +57,7 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
     unit, width = prepared.unit, prepared.width_px
     cap = contrast_cap(prepared, clicks)
     grain = float(np.clip(width / 1.5, 1.0, 5.0))
-    tries = []
+    tries: list[Try] = []
     for axis, at in _first_axes(clicks, closed):
         gaps = np.diff(np.r_[at, axis.length]) if closed else np.diff(at)
         share, slope = WIDE.get(len(clicks), WIDE_MANY)
@@ -60,23 +68,60 @@ def follow(prepared: Prepared, clicks: FloatArray, closed: bool) -> Followed:
         first = Pass(half, grain, grain, rows, slope, 0.04, 6, 4.0 * max(unit, 0.75))
         path, cost = _search(prepared, axis, at, clicks, first, grain, cap)
         tries.append((cost, path, axis, at))
-    cost, path, axis, at = min(tries, key=lambda t: t[0])
+    tries = [min(tries, key=lambda t: t[0])]
+    if closed or tries[0][0] > DOUBTFUL or (len(clicks) < 5 and tries[0][2].turning() > BENT):
+        tries += _along_strokes(prepared, clicks, closed, grain, cap)
+    found = [_closer(prepared, clicks, path, axis, grain, cap) for _, path, axis, _ in tries]
+    return found[0] if len(found) == 1 else min(found, key=lambda f: f.cost + UNEVEN * f.axis.unevenness(6.0 * grain))
+
+
+def _closer(prepared: Prepared, clicks: FloatArray, path: Path, axis: Axis, grain: float, cap: float) -> Followed:
+    """From a first path to one within about a pixel."""
+    cost = 0.0
     for reach in (30.0, 14.0):
         axis, at = _smoothed(path, axis, clicks, grain)
-        step = grain / 4
-        narrow = Pass(
-            reach * max(unit, 0.7),
-            step,
-            grain,
-            12 if axis.length > (700 if closed else 300) * unit else 6,
-            0.35,
-            0.004,
-            7,
-            4.0 * max(unit, 0.75),
-        )
-        path, cost = _search(prepared, axis, at, clicks, narrow, max(grain / 3, 1.0), cap)
+        path, cost = _search(prepared, axis, at, clicks, _narrow(reach, axis, prepared.unit, grain), max(grain / 3, 1.0), cap)
     axis, at = _smoothed(path, axis, clicks, grain)
     return Followed(axis, cost, at)
+
+
+def _narrow(reach: float, axis: Axis, unit: float, grain: float) -> Pass:
+    """A search close to an axis that lies about right."""
+    rows = 12 if axis.length > (700 if axis.closed else 300) * unit else 6
+    return Pass(reach * max(unit, 0.7), grain / 4, grain, rows, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
+
+
+def _along_strokes(prepared: Prepared, clicks: FloatArray, closed: bool, grain: float, cap: float) -> list[Try]:
+    """The way found over the graph of strokes, searched along once: none or one."""
+    unit = prepared.unit
+    way = find_way(prepared.clean, clicks, grain, cap, 4.0 * max(unit, 0.75), closed)
+    if way is None or len(way) < 5:
+        return []
+    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(way, axis=0).T))]
+    if closed:
+        way[-1] = way[0]
+    t = s / s[-1]
+    keep = slice(None, -1 if closed else None)
+    curve = smooth.fit(t[keep], way[keep], pieces=int(np.clip(len(way) // 3, 4, 40)), periodic=closed, floor=0.5 * grain, cut=6.0)
+    dense = curve.value(np.linspace(0, 1, max(int(s[-1]), 8) + 1))
+    axis = from_polyline(dense, closed)
+    axis, at = _begun_at(axis, clicks)
+    if (np.diff(at) <= 2.0).any():
+        return []
+    path, cost = _search(prepared, axis, at, clicks, _narrow(30.0, axis, unit, grain), max(grain / 3, 1.0), cap)
+    return [(cost, path, axis, at)]
+
+
+def _begun_at(axis: Axis, clicks: FloatArray) -> tuple[Axis, FloatArray]:
+    """The axis beginning (and, open, ending) at its clicks, and where they fall on it."""
+    at = axis.arc_of(clicks)
+    if axis.closed:
+        at = np.where(at > axis.length - 1.0, 0.0, at)
+        shift = at[0]
+        axis = from_polyline(axis.at(np.linspace(0, axis.length, len(axis.s)) + shift)[0], True)
+        return axis, np.mod(at - shift, axis.length)
+    at[0], at[-1] = 0.0, axis.length
+    return axis, at
 
 
 def _first_axes(clicks: FloatArray, closed: bool) -> list[tuple[Axis, FloatArray]]:
@@ -184,13 +229,5 @@ def _smoothed(path: Path, axis: Axis, clicks: FloatArray, grain: float) -> tuple
     if axis.closed:
         dense[-1] = dense[0]
     fresh = from_polyline(dense, axis.closed)
-    at = fresh.arc_of(clicks)
-    if axis.closed:
-        at = np.where(at > fresh.length - 1.0, 0.0, at)
-        # The loop begins at its first click.
-        shift = at[0]
-        fresh = from_polyline(fresh.at(np.linspace(0, fresh.length, len(fresh.s)) + shift)[0], True)
-        at = np.mod(at - shift, fresh.length)
-    else:
-        at[0], at[-1] = 0.0, fresh.length
+    fresh, at = _begun_at(fresh, clicks)
     return fresh, np.maximum.accumulate(at)
