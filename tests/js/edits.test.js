@@ -6,7 +6,9 @@ import { across, hold, meet } from "../../web/curvebank_web/static/js/geometry/l
 import { liveFindings } from "../../web/curvebank_web/static/js/state/derive.js";
 import { apply } from "../../web/curvebank_web/static/js/state/doc.js";
 import { clicksWanted, flowRange, lockAt, lockStretch, rangeOf } from "../../web/curvebank_web/static/js/state/stretch.js";
+import * as carry from "../../web/curvebank_web/static/js/state/carry.js";
 import * as words from "../../web/curvebank_web/static/js/state/words.js";
+import { nextWidth } from "../../web/curvebank_web/static/js/pages/desk-masks.js";
 import { findHandle, moveAction, removeAction, stops } from "../../web/curvebank_web/static/js/pages/desk-handles.js";
 
 const near = (a, b, tol = 1e-6) => assert.ok(Math.abs(a - b) < tol, `${a} is not ${b}`);
@@ -150,4 +152,32 @@ test("a mask over a mark or a click, and a doubtful stretch, are findings with t
   assert.equal(doubt.text, "Ø 300: two lines run together here.");
   const plain = liveFindings(doc, () => ({}), () => ({ ...answer, stretches: [] }), words).find((f) => f.doubt);
   assert.match(plain.text, /in doubt, 0.60/);
+});
+
+test("what a better scan changes is said in words, and the curve that wants a look comes first", () => {
+  const base = { quantity: "head", unit: "m", error_before: null, error_now: null, flags_gone: [], flags_new: [], largest: 0.0281, mean: 0.002, largest_u: 0.2, mean_u: 0.01 };
+  const moved = { ...base, id: "b", largest_u: 7 };
+  const doubtful = { ...base, id: "c", flags_new: ["Two lines run together."] };
+  const lost = { ...base, id: "d", error_now: { message: "No line was found." }, largest: null, largest_u: null };
+  assert.equal(carry.rowWords({ ...base, id: "a" }), "It stays within its ±.");
+  assert.match(carry.rowWords(moved), /more than its ±/);
+  assert.equal(carry.rowWords({ ...base, flags_gone: ["x"] }), "One doubt is gone.");
+  assert.equal(carry.rowWords(lost), "Not read on the new scan: No line was found.");
+  assert.equal(carry.rowWords({ ...base, error_before: { message: "x" } }), "Read now; it was not read before.");
+  assert.deepEqual([base, moved, doubtful, lost].map(carry.wantsLook), [false, true, true, true]);
+  assert.equal(carry.firstToShow([base, moved, doubtful, lost]).id, "d");
+  assert.equal(carry.firstToShow([base, moved]).id, "b");
+  assert.equal(carry.amount(0.0281, base), "0.028 m");
+  assert.equal(carry.amount(0.0123, { quantity: "efficiency", unit: "1" }), "1.23 %");
+  assert.equal(carry.amount(null, base), "?");
+  assert.deepEqual([0.2, 0.01, 12.4, null].map(carry.inU), ["0.2 u", "under 0.1 u", "12 u", "?"]);
+  assert.equal(carry.registrationWords({ matches: 214, residual_px: 0.213, coverage: 0.97, scale: 2, turn_deg: 0.31 }), "The same paper: 214 places agree to 0.21 px over 97 % of it, 2 times as fine, turned by 0.3°.");
+  assert.equal(carry.nameOf({ id: "x", quantity: "head" }, { curves: [{ id: "x", diameter_mm: 320 }] }), "head Ø 320");
+});
+
+test("the brush steps through its widths", () => {
+  assert.equal(nextWidth(20, true), 28);
+  assert.equal(nextWidth(20, false), 14);
+  assert.equal(nextWidth(25, true), 28);
+  assert.equal(nextWidth(4, false), 4);
 });

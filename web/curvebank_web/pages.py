@@ -27,6 +27,13 @@ def desk(draft: str) -> str:
     return _render("desk.html", draft=draft)
 
 
+@blueprint.get("/desk/<draft>/scan")
+def scan(draft: str) -> str:
+    """A better scan of the same paper, or the second half of the sheet: chosen, looked at, taken or left."""
+    desk_drafts.row_of(desk_db(), draft)
+    return _render("scan.html", draft=draft)
+
+
 @blueprint.get("/pumps")
 def pumps() -> str:
     """The catalogue."""

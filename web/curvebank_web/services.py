@@ -4,7 +4,7 @@ import sqlite3
 from contextlib import closing, suppress
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from flask import Flask, current_app, g
 
@@ -32,6 +32,8 @@ class Services:
     pages: PageStore = field(init=False)
     previews: "Previews" = field(init=False)
     prepare_ahead: bool = True
+    outcomes: dict[str, dict[str, Any]] = field(default_factory=dict)
+    """What finished jobs gave that is no step of a draft yet, by job."""
 
     def __post_init__(self) -> None:
         from .previews import Previews

@@ -85,4 +85,69 @@ def run(
     }
 
 
-TASKS = {"prepare": prepare, "run": run}
+def carry(
+    *,
+    desk: str,
+    bank: str,
+    cache: str,
+    doc: bytes,
+    old: tuple[Any, ...],
+    old_info: dict[str, Any],
+    new: tuple[Any, ...],
+    new_info: dict[str, Any],
+    file: str,
+    settings: dict[str, Any],
+    progress: Progress,
+) -> dict[str, Any]:
+    """Carry a document onto another scan of the same paper: the new recipe, and what changes with it.
+
+    A draft need not name its pump yet: the names are set aside for the work and put back.
+    """
+    from curvebank.desk import rescan
+
+    before, _ = _prepared(desk, bank, cache, PageKey(*old), partial(_part, progress, 0.0, 0.2))
+    now, _ = _prepared(desk, bank, cache, PageKey(*new), partial(_part, progress, 0.2, 0.3))
+    data = json.loads(doc)
+    pump = data.get("pump")
+    data["pump"] = {**(pump or {}), "maker": (pump or {}).get("maker") or "-", "model": (pump or {}).get("model") or "-", "key": "X"}
+    key = PageKey(*new)
+    made = rescan.carry(
+        data,
+        None,
+        None,
+        file=file,
+        page=key.page,
+        dpi=key.dpi,
+        turn=key.turn,
+        settings=settings,
+        progress=partial(_part, progress, 0.5, 0.5),
+        old_prepared=before,
+        old_page=PageInfo(**old_info),
+        new_prepared=now,
+        new_page=PageInfo(**new_info),
+    )
+    return {"recipe": {**made.recipe, "pump": pump}, "report": clean(made.report())}
+
+
+def join(
+    *, desk: str, bank: str, first: tuple[Any, ...], second: tuple[Any, ...], ties: list[Any] | None, progress: Progress
+) -> dict[str, Any]:
+    """Join two halves of a sheet; the new sheet's file and how they were found to fit."""
+    from curvebank.desk import joining
+
+    one, two = PageKey(*first), PageKey(*second)
+    made = joining.join(
+        _sheet(desk, bank, one.sha256),
+        _sheet(desk, bank, two.sha256),
+        ties=ties,
+        first_page=one.page,
+        second_page=two.page,
+        dpi=one.dpi,
+        first_turn=one.turn,
+        second_turn=two.turn,
+        progress=progress,
+    )
+    return {"png": made.png, "report": clean(made.report)}
+
+
+TASKS = {"prepare": prepare, "run": run, "carry": carry, "join": join}

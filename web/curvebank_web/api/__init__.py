@@ -1,5 +1,5 @@
 """The API: one blueprint per noun. Views parse, call and serialise; what they call lives beside this package."""
 
-from . import drafts, jobs, pumps, settings, sheets
+from . import drafts, jobs, pumps, scans, settings, sheets
 
-BLUEPRINTS = (sheets.blueprint, drafts.blueprint, pumps.blueprint, jobs.blueprint, settings.blueprint)
+BLUEPRINTS = (sheets.blueprint, drafts.blueprint, scans.blueprint, pumps.blueprint, jobs.blueprint, settings.blueprint)

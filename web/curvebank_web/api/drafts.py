@@ -82,7 +82,10 @@ def head(path: DraftPath, body: Head) -> dict[str, Any]:
 @blueprint.post("/<draft>/preview")
 def preview(path: DraftPath, body: PreviewQuestion) -> tuple[dict[str, Any], int]:
     """A quick look at one panel and perhaps one curve; 202 with a job while the sheet is being prepared."""
-    doc, key = _page_of(path.draft)
+    doc, key = page_of(path.draft)
+    if body.sheet is not None:
+        key = PageKey(body.sheet.sha256, body.sheet.page, float(body.sheet.dpi), body.sheet.turn)
+        services().pages.info(key)
     subject = (path.draft, str(body.panel.get("id")), str(body.curve.get("id")) if body.curve else "")
     masks = documents.masks_of(doc) if body.masks is None else body.masks
     question = Question(key=key, panel=body.panel, curve=body.curve, pump=documents.pump_facts(doc), masks=masks, live=body.live)
@@ -95,14 +98,14 @@ def preview(path: DraftPath, body: PreviewQuestion) -> tuple[dict[str, Any], int
 @blueprint.get("/<draft>/lines")
 def lines(path: DraftPath) -> tuple[dict[str, Any], int]:
     """The printed lines found on the draft's page [px], level and upright ones; 202 with a job while the sheet is being prepared."""
-    _, key = _page_of(path.draft)
+    _, key = page_of(path.draft)
     prepared = services().previews.ready(key)
     if isinstance(prepared, Job):
         return {"pending": True, "job": serialise(prepared)}, 202
     return found_lines.serialise(prepared), 200
 
 
-def _page_of(draft_id: str) -> tuple[dict[str, Any], PageKey]:
+def page_of(draft_id: str) -> tuple[dict[str, Any], PageKey]:
     """The document at the head and the page it works on, which can be read; or a problem."""
     db = desk_db()
     draft = desk_drafts.row_of(db, draft_id)

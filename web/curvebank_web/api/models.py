@@ -126,15 +126,40 @@ class JobPath(BaseModel):
 class PreviewQuestion(Strict):
     """A panel and perhaps a curve, as a recipe has them; ``seq`` comes back, so that late answers can be dropped.
 
-    ``masks`` are the sheet's (those of the draft where left out). ``live``: a point is under the hand, and what it does not touch of the
-    curve's last trace may stay; the answer is for the eye, the next question without ``live`` follows the line as a whole.
+    ``masks`` are the sheet's and ``sheet`` is the page (those of the draft where left out). ``live``: a point is under the hand, and what
+    it does not touch of the curve's last trace may stay; the answer is for the eye, the next question without ``live`` follows the whole
+    line.
     """
 
     panel: dict[str, Any]
     curve: dict[str, Any] | None = None
     masks: list[dict[str, Any]] | None = None
     live: bool = False
+    sheet: SheetChoice | None = None
     seq: Annotated[int, Field(ge=0, le=2**53)] = 0
+
+
+class CarryRequest(Strict):
+    """The other scan of the same paper: a sheet that lies on the desk or in the bank."""
+
+    sheet: SheetChoice
+
+
+Place = Annotated[list[Number], Field(min_length=2, max_length=2)]
+Tie = Annotated[list[Place], Field(min_length=2, max_length=2)]
+
+
+class JoinRequest(Strict):
+    """The second half of the sheet, and points [px] that are the same place on both: ``[[first x, y], [second x, y]]``."""
+
+    sheet: SheetChoice
+    ties: Annotated[list[Tie], Field(max_length=50)] | None = None
+
+
+class OutcomePath(DraftPath):
+    """What a job of a draft gave."""
+
+    job: Token
 
 
 class ResultQuery(BaseModel):

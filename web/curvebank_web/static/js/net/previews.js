@@ -16,6 +16,12 @@ const lineText = (panel, curve) => JSON.stringify([usablePanel(panel), curve.kin
 const panelText = (panel) => JSON.stringify(usablePanel(panel));
 const masksOf = (doc) => doc.sheet?.masks ?? [];
 
+/** The page a document works on, as the server names it; null where the document leaves it to the draft. */
+function sheetOf(doc) {
+  const { sha256, page = 1, dpi = 300, turn = 0 } = doc.sheet ?? {};
+  return sha256 ? { sha256: sha256.toLowerCase(), page, dpi, turn } : null;
+}
+
 export class Previews {
   constructor(draftId, onAnswer) {
     this.id = draftId;
@@ -29,12 +35,19 @@ export class Previews {
     this.busy = null;
     this.state = "idle";
     this.masks = [];
+    this.sheet = null;
     this.live = false;
   }
 
-  /** What an answer belongs to: the masks change what every line and scale is read from. */
+  /** What an answer belongs to: the page and its masks change what every line and scale is read from. */
   #under(text) {
-    return this.masks.length ? `${JSON.stringify(this.masks)}|${text}` : text;
+    return `${JSON.stringify([this.sheet, this.masks])}|${text}`;
+  }
+
+  /** The document whose lines are looked at from now on. */
+  #of(doc) {
+    this.masks = masksOf(doc);
+    this.sheet = sheetOf(doc);
   }
 
   #panelKey(panel) {
@@ -64,7 +77,7 @@ export class Previews {
 
   /** Fill the cache from a finished run. */
   learn(doc, result) {
-    this.masks = masksOf(doc);
+    this.#of(doc);
     for (const panel of doc.panels ?? []) {
       const known = result.panels?.find((p) => p.id === panel.id);
       if (known && !this.panel(panel)) this.lastPanel.set(panel.id, known);
@@ -84,7 +97,7 @@ export class Previews {
    * the question under way is let finish and shown, and the newest place is asked right after it.
    */
   want(doc, open, panelId, live = false) {
-    this.masks = masksOf(doc);
+    this.#of(doc);
     this.live = live;
     const list = [];
     const panels = [...(doc.panels ?? [])].sort((a, b) => (b.id === panelId) - (a.id === panelId));
@@ -123,7 +136,7 @@ export class Previews {
     const key = this.#key(q);
     const abort = new AbortController();
     const seq = ++this.seq;
-    const { live, masks } = this;
+    const { live, masks, sheet } = this;
     const at = this.#panelKey(q.panel);
     this.busy = { key, abort };
     const slow = setTimeout(() => {
@@ -132,7 +145,7 @@ export class Previews {
     }, 500);
     let retry = false;
     try {
-      const answer = await api.preview(this.id, { panel: usablePanel(q.panel), curve: q.curve ? curveAsked(q.curve) : null, seq, masks, live: live && Boolean(q.curve) }, abort.signal);
+      const answer = await api.preview(this.id, { panel: usablePanel(q.panel), curve: q.curve ? curveAsked(q.curve) : null, seq, masks, live: live && Boolean(q.curve), ...(sheet ? { sheet } : {}) }, abort.signal);
       if (answer.pending) {
         this.state = "preparing";
         this.onAnswer("slow");

@@ -146,10 +146,10 @@ export class Desk {
     const sheet = this.doc.sheet ?? {};
     const p = this.page;
     if (!p) return;
-    const want = { page: sheet.page ?? 1, dpi: sheet.dpi ?? p.dpi, turn: sheet.turn ?? 0 };
-    if (p.page === want.page && p.turn === want.turn && (p.dpi === want.dpi || p.media !== "application/pdf")) return;
+    const want = { sha256: sheet.sha256?.toLowerCase() ?? p.sha256, page: sheet.page ?? 1, dpi: sheet.dpi ?? p.dpi, turn: sheet.turn ?? 0 };
+    if (p.sha256 === want.sha256 && p.page === want.page && p.turn === want.turn && (p.dpi === want.dpi || p.media !== "application/pdf")) return;
     try {
-      this.page = await api.sheetPage(p.sha256, want.page, want);
+      this.page = await api.sheetPage(want.sha256, want.page, want);
       this.view = null;
       this.hooks.invalidate("all");
     } catch (error) {

@@ -97,6 +97,11 @@ function abilities(desk, draw, tools, invalidate) {
     select(id, guiding = false) { Object.assign(desk, { selected: id, guiding, touched: null, focused: null, locking: null }); redo("all"); },
     chooseMark(mark) { desk.chosenMark = mark; $("paper").focus({ preventScroll: true }); redo("all"); },
     removeFocused: () => tools.removeFocused(),
+    /** Go to another page of the app once every step is in the file. */
+    async leaveFor(url) {
+      if (await desk.session.settled(8000)) location.assign(url);
+      else awayProblem(desk.session);
+    },
     toggleFound() {
       desk.showFound = !desk.showFound;
       keepSetting("found", desk.showFound ? "on" : "off");

@@ -139,6 +139,7 @@ function drawScan(m) {
   if (!scan) {
     put($("scan"), h("h2", {}, "The paper, with the stored curves drawn back"), h("div", { class: "tabs", role: "group", "aria-label": "Sheets" }));
     scan = new Scan($("scan"));
+    $("scan").append(h("p", { class: "acts" }, button("Use a better scan of this paper", { quiet: true, onClick: () => toDesk("/scan", (detail.sheets ?? []).filter((p) => p.sha256 && p.width)[sheet]?.sha256) })));
   }
   sheet = Math.min(sheet, pages.length - 1);
   const tabs = $("scan").querySelector(".tabs");
@@ -160,10 +161,10 @@ function save(name, type, text) {
   h("a", { href: URL.createObjectURL(new Blob([text], { type })), download: name }).click();
 }
 
-async function toDesk() {
+async function toDesk(where = "", sheet_sha256 = undefined) {
   try {
-    const draft = await api.newDraft({ from_pump: key, revision: detail.number });
-    location.assign(`/desk/${encodeURIComponent(draft.id)}`);
+    const draft = await api.newDraft({ from_pump: key, revision: detail.number, ...(sheet_sha256 ? { sheet_sha256 } : {}) });
+    location.assign(`/desk/${encodeURIComponent(draft.id)}${where}`);
   } catch (error) {
     fromError($("problems"), "desk", error);
   }
@@ -202,7 +203,7 @@ function history_() {
   const acts = [
     h("button", { type: "button", class: "btn quiet", onclick: () => save(`${key}-${detail.number}.csv`, "text/csv", csv(detail)) }, "Curves as CSV"),
     h("a", { class: "btn quiet", href: `/api/pumps/${encodeURIComponent(key)}/revisions/${detail.number}`, download: `${key}-${detail.number}.json` }, "Revision as JSON"),
-    button("Lay it on the desk again", { quiet: true, onClick: toDesk }),
+    button("Lay it on the desk again", { quiet: true, onClick: () => toDesk() }),
   ];
   drawHistory($("history"), pump, acts);
   if (["draft", "saved", "submitted"].includes(detail.state)) {

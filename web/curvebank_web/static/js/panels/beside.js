@@ -9,12 +9,24 @@ import { h, put, s } from "../view/dom.js";
 import { maskList } from "./sentence-mask.js";
 
 export function drawBeside(root, desk) {
-  if (desk.masks?.on || (desk.step === "sheet" && desk.masks?.list.length)) return maskList(root, desk);
+  if (desk.masks?.on) return maskList(root, desk);
+  if (desk.step === "sheet") return otherScans(root, desk);
   if (desk.step === "marks" || desk.step === "panel") return marksTable(root, desk);
   if (desk.step === "family") return exponents(root, desk);
   if (desk.step === "fit") return residuals(root, desk);
   if (desk.step === "curves" || desk.step === "submit") return doubt(root, desk);
   put(root);
+}
+
+/** Ways to another scan of the same paper, and what is masked. */
+function otherScans(root, desk) {
+  const n = desk.masks?.list.length ?? 0;
+  const at = `/desk/${encodeURIComponent(desk.session.id)}/scan`;
+  const away = (hash) => (e) => { e.preventDefault(); desk.leaveFor(`${at}${hash}`); };
+  put(root, h("h2", {}, "This paper, scanned again"),
+    h("p", { class: "ways-on" }, h("a", { href: at, id: "better-scan", onclick: away("") }, "Use a better scan of this paper"), h("span", {}, "carries marks and clicks over, shows what changes.")),
+    h("p", { class: "ways-on" }, h("a", { href: `${at}#half`, id: "second-half", onclick: away("#half") }, "Add the second half of the sheet"), h("span", {}, "makes one sheet of two scans.")),
+    n ? h("p", { class: "ways-on" }, h("button", { type: "button", class: "link", onclick: () => desk.masks.hold(true) }, `${n} ${n === 1 ? "mask" : "masks"} on this sheet`), h("span", {}, "hide what is not the chart.")) : null);
 }
 
 function marksTable(root, desk) {
