@@ -13,7 +13,10 @@ from .traces import Box
 
 
 def peak_mb() -> float:
-    """High-water mark of resident memory (kilobytes on Linux, bytes on macOS)."""
+    """High-water mark of this process's resident memory [MB]."""
+    status = Path("/proc/self/status")
+    if status.exists():  # getrusage would still count what the parent held when it forked
+        return int(next(line for line in status.read_text().splitlines() if line.startswith("VmHWM")).split()[1]) / 1024
     peak = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
     return peak / (1024 * 1024 if sys.platform == "darwin" else 1024)
 
