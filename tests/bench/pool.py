@@ -3,7 +3,8 @@
     python tests/bench/pool.py OUT [--seed N] [--sheets K] [--kinds plain copy ...] [--list]
 
 Sheets are named KIND-SEED; kinds take turns until K sheets are there (default: one of each kind), each turn with the next seed.
-Sheets with several printed flow scales also stand in OUT/scales with a recipe that uses them all.
+Sheets with several printed flow scales also stand in OUT/scales with a recipe that uses them all; OUT/rescans holds better scans of the
+same papers under the same names (``--rescans``).
 """
 
 import argparse
@@ -16,13 +17,13 @@ from PIL import Image
 HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 
-from drawing.kinds import KINDS, sheet_of  # noqa: E402
+from drawing.kinds import BETTER, KINDS, sheet_of  # noqa: E402
 from drawing.record import recipe_of  # noqa: E402
 
 
-def write(out: Path, kind: str, seed: int) -> Path:
-    """Draw one sheet and save it; returns the recipe's path."""
-    made = sheet_of(kind, seed)
+def write(out: Path, kind: str, seed: int, again: bool = False) -> Path:
+    """Draw one sheet (``again``: a better scan of it) and save it; returns the recipe's path."""
+    made = sheet_of(kind, seed, again=BETTER if again else None)
     picture = Image.fromarray(made.pixels)
     if made.file.endswith(".tif"):
         picture.convert("1").save(out / made.file, compression="group4", dpi=made.dpi)
@@ -49,6 +50,7 @@ def main() -> int:
     ask.add_argument("--seed", type=int, default=0, help="first seed")
     ask.add_argument("--sheets", type=int, help="how many sheets (default: one of each kind)")
     ask.add_argument("--kinds", nargs="*", choices=list(KINDS), default=list(KINDS), metavar="KIND")
+    ask.add_argument("--rescans", action="store_true", help="also a better scan of each sheet's paper, in OUT/rescans")
     ask.add_argument("--list", action="store_true", help="print the kinds")
     asked = ask.parse_args()
     if asked.list or asked.out is None:
@@ -58,6 +60,9 @@ def main() -> int:
     count = asked.sheets or len(asked.kinds)
     for k in range(count):
         kind, seed = asked.kinds[k % len(asked.kinds)], asked.seed + k // len(asked.kinds)
+        if asked.rescans:
+            (asked.out / "rescans").mkdir(exist_ok=True)
+            write(asked.out / "rescans", kind, seed, again=True)
         print(write(asked.out, kind, seed).name.removesuffix(".recipe.json"), flush=True)
     return 0
 

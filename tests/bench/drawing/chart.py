@@ -1,6 +1,6 @@
 """Compose one chart: panels and scales, curves with their print styles, grid, labels and clutter, placed on the page."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -44,12 +44,15 @@ class Chart:
     diameter_mm: int
 
 
-def compose(look: Look, rng: np.random.Generator) -> Chart:
-    """Choose pumps, scales and styles and lay everything out."""
+def compose(look: Look, rng: np.random.Generator, laid: tuple[dict[str, float], np.random.Generator] | None = None) -> Chart:
+    """Choose pumps, scales and styles and lay everything out. ``laid``: other moves of the same paper, as for another scan of it."""
     per_mm = look.dpi / 25.4
     width, height = (int(round(v * per_mm)) for v in look.page_mm)
     place = Placement(width, height)
     _moves(place, look, rng, look.dpi / 300)
+    if laid is not None:
+        place = Placement(width, height)
+        _moves(place, replace(look, paper_moves=laid[0]), laid[1], look.dpi / 300)
     scene = Scene(width, height, float(rng.uniform(*look.blur_px)), coloured=bool(look.coloured))
     line_px = float(rng.uniform(*look.line_mm)) * per_mm
     panels, shapes = _content(look, rng, (width, height), per_mm, line_px)

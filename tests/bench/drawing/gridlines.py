@@ -24,6 +24,9 @@ def draw_axes(scene: Scene, place: Placement, panel: Panel, look: Look, rng: np.
         major_px, minor_px = 0.95 * line_px, 0.6 * line_px
 
     def rule(points: np.ndarray, width: float, level: float, ink: tuple[float, float, float]) -> None:
+        if look.snapped:  # as a renderer does that puts upright and level lines on whole pixels
+            flat = np.abs(points[1] - points[0]) < 1e-6
+            points = np.where(flat, np.rint(points), points)
         ends = np.linspace(points[0], points[1], max(int(np.hypot(*(points[1] - points[0])) / 12), 2) + 1)
         scene.items.append(Stroke(place(ends), width, level, ink))
 

@@ -54,6 +54,7 @@ KINDS: dict[str, Look] = {
     "broken": Look(content=("heads",), broken=True, grid="same"),
     "stacked": Look(page_mm=A4, dpi=150, content=("heads", "efficiency", "power"), panels=2),
     "three": Look(page_mm=A4, dpi=200, content=("heads", "power", "npshr"), panels=3, grid="same", paper_moves={"turn": 0.8}),
+    "snapped": Look(content=("heads", "efficiency"), snapped=True, clean=True, grid="same"),
     "scales": Look(content=("heads",), flow_scales=True),
     "imperial": Look(content=("heads", "efficiency", "power"), imperial=True),
     "dashes": Look(content=("heads", "efficiency", "power"), dashed_share=0.9, styles=("dashed", "dashdot", "dotted", "long"), grid="same"),
@@ -122,13 +123,24 @@ class Drawing:
     jpeg: int | None
 
 
-def sheet_of(kind: str, seed: int, name: str | None = None) -> Drawing:
-    """Draw one sheet of a kind; the engine is chosen by the seed where the kind leaves it open."""
+BETTER = Look(dpi=300, paper_moves={"stretch": 0.8, "turn": 0.5}, damage=Damage(noise=3.0, jpeg=90, paper=242.0))
+"""How the same paper is scanned again: finer, flatter, cleaner."""
+
+
+def sheet_of(kind: str, seed: int, name: str | None = None, again: Look | None = None) -> Drawing:
+    """Draw one sheet of a kind; the engine is chosen by the seed where the kind leaves it open.
+
+    ``again``: another scan of that same chart, with the resolution, the moves of the paper and the damage of this look.
+    """
     look = KINDS[kind]
     rng = np.random.default_rng([sum(ord(c) * 31**i for i, c in enumerate(kind)) % (2**31), seed])
+    laid = None
+    if again is not None:
+        look = replace(look, dpi=again.dpi, dpi_y=again.dpi_y, paper_moves=look.paper_moves, damage=again.damage)
+        laid = (again.paper_moves, np.random.default_rng([seed, 991]))
     look = replace(look, damage=replace(look.damage))
     engine = look.engine if look.engine != "any" else ("paint", "agg")[int(rng.integers(2))]
-    chart = compose(look, rng)
+    chart = compose(look, rng, laid)
     light = (agg if engine == "agg" else paint).render(chart.scene)
     rows = 1.0
     if look.dpi_y is not None:

@@ -59,6 +59,7 @@ class Look:
     stamp: bool = False
     writing: bool = False
     wobble_mm: float = 0.0
+    snapped: bool = False
     paper_moves: dict[str, float] = field(default_factory=dict)
     damage: Damage = field(default_factory=Damage)
     clean: bool = False
