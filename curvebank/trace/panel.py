@@ -14,6 +14,7 @@ from .direction import one_way
 from .ends import to_ink
 from .follow import follow
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
+from .locked import trace_around
 from .manual import by_hand, points_on_symbols
 from .meet import end_on_others
 from .profile import align, refine
@@ -85,6 +86,10 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatA
         return by_hand(prepared, points, clicks.closed), None
     if clicks.kind == "points":
         return points_on_symbols(prepared, points), None
+    if clicks.locked:
+        span, fine, cost = trace_around(prepared, panel_map, clicks, points)
+        trace = as_trace(fine.axis, span.sigma, clicks.closed, fine.shape.width)
+        return trace, doubt_of(prepared, fine, points, clicks.closed, clicks.ends == "ink", cost)
     found = follow(prepared, points, clicks.closed)
     axis, shape, far = align(prepared, found.axis, points)
     if far > FAR_PX * max(prepared.unit, 0.7):

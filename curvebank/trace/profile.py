@@ -22,6 +22,7 @@ from .shape import Shape, shape_of
 __all__ = ["Blocks", "Refined", "Shape", "align", "pixels_near", "read_blocks", "refine"]
 BILINEAR = 1 / 6
 """Variance [px^2] that linear interpolation adds to a blur, the mean over all places between pixels."""
+Held = tuple[FloatArray | None, FloatArray | None]
 ROWS = 3
 """Rows of the band that are averaged to one reading."""
 
@@ -79,13 +80,16 @@ def _band(prepared: Prepared, axis: Axis, count: int, half: float, step: float) 
     return mean, total * np.float32(1 / ROWS), across.astype(np.float32)
 
 
-def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray) -> Refined:
-    """Move an aligned axis onto the middle of its ink, with uncertainties."""
+def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray, held: Held = (None, None)) -> Refined:
+    """Move an aligned axis onto the middle of its ink, with uncertainties; ``held`` are pixels [n, 2] of the known line at its ends."""
     unit = max(unit_of(shape.width), 0.6)
     pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
     # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
     for turn in (0, 1):
         blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
+        for end, known in enumerate(held):
+            if known is not None:
+                blocks = _with_known(blocks, axis, known, 3.0 * unit, end)
         reference, off = _reference(axis, _pieces(axis, unit) // 4, _shown(blocks, axis))
         whole = _with_clicks(blocks, axis, clicks, unit)
         whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
@@ -119,6 +123,22 @@ def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) ->
         np.r_[blocks.s, s[keep]], np.r_[blocks.shift, across[keep]], np.r_[blocks.sigma, np.full(count, 2.0 * max(unit, 0.75))],
         np.r_[blocks.height, np.ones(count)], np.r_[blocks.good, ~none], np.r_[blocks.masked, none],
     )  # fmt: skip
+
+
+def _with_known(blocks: Blocks, axis: Axis, known: FloatArray, block_px: float, end: int) -> Blocks:
+    """The readings with those along known pixels (near the first end of the axis, or the last) replaced by the pixels themselves."""
+    known = known[:: max(int(round(block_px)), 1)] if len(known) > 2 * block_px else known
+    rows = slice(len(axis.s) // 2, None) if end else slice(0, len(axis.s) // 2 + 1)
+    s = axis.s[rows][((known[:, None] - axis.points[None, rows]) ** 2).sum(axis=2).argmin(axis=1)]
+    base, normal = axis.at(s)
+    across = ((known - base) * normal).sum(axis=1)
+    out = (blocks.s < s.min() - 0.5 * block_px) | (blocks.s > s.max() + 0.5 * block_px)
+    usual = float(np.median(blocks.sigma[blocks.good])) if blocks.good.any() else 0.05
+    same = np.ones(len(s))
+    new = (s, across, 0.5 * usual * same, float(np.median(blocks.height)) * same, same > 0, same < 0)
+    old = (blocks.s, blocks.shift, blocks.sigma, blocks.height, blocks.good, blocks.masked)
+    order = np.argsort(np.r_[blocks.s[out], s], kind="stable")
+    return Blocks(*(np.concatenate([a[out], b])[order] for a, b in zip(old, new, strict=True)))
 
 
 def _good_near(good: FloatArray, width: int) -> FloatArray:
