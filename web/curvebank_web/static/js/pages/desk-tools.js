@@ -284,6 +284,14 @@ export class DeskTools {
     return best;
   }
 
+  /** Open a mark at a sheet place that a finding names, held to the printed line there. */
+  markHere(sheet) {
+    const { desk } = this;
+    const { at, held } = this.snapped(sheet);
+    desk.focusBlank = "mark";
+    desk.act({ type: "mark/open", panel: desk.panel.id, at, held });
+  }
+
   #markAt(sheet, e) {
     const { desk } = this;
     if (!desk.panel) return;

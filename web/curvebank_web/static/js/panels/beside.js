@@ -5,6 +5,7 @@ import { thin } from "../geometry/polyline.js";
 import { fixed, plain, withDoubt } from "../geometry/number.js";
 import { QUANTITY_WORDS, written } from "../geometry/units.js";
 import { drawChart } from "../view/chart.js";
+import { sentence } from "../state/derive.js";
 import { h, put, s } from "../view/dom.js";
 import { maskList } from "./sentence-mask.js";
 
@@ -41,8 +42,21 @@ function marksTable(root, desk) {
     const worst = res?.length && n > 0 ? `${plain(Math.max(...res.map(Math.abs)), 1)} px` : "";
     return h("tr", {}, h("td", {}, `${QUANTITY_WORDS[axis.quantity]}, ${written(axis.unit)}`), h("td", { class: "num" }, String(n)), h("td", { class: "num" }, worst), h("td", {}, n < 2 ? `wants ${2 - n} more` : n === 2 ? "a third would find a slip" : axis.scale === "log10" ? "logarithmic" : "linear"));
   });
-  const grid = answer?.grid ? h("p", { class: "small" }, answer.grid.used ? `The printed grid agrees: ${answer.grid.lines} lines, ${plain(answer.grid.residual_px, 2)} px.` : answer.grid.why) : null;
-  put(root, h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)), grid);
+  const shown = desk.showFound ?? false;
+  const n = desk.lines?.found ? desk.lines.found.level.length + desk.lines.found.upright.length : 0;
+  const toggle = desk.step === "marks" && n ? h("button", { type: "button", class: "link", "aria-pressed": String(shown), onclick: () => desk.toggleFound() }, shown ? `Hide the ${n} printed lines found` : `Show the ${n} printed lines found`) : null;
+  const grid = answer?.grid;
+  const residual = grid && Number.isFinite(answer.residual_px) ? `Map: ${plain(answer.residual_px, 2)} px rms, worst ${plain(answer.worst_px, 2)} px. ` : "";
+  const head = grid ? h("b", {}, grid.used ? `The printed grid is used, ${grid.lines} ${grid.lines === 1 ? "line" : "lines"}. ` : "The printed grid is not used. ") : null;
+  put(root, h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)),
+    grid ? h("p", { class: "small" }, head, residual, sentence(grid.why)) : null,
+    toggle || grid ? h("p", { class: "small" }, toggle, toggle && grid ? ". " : null, grid ? gridChoice(desk, panel) : null) : null);
+}
+
+/** Whether the printed grid may be used on this panel. */
+function gridChoice(desk, panel) {
+  const off = panel.grid === "off";
+  return h("button", { type: "button", class: "link", onclick: () => desk.act({ type: "panel/set", panel: panel.id, change: { grid: off ? "auto" : "off" } }) }, off ? "Use the printed grid where it helps" : "Place the axes by the marks alone");
 }
 
 const FILL = { drawing: "hatched", reading: "solid", calibration: "ruled", fit: "dotted" };
