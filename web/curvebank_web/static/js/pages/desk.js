@@ -237,8 +237,9 @@ function abilities(desk, draw, tools, invalidate) {
     if (!item?.pixels.length) return undefined;
     const { stretch } = f.where;
     if (!stretch) return desk.travelTo([item.pixels[Math.floor(item.pixels.length * 0.35)]]);
-    // A doubtful stretch is shown near, with as much again of the line at either side.
-    return desk.travelTo(item.pixels.slice(Math.max(0, Math.floor(stretch[0])), Math.ceil(stretch[1]) + 1), true);
+    // A doubtful stretch is shown near, with as much again of the line at either side, and with the click that would settle it.
+    const ring = f.doubt && item.result?.hint_click ? [item.result.hint_click] : [];
+    return desk.travelTo([...item.pixels.slice(Math.max(0, Math.floor(stretch[0])), Math.ceil(stretch[1]) + 1), ...ring], true);
   }
 }
 

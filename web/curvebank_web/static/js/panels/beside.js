@@ -6,6 +6,7 @@ import { fixed, plain, withDoubt } from "../geometry/number.js";
 import { QUANTITY_WORDS, written } from "../geometry/units.js";
 import { drawChart } from "../view/chart.js";
 import { sentence } from "../state/derive.js";
+import { confidence } from "../state/words.js";
 import { h, put, s } from "../view/dom.js";
 import { maskList } from "./sentence-mask.js";
 
@@ -39,7 +40,9 @@ function marksTable(root, desk) {
     const axis = panel.axes[id];
     const n = (axis.marks ?? []).length;
     const res = answer?.mark_residuals?.[id];
-    const worst = res?.length && n > 0 ? `${plain(Math.max(...res.map(Math.abs)), 1)} px` : "";
+    const most = res?.length && n > 0 ? Math.max(...res.map(Math.abs)) : null;
+    const span = spanOf(axis.marks ?? []);
+    const worst = most === null ? "" : `${plain(most, 1)} px${span > 0 ? `, ${plain((100 * most) / span, 2)} %` : ""}`;
     return h("tr", {}, h("td", {}, `${QUANTITY_WORDS[axis.quantity]}, ${written(axis.unit)}`), h("td", { class: "num" }, String(n)), h("td", { class: "num" }, worst), h("td", {}, n < 2 ? `wants ${2 - n} more` : n === 2 ? "a third would find a slip" : axis.scale === "log10" ? "logarithmic" : "linear"));
   });
   const shown = desk.showFound ?? false;
@@ -48,9 +51,17 @@ function marksTable(root, desk) {
   const grid = answer?.grid;
   const residual = grid && Number.isFinite(answer.residual_px) ? `Map: ${plain(answer.residual_px, 2)} px rms, worst ${plain(answer.worst_px, 2)} px. ` : "";
   const head = grid ? h("b", {}, grid.used ? `The printed grid is used, ${grid.lines} ${grid.lines === 1 ? "line" : "lines"}. ` : "The printed grid is not used. ") : null;
-  put(root, h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)),
-    grid ? h("p", { class: "small" }, head, residual, sentence(grid.why)) : null,
+  put(root, grid ? h("p", { class: "small first" }, head, residual) : null,
+    h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst, of the axis"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)),
+    grid ? h("p", { class: "small" }, sentence(grid.why)) : null,
     toggle || grid ? h("p", { class: "small" }, toggle, toggle && grid ? ". " : null, grid ? gridChoice(desk, panel) : null) : null);
+}
+
+/** Length of an axis in sheet pixels: between the two marks furthest apart. */
+function spanOf(marks) {
+  let most = 0;
+  for (const a of marks) for (const b of marks) most = Math.max(most, Math.hypot(a.at[0] - b.at[0], a.at[1] - b.at[1]));
+  return most;
 }
 
 /** Whether the printed grid may be used on this panel. */
@@ -73,7 +84,7 @@ function doubt(root, desk) {
   const bar = h("div", { class: "doubt", role: "img", "aria-label": shares.map(([n, v]) => `${n} ${Math.round(v * 100)} per cent`).join(", ") }, shares.filter(([, v]) => v > 0.005).map(([n, v]) => h("i", { class: FILL[n] ?? "ruled", style: { flex: String(v) } })));
   put(root, h("h2", {}, `Where the ± ${withDoubt(0, u).u} ${unit} of ${item.label} comes from`), bar,
     h("p", { class: "shares" }, shares.map(([n, v]) => h("span", {}, `${n} ${Math.round(v * 100)} %`))),
-    h("p", { class: "small" }, "A delivered pump may differ far more; the pump page shows that band first."));
+    h("p", { class: "small" }, item.result.confidence !== undefined ? `That the trace keeps to this line: ${confidence(item.result.confidence)}. ` : null, "A delivered pump may differ far more; the pump page shows that band first."));
 }
 
 function exponents(root, desk) {
