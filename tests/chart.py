@@ -3,6 +3,7 @@
 import copy
 import io
 
+import cv2
 import numpy as np
 from PIL import Image
 from scipy.spatial import cKDTree
@@ -104,3 +105,29 @@ _DOCUMENT = {
 def document():
     """A fresh recipe for the chart."""
     return copy.deepcopy(_DOCUMENT)
+
+
+def labelled(page_png=None):
+    """The chart with a title, numbers at its axes and names at its curves, as grey pixels: they tell one place of a grid from the next."""
+    page = np.array(Image.open(io.BytesIO(page_png or png())))
+
+    def write(text, x, y, size=0.5):
+        cv2.putText(page, text, (x, y), cv2.FONT_HERSHEY_SIMPLEX, size, 30, 1, cv2.LINE_AA)
+
+    write("FENWRIGHT DP 80", 300, 45, 0.9)
+    write("1750 1/min", 620, 45, 0.6)
+    for i in range(11):
+        write(str(20 * i), int(X0 + 70 * i) - 12, 622)
+        write(str(6 * i), 66, int(Y0 - 52 * i) + 5)
+        write(f"{10 * i}%", 812, int(Y0 - 52 * i) + 5)
+    write("Capacity, cubic metres an hour", 300, 655, 0.6)
+    write("320", 600, 330)
+    write("290", 560, 430)
+    return page
+
+
+def png_of(pixels):
+    """Grey pixels as PNG bytes."""
+    out = io.BytesIO()
+    Image.fromarray(pixels).save(out, "PNG")
+    return out.getvalue()

@@ -94,9 +94,9 @@ def main() -> None:
 
 
 def _register() -> None:
-    from . import bank_commands, digitise_commands, serve_commands
+    from . import bank_commands, digitise_commands, scan_commands, serve_commands
 
-    for module in (digitise_commands, bank_commands, serve_commands):
+    for module in (digitise_commands, scan_commands, bank_commands, serve_commands):
         for command in module.COMMANDS:
             main.add_command(command)
 

@@ -104,11 +104,16 @@ def make_folder(folder: Path) -> None:
 
 
 def write_text(target: Path, text: str) -> None:
+    """Write a text file (UTF-8, line ends as they are) as `write_bytes` does."""
+    write_bytes(target, text.encode())
+
+
+def write_bytes(target: Path, data: bytes) -> None:
     """Write a file through a temporary name, so that a reader never sees half of it, whatever interrupts the writing."""
     make_folder(target.parent)
     temporary = target.with_name(target.name + ".part")
     try:
-        temporary.write_text(text, encoding="utf-8", newline="")
+        temporary.write_bytes(data)
         temporary.replace(target)
     except OSError as e:
         raise OutputError(f"{target} cannot be written: {e.strerror or e}. Free some space or give another folder.") from None

@@ -46,14 +46,6 @@ def base(model: CurveModel, pump: PumpInfo | None, *, x_unit: str = "m3/h", y_un
     )
 
 
-def unused(model: CurveModel) -> tuple[Notice, ...]:
-    """What the recipe states for this line and nothing reads: said, not passed over."""
-    if not model.locked:
-        return ()
-    text = "The locked stretches of this line are kept in the recipe but not used for the trace. Add clicks where it strays."
-    return (Notice(code="unused-keys", message=text),)
-
-
 def failed(model: CurveModel, pump: PumpInfo | None, error: CurvebankError, path: str) -> Curve:
     """The curve that says why it could not be made; nothing the user gave is lost."""
     return Curve(**base(model, pump), error={**error.to_dict(), "path": error.path or path})
@@ -139,7 +131,7 @@ def from_trace(model: CurveModel, axes: dict[str, AxisModel], trace: Trace, pane
         sigma=frozen(sigma),
         spread=uncertainty.spread(reading, parts["calibration"], parts["drawing"], misfit),
         fit=fitted,
-        warnings=tuple(trace.warnings) + notices + unused(model),
+        warnings=tuple(trace.warnings) + notices,
     )
 
 
@@ -185,7 +177,7 @@ def from_table(model: CurveModel, pump: PumpInfo) -> Curve:
         sigma=frozen(sigma),
         spread=uncertainty.spread(sigma, none, none, points[:, 1] - fitted.value(points[:, 0]) if fitted else none),
         fit=fitted,
-        warnings=notices + unused(model),
+        warnings=notices,
     )
 
 

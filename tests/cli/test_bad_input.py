@@ -238,13 +238,6 @@ def test_one_bad_curve_never_sinks_its_sheet(name, prepared):
     assert good["error"] is None and good["fit"]
 
 
-def test_what_is_kept_but_not_used_is_said(prepared):
-    doc = chart.document()
-    doc["curves"] = [doc["curves"][0] | {"locked": [{"pixels": [[300, 300], [301, 300]]}]}]
-    codes = [w["code"] for w in digitise.result_json(digitise.run(doc, None, **prepared))["curves"][0]["warnings"]]
-    assert "unused-keys" in codes
-
-
 def table_recipe(**change):
     curve = {"id": "t", "quantity": "head", "kind": "table", "rows": [[0, 50], [50, 47], [100, 38]], "x_unit": "m3/h", "y_unit": "m"}
     return {"recipe": 1, "pump": {"maker": "Fenwright", "model": "T", "stages": 3}, "curves": [curve | change]}

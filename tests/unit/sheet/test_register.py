@@ -1,12 +1,9 @@
 """Two scans of one paper, made from one drawn chart by known maps: what the registration says must be those maps."""
 
-import io
-
 import chart
 import cv2
 import numpy as np
 import pytest
-from PIL import Image
 
 from curvebank import sheet
 from curvebank.errors import SheetError
@@ -15,29 +12,11 @@ from curvebank.sheet import register
 INSIDE = np.stack(np.meshgrid(np.linspace(90, 810, 25), np.linspace(70, 620, 20)), axis=-1).reshape(-1, 2)
 
 
-def labelled(png=None):
-    """The drawn chart with a title, numbers along its axes and names at its curves, as grey pixels."""
-    page = np.array(Image.open(io.BytesIO(png or chart.png())))
-    write = lambda text, x, y, size=0.5: cv2.putText(page, text, (x, y), cv2.FONT_HERSHEY_SIMPLEX, size, 30, 1, cv2.LINE_AA)  # noqa: E731
-    write("FENWRIGHT DP 80", 300, 45, 0.9)
-    write("1750 1/min", 620, 45, 0.6)
-    for i in range(11):
-        write(str(20 * i), int(chart.X0 + 70 * i) - 12, 622)
-        write(str(6 * i), 66, int(chart.Y0 - 52 * i) + 5)
-        write(f"{10 * i}%", 812, int(chart.Y0 - 52 * i) + 5)
-    write("Capacity, cubic metres an hour", 300, 655, 0.6)
-    write("320", 600, 330)
-    write("290", 560, 430)
-    return page
-
-
-PAGE = labelled()
+PAGE = chart.labelled()
 
 
 def scan(pixels):
-    out = io.BytesIO()
-    Image.fromarray(pixels).save(out, "PNG")
-    return sheet.load(out.getvalue())
+    return sheet.load(chart.png_of(pixels))
 
 
 def by_plane(plane, size, page=PAGE, blur=0.0):
