@@ -7,13 +7,14 @@ from collections.abc import Sequence
 from dataclasses import replace
 from typing import Any
 
-from .. import axes, sheet, trace
+from .. import axes, sheet
 from ..errors import CurvebankError
 from ..jsonable import clean
 from ..recipe import CurveModel, MaskModel, PanelModel, Recipe, validate_part
 from ..records import PageInfo
 from . import curves as curve_maker
 from . import masking
+from .live import Before
 from .result import curve_json, panel_json
 from .run import clicks, placed, pump_info
 from .threads import one_thread
@@ -66,6 +67,8 @@ def preview(
     pump: dict[str, Any] | None = None,
     *,
     masks: Sequence[dict[str, Any]] = (),
+    before: Before | None = None,
+    live: bool = False,
 ) -> dict[str, Any]:
     """Calibrate one panel and, if asked, trace one curve on it.
 
@@ -79,6 +82,10 @@ def preview(
         The recipe's pump, for stages and speed.
     masks : sequence of dict
         The recipe's ``sheet.masks``.
+    before : Before, optional
+        The curve's trace of the question before, brought up to date here.
+    live : bool
+        Let stay what the change since then does not touch. The answer is for the eye: a trace of the whole line may differ by a hair.
 
     Returns
     -------
@@ -110,7 +117,7 @@ def preview(
         for axis in (line.x, line.y):
             if axis not in area.axes:
                 raise CurvebankError(f"Panel “{area.id}” has no axis “{axis}”.", code="recipe", path="$.curve")
-        got = trace.trace_panel(prepared, panel_map, [clicks(line)])[0]
+        got = (before or Before()).traced(prepared, panel_map, clicks(line), live=live)
         if isinstance(got, CurvebankError):
             raise got
         made = curve_maker.from_trace(line, area.axes, got, panel_map, info, prepared.width_px)

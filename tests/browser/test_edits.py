@@ -148,3 +148,42 @@ def test_masks_are_brushed_listed_erased_and_undone(desk, server, traced):
     page.keyboard.press("Escape")
     page.wait_for_selector("#slip [name=brush]", state="detached")
     assert len(doc_of(server, desk, traced)["sheet"]["masks"]) == 1
+
+
+def test_the_ring_of_a_doubtful_trace_takes_the_one_click(desk, server, chart_png, chart_recipe):
+    """The server's doubt about one line, as it would tell of it: said in words, stepped to by key, settled by a click by the ring."""
+    page, ring, sent = desk.page, place("H-290", 280), []
+
+    def doubt(route):
+        question = route.request.post_data_json
+        answer = route.fetch()
+        body = answer.json()
+        curve = body.get("curve")
+        if curve and curve["id"] == "H-290":
+            sent.append(question["curve"])
+            if len(question["curve"]["clicks"]) == 3:
+                curve |= {
+                    "flagged": True,
+                    "confidence": 0.62,
+                    "hint_click": list(ring),
+                    "stretches": [[200, 260, "two lines run as one here"]],
+                }
+        route.fulfill(response=answer, json=body)
+
+    page.route("**/preview", doubt)
+    draft = lay(server, chart_png, chart_recipe)
+    page.goto(f"{server.address}/desk/{draft}#curves")
+    page.wait_for_selector("#findings >> text=Ø 290: two lines run as one here")
+    scale = float(page.get_attribute("#paper", "data-view").split()[0])
+    page.locator("#paper").focus()
+    page.keyboard.press("n")
+    page.wait_for_function(f"() => Number(document.getElementById('paper').dataset.view.split(' ')[0]) > {1.05 * scale}")
+    assert "one click here would settle it" in page.text_content("#over")
+    axe_is_content(page)
+    desk.click(ring + [3, 2])
+    page.wait_for_selector("#over .hint-ring", state="detached")
+    clicks = doc_of(server, desk, draft)["curves"][1]["clicks"]
+    assert len(clicks) == 4 and clicks[2] == pytest.approx(list(ring + [3, 2]), abs=1.5)
+    page.wait_for_selector("#findings >> text=two lines run as one here", state="detached")
+    desk.click(place("H-290", 100))
+    page.wait_for_selector("#slip >> text=The trace is")

@@ -181,3 +181,17 @@ test("the brush steps through its widths", () => {
   assert.equal(nextWidth(25, true), 28);
   assert.equal(nextWidth(4, false), 4);
 });
+
+test("what the calibration says is a finding at the place its sentence names", () => {
+  const panel = { id: "p", axes: { flow: { quantity: "flow", unit: "m3/h", marks: [{ at: [0, 100], value: 0 }, { at: [100, 100], value: 50 }] } } };
+  const warnings = [
+    { code: "grid-one-off", message: "The flow lines can be read in two ways. The line at (412, 88) then is 40 or 50." },
+    { code: "calibration-mistyped", message: "said by the suspect mark" },
+    { code: "scales-contradict", message: "The two flow scales differ by 1.2009" },
+  ];
+  const found = liveFindings({ panels: [panel], curves: [] }, () => ({ warnings, suspects: [] }), () => null, words);
+  assert.equal(found.length, 2);
+  assert.deepEqual([found[0].where.at, found[0].settle], [[412, 88], [412, 88]]);
+  assert.equal(found[1].text, "The two flow scales differ by 1.2009.");
+  assert.equal(found[1].settle, undefined);
+});

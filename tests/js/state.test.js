@@ -301,7 +301,7 @@ test("one diameter at several speeds is named by speed; two lines of one name ar
 });
 
 test("an empty plot does not deny what the paper shows as contours", () => {
-  assert.match(missingWords("efficiency", []), /not printed/);
+  assert.match(missingWords("efficiency", []), /not on any sheet/);
   assert.match(missingWords("efficiency", [{ quantity: "efficiency_contour" }]), /lines of constant value/);
-  assert.match(missingWords("power", [{ quantity: "efficiency_contour" }]), /not printed/);
+  assert.match(missingWords("power", [{ quantity: "efficiency_contour" }]), /not on any sheet/);
 });

@@ -56,6 +56,20 @@ class TestPreview:
         seen = client.post(f"/api/drafts/{ready['id']}/preview", json=body).json["curve"]
         assert seen["error"] is None and "mask-over-click" in [w["code"] for w in seen["warnings"]]
 
+    def test_a_guide_under_the_hand_leaves_the_rest_of_the_trace_alone(self, client, ready):
+        """Live: far from the guide the trace stays to the bit. Without it, the whole line is followed."""
+        line = ready["doc"]["curves"][1]
+        whole = np.array(self.look(client, ready, line).json["curve"]["pixels"])
+        at = whole[len(whole) // 2]
+        body = {"panel": ready["doc"]["panels"][0], "curve": line | {"guides": [[at[0], at[1] + 1.5]]}, "live": True}
+        seen = client.post(f"/api/drafts/{ready['id']}/preview", json=body).json["curve"]
+        assert seen["error"] is None
+        live = np.array(seen["pixels"])
+        far = np.abs(whole[:, 0] - at[0]) > 250
+        assert far.sum() > 50 and np.isin(whole[far], live).all()
+        again = client.post(f"/api/drafts/{ready['id']}/preview", json=body | {"live": False}).json["curve"]
+        assert again["error"] is None and np.abs(len(again["pixels"]) - len(live)) < 5
+
     def test_a_mask_that_is_none_is_a_problem_with_its_path(self, client, ready, is_problem):
         body = {"panel": ready["doc"]["panels"][0], "masks": [{"brush": [], "width_px": 30}]}
         answer = client.post(f"/api/drafts/{ready['id']}/preview", json=body)

@@ -31,6 +31,10 @@ class Question:
     live: bool = False
 
 
+KEPT_TRACES = 64
+"""Curves whose last trace is kept, so that a point under the hand re-traces only what it touches."""
+
+
 class Previews:
     """Prepared pages that are open, and the queue of previews."""
 
@@ -41,6 +45,7 @@ class Previews:
         self._tracing = threading.Lock()
         self._tickets = itertools.count()
         self._newest: dict[tuple[str, ...], int] = {}
+        self._traced: OrderedDict[tuple[str, ...], Any] = OrderedDict()
 
     def prepared(self, key: PageKey) -> Any:
         """The prepared page, or None while it is not made."""
@@ -86,11 +91,29 @@ class Previews:
 
         page = self.services.pages.info(question.key)
         try:
-            return digitise.preview(question.panel, question.curve, prepared, page, question.pump, masks=question.masks)
+            return digitise.preview(
+                question.panel,
+                question.curve,
+                prepared,
+                page,
+                question.pump,
+                masks=question.masks,
+                before=self._before(subject, digitise.Before),
+                live=question.live,
+            )
         except CurvebankError as error:
             if error.path and not error.path.startswith(("$.panel", "$.curve", "$.sheet")):
                 error.path = error.path.replace("$", "$.panel", 1)  # as the question has it
             raise
+
+    def _before(self, subject: tuple[str, ...], make: Callable[[], Any]) -> Any:
+        """The last trace of a curve, for the next question about it."""
+        with self._guard:
+            kept = self._traced.pop(subject, None) or make()
+            self._traced[subject] = kept
+            while len(self._traced) > KEPT_TRACES:
+                self._traced.popitem(last=False)
+        return kept
 
     def _in_turn(self, subject: tuple[str, ...], work: Callable[[], Any]) -> Any:
         ticket = next(self._tickets)

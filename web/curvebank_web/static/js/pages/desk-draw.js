@@ -93,7 +93,7 @@ export function sceneOf(desk) {
   return {
     step: desk.step, bare: desk.bare, panelId: desk.panel?.id ?? null, panels: (doc.panels ?? []).map((p, i) => ({ ...p, outline: desk.outlineOf(p), name: `Panel ${i + 1}` })),
     box: desk.box, marks: sceneMarks(doc, desk.panelResult, desk.map, desk.chosenMark), openMark: desk.step === "marks" ? desk.openMark : null,
-    curves: ["curves", "family", "fit", "submit"].includes(desk.step) ? desk.items : [], selected: desk.selected ?? (desk.step === "curves" ? desk.openCurve?.id : null), focused: desk.focused, grabbed: desk.grabbed, locking: desk.locking, veil: desk.masks?.scene() ?? { masks: [] }, found: desk.step === "marks" && desk.showFound ? desk.lines.found : null,
+    curves: ["curves", "family", "fit", "submit"].includes(desk.step) ? desk.items : [], selected: desk.selected ?? (desk.step === "curves" ? desk.openCurve?.id : null), focused: desk.focused, grabbed: desk.grabbed, locking: desk.locking, doubted: desk.findings.find((f) => f.number === desk.chosenFinding)?.where?.curve ?? null, width: size("paper").width, veil: desk.masks?.scene() ?? { masks: [] }, found: desk.step === "marks" && desk.showFound ? desk.lines.found : null,
     ghosts: desk.ghosts, showGhosts: desk.step === "family" && ["both", "paper"].includes(desk.over), places: desk.step === "sheet" ? [] : places.paper, plotPlaces: places.plot, axes: desk.axes,
   };
 }

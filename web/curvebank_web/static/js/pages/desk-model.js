@@ -127,6 +127,10 @@ export class Desk {
       }
       this.flowAxis = panel.axes[ids.flow[0]] ?? null;
     }
+    // Opened straight at a later step, the paper was fitted to the marks alone: fitted again once the axes are placed.
+    const placed = Boolean(panel && this.axes.length && this.panelResult(panel)?.map);
+    if (placed && this.fitted !== panel.id && !this.moved && !this.drag && !["sheet", "panel", "marks"].includes(this.step)) this.view = null;
+    if (placed) this.fitted = panel.id;
     for (const item of this.items) {
       item.stale = Boolean(item.result && panel && this.previews.curve(panel, item.curve) !== item.result);
       if (this.step === "fit") addFit(item);
@@ -266,7 +270,11 @@ function markBox(panel) {
 function mergeFindings(live, checked) {
   const rank = { error: 0, warning: 1, note: 2 };
   const seen = new Set();
-  return [...checked, ...live].filter((f) => {
+  // The check repeats what was said while working; the live sentence knows its place, so it stays and the repetition goes.
+  const said = live.filter((f) => f.raw && f.where?.at);
+  const rest = checked.filter((f) => !said.some((l) => f.subject?.startsWith(l.subject) && f.text.includes(l.raw)));
+  const fresh = live.filter((l) => !l.raw || l.where?.at || !rest.some((f) => f.subject === l.subject && f.text.includes(l.raw)));
+  return [...rest, ...fresh].filter((f) => {
     const key = `${f.subject}|${f.text}`;
     if (seen.has(key)) return false;
     seen.add(key);

@@ -284,6 +284,14 @@ export class DeskTools {
     return best;
   }
 
+  /** Open a mark at a sheet place that a finding names, held to the printed line there. */
+  markHere(sheet) {
+    const { desk } = this;
+    const { at, held } = this.snapped(sheet);
+    desk.focusBlank = "mark";
+    desk.act({ type: "mark/open", panel: desk.panel.id, at, held });
+  }
+
   #markAt(sheet, e) {
     const { desk } = this;
     if (!desk.panel) return;
@@ -314,9 +322,10 @@ export class DeskTools {
     const chosen = (desk.doc.curves ?? []).find((c) => c.id === desk.selected);
     const trace = this.traceAt(screen);
     const off = !(trace && trace.id !== chosen?.id);
-    if (chosen && desk.guiding && !e.shiftKey && off && this.#awayFrom(chosen.id, screen) < 40) {
+    const free = chosen?.kind === "hand" || chosen?.kind === "points";
+    if (chosen && desk.guiding && !e.shiftKey && off && (free || this.#awayFrom(chosen.id, screen) < 40)) {
       const handle = { kind: "line", curve: chosen.id, kept: true, locked: -1 };
-      desk.act(chosen.kind === "hand" || chosen.kind === "points" ? { ...moveAction(desk, { ...handle, kind: "hint" }, at), did: "click set" } : moveAction(desk, handle, at));
+      desk.act(free ? { ...moveAction(desk, { ...handle, kind: "hint" }, at), did: "click set" } : moveAction(desk, handle, at));
       return undefined;
     }
     // A line that begins on a kept trace: that click chose the trace, this one leaves it. A kept curve is never bent by the way.

@@ -190,6 +190,7 @@ function abilities(desk, draw, tools, invalidate) {
         const v = Number(agrees.toFixed(Math.abs(agrees - Math.round(agrees)) < 0.35 ? 0 : 1));
         buttons.push(button(`File it as ${plain(v)} mm`, { onClick: () => { desk.act({ type: "curve/set", curve: curve.id, change: { diameter_mm: v, label: { by: "diameter", printed: plain(curve.diameter_mm) } } }); desk.checkAndGo("family"); } }));
       }
+      if (f.settle) ways.push(["put the mark there that settles it", () => { desk.choosePanel(f.where.panel); desk.go("marks"); desk.travelTo([f.settle]); tools.markHere(f.settle); }]);
       if (f.masked) ways.push(["take the mask away there", () => desk.masks.uncover(f.masked)]);
       const ring = f.doubt && desk.step === "curves" && desk.items.find((i) => i.id === f.where?.curve)?.result?.hint_click;
       if (ring) ways.push(["go to the one click that would settle it", () => { desk.focused = { kind: "hint", curve: f.where.curve, kept: desk.items.find((i) => i.id === f.where.curve).kept }; desk.travelTo([ring]); $("paper").focus(); redo("all"); }]);
@@ -236,8 +237,9 @@ function abilities(desk, draw, tools, invalidate) {
     if (!item?.pixels.length) return undefined;
     const { stretch } = f.where;
     if (!stretch) return desk.travelTo([item.pixels[Math.floor(item.pixels.length * 0.35)]]);
-    // A doubtful stretch is shown near, with as much again of the line at either side.
-    return desk.travelTo(item.pixels.slice(Math.max(0, Math.floor(stretch[0])), Math.ceil(stretch[1]) + 1), true);
+    // A doubtful stretch is shown near, with as much again of the line at either side, and with the click that would settle it.
+    const ring = f.doubt && item.result?.hint_click ? [item.result.hint_click] : [];
+    return desk.travelTo([...item.pixels.slice(Math.max(0, Math.floor(stretch[0])), Math.ceil(stretch[1]) + 1), ...ring], true);
   }
 }
 

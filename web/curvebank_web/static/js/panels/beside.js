@@ -5,6 +5,8 @@ import { thin } from "../geometry/polyline.js";
 import { fixed, plain, withDoubt } from "../geometry/number.js";
 import { QUANTITY_WORDS, written } from "../geometry/units.js";
 import { drawChart } from "../view/chart.js";
+import { sentence } from "../state/derive.js";
+import { confidence } from "../state/words.js";
 import { h, put, s } from "../view/dom.js";
 import { maskList } from "./sentence-mask.js";
 
@@ -38,11 +40,34 @@ function marksTable(root, desk) {
     const axis = panel.axes[id];
     const n = (axis.marks ?? []).length;
     const res = answer?.mark_residuals?.[id];
-    const worst = res?.length && n > 0 ? `${plain(Math.max(...res.map(Math.abs)), 1)} px` : "";
+    const most = res?.length && n > 0 ? Math.max(...res.map(Math.abs)) : null;
+    const span = spanOf(axis.marks ?? []);
+    const worst = most === null ? "" : `${plain(most, 1)} px${span > 0 ? `, ${plain((100 * most) / span, 2)} %` : ""}`;
     return h("tr", {}, h("td", {}, `${QUANTITY_WORDS[axis.quantity]}, ${written(axis.unit)}`), h("td", { class: "num" }, String(n)), h("td", { class: "num" }, worst), h("td", {}, n < 2 ? `wants ${2 - n} more` : n === 2 ? "a third would find a slip" : axis.scale === "log10" ? "logarithmic" : "linear"));
   });
-  const grid = answer?.grid ? h("p", { class: "small" }, answer.grid.used ? `The printed grid agrees: ${answer.grid.lines} lines, ${plain(answer.grid.residual_px, 2)} px.` : answer.grid.why) : null;
-  put(root, h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)), grid);
+  const shown = desk.showFound ?? false;
+  const n = desk.lines?.found ? desk.lines.found.level.length + desk.lines.found.upright.length : 0;
+  const toggle = desk.step === "marks" && n ? h("button", { type: "button", class: "link", "aria-pressed": String(shown), onclick: () => desk.toggleFound() }, shown ? `Hide the ${n} printed lines found` : `Show the ${n} printed lines found`) : null;
+  const grid = answer?.grid;
+  const residual = grid && Number.isFinite(answer.residual_px) ? `Map: ${plain(answer.residual_px, 2)} px rms, worst ${plain(answer.worst_px, 2)} px. ` : "";
+  const head = grid ? h("b", {}, grid.used ? `The printed grid is used, ${grid.lines} ${grid.lines === 1 ? "line" : "lines"}. ` : "The printed grid is not used. ") : null;
+  put(root, grid ? h("p", { class: "small first" }, head, residual) : null,
+    h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst, of the axis"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)),
+    grid ? h("p", { class: "small" }, sentence(grid.why)) : null,
+    toggle || grid ? h("p", { class: "small" }, toggle, toggle && grid ? ". " : null, grid ? gridChoice(desk, panel) : null) : null);
+}
+
+/** Length of an axis in sheet pixels: between the two marks furthest apart. */
+function spanOf(marks) {
+  let most = 0;
+  for (const a of marks) for (const b of marks) most = Math.max(most, Math.hypot(a.at[0] - b.at[0], a.at[1] - b.at[1]));
+  return most;
+}
+
+/** Whether the printed grid may be used on this panel. */
+function gridChoice(desk, panel) {
+  const off = panel.grid === "off";
+  return h("button", { type: "button", class: "link", onclick: () => desk.act({ type: "panel/set", panel: panel.id, change: { grid: off ? "auto" : "off" } }) }, off ? "Use the printed grid where it helps" : "Place the axes by the marks alone");
 }
 
 const FILL = { drawing: "hatched", reading: "solid", calibration: "ruled", fit: "dotted" };
@@ -59,7 +84,7 @@ function doubt(root, desk) {
   const bar = h("div", { class: "doubt", role: "img", "aria-label": shares.map(([n, v]) => `${n} ${Math.round(v * 100)} per cent`).join(", ") }, shares.filter(([, v]) => v > 0.005).map(([n, v]) => h("i", { class: FILL[n] ?? "ruled", style: { flex: String(v) } })));
   put(root, h("h2", {}, `Where the ± ${withDoubt(0, u).u} ${unit} of ${item.label} comes from`), bar,
     h("p", { class: "shares" }, shares.map(([n, v]) => h("span", {}, `${n} ${Math.round(v * 100)} %`))),
-    h("p", { class: "small" }, "A delivered pump may differ far more; the pump page shows that band first."));
+    h("p", { class: "small" }, item.result.confidence !== undefined ? `That the trace keeps to this line: ${confidence(item.result.confidence)}. ` : null, "A delivered pump may differ far more; the pump page shows that band first."));
 }
 
 function exponents(root, desk) {

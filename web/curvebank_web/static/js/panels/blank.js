@@ -46,6 +46,7 @@ export function numberBlank({ name, label, value, example = "", offer = null, wi
       settle();
     } else if (e.key === "Enter") {
       e.preventDefault();
+      if (!onEnter && input.value === shown && settle()) return goOn(input);
       const v = commit();
       if (v === undefined) return undefined;
       if (!onEnter) return settle();
@@ -58,6 +59,17 @@ export function numberBlank({ name, label, value, example = "", offer = null, wi
   wrap.read = () => commit();
   wrap.input = input;
   return wrap;
+}
+
+/** Enter in a blank that stays as it is: on to the next one, and from the last to what the sentence leads to. */
+function goOn(input) {
+  const slip = input.closest(".slip");
+  const blanks = [...(slip?.querySelectorAll(".sentence input, .sentence select") ?? [])];
+  const next = blanks[blanks.indexOf(input) + 1];
+  if (next) {
+    next.focus();
+    next.select?.();
+  } else slip?.querySelector(".btn.main")?.click();
 }
 
 function sayUnder(wrap, name, error) {
@@ -81,6 +93,7 @@ export function textBlank({ name, label, value, example = "", width = 120, onVal
     if (e.key !== "Enter") return;
     e.preventDefault();
     if (input.value !== (value ?? "")) onValue?.(input.value.trim());
+    else goOn(input);
   });
   return h("span", { class: "blank" }, input, list ? h("datalist", { id: `${name}-list` }, list.map((v) => h("option", { value: v }))) : null);
 }

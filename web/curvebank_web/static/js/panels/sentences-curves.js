@@ -143,12 +143,15 @@ function chosenSentence(desk, chosen) {
   }
   const set = (change) => desk.act({ type: "curve/set", curve: chosen.id, change });
   const locked = (chosen.locked ?? []).length;
+  const want = clicksWanted(chosen);
+  const few = (chosen.clicks ?? []).length < want;
+  const adding = chosen.kind === "points" ? "Add a point" : chosen.kind === "hand" ? "Add a click" : "Draw a guide";
   const can = item?.pixels.length > 2 && chosen.kind !== "points";
   return {
     key: JSON.stringify(chosen),
-    sentence: [curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }), said(KIND_WORDS[chosen.kind]), said(`${sureness(item)}${locked ? ` ${locked} ${locked === 1 ? "stretch is" : "stretches are"} locked.` : ""}`)],
+    sentence: [curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }), said(KIND_WORDS[chosen.kind]), said(few ? `${chosen.clicks.length} of ${want} clicks are set.` : ""), said(`${sureness(item)}${locked ? ` ${locked} ${locked === 1 ? "stretch is" : "stretches are"} locked.` : ""}`)],
     does: [
-      desk.guiding ? h("span", { class: "hint" }, chosen.kind === "points" ? "Click the next point." : "Click the ink beside the trace, or drag the trace.") : button(chosen.kind === "points" ? "Add a point" : "Draw a guide", { quiet: true, onClick: () => desk.select(chosen.id, true) }),
+      desk.guiding ? h("span", { class: "hint" }, chosen.kind === "points" ? "Click the next point." : chosen.kind === "hand" ? "Click along the line." : "Click the ink beside the trace, or drag the trace.") : button(adding, { quiet: true, onClick: () => desk.select(chosen.id, true) }),
       can ? button("Lock a stretch", { quiet: true, onClick: () => desk.locks.start(chosen.id) }) : null,
       button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), done,
     ],

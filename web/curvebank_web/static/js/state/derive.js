@@ -145,6 +145,7 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
       out.push(place(s.sure === false ? "warning" : "error", words.suspect(axis, s), { where: { panel: panel.id, axis: s.axis, mark: index, at: mark?.at }, suspect: { ...s, index, panel: panel.id }, subject: `axis:${panel.id}/${s.axis}` }));
     }
   }
+  for (const panel of doc.panels ?? []) out.push(...panelNotices(panel, panelResultOf(panel)));
   const open = deskPart(doc).curve;
   for (const curve of [...(doc.curves ?? []), ...(open ? [open] : [])]) {
     const panel = (doc.panels ?? []).find((p) => p.id === curve.panel);
@@ -160,10 +161,27 @@ export function liveFindings(doc, panelResultOf, resultOf, words) {
   return out;
 }
 
+/** Said at its own place already: as a suspect mark, or as a mark under a mask. */
+const SAID_ELSEWHERE = ["calibration-mistyped", "calibration-swapped", "mask-over-mark", "mark-masked"];
+
+/** The sheet place a sentence names in brackets, "(412, 88)", or null. */
+export function placeIn(text) {
+  const found = /\((-?\d+(?:\.\d+)?), (-?\d+(?:\.\d+)?)\)/.exec(text ?? "");
+  return found ? [Number(found[1]), Number(found[2])] : null;
+}
+
+/** What the calibration says of a panel: scales that contradict, lines that can be read in two ways, marks off their line. */
+function panelNotices(panel, answer) {
+  return (answer?.warnings ?? []).filter((w) => !SAID_ELSEWHERE.includes(w.code)).map((w) => {
+    const at = placeIn(w.message);
+    return place("warning", sentence(w.message), { where: { panel: panel.id, ...(at ? { at } : {}) }, subject: `panel:${panel.id}`, code: w.code, raw: w.message, ...(w.code === "grid-one-off" && at ? { settle: at } : {}) });
+  });
+}
+
 /** What the trace itself says of a curve: its warnings, doubtful stretches that no warning names, and a flag that neither explains. */
 function doubts(curve, result, words) {
   const name = curveLabel(curve) || "This line";
-  const say = (text, stretch, code) => place("warning", `${name}: ${sentence(text)}`, { where: { panel: curve.panel, curve: curve.id, stretch }, subject: `curve:${curve.id}`, code, doubt: Boolean(result.flagged) });
+  const say = (text, stretch, code) => place("warning", `${name}: ${sentence(text)}`, { where: { panel: curve.panel, curve: curve.id, stretch }, subject: `curve:${curve.id}`, code, raw: text, doubt: Boolean(result.flagged) });
   const list = (result.warnings ?? []).filter((w) => w.code !== "mask-over-click").map((w) => say(w.message, w.stretch ?? null, w.code));
   for (const [i0, i1, reason] of result.stretches ?? []) {
     if (!(result.warnings ?? []).some((w) => w.stretch && w.stretch[0] <= i1 && w.stretch[1] >= i0)) list.push(say(reason, [i0, i1], "stretch"));

@@ -108,7 +108,11 @@ function drawTrace(svg, view, item, scene) {
       drawGuide(g, at, is("guides", i, scene.grabbed), chosen || !item.kept);
       if (is("guides", i, scene.focused)) g.append(focusBox(at, 10));
     });
-    if (item.result?.hint_click) drawHint(g, toScreen(view, item.result.hint_click), scene.focused?.kind === "hint" && scene.focused.curve === item.id);
+    if (item.result?.hint_click) {
+      const focused = scene.focused?.kind === "hint" && scene.focused.curve === item.id;
+      const rings = scene.curves.filter((c) => c.result?.hint_click).length;
+      drawHint(g, toScreen(view, item.result.hint_click), focused, focused || chosen || rings === 1 || scene.doubted === item.id, scene.width);
+    }
   }
 }
 
@@ -122,9 +126,9 @@ function drawGuide(g, [x, y], held, full) {
 }
 
 /** Where one more click would settle a doubt: a dashed ring with its words. */
-function drawHint(g, [x, y], focused) {
+function drawHint(g, [x, y], focused, named, width) {
   g.append(s("circle", { cx: x, cy: y, r: 12, class: "casing", "stroke-width": 5 }), s("circle", { cx: x, cy: y, r: 12, class: "k-finding hint-ring", "stroke-width": 2, "stroke-dasharray": "5 3" }), s("circle", { cx: x, cy: y, r: 1.6, fill: "var(--finding)" }));
-  text(g, x + 17, y - 9, "one click here would settle it", "finding");
+  if (named) text(g, x > width - 200 ? x - 17 : x + 17, y - 9, "one click here would settle it", "finding", { "text-anchor": x > width - 200 ? "end" : "start" });
   if (focused) g.append(focusBox([x, y], 17));
 }
 

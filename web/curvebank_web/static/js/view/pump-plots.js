@@ -18,7 +18,7 @@ function heights(root, has) {
   return { ...small, head: Math.max(300, Math.min(474, room)) };
 }
 
-const NOT_PRINTED = { efficiency: "Efficiency is not printed on any sheet kept here.", power: "Shaft power is not printed on any sheet kept here. Ask the maker.", npshr: "NPSH required is not printed on any sheet kept here. Ask the maker, or search the paper register." };
+const NOT_PRINTED = { efficiency: "Efficiency is not on any sheet kept here.", power: "Shaft power is not on any sheet kept here. Ask the maker.", npshr: "NPSH required is not on any sheet kept here. Ask the maker." };
 
 /** model = {detail, asked, values: {quantity: values}, duties, system, units, flow} ; onPoint(flow | null) */
 export function drawPumpPlots(root, model, onPoint) {
@@ -79,7 +79,7 @@ export function missingWords(q, curves) {
   const level = (curves ?? []).some((c) => c.quantity === `${q}_contour`);
   const name = { efficiency: "Efficiency", power: "Shaft power", npshr: "NPSH required" }[q];
   if (level) return `${name} is printed as lines of constant value, drawn over the head above.`;
-  return NOT_PRINTED[q] ?? "Not printed on any sheet kept here.";
+  return NOT_PRINTED[q] ?? "Not on any sheet kept here.";
 }
 
 function bandOf(values, fu, k) {

@@ -87,6 +87,14 @@ export function drawReplot(svg, scales, scene) {
   if (scene.showGhosts) for (const g of scene.ghosts) lines.push({ points: g.points, tone: "construct", form: "ghost", width: 1.6, y: Math.max(0, scene.axes.findIndex((a) => a.id === g.y)) });
   const { clip } = drawChart(svg, { frame: scales.frame, x: scales.x, ys: scales.ys, lines, bands, room: scales.ys.length > 1 ? 0 : 62 });
   const toPlot = (y) => ([q, v]) => [scales.x.map(q), scales.ys[y].map(v)];
+  for (const item of scene.curves.filter((c) => c.curve.kind === "points")) {
+    const y = scene.axes.findIndex((a) => a.id === item.curve.y);
+    if (y < 0) continue;
+    for (const p of item.points) {
+      const [px, py] = toPlot(y)(p);
+      svg.append(s("path", { d: `M${px - 5} ${py - 5}l10 10M${px - 5} ${py + 5}l10 -10`, class: item.kept ? "k-ink" : "k-trace", "stroke-width": 1.5, "clip-path": clip }));
+    }
+  }
   if (scene.showGhosts) {
     for (const g of scene.ghosts) {
       const to = toPlot(Math.max(0, scene.axes.findIndex((a) => a.id === g.y)));
