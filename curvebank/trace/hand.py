@@ -7,8 +7,8 @@ from ..records import FloatArray, Trace, frozen
 from . import smooth
 from .axis import from_polyline
 
-CLICK_SIGMA_PX = 0.95
-"""Standard uncertainty of a careful click in each direction [px]: a little more than evenly within +-1.5 px."""
+CLICK_SIGMA_PX = 0.87
+"""Standard uncertainty of a careful click in each direction [px]: evenly within +-1.5 px."""
 CLICK_FREEDOM = 5.0
 """Weight of that figure against the clicks' own scatter, in degrees of freedom."""
 ORDER = 3.0

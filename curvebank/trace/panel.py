@@ -13,11 +13,12 @@ from .clicks import Clicks, PanelMap, checked, same_clicks
 from .direction import one_way
 from .ends import to_ink
 from .follow import follow
+from .hand import by_hand
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
 from .locked import trace_around
-from .manual import by_hand, points_on_symbols
 from .meet import end_on_others
 from .profile import align, refine
+from .symbols import points_on_symbols
 
 FAR_PX = 1.2
 """An axis that had to be moved by more than this is read once more from where it now lies."""
@@ -83,7 +84,7 @@ def trace_panel(
 
 def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatArray) -> tuple[Trace, Doubt | None]:
     if clicks.kind == "hand":
-        return by_hand(prepared, points, clicks.closed), None
+        return by_hand(points, clicks.closed), None
     if clicks.kind == "points":
         return points_on_symbols(prepared, points), None
     if clicks.locked:
