@@ -129,7 +129,7 @@ def test_a_hand_drawn_curve_is_its_clicks_with_honest_uncertainty(tools, box):
     points = clicks_on(FALL, np.linspace(0, 1, 7), jitter=0) + [0, 60]
     got = trace_one(tools, box, pixels, points, kind="hand")
     gap = np.array([np.hypot(*(got.pixels - p).T).min() for p in points])
-    assert gap.max() < 1.0 and got.sigma_px.min() > 0.7 and got.source == "hand"
+    assert gap.max() < 1.0 and 0.6 < got.sigma_px.min() < 1.5 and got.source == "hand"
 
 
 def test_points_snap_to_their_symbols(tools, box):
