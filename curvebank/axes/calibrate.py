@@ -6,9 +6,10 @@ import numpy as np
 
 from ..errors import CalibrationError
 from ..records import FloatArray, Notice
-from . import gridmap, plane
+from . import against, gridmap, plane
 from . import outline as outlines
 from . import suspects as doubts
+from .grid import Placed
 from .layout import Layout, arrange
 from .marks import AxisMarks, get, read_axes
 from .panelmap import PanelMap, Scale
@@ -48,24 +49,29 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
 
     layout = arrange(axes, path)
     verdict = doubts.judge(layout, axes, aspect)
-    layout = verdict.reading.layout
-    for name, mark, _ in verdict.reading.changes:
-        if not any(s.swapped_with is not None and s.axis == name for s in verdict.suspects):
-            layout = layout.with_open(name, mark)
-    solution = _final(layout, verdict.reading, aspect)
+    solution = _final(_opened(verdict), verdict.reading, aspect)
+    wanted = get(panel, "grid", None) or "auto"
+    placed = gridmap.look(_opened(verdict), solution, prepared, wanted)
+    ruled = against.overruled(verdict, placed, layout, axes, aspect)
+    if ruled is not None:
+        # The lines know better than the marks among themselves which value is wrong: the plane is placed anew without it.
+        verdict = ruled
+        solution = _final(_opened(verdict), verdict.reading, aspect)
+        placed = gridmap.look(_opened(verdict), solution, prepared, wanted)
+    layout = _opened(verdict)
     notices = [Notice(code=c, message=m) for c, m in (*layout.notices, *doubts.describe(verdict.suspects, axes))]
+    notices += against.doubted(placed, axes)
+    notices += against.hidden(axes, prepared)
     residuals = _mark_residuals(axes, layout, solution)
-    notices += _scatter_notices(axes, residuals, verdict)
     page = page_size or _page_size(prepared)
     given = get(panel, "outline")
     parameters, covariance, scales = _scales(layout, solution)
-    placed = gridmap.look(layout, solution, prepared, get(panel, "grid", None) or "auto")
-    report = gridmap.report(placed)
     warps, plane_size = None, solution.plane_size
     if not isinstance(placed, str) and placed.bends:
         parameters, covariance, scales, warps = gridmap.with_bends(layout, solution, placed, parameters, covariance, scales)
         residuals = gridmap.mark_misses(residuals, layout, placed, scales, parameters)
         plane_size = len(placed.theta)
+    notices += _scatter_notices(axes, residuals, verdict, placed)
     return PanelMap(
         panel_id,
         parameters,
@@ -77,11 +83,20 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
         outline=outlines.given(given, path) if given else outlines.derive(layout, solution, page),
         mark_residuals=residuals,
         click_sigma_px=solution.sigma_px,
-        grid=report,
+        grid=gridmap.report(placed),
         notices=tuple(notices),
         suspects=[s.as_dict() for s in verdict.suspects],
         warps=warps,
     )
+
+
+def _opened(verdict: doubts.Verdict) -> Layout:
+    """The layout of the best reading, with the values it changes left open."""
+    layout = verdict.reading.layout
+    for name, mark, _ in verdict.reading.changes:
+        if not any(s.swapped_with is not None and s.axis == name for s in verdict.suspects):
+            layout = layout.with_open(name, mark)
+    return layout
 
 
 def _final(layout: Layout, reading: doubts.Reading, aspect: float) -> Solution:
@@ -131,18 +146,28 @@ def _mark_residuals(axes: dict[str, AxisMarks], layout: Layout, solution: Soluti
     return out
 
 
-def _scatter_notices(axes: dict[str, AxisMarks], residuals: dict[str, FloatArray], verdict: doubts.Verdict) -> list[Notice]:
+def _scatter_notices(
+    axes: dict[str, AxisMarks], residuals: dict[str, FloatArray], verdict: doubts.Verdict, placed: Placed | str
+) -> list[Notice]:
     named = {s.axis for s in verdict.suspects}
+    bent = set() if isinstance(placed, str) else set(placed.bends)
     out: list[Notice] = []
     for name, r in residuals.items():
         worst = float(r.max())
-        if name not in named and worst > max(4.0, 0.004 * float(np.hypot(*np.ptp(axes[name].at, axis=0)))):
+        # Where lines place the axis a mark's miss is the click's own; warped paper has no part in it.
+        allowed = 4.0 if axes[name].direction in bent else max(4.0, 0.004 * float(np.hypot(*np.ptp(axes[name].at, axis=0))))
+        if name not in named and worst > allowed:
             text = (
                 f"The {name} marks miss the map by up to {worst:.1f} px: a click is off, a value is wrong or the paper is warped. "
                 "Check them with the magnifier, or add marks."
             )
+            if axes[name].direction in bent:
+                text = (
+                    f"Mark {int(r.argmax()) + 1} of the {name} axis is {worst:.1f} px off the printed line of its value. "
+                    "The lines place the axis; click the mark anew to be sure that it means this line."
+                )
             out.append(Notice(code="calibration-scatter", message=text))
-    if verdict.photo_doubtful:
+    if verdict.photo_doubtful and len(bent) < 2:
         text = (
             "The marks are spaced unevenly, as on a photo taken at an angle, and the map follows that. On a flat scan a value is mistyped. "
             "Marks on the far side of the panel would settle it."

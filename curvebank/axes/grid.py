@@ -36,8 +36,10 @@ class Doubt:
     axis: str
     best: values.Reading
     rival: values.Reading
-    far: int
+    far_c: float
     at: tuple[float, float]
+    marks_c: FloatArray
+    per_px: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -93,13 +95,13 @@ def place(layout: Layout, solution: Solution, prepared: Any, width_px: float, un
         placed = Placed(_base(layout, solution, area, read))
         base = area_of(placed.theta, layout)
         for d in (0, 1):
-            _place_direction(d, read[d], base, layout, placed)
+            _place_direction(d, read[d], area, base, layout, placed)
         if len(placed.bends) < 2 and placed.theta is not solution.theta:
             # A direction left to the marks has the marks' plane.
             placed = Placed(solution.theta)
             base = area_of(placed.theta, layout)
             for d in (0, 1):
-                _place_direction(d, read[d], base, layout, placed)
+                _place_direction(d, read[d], area, base, layout, placed)
         if turn == 1:
             break
         fresh = False
@@ -179,7 +181,7 @@ def _base(layout: Layout, solution: Solution, area: Area, read: list[_Direction]
     return _rescaled(area.theta, lines)
 
 
-def _place_direction(d: int, read: _Direction, base: Area, layout: Layout, placed: Placed) -> None:
+def _place_direction(d: int, read: _Direction, area: Area, base: Area, layout: Layout, placed: Placed) -> None:
     if read.axis is None or read.best is None:
         count = sum(not f.tick for f in read.found)
         few = ("no printed lines cross", "only 1 printed line crosses", "only 2 printed lines cross")[min(count, 2)] + " the panel"
@@ -188,7 +190,7 @@ def _place_direction(d: int, read: _Direction, base: Area, layout: Layout, place
     slot, got = layout.slots[read.axis], read.readings[read.axis]
     if got.rival is not None:
         placed.reasons[d] = "the printed lines can be read in two ways"
-        placed.doubts.append(_doubt(d, read, slot, got, layout))
+        placed.doubts.append(_doubt(d, read, slot, got, layout, area))
         return
     if slot.own is not None:
         placed.reasons[d] = f"the printed lines belong to the {read.axis} axis"
@@ -291,11 +293,13 @@ def _same_lines(r: _Direction, name: str, layout: Layout) -> FloatArray | None:
     return np.array([alpha, beta]) if np.abs(target - alpha - beta * z).max() < 1e-6 else None
 
 
-def _doubt(d: int, read: _Direction, slot: Slot, got: values.Readings, layout: Layout) -> Doubt:
+def _doubt(d: int, read: _Direction, slot: Slot, got: values.Readings, layout: Layout, area: Area) -> Doubt:
     """The far end is the line on which both readings differ most; the mark that settles it is that line."""
     assert got.best is not None and got.rival is not None
     gap = np.abs(got.best.level(read.c) - got.rival.level(read.c))
     far = int(np.argmax(gap))
     line = read.found[far].at
     near = line[np.argmin(np.hypot(*(line - slot.marks.at.mean(0)).T))]
-    return Doubt(slot.marks.id, got.best, got.rival, far, (float(near[0]), float(near[1])))
+    marks_c = plane.coordinates(area.theta, (slot.marks.at - layout.shift) / layout.size)[:, d]
+    per_px = abs(got.best.slope(float(area.centre[d]))) / float(area.px[d])
+    return Doubt(slot.marks.id, got.best, got.rival, float(read.c[far]), (float(near[0]), float(near[1])), marks_c, per_px)

@@ -78,10 +78,10 @@ class Verdict:
 
 def judge(layout: Layout, axes: dict[str, AxisMarks], aspect: float) -> Verdict:
     """Find the best reading of the marks; plain when nothing is wrong."""
-    plain = _read(layout, axes, (), False, aspect)
+    plain = read(layout, axes, (), False, aspect)
     if plain.solution.chi2 <= max(plain.solution.dof, 0.0) + 3.5 * np.sqrt(2 * max(plain.solution.dof, 1.0)):
         return Verdict(plain, (), False)
-    readings = [plain, _read(layout, axes, (), True, aspect)]
+    readings = [plain, read(layout, axes, (), True, aspect)]
     readings += _with_slips(readings[0], axes, aspect)
     best = max(readings, key=lambda r: r.score)
     if best.score < readings[1].score + 12 and best.changes:
@@ -109,7 +109,7 @@ def judge(layout: Layout, axes: dict[str, AxisMarks], aspect: float) -> Verdict:
     return Verdict(best, tuple(dict.fromkeys(suspects)), False)
 
 
-def _read(
+def read(
     layout: Layout,
     axes: dict[str, AxisMarks],
     changes: tuple[tuple[str, int, float], ...],
@@ -173,13 +173,13 @@ def _with_slips(base: Reading, axes: dict[str, AxisMarks], aspect: float) -> lis
                 value, rest = _fitting_value(base, axes, name, mark, aspect)
                 if value is not None:
                     changed = layout.with_value(name, mark, float(np.log10(value)) if a.log else value)
-                    out.append(_read(changed, axes, (*base.changes, (name, mark, value)), base.projective, aspect, rest))
+                    out.append(read(changed, axes, (*base.changes, (name, mark, value)), base.projective, aspect, rest))
         for i in range(len(a.typed)):
             for j in range(i):
                 if not base.changes and a.typed[i] != a.typed[j]:
                     swapped = layout.with_value(name, i, float(a.level[j])).with_value(name, j, float(a.level[i]))
                     changes = ((name, j, float(a.typed[i])), (name, i, float(a.typed[j])))
-                    out.append(_read(swapped, axes, changes, base.projective, aspect))
+                    out.append(read(swapped, axes, changes, base.projective, aspect))
     return out
 
 

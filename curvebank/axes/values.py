@@ -26,6 +26,8 @@ LEAST_LOG_ODDS = 8.0
 NEARLY_AS_GOOD = 3.5
 """Readings within this of the best (odds of 30 to 1) cannot be told apart."""
 ON_A_LINE_PX = 3.5
+FURTHEST = 6
+"""A mark read too far is at most this many lines off: a labelled tick's distance on most grids."""
 LOG_DIGITS = np.log10(np.array([1.0, 1.2, 1.4, 1.5, 1.6, 1.8, 2, 2.5, 3, 3.5, 4, 4.5, 5, 6, 7, 8, 9, 10]))
 LOG_COST = np.array([0, 3.0, 3, 1, 3, 3, 0, 2, 0, 3, 0, 3, 0, 0, 0, 0, 0, 0])
 
@@ -67,12 +69,12 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         return Readings(None)
     found: list[Reading] = []
     tried: list[tuple[float, float]] = []
-    for a, b in _scales(c, marks_c, marks_level, log, px):
+    for a, b, base in _scales(c, marks_c, marks_level, log, px):
         # Scales that put both ends within half a pixel of each other are one.
         if any(max(abs(a - x + (b - y) * c[0]), abs(a - x + (b - y) * c[-1])) < 0.5 * abs(b) / px for x, y in tried):
             continue
         tried.append((a, b))
-        found += _valued(c, a, b, marks_c, marks_level, log, px)
+        found += _valued(c, a, b, base, marks_c, marks_level, log, px)
         first = max(found, key=lambda r: r.score, default=None)
         # All marks agree with the lines, on a common step: any other reading costs a wrong mark more.
         if len(tried) == 1 and first is not None and first.score >= LEAST_LOG_ODDS and not first.wrong and _settled(first, log):
@@ -88,6 +90,9 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         return float(np.abs(other.level(ends) - best.level(ends)).max() / slope * px)
 
     rivals = [r for r in found if r.score > best.score - NEARLY_AS_GOOD and apart(r) > 3.0]
+    if not rivals and not log and len(marks_c) == 2 and roundness(best.step) >= 7.0:
+        # Two marks fit any even grid; such a step says that the lines belong to something else, or that a mark does.
+        return Readings(None)
     return Readings(best, max(rivals, key=lambda r: r.score) if rivals else None)
 
 
@@ -95,16 +100,16 @@ def _settled(r: Reading, log: bool) -> bool:
     return _cost(r.step, log) <= 1.0 and float(r.marks_px.max()) < 2.5 * MARK_SIGMA_PX
 
 
-def _scales(c: FloatArray, at: FloatArray, level: FloatArray, log: bool, px: float) -> list[tuple[float, float]]:
-    """Scales (A, B) to try."""
+def _scales(c: FloatArray, at: FloatArray, level: FloatArray, log: bool, px: float) -> list[tuple[float, float, tuple[float, float]]]:
+    """Scales (A, B) to try, and the stretch between the marks they come from."""
     n = len(at)
-    out: list[tuple[float, float]] = []
+    out: list[tuple[float, float, tuple[float, float]]] = []
 
     def add(rows: list[int], levels: FloatArray) -> None:
         if np.ptp(at[rows]) * px < 20 or np.ptp(levels) == 0:
             return
         b, a = np.polyfit(at[rows], levels, 1)
-        out.append((float(a), float(b)))
+        out.append((float(a), float(b), (float(at[rows].min()), float(at[rows].max()))))
 
     everything = list(range(n))
     add(everything, level)
@@ -116,6 +121,13 @@ def _scales(c: FloatArray, at: FloatArray, level: FloatArray, log: bool, px: flo
     if n >= 3:
         for i, j in pairs[:21]:
             add([i, j], level[[i, j]])
+    if log and len(c) >= 3:
+        near = np.abs(c[None, :] - at[:, None]).min(axis=1) * px <= ON_A_LINE_PX
+        for i, j in pairs[:21]:
+            if near[i] and near[j]:
+                for k, other in ((i, j), (j, i)):
+                    for slipped in _log_neighbours(float(level[k])):
+                        add([k, other], np.array([slipped, level[other]]))
     if not log and len(c) >= 3:
         gap = float(np.median(np.diff(c)))
         near = np.abs(c[None, :] - at[:, None]).min(axis=1) * px <= ON_A_LINE_PX
@@ -124,17 +136,30 @@ def _scales(c: FloatArray, at: FloatArray, level: FloatArray, log: bool, px: flo
             if not (near[i] and near[j]) or fields < 2 or fields > 60:
                 continue
             rise = float(level[j] - level[i])
-            for n_read in (fields - 1, fields + 1):
+            for n_read in range(max(fields - FURTHEST, 1), fields + FURTHEST + 1):
                 step = rise / n_read
-                if roundness(step) <= 1.0:
+                if n_read != fields and roundness(step) <= 1.0:
                     slip = step * (fields - n_read)
                     add([i, j], np.array([level[i], level[j] + slip]))
                     add([i, j], np.array([level[i] - slip, level[j]]))
     return out
 
 
-def _valued(c: FloatArray, a: float, b: float, at: FloatArray, level: FloatArray, log: bool, px: float) -> list[Reading]:
-    """Readings at this scale: the best step, its lines, the scale refined by them."""
+def _log_neighbours(level: float) -> list[float]:
+    """Levels of the whole digits next to a level."""
+    digits = np.log10(np.arange(1.0, 10.0))
+    ladder = np.concatenate([digits + k for k in (-1, 0, 1)]) + np.floor(level)
+    order = np.argsort(np.abs(ladder - level), kind="stable")[:7]
+    return [float(v) for v in ladder[order] if abs(v - level) > 1e-6]
+
+
+def _valued(
+    c: FloatArray, a: float, b: float, base: tuple[float, float], at: FloatArray, level: FloatArray, log: bool, px: float
+) -> list[Reading]:
+    """Readings at this scale: the best step, its lines, the scale refined by them.
+
+    Two marks close together know the far side poorly: the scale is carried outwards line by line.
+    """
     poly = np.array([a, b])
     per_px = abs(b) / px
     if per_px == 0 or not np.isfinite(per_px):
@@ -142,15 +167,22 @@ def _valued(c: FloatArray, a: float, b: float, at: FloatArray, level: FloatArray
     span = abs(b) * max(float(np.ptp(c)), float(np.ptp(at)))
     steps = [0.0] if log else _steps(level, span, per_px * LEAST_PITCH_PX)
     scored = []
+    middle, reach = 0.5 * (base[0] + base[1]), 0.5 * (base[1] - base[0])
+    near = np.abs(c - middle) <= 1.6 * reach
+    short = near.sum() >= 3 and reach < 0.3 * float(np.ptp(c))
+    local = c[near] if short else c
     for step in steps:
-        tick, pitch = _ticks(a + b * c, step, log)
-        odds = _odds((a + b * c - tick) / per_px, pitch / per_px, LINE_SIGMA_PX).sum() - _cost(step, log)
+        tick, pitch = _ticks(a + b * local, step, log)
+        odds = _odds((a + b * local - tick) / per_px, pitch / per_px, LINE_SIGMA_PX).sum() - _cost(step, log)
         scored.append((float(odds), step))
     scored.sort(reverse=True)
     out = []
     for _, step in scored[:3]:
         poly = np.array([a, b])
         sigma = LINE_SIGMA_PX
+        if short:
+            poly = _carried(c, poly, middle, reach, step, log, per_px, at)
+        start = poly
         for degree in (1, 1, 2, 3):
             values = _value(c, poly)
             tick, pitch = _ticks(values, step, log)
@@ -158,7 +190,7 @@ def _valued(c: FloatArray, a: float, b: float, at: FloatArray, level: FloatArray
             on = np.abs(off) < np.minimum(3.5 * sigma, 0.35 * pitch / per_px)
             if on.sum() < degree + 2:
                 break
-            fitted = _polynomial(c[on], tick[on], degree, np.array([a, b]), per_px, at)
+            fitted = _polynomial(c[on], tick[on], degree, start, per_px, at)
             sigma = FINE_SIGMA_PX
             poly = fitted
         values = _value(c, poly)
@@ -171,9 +203,29 @@ def _valued(c: FloatArray, a: float, b: float, at: FloatArray, level: FloatArray
         wrong = tuple(int(i) for i in np.flatnonzero(0.5 * (miss / MARK_SIGMA_PX) ** 2 > -LOG_PRIOR_WRONG))
         score = float(odds.sum() + marks.sum()) - _cost(step, log)
         if wrong:
+            lines_off = np.array([abs(miss[i]) * per_px / step for i in wrong]) if step else np.ones(1)
+            score -= float(np.log(np.clip(lines_off, 1.0, 7.0)).sum())
             score -= _odder(at, level, poly, step, wrong, per_px, log)
         out.append(Reading(poly, np.where(on, tick, np.nan), step, score, float(odds.sum()), wrong, np.abs(miss)))
     return out
+
+
+def _carried(
+    c: FloatArray, poly: FloatArray, middle: float, reach: float, step: float, log: bool, per_px: float, at: FloatArray
+) -> FloatArray:
+    """A scale known between two marks, refined by the lines there, then by those around them, and so on to the ends."""
+    widest = float(np.abs(c - middle).max())
+    reach *= 1.2
+    while True:
+        some = c[np.abs(c - middle) <= reach]
+        values = _value(some, poly)
+        tick, pitch = _ticks(values, step, log)
+        on = np.abs(values - tick) < 0.3 * pitch
+        if on.sum() >= 3:
+            poly = _polynomial(some[on], tick[on], 1, poly, per_px, at)
+        if reach >= widest:
+            return poly
+        reach *= 1.3
 
 
 def _odder(at: FloatArray, level: FloatArray, poly: FloatArray, step: float, wrong: tuple[int, ...], per_px: float, log: bool) -> float:
@@ -232,7 +284,7 @@ def roundness(step: float) -> float:
     Examples
     --------
     >>> roundness(20.0), roundness(2.5), roundness(4.0), roundness(11.0)
-    (0.0, 1.0, 3.0, 7.0)
+    (0.0, 1.0, 4.0, 7.0)
     """
     step = abs(step)
     if step == 0:
@@ -242,7 +294,7 @@ def roundness(step: float) -> float:
         return 0.0
     if head == 2.5:
         return 1.0
-    return 3.0 if head in (4.0, 3.0, 6.0, 8.0, 1.5, 1.2, 1.25, 7.5) else 7.0
+    return 4.0 if head in (4.0, 3.0, 6.0, 8.0, 1.5, 1.2, 1.25, 7.5) else 7.0
 
 
 def _steps(typed: FloatArray, span: float, least: float) -> list[float]:
@@ -260,12 +312,9 @@ def _steps(typed: FloatArray, span: float, least: float) -> list[float]:
 
 
 def fitting(level: float, step: float, per_px: float, log: bool) -> float:
-    """The printed value at a level: the round value of the grid where it stands on one, else the roundest within 2 px."""
-    tick, _ = _ticks(np.array([level]), step, log)
-    if abs(float(tick[0]) - level) <= 3 * per_px:
-        level = float(tick[0])
-        return float(f"{10.0**level:.10g}") if log else float(f"{level:.10g}")
-    low, high = sorted((level - 2 * per_px, level + 2 * per_px))
+    """The printed value that belongs at a level: the roundest within a click's reach, else the grid's own."""
+    low, high = sorted((level - 2.2 * per_px, level + 2.2 * per_px))
+    tick = float(_ticks(np.array([level]), step, log)[0][0])
     if log:
-        low, high, level = 10.0**low, 10.0**high, 10.0**level
-    return next(iter(round_values(low, high, level)), float(f"{level:.4g}"))
+        low, high, level, tick = 10.0**low, 10.0**high, 10.0**level, 10.0**tick
+    return next(iter(round_values(low, high, level)), float(f"{tick:.10g}"))
