@@ -21,11 +21,11 @@ HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 sys.path.insert(0, str(HERE.parents[1]))
 
-from yardstick import cases, maps, speed, traces  # noqa: E402
+from yardstick import cases, maps, speed, theory, traces  # noqa: E402
 
 from curvebank.errors import CurvebankError  # noqa: E402
 
-SECTIONS = ("traces", "maps", "values", "reclicks", "time", "memory")
+SECTIONS = ("traces", "maps", "values", "reclicks", "time", "memory", "bound")
 
 
 def main() -> int:
@@ -37,6 +37,7 @@ def main() -> int:
     ask.add_argument("--reclicks", type=int, default=200, help="re-clickings a sheet, marks alone")
     ask.add_argument("--reclicks-grid", type=int, default=20, help="re-clickings a sheet with the printed grid")
     ask.add_argument("--timed-curves", type=int, default=4, help="curves a sheet for the time ratios")
+    ask.add_argument("--seeds", type=int, default=400, help="seeds of each line for the Cramer-Rao bound")
     ask.add_argument("--quiet", action="store_true", help="the targets alone")
     ask.add_argument("--json", type=Path)
     asked = ask.parse_args()
@@ -47,6 +48,7 @@ def main() -> int:
         "reclicks": lambda: maps.Reclicks(asked.reclicks, asked.reclicks_grid),
         "time": lambda: speed.Times(asked.timed_curves),
         "memory": speed.Memory,
+        "bound": lambda: theory.Bound(asked.seeds),
     }
     parts = [makers[s]() for s in asked.sections]
     for case in cases.find(asked.folders, asked.only):
