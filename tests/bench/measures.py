@@ -27,14 +27,15 @@ def distance(points: np.ndarray, line: np.ndarray) -> tuple[np.ndarray, np.ndarr
 
 
 def score(true_line: np.ndarray, closed: bool, pixels: np.ndarray) -> dict[str, Any]:
-    """RMS and 95th percentile of the distance [px], coverage (true line within 2 px), overrun past an end [px], misses at the ends [px].
+    """RMS and 95th percentile of the distance [px], coverage (true line within 2 px), overrun past an end [px], misses at the ends [px],
+    and the share ``off`` of the trace that is more than 6 px off.
 
     Failed: more than 3 % of the line over 6 px off in one run, coverage under 0.97, or more than 8 px past an end. Points past a true
     end are left out of the RMS.
     """
     line = np.asarray(true_line, float)[:, :2]
     if len(pixels) < 2:
-        return {"rms": None, "p95": None, "coverage": 0.0, "switched": False, "over": 0.0, "ends": None, "failed": True}
+        return {"rms": None, "p95": None, "off": 1.0, "coverage": 0.0, "switched": False, "over": 0.0, "ends": None, "failed": True}
     fine, even = resample(pixels, 0.5), resample(pixels, 1.0)
     d, i = distance(even, line)
     beyond = np.zeros(len(d), bool)
@@ -50,7 +51,7 @@ def score(true_line: np.ndarray, closed: bool, pixels: np.ndarray) -> dict[str, 
     ends = None if closed else [float(np.hypot(*(pixels[k] - line[k]))) for k in (0, -1)]
     failed = switched or coverage < 0.97 or over > OVER_PX
     return {
-        "rms": float(np.sqrt((d**2).mean())), "p95": float(np.percentile(d, 95)), "coverage": coverage,
+        "rms": float(np.sqrt((d**2).mean())), "p95": float(np.percentile(d, 95)), "off": float((d > SWITCH_PX).mean()), "coverage": coverage,
         "switched": switched, "over": over, "ends": ends, "failed": failed,
     }  # fmt: skip
 

@@ -13,6 +13,7 @@ from curvebank.errors import TraceError
 from .cases import Case, Line, at_least, at_most, between
 
 ENDS_PX = 3.0
+LOST_SHARE = 0.02
 
 
 class Box:
@@ -83,6 +84,8 @@ class Traces:
             merging = [r for r in rows if r["class"] == "merging" and not r["hard"]]
             if n in ("3", "5"):
                 out.append(at_most(f"merging, {n} clicks: failed, share", _failed(merging), len(merging), 0.10 if n == "3" else 0.02))
+                lost = float(np.mean([r["off"] > LOST_SHARE for r in merging])) if merging else None
+                out.append(Line(f"merging, {n} clicks: more than 2 % of the length over 6 px off, share", lost, len(merging)))
             contours = [r for r in rows if r["class"] == "contour" and not r["hard"]]
             if contours:
                 out.append(Line(f"open contours, {n} clicks: failed, share", _failed(contours), len(contours)))
