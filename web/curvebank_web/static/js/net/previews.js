@@ -47,7 +47,13 @@ export class Previews {
   /** The document whose lines are looked at from now on. */
   #of(doc) {
     this.masks = masksOf(doc);
-    this.sheet = sheetOf(doc);
+    const sheet = sheetOf(doc);
+    if (JSON.stringify(sheet) !== JSON.stringify(this.sheet)) {
+      // Another page: an older answer belongs to other pixels and must not be shown while the new one is awaited.
+      this.lastPanel.clear();
+      this.lastCurve.clear();
+    }
+    this.sheet = sheet;
   }
 
   #panelKey(panel) {

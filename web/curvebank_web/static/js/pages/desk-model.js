@@ -155,6 +155,7 @@ export class Desk {
     try {
       this.page = await api.sheetPage(want.sha256, want.page, want);
       this.view = null;
+      this.fitted = null;
       this.hooks.invalidate("all");
     } catch (error) {
       this.hooks.problem("page", error);

@@ -204,6 +204,7 @@ export class DeskTools {
       return;
     }
     this.last = handle.kind === "open" ? { ...action, held: held.held } : action;
+    this.held = held?.held;
     if (handle.kind === "line") desk.grabbed = { curve: handle.curve, part: "guides", index: (curveOf(desk.session.doc, handle).guides ?? []).length, kept: handle.kept };
     desk.drag = { doc: apply(desk.session.doc, this.last) };
     this.moved({ surface: "paper", screen });
@@ -217,6 +218,8 @@ export class DeskTools {
     desk.grabbed = null;
     this.told = false;
     if (this.last) desk.act(this.last);
+    if (this.last && this.held) desk.say(heldWords(this.held));
+    this.held = null;
     if (this.last && handle.kind === "line") {
       if (handle.kept) desk.selected = handle.curve;
       desk.focused = { kind: "point", ...made };

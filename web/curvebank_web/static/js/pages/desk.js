@@ -306,7 +306,8 @@ async function start() {
   let known = { ...size("paper"), plot: size("replot").width };
   new ResizeObserver(() => {
     const now = { ...size("paper"), plot: size("replot").width };
-    if (now.width !== known.width || now.height !== known.height) desk.view = null;
+    // What was brought near by hand stays near when a longer sentence takes a line of the paper.
+    if (now.width !== known.width || (now.height !== known.height && !desk.moved)) desk.view = null;
     known = now;
     invalidate("all");
   }).observe($("work"));

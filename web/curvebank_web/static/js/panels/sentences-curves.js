@@ -101,7 +101,7 @@ export function curvesSentence(desk) {
 
 /** "The trace is sure, 0.98." */
 function sureness(item) {
-  const words = item?.result && !item.failed ? confidence(item.result.confidence) : "";
+  const words = item?.result && !item.failed && item.curve.kind !== "points" && item.curve.kind !== "hand" ? confidence(item.result.confidence) : "";
   return words ? `The trace is ${words}.` : "";
 }
 
@@ -151,8 +151,8 @@ function chosenSentence(desk, chosen) {
     key: JSON.stringify(chosen),
     sentence: [curveParts(own, chosen, set, (change) => { set(change); desk.select(null); }), said(KIND_WORDS[chosen.kind]), said(few ? `${chosen.clicks.length} of ${want} clicks are set.` : ""), said(`${sureness(item)}${locked ? ` ${locked} ${locked === 1 ? "stretch is" : "stretches are"} locked.` : ""}`)],
     does: [
-      desk.guiding ? h("span", { class: "hint" }, chosen.kind === "points" ? "Click the next point." : chosen.kind === "hand" ? "Click along the line." : "Click the ink beside the trace, or drag the trace.") : button(adding, { quiet: true, onClick: () => desk.select(chosen.id, true) }),
-      can ? button("Lock a stretch", { quiet: true, onClick: () => desk.locks.start(chosen.id) }) : null,
+      desk.guiding ? h("span", { class: "hint" }, chosen.kind === "points" ? "Click the next point." : chosen.kind === "hand" ? "Click along the line." : "Click the ink beside the trace.") : button(adding, { quiet: true, onClick: () => desk.select(chosen.id, true) }),
+      can && !desk.guiding ? button("Lock a stretch", { quiet: true, onClick: () => desk.locks.start(chosen.id) }) : null,
       button("Remove", { quiet: true, onClick: () => { desk.act({ type: "curve/remove", curve: chosen.id }); desk.select(null); } }), done,
     ],
   };

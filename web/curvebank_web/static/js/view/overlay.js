@@ -139,7 +139,7 @@ function drawPoints(g, view, item) {
     const click = item.curve.clicks?.[i];
     if (click) line(g, path([toScreen(view, click), at]), "k-construct", 1);
     const [x, y] = at;
-    line(g, `M${x - 7} ${y - 7}l14 14M${x - 7} ${y + 7}l14 -14`, "k-trace", 1.6);
+    line(g, `M${x - 10} ${y - 10}l20 20M${x - 10} ${y + 10}l20 -20`, "k-trace", 1.6);
   });
   if (item.kept && item.label) {
     const end = item.pixels.map((p) => toScreen(view, p)).reduce((a, b) => (b[0] > a[0] ? b : a));
