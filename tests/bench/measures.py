@@ -51,8 +51,9 @@ def score(true_line: np.ndarray, closed: bool, pixels: np.ndarray) -> dict[str, 
     ends = None if closed else [float(np.hypot(*(pixels[k] - line[k]))) for k in (0, -1)]
     failed = switched or coverage < 0.97 or over > OVER_PX
     return {
-        "rms": float(np.sqrt((d**2).mean())), "p95": float(np.percentile(d, 95)), "off": float((d > SWITCH_PX).mean()), "coverage": coverage,
+        "rms": float(np.sqrt((d**2).mean())), "p95": float(np.percentile(d, 95)), "coverage": coverage,
         "switched": switched, "over": over, "ends": ends, "failed": failed,
+        "off": float((d > SWITCH_PX).mean()),
     }  # fmt: skip
 
 

@@ -20,6 +20,8 @@ from .traces import panel_map
 
 LARGE_PX = 7_000_000
 HUGE_PX = 30_000_000
+MOVED_ROWS = 16
+"""How far along the true line (about 1.6 px a row) the moved click goes."""
 
 
 def route_seconds(page: sheet.Sheet, clicks: np.ndarray) -> float:
@@ -68,7 +70,9 @@ class Times:
             row = {"sheet": case.name, "curve": c["id"], "trace": seconds, "route": route, "ratio": seconds / route}
             if hasattr(trace, "again") and not isinstance(kept[0], TraceError):
                 points = np.array(asked.points, float)
-                points[1] += (1.0, -1.5)
+                line = np.asarray(c["line"], float)[:, :2]
+                k = int(np.argmin(np.hypot(*(line - points[1]).T)))
+                points[1] = line[min(k + MOVED_ROWS, len(line) - 1)] + (1.0, -1.0)
                 moved = trace.Clicks(id=c["id"], points=points.tolist(), closed=False)
                 row["again"] = timed(
                     lambda placed=placed, moved=moved, asked=asked, kept=kept: trace.again(case.prepared, placed, moved, asked, kept[0])
