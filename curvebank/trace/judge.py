@@ -50,11 +50,6 @@ class Doubt:
     shared: tuple[int, int] | None = None
 
 
-def sigma_of(fine: Refined, unit: float) -> FloatArray:
-    """Standard uncertainty across the line [px]: of the spline, plus what sampling and the print's shape add (from drawn sheets)."""
-    return np.sqrt((1.6 * fine.sigma) ** 2 + (0.005 * max(unit, 0.7)) ** 2)
-
-
 def doubt_of(prepared: Prepared, fine: Refined, points: FloatArray, closed: bool, on_ink: bool, cost: float) -> Doubt:
     """Judge one trace by itself: its clicks ``points`` [n, 2], whether its ends are where the ink ends, the cost of its path."""
     evidence = gather(prepared, fine, points, closed, on_ink, cost)

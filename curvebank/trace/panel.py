@@ -14,10 +14,11 @@ from .direction import one_way
 from .ends import to_ink
 from .follow import follow
 from .hand import by_hand
-from .judge import Doubt, as_trace, doubt_of, pair_test, settle, sigma_of
+from .judge import Doubt, as_trace, doubt_of, pair_test, settle
 from .locked import trace_around
 from .meet import end_on_others
 from .profile import align, refine
+from .spread import sigma_of
 from .symbols import points_on_symbols
 
 FAR_PX = 1.2
@@ -102,6 +103,6 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatA
     fine = refine(prepared, axis, shape, points)
     if fine.blocks.good.mean() < LOST and found.cost > 0.5:
         raise TraceError(NOTHING, code="lost")
-    return as_trace(fine.axis, sigma_of(fine, prepared.unit), clicks.closed, fine.shape.width), doubt_of(
-        prepared, fine, points, clicks.closed, clicks.ends == "ink", found.cost
-    )
+    doubt = doubt_of(prepared, fine, points, clicks.closed, clicks.ends == "ink", found.cost)
+    sigma = sigma_of(fine, prepared.unit, doubt.evidence.seen)
+    return as_trace(fine.axis, sigma, clicks.closed, fine.shape.width), doubt

@@ -16,8 +16,8 @@ from .axis import Axis, from_polyline
 from .clicks import PanelMap
 from .ends import to_ink
 from .follow import follow
-from .judge import sigma_of
 from .profile import Blocks, Refined, Shape, align, refine
+from .spread import sigma_of
 
 CONTEXT_PX = 60.0
 """How much of a stretch that stays (times the unit) the part beside it looks at."""

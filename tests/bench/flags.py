@@ -1,12 +1,13 @@
 """Benchmark: does a trace know when it went wrong? Failed and good traces by cause, how many are flagged, and what confidence is worth.
 
-    python tests/bench/flags.py [--sheets DIR ...] [--drawn SEEDS] [--kinds ...] [--half 0|1] [--fit] [--json FILE]
+    python tests/bench/flags.py [--sheets DIR ...] [--drawn SEEDS] [--kinds ...] [--half 0|1] [--fit] [--hints] [--sigma]
 
 Each DIR (default: samples/) holds NAME.recipe.json, the scan and NAME.truth.json; ``--drawn N`` adds N sheets of each kind of
 tests/bench/drawn.py. Every curve is traced with 2, 3 and 5 good clicks and with clicks gone wrong (tests/bench/wrong.py). Failed: see
 measures.score. Half of the sheets are for fitting, half for checking; the check half is what counts. ``--fit`` fits the weights of
-curvebank/trace/confidence.py to the fitting half, prints them, and shows both halves judged with them. Truth is read here and nowhere
-else.
+curvebank/trace/confidence.py to the fitting half, prints them, and shows both halves judged with them. ``--hints`` adds the
+click that a flagged failed trace asks for, put on the true line, and counts how many are cured. ``--sigma`` prints how often the stated
+uncertainty covers instead (tests/bench/cover.py). Truth is read here and nowhere else.
 """
 
 import argparse
@@ -25,6 +26,7 @@ HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 sys.path.insert(0, str(HERE.parents[1]))
 
+import cover  # noqa: E402
 import drawn  # noqa: E402
 import measures  # noqa: E402
 import run  # noqa: E402
@@ -149,6 +151,38 @@ def judged_anew(rows: list[dict[str, Any]], bias: float, weights: dict[str, floa
             r["flagged"] = r["confidence"] < confidence.FLAG_BELOW
 
 
+def cured(case: wrong.Case, got: Trace, prepared: sheet.Prepared, panel: Any, fixed: Any) -> bool | None:
+    """Whether the click asked for, put on the true line, makes a failed trace good; None where no click was asked for."""
+    if got.hint_click is None:
+        return None
+    i = int(np.argmin(np.hypot(*(case.line - got.hint_click).T)))
+    place = lambda xy: int(np.argmin(np.hypot(*(case.line - xy).T)))  # noqa: E731
+    at = [place(xy) for xy in case.clicks]
+    k = (
+        next((j for j, row in enumerate(at) if row > i), len(at))
+        if at[0] <= at[-1]
+        else next((j for j, row in enumerate(at) if row < i), len(at))
+    )
+    clicks = trace.Clicks(id=case.curve, points=np.insert(case.clicks, k, case.line[i], axis=0), closed=case.closed)
+    (again,) = trace.trace_panel(prepared, panel, [clicks], fixed=fixed)
+    return isinstance(again, Trace) and not measures.score(case.line, case.line_closed, again.pixels)["failed"]
+
+
+def sigma_of_sheet(name: str, prepared: sheet.Prepared, truth: dict[str, Any], recipe: dict[str, Any] | None, into: cover.Cover) -> None:
+    """Count the rows of the good traces at 3 and 5 clicks."""
+    rng = np.random.default_rng([wrong.seed_of(name)])
+    paper = cover.paper_of(prepared)
+    for panel in truth["panels"]:
+        curves = [c for c in truth["curves"] if c["panel"] == panel["id"]]
+        for count in (3, 5):
+            wanted = [trace.Clicks(id=c["id"], points=wrong.good_clicks(c, count, rng), closed=c["closed"]) for c in curves]
+            results = trace.trace_panel(prepared, run.panel_of(truth, panel["id"], recipe), wanted) if wanted else []
+            for c, got in zip(curves, results, strict=True):
+                if isinstance(got, Trace) and not measures.score(wrong.line_of(c), c["closed"], got.pixels)["failed"]:
+                    others = [wrong.line_of(o) for o in curves if o["id"] != c["id"]]
+                    into.trace(got, c, others, paper, max(prepared.unit, 0.6))
+
+
 def auc(failed: np.ndarray, confidence: np.ndarray) -> float:
     """Chance that a failed trace has less confidence than a good one."""
     from scipy.stats import rankdata
@@ -198,21 +232,40 @@ def main() -> int:
     ask.add_argument("--half", type=int, choices=(0, 1), help="only the fitting (0) or the checking (1) half")
     ask.add_argument("--most", type=int, default=30, help="wrong cases a panel")
     ask.add_argument("--fit", action="store_true", help="fit the weights to the fitting half and judge with them")
+    ask.add_argument("--hints", action="store_true", help="add the click asked for to failed traces of right clicks")
+    ask.add_argument("--sigma", action="store_true", help="how often the stated uncertainty covers")
     ask.add_argument("--json", type=Path)
     asked = ask.parse_args()
     rows: list[dict[str, Any]] = []
-    vectors = Vectors()
+    vectors, covers = Vectors(), (cover.Cover(), cover.Cover())
     for name, page, truth, recipe in sheets_of(asked.sheets, asked.drawn, asked.kinds):
         if asked.half is not None and wrong.half_of(name) != asked.half:
             continue
+        prepared = sheet.prepare(page)
+        if asked.sigma:
+            sigma_of_sheet(name, prepared, truth, recipe, covers[wrong.half_of(name)])
+            print(f"{name:24s}", flush=True)
+            continue
         vectors.kept.clear()
-        mine = [row_of(name, case, got) for case, got, *_ in cases_of_sheet(name, sheet.prepare(page), truth, recipe, asked.most)]
-        kept = iter(vectors.kept)
-        for r in mine:
-            r["vector"] = None if r["refused"] else next(kept)
+        mine, kept = [], iter(vectors.kept)
+        for case, got, on, panel, fixed in cases_of_sheet(name, prepared, truth, recipe, asked.most):
+            mine.append(row_of(name, case, got))
+            mine[-1]["vector"] = None if isinstance(got, TraceError) else next(kept)
+            right = mine[-1]["honest"] or case.cause in ("obliterated", "sloppy clicks", "bunched loop clicks")
+            if asked.hints and mine[-1]["failed"] and isinstance(got, Trace) and right:
+                known = len(vectors.kept)
+                mine[-1]["cured"] = cured(case, got, on, panel, fixed)
+                del vectors.kept[known:]
         rows += mine
         bad = [r for r in mine if r["failed"]]
         print(f"{name:24s} {len(mine):4d} traces {len(bad):4d} failed {sum(r['flagged'] for r in bad):4d} flagged", flush=True)
+    if asked.sigma:
+        for half, title in ((0, "fitting half"), (1, "checking half")):
+            covers[half].table(title)
+        return 0
+    if asked.hints:
+        tried = [r["cured"] for r in rows if r.get("cured") is not None]
+        print(f"\nthe click asked for cures {sum(tried)} of {len(tried)} failed traces of right clicks")
     if asked.fit:
         bias, weights = fitted([r for r in rows if r["half"] == 0])
         print(f"\nBIAS = {bias:.3f}\nWEIGHTS = {json.dumps(weights, indent=4)}")
