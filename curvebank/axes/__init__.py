@@ -2,5 +2,7 @@
 
 from .calibrate import calibrate
 from .panelmap import PanelMap
+from .shared import calibrate_all
+from .snap import Snap, snap
 
-__all__ = ["PanelMap", "calibrate"]
+__all__ = ["PanelMap", "Snap", "calibrate", "calibrate_all", "snap"]

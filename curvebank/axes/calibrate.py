@@ -6,7 +6,7 @@ import numpy as np
 
 from ..errors import CalibrationError
 from ..records import FloatArray, Notice
-from . import against, gridmap, plane
+from . import against, gridmap, plane, scales
 from . import outline as outlines
 from . import suspects as doubts
 from .grid import Placed
@@ -47,6 +47,20 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
     axes = read_axes(panel, path)
     aspect = _pixel_aspect(prepared)
 
+    return _calibrated(panel, panel_id, axes, list(axes), prepared, path, aspect, page_size)
+
+
+def _calibrated(
+    panel: Any,
+    panel_id: str,
+    axes: dict[str, AxisMarks],
+    order: list[str],
+    prepared: Any,
+    path: str,
+    aspect: float,
+    page_size: tuple[int, int] | None,
+) -> PanelMap:
+    """The map with the first axis of each direction as its reference; where the lines are another one's, that one comes first."""
     layout = arrange(axes, path)
     verdict = doubts.judge(layout, axes, aspect)
     solution = _final(_opened(verdict), verdict.reading, aspect)
@@ -58,25 +72,32 @@ def calibrate(panel: Any, prepared: Any = None, *, path: str | None = None, page
         verdict = ruled
         solution = _final(_opened(verdict), verdict.reading, aspect)
         placed = gridmap.look(_opened(verdict), solution, prepared, wanted)
+    if not isinstance(placed, str) and placed.read_by and list(axes) == order:
+        first = list(placed.read_by.values())
+        axes = {name: axes[name] for name in (*first, *(n for n in order if n not in first))}
+        return _calibrated(panel, panel_id, axes, order, prepared, path, aspect, page_size)
     layout = _opened(verdict)
     notices = [Notice(code=c, message=m) for c, m in (*layout.notices, *doubts.describe(verdict.suspects, axes))]
     notices += against.doubted(placed, axes)
     notices += against.hidden(axes, prepared)
+    together = scales.compare(layout, solution)
+    notices += together.notices
     residuals = _mark_residuals(axes, layout, solution)
     page = page_size or _page_size(prepared)
     given = get(panel, "outline")
-    parameters, covariance, scales = _scales(layout, solution)
+    parameters, covariance, rulers = _scales(layout, solution)
     warps, plane_size = None, solution.plane_size
     if not isinstance(placed, str) and placed.bends:
-        parameters, covariance, scales, warps = gridmap.with_bends(layout, solution, placed, parameters, covariance, scales)
-        residuals = gridmap.mark_misses(residuals, layout, placed, scales, parameters)
+        placed.scales.update(together.exact)
+        parameters, covariance, rulers, warps = gridmap.with_bends(layout, solution, placed, parameters, covariance, rulers)
+        residuals = gridmap.mark_misses(residuals, layout, placed, rulers, parameters)
         plane_size = len(placed.theta)
     notices += _scatter_notices(axes, residuals, verdict, placed)
     return PanelMap(
         panel_id,
         parameters,
         covariance,
-        scales,
+        {name: rulers[name] for name in order},
         plane_size=plane_size,
         shift=layout.shift,
         size=layout.size,
@@ -103,7 +124,7 @@ def _final(layout: Layout, reading: doubts.Reading, aspect: float) -> Solution:
     """The plane with Huber's loss and with the ties that the marks support."""
     same = len(reading.solution.x) == reading.solution.plane_size + layout.scales + len(layout.open_direction)
     free = solve(layout, projective=reading.projective, start=reading.solution.x if same else None, aspect=aspect)
-    ties = find_ties(layout, free)
+    ties = (*find_ties(layout, free), *scales.compare(layout, free).ties)
     if not ties:
         return free
     tied = solve(layout, projective=reading.projective, start=free.x, ties=ties, aspect=aspect)

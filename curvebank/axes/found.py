@@ -52,7 +52,7 @@ class Area:
 
 def area_of(theta: FloatArray, layout: Layout) -> Area:
     uv = plane.coordinates(theta, (layout.at - layout.shift) / layout.size)
-    low, high = uv.min(0), uv.max(0)
+    low, high = _reach(uv, layout)
     axis_at = []
     for d in (0, 1):
         rows = sorted(
@@ -68,6 +68,15 @@ def area_of(theta: FloatArray, layout: Layout) -> Area:
     _, slopes = plane.pixel_derivatives(theta, centre[None])
     px = np.hypot(slopes[0, 0], slopes[0, 1]) * layout.size
     return Area(theta, centre, half, px, (axis_at[0], axis_at[1]))
+
+
+def _reach(uv: FloatArray, layout: Layout) -> tuple[FloatArray, FloatArray]:
+    """Range of each coordinate over the marks that say it: flow marks under a neighbouring panel do not make this one taller."""
+    low, high = np.empty(2), np.empty(2)
+    for d in (0, 1):
+        rows = sorted({r for s in layout.slots.values() if s.marks.direction == d for r in layout.rows_of[s.marks.id]})
+        low[d], high[d] = uv[rows, d].min(), uv[rows, d].max()
+    return low, high
 
 
 def from_sheet(area: Area, layout: Layout, prepared: Any) -> tuple[list[Found], list[Found]]:

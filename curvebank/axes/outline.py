@@ -18,7 +18,11 @@ def derive(layout: Layout, solution: Solution, page_size: tuple[int, int] | None
     """Corner polygon [4, 2] px around all marks, kept within the page where its size is known."""
     p = solution.plane_size
     uv = plane.coordinates(solution.theta, (layout.at - layout.shift) / layout.size)
-    low, high = uv.min(0), uv.max(0)
+    low, high = np.empty(2), np.empty(2)
+    for d in (0, 1):
+        # The marks that say a coordinate show how far the panel goes in it: flow marks may stand under a neighbouring panel.
+        rows = sorted({r for s in layout.slots.values() if s.marks.direction == d for r in layout.rows_of[s.marks.id]})
+        low[d], high[d] = uv[rows, d].min(), uv[rows, d].max()
     for name, slot in layout.slots.items():
         if slot.twin is None:
             d = slot.marks.direction

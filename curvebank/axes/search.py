@@ -60,7 +60,7 @@ def find_lines(
     wide = cv2.dilate(groups, np.ones((1, 2 * drift + 1), np.uint8))
     order = np.sort(wide, axis=0)
     strength = order[GROUPS // 4 : GROUPS - GROUPS // 4].mean(axis=0)
-    return _peaks(cs, strength, round(max(4.0, 1.5 * width_px) / FINE_PX))
+    return peaks(cs, strength, round(max(4.0, 1.5 * width_px) / FINE_PX))
 
 
 def find_ticks(
@@ -83,7 +83,7 @@ def find_ticks(
         ridge = _ridge(picture, width_px)
         # A tick is ink all the way from the axis; a letter is not.
         strength = np.sort(np.where(known > 0, ridge, -50.0), axis=0)[1:4].mean(axis=0)
-        out += [(at, s, side) for at, s in _peaks(cs, strength, round(max(3.0, width_px) / FINE_PX))]
+        out += [(at, s, side) for at, s in peaks(cs, strength, round(max(3.0, width_px) / FINE_PX))]
     return out
 
 
@@ -96,7 +96,7 @@ def _ridge(picture: FloatArray, width_px: float) -> FloatArray:
     return np.asarray(smooth - np.maximum(left, right), dtype=np.float64)
 
 
-def _peaks(cs: FloatArray, strength: FloatArray, apart: int) -> list[tuple[float, float]]:
+def peaks(cs: FloatArray, strength: FloatArray, apart: int) -> list[tuple[float, float]]:
     middle = float(np.median(strength))
     noise = max(1.4826 * float(np.median(np.abs(strength - middle))), 0.15)
     highest = cv2.dilate(strength[None, :], np.ones((1, 2 * apart + 1), np.uint8))[0]

@@ -131,12 +131,11 @@ def _run(
 
     maps: dict[str, Any] = {}
     panel_errors: dict[str, CurvebankError] = {}
-    for i, panel in enumerate(doc.panels):
-        try:
-            maps[panel.id] = axes.calibrate(panel, prepared)
-        except CurvebankError as e:
-            e.path = (e.path or "$").replace("$", f"$.panels[{i}]", 1) if not str(e.path).startswith("$.panels[") else e.path
-            panel_errors[panel.id] = e
+    for name, found in axes.calibrate_all(doc.panels, prepared).items():
+        if isinstance(found, CurvebankError):
+            panel_errors[name] = found
+        else:
+            maps[name] = found
     tell(0.40, "axes placed")
 
     made: dict[str, Curve] = {}
