@@ -64,6 +64,7 @@ export class Desk {
   }
 
   act(action, label) {
+    this.acted = true;
     this.session.act(action, label);
   }
 
@@ -127,9 +128,10 @@ export class Desk {
       }
       this.flowAxis = panel.axes[ids.flow[0]] ?? null;
     }
-    // Opened straight at a later step, the paper was fitted to the marks alone: fitted again once the axes are placed.
+    // Opened straight at a later step, the paper was fitted to the marks alone: fitted again once the axes are placed, but not under a hand
+    // that is putting down marks.
     const placed = Boolean(panel && this.axes.length && this.panelResult(panel)?.map);
-    if (placed && this.fitted !== panel.id && !this.moved && !this.drag && !["sheet", "panel", "marks"].includes(this.step)) this.view = null;
+    if (placed && this.fitted !== panel.id && !this.moved && !this.drag && !(this.acted && this.step === "marks")) this.view = null;
     if (placed) this.fitted = panel.id;
     for (const item of this.items) {
       item.stale = Boolean(item.result && panel && this.previews.curve(panel, item.curve) !== item.result);

@@ -4,7 +4,7 @@ import { nearestRound } from "../geometry/scale.js";
 import { QUANTITY_WORDS, UNITS, needsDensity, written } from "../geometry/units.js";
 import { boxOf } from "../geometry/polyline.js";
 import { calibrated } from "../state/derive.js";
-import { samePlace } from "../state/doc.js";
+import { freshId, samePlace } from "../state/doc.js";
 import { heldWords } from "../state/words.js";
 import { h } from "../view/dom.js";
 import { button, choice, numberBlank, textBlank } from "./blank.js";
@@ -55,6 +55,17 @@ function axisBlanks(desk, panel, id) {
   ];
 }
 
+/** A unit that no scale of this quantity has yet on the panel, or undefined. */
+function unitLeft(panel, quantity) {
+  const used = Object.values(panel.axes).filter((a) => a.quantity === quantity).map((a) => a.unit);
+  return Object.keys(UNITS[quantity]).find((u) => !used.includes(u) && !needsDensity(u));
+}
+
+/** The same axis printed in another unit as well: its own marks, checked against the first scale. */
+function secondScale(desk, panel, quantity) {
+  desk.act({ type: "axis/set", panel: panel.id, axis: freshId(quantity, Object.keys(panel.axes)), change: { quantity, unit: unitLeft(panel, quantity), scale: "linear", marks: [] } });
+}
+
 export function panelSentence(desk) {
   const { doc, panel } = desk;
   if (!panel) return { sentence: [t("Draw round the plot: drag from corner to corner, or click one corner and then the other.")], does: [hint("Space", "to move the paper")] };
@@ -71,8 +82,11 @@ export function panelSentence(desk) {
     const q = panel.axes[id].quantity;
     parts.push(i ? t("and") : null, choice({ name: `quantity-${i}`, label: "Quantity on this axis", value: q, options: [...(ids.value.length > 1 ? [["", "(take away)"]] : []), ...VALUE_QUANTITIES.filter((v) => v === q || free.includes(v)).map((v) => [v, QUANTITY_WORDS[v]])], onValue: (v) => change(id, v) }), axisBlanks(desk, panel, id));
   });
-  if (ids.value.length < 3 && free.length) parts.push(t("and"), choice({ name: "another", label: "Another value axis", value: "", options: [["", "nothing more"], ...free.map((v) => [v, QUANTITY_WORDS[v]])], onValue: (v) => v && change(null, v) }));
-  parts.push(t("over flow"), ids.flow.map((id) => axisBlanks(desk, panel, id)), stop());
+  const again = [...new Set(taken)].map((q) => [q, unitLeft(panel, q)]).filter(([, unit]) => unit);
+  if (ids.value.length < 4 && (free.length || again.length)) parts.push(t("and"), choice({ name: "another", label: "Another value axis", value: "", options: [["", "nothing more"], ...free.map((v) => [v, QUANTITY_WORDS[v]]), ...again.map(([q]) => [`${q} again`, `${QUANTITY_WORDS[q]}, a second scale`])], onValue: (v) => v && (v.endsWith(" again") ? secondScale(desk, panel, v.slice(0, -6)) : change(null, v)) }));
+  parts.push(t("over flow"), ids.flow.map((id, i) => [i ? t("and") : null, axisBlanks(desk, panel, id), i ? button("take away", { quiet: true, onClick: () => desk.act({ type: "axis/remove", panel: panel.id, axis: id }) }) : null]));
+  if (ids.flow.length < 3 && unitLeft(panel, "flow")) parts.push(t(","), choice({ name: "flow-again", label: "Another flow scale", value: "", options: [["", ids.flow.length > 1 ? "no more" : "one scale"], ["flow", "another scale"]], onValue: (v) => v && secondScale(desk, panel, "flow") }));
+  parts.push(stop());
   return {
     sentence: parts,
     does: [
