@@ -1,38 +1,10 @@
 """Edits on the paper: masks, guides dragged from a trace, locked stretches, the one click that settles a doubt; by mouse and keyboard."""
 
-import json
-import urllib.request
-
 import chart
 import pytest
-from axe_playwright_python.sync_playwright import Axe
+from desk_help import axe_is_content, doc_of, lay
 
 pytestmark = pytest.mark.browser
-
-
-def axe_is_content(page):
-    found = Axe().run(page, options={"runOnly": ["wcag2a", "wcag2aa", "wcag21a", "wcag21aa", "wcag22aa", "best-practice"]})
-    assert [f"{v['id']}: {[n['html'][:120] for n in v['nodes'][:3]]}" for v in found.response["violations"]] == []
-
-
-def ask(server, path, body=None):
-    data = None if body is None else json.dumps(body).encode()
-    request = urllib.request.Request(server.address + path, data=data, headers={"Content-Type": "application/json"})
-    with urllib.request.urlopen(request) as answer:
-        return json.load(answer)
-
-
-def lay(server, data, doc):
-    """A draft with a whole recipe on an uploaded sheet; its id."""
-    edge = b'--edge\r\nContent-Disposition: form-data; name="file"; filename="chart.png"\r\nContent-Type: image/png\r\n\r\n'
-    request = urllib.request.Request(
-        f"{server.address}/api/sheets",
-        data=edge + data + b"\r\n--edge--\r\n",
-        headers={"Content-Type": "multipart/form-data; boundary=edge"},
-    )
-    with urllib.request.urlopen(request) as answer:
-        sha = json.load(answer)["sha256"]
-    return ask(server, "/api/drafts", {"doc": doc, "sheet_sha256": sha})["id"]
 
 
 @pytest.fixture
@@ -48,11 +20,6 @@ def traced(desk, server, chart_png, chart_recipe):
 def place(name, i, off=0.0):
     flow, share = chart.LINES[name]
     return chart.to_px(flow[i], share(flow[i]) + off)
-
-
-def doc_of(server, desk, draft):
-    desk.kept()
-    return ask(server, f"/api/drafts/{draft}")["doc"]
 
 
 def drag(desk, *places):
