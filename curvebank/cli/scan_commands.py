@@ -1,5 +1,6 @@
 """``carry`` and ``join``: a recipe to a better scan of its paper, and two halves of a sheet to one file."""
 
+import math
 import sys
 from pathlib import Path
 from typing import Any
@@ -62,4 +63,46 @@ def _row(c: dict[str, Any]) -> list[Any]:
     return [c["id"], c["largest"], c["mean"], c["unit"], c["largest_pct"], c["mean_pct"], c["largest_u"], before, now]
 
 
-COMMANDS = [carry]
+class Tie(click.ParamType):
+    """``x1,y1:x2,y2``: one point as both scans show it."""
+
+    name = "x1,y1:x2,y2"
+
+    def convert(self, value: Any, param: Any, ctx: Any) -> Any:
+        """Two pairs of numbers."""
+        try:
+            pairs = [[float(v) for v in part.split(",")] for part in str(value).split(":")]
+            if [len(p) for p in pairs] == [2, 2] and all(math.isfinite(v) for p in pairs for v in p):
+                return pairs
+        except ValueError:
+            pass
+        self.fail(f"{value!r} is not x1,y1:x2,y2, a point on the first scan and the same point on the second.", param, ctx)
+
+
+@click.command()
+@click.argument("first", type=click.Path(path_type=Path))
+@click.argument("second", type=click.Path(path_type=Path))
+@click.option("--out", required=True, type=click.Path(path_type=Path, dir_okay=False), help="The new scan, FILE.png.")
+@click.option("--tie", "ties", type=Tie(), multiple=True, help="The same point on both scans; give two or more where they share no print.")
+@json_option
+def join(first: Path, second: Path, out: Path, ties: tuple[Any, ...], as_json: bool) -> None:
+    """Join FIRST and SECOND, two scans of one large sheet, into one lossless file.
+
+    How they overlap is found from what both show. The first scan's pixels stay as they are up to a seam where there is least ink;
+    the second is turned, scaled and levelled to fit. Where the second lies to the left of or above the first, it comes first instead.
+    """
+    from ..desk import joining
+
+    bar = Bar(out.name)
+    try:
+        report = joining.join_files(first, second, out, ties=list(ties) or None, progress=bar)
+    finally:
+        bar.close()
+    if as_json:
+        emit({**report, "file": str(out)})
+    else:
+        click.echo(report["message"])
+        click.echo(f"Written: {out}")
+
+
+COMMANDS = [carry, join]

@@ -2,7 +2,7 @@
 
 from .lines import PrintedLine
 from .load import LIMITS, Limits, Sheet, load
-from .masks import mask, under_mask
+from .masks import mask, mask_extent, under_mask
 from .prepare import ALGORITHM, Prepared, prepare
 
-__all__ = ["ALGORITHM", "LIMITS", "Limits", "PrintedLine", "Prepared", "Sheet", "load", "mask", "prepare", "under_mask"]
+__all__ = ["ALGORITHM", "LIMITS", "Limits", "PrintedLine", "Prepared", "Sheet", "load", "mask", "mask_extent", "prepare", "under_mask"]

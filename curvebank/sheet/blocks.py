@@ -64,12 +64,17 @@ def compare(fixed: Image, moved: Image, valid: npt.NDArray[np.bool_], size: int)
     return Blocks(*(np.concatenate(part) for part in zip(*found, strict=True)))
 
 
-def inked(page: Image, size: int) -> int:
-    """How many patches of a page hold ink."""
+def inked(page: Image, size: int, valid: npt.NDArray[np.bool_] | None = None) -> int:
+    """How many patches of a page hold ink; with ``valid`` only those that lie wholly in it."""
     height, width = (n // size * size for n in page.shape)
-    dark = (page[:height, :width] > DARK).astype(np.float32)
-    shares = cv2.resize(dark, (max(width // size, 1), max(height // size, 1)), interpolation=cv2.INTER_AREA)
-    return int((shares > INKED).sum())
+    counted = 0
+    for top in range(0, height, size):
+        rows = slice(top, top + size)
+        told = (_tiles(page[rows, :width], size) > DARK).mean(axis=1) > INKED
+        if valid is not None:
+            told &= _tiles(valid[rows, :width], size).all(axis=1)
+        counted += int(told.sum())
+    return counted
 
 
 def _tiles(strip: Any, size: int) -> Any:

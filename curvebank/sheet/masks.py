@@ -60,6 +60,18 @@ def mask(prepared: Prepared, masks: Sequence[Any]) -> Prepared:
     return replace(prepared, masked=hidden, **images)
 
 
+def mask_extent(prepared: Prepared, one: Any, index: int = 0) -> dict[str, Any]:
+    """What a mask covers: ``area_px``, ``box`` (x0, y0, x1, y1) or None where it misses the page. Raises SheetError as `mask`."""
+    height, width = prepared.shape
+    points, width_px = _read(one, index, height, width)
+    box = _box(points, width_px, height, width)
+    if box is None:
+        return {"area_px": 0, "box": None, "error": None}
+    rows, columns = box
+    area = int(_painted(points, width_px, box).sum())
+    return {"area_px": area, "box": [columns.start, rows.start, columns.stop, rows.stop], "error": None}
+
+
 def under_mask(prepared: Prepared, points: Any) -> npt.NDArray[np.bool_]:
     """Which of the points [n, 2] px lie under a mask."""
     xy = np.asarray(points, dtype=np.float64).reshape(-1, 2)

@@ -23,6 +23,8 @@ from .prepare import Prepared
 Bytes = npt.NDArray[np.uint8]
 Progress = Callable[[float, str], Any]
 
+BLOCK_PX, BLOCK_PART_PX = (48, 64), (24, 32)
+"""Sides of the blocks on the reduced and on the full pages; smaller where only a strip of the paper is on both scans."""
 SMALL_PX, FINE_PX = 1500, 3600
 """Longest side of the pages on which features are sought, and of those on which blocks are matched."""
 NEARLY = 0.75
@@ -31,7 +33,8 @@ FLOOR_PX = 0.03
 """Scatter of a block's shift that its own pixels do not tell [px]."""
 LIKE = 0.5
 """Likeness from which a block is taken for the same print."""
-LEAST_BLOCKS = 30
+LEAST_BLOCKS = 12
+LEAST_VOTES = 10
 LEAST_COVERAGE = 0.3
 """Share of the inked blocks of the old scan that must be found again."""
 
@@ -42,7 +45,8 @@ class Registration:
 
     ``residual_px`` is the rms of what single blocks still miss by [px of the new scan], ``sigma_px`` one standard uncertainty of the map
     itself, typical over the page. ``coverage`` is the share of the old scan's inked blocks found on the new one, ``blocks`` their
-    number. ``scale`` is new px an old px, ``turn_deg`` the turn (clockwise on the screen).
+    number. ``scale`` is new px an old px, ``turn_deg`` the turn (clockwise on the screen). ``here`` and ``there`` [n, 2]
+    are the places that were matched, ``white`` [n, 2, 2] whitens a miss of theirs [px of the new scan].
     """
 
     warp: PaperWarp
@@ -54,6 +58,9 @@ class Registration:
     blocks: int
     scale: float
     turn_deg: float
+    here: Floats
+    there: Floats
+    white: Floats
 
     def __call__(self, points: Any) -> Floats:
         """Points [n, 2] of the old scan on the new one."""
@@ -67,7 +74,15 @@ class Registration:
         return np.asarray(np.sqrt(np.abs(np.linalg.det(j))) * self.old_to_small[0] / self.new_to_small[0])
 
 
-def match(old: Sheet | Prepared, new: Sheet | Prepared, *, progress: Progress | None = None, bend: bool = True) -> Registration:
+def match(
+    old: Sheet | Prepared,
+    new: Sheet | Prepared,
+    *,
+    progress: Progress | None = None,
+    bend: bool = True,
+    part: bool = False,
+    start: Floats | None = None,
+) -> Registration:
     """Register two scans of one paper.
 
     Parameters
@@ -76,6 +91,10 @@ def match(old: Sheet | Prepared, new: Sheet | Prepared, *, progress: Progress | 
         Decoded pages; a prepared sheet saves levelling it again.
     bend : bool
         Allow for paper that lay differently; without it the map is a plane.
+    part : bool
+        The scans overlap only in part: what is found again is counted where both show the paper.
+    start : array [3, 3], optional
+        A plane known beforehand to a few pixels (from points clicked on both), in place of a search.
 
     Raises
     ------
@@ -88,17 +107,20 @@ def match(old: Sheet | Prepared, new: Sheet | Prepared, *, progress: Progress | 
     pages = [_ink(p) for p in (old, new)]
     small = [_reduced(p, SMALL_PX / max(p.shape)) for p in pages]
     tell(0.2, "Finding what looks alike")
-    found = coarse.ideas(small[0][0], small[1][0])
+    if start is None:
+        found = coarse.ideas(small[0][0], small[1][0])
+    else:
+        found = [_given(start, small)]
     doubtful = False
     for i, idea in enumerate(found):
         tell(0.3 + 0.1 * i, "Laying one scan on the other")
-        warp = _settled(idea, small[0][0], small[1][0])
-        verdict = _verdict(warp, small[0][0], small[1][0])
+        warp = _settled(idea, small[0][0], small[1][0], part)
+        verdict = _verdict(warp, small[0][0], small[1][0], part)
         if verdict.share < LEAST_COVERAGE:
             continue
         if not verdict.rival:
             tell(0.6, "Measuring")
-            return _fine(warp, pages, [s[1] for s in small], bend, lambda share: tell(0.6 + 0.4 * share, "Measuring"))
+            return _fine(warp, pages, [s[1] for s in small], bend, part, lambda share: tell(0.6 + 0.4 * share, "Measuring"))
         doubtful = True
     raise _refused(doubtful)
 
@@ -166,14 +188,26 @@ def _soft(page: Bytes, blur: float) -> blocks.Image:
     return np.asarray(cv2.GaussianBlur(page.astype(np.float32) / np.float32(255), (0, 0), blur), dtype=np.float32)
 
 
-def _settled(idea: coarse.Idea, here: Bytes, there: Bytes) -> PaperWarp:
+def _sizes(part: bool) -> tuple[int, int]:
+    return BLOCK_PART_PX if part else BLOCK_PX
+
+
+def _given(start: Floats, small: list[tuple[Bytes, tuple[float, float]]]) -> coarse.Idea:
+    """A plane between the full pages as an idea between the reduced ones, with a grid of places for features."""
+    plane = _between((1.0, 1.0), small[1][1]) @ start @ _between(small[0][1], (1.0, 1.0))
+    height, width = small[0][0].shape
+    here = np.stack(np.meshgrid(np.linspace(0, width, 5), np.linspace(0, height, 5)), axis=-1).reshape(-1, 2)
+    return coarse.Idea(plane, here, paperwarp.projected(plane, here))
+
+
+def _settled(idea: coarse.Idea, here: Bytes, there: Bytes, part: bool) -> PaperWarp:
     """An idea pulled tight: a stiff warp through its features, then blocks."""
     low, high = np.zeros(2), np.array([here.shape[1], here.shape[0]], dtype=np.float64)
     white = np.broadcast_to(np.eye(2), (len(idea.here), 2, 2))
     freedom = 1 if len(idea.here) > 150 else 0
     warp, _ = paperwarp.fit(idea.plane, low, high, idea.here, idea.there, white, pieces=freedom)
     for blur in (2.0, 1.5):
-        warp = _tightened(warp, here, there, 48, blur, 1 if blur > 1.8 else 3)
+        warp = _tightened(warp, here, there, _sizes(part)[0], blur, 1 if blur > 1.8 else 3)
     return warp
 
 
@@ -197,15 +231,16 @@ def _whitening(found: blocks.Blocks, warp: PaperWarp) -> Floats:
     return np.asarray(np.swapaxes(root, 1, 2) @ np.linalg.inv(warp.jacobian(found.centre)))
 
 
-def _verdict(warp: PaperWarp, here: Bytes, there: Bytes) -> _Verdict:
+def _verdict(warp: PaperWarp, here: Bytes, there: Bytes, part: bool) -> _Verdict:
     """How much of the first page is found again, and whether another position would do as well."""
     seen, valid = _read_as(warp, there, here.shape[:2], 1.2)
-    found = blocks.compare(_soft(here, 1.2), seen, valid, 48)
+    size = _sizes(part)[0]
+    found = blocks.compare(_soft(here, 1.2), seen, valid, size)
     good = (found.likeness > LIKE) & (np.hypot(*found.shift.T) < 1.5)
-    total = max(blocks.inked(_soft(here, 1.2), 48), 1)
+    total = max(blocks.inked(_soft(here, 1.2), size, valid if part else None), 1)
     moved = np.clip(np.rint(seen * 255), 0, 255).astype(np.uint8)
     ballots = coarse.votes(here, moved, valid, max(here.shape) // 4)
-    rival = any(v.stay < max(3 * v.go, 10) for v in ballots)
+    rival = any(v.stay < max(3 * v.go, LEAST_VOTES) for v in ballots)
     return _Verdict(float(good.sum()) / total, rival)
 
 
@@ -215,7 +250,7 @@ def _scale(warp: PaperWarp, shape: tuple[int, ...]) -> float:
 
 
 def _fine(
-    rough: PaperWarp, pages: list[Bytes], scales: list[tuple[float, float]], bend: bool, tell: Callable[[float], Any]
+    rough: PaperWarp, pages: list[Bytes], scales: list[tuple[float, float]], bend: bool, part: bool, tell: Callable[[float], Any]
 ) -> Registration:
     """From the reduced pages to full measure: both at the coarser one's resolution, as no scan tells more than it shows."""
     ratio = _scale(rough, (round(pages[0].shape[0] * scales[0][1]), round(pages[0].shape[1] * scales[0][0]))) * scales[0][0] / scales[1][0]
@@ -223,16 +258,17 @@ def _fine(
     here, old_scale = _reduced(pages[0], wanted)
     there, new_scale = _reduced(pages[1], min(1.0, wanted / ratio))
     warp = _rescaled(rough, scales[0], old_scale, scales[1], new_scale, here.shape)
-    warp = _tightened(warp, here, there, 64, 2.0, 3 if bend else 0)
+    size = _sizes(part)[1]
+    warp = _tightened(warp, here, there, size, 2.0, 3 if bend else 0)
     tell(0.3)
     fixed = _soft(here, 1.0)
     for i in range(3):
-        warp = _tightened(warp, here, there, 64, 1.0, None if bend else 0, fixed)
+        warp = _tightened(warp, here, there, size, 1.0, None if bend else 0, fixed)
         tell(0.4 + 0.2 * i)
     seen, valid = _read_as(warp, there, here.shape[:2], 1.0)
-    left = blocks.compare(fixed, seen, valid, 64)
+    left = blocks.compare(fixed, seen, valid, size)
     good = (left.likeness > LIKE) & (np.hypot(*left.shift.T) < 1.0)
-    total = max(blocks.inked(fixed, 64), 1)
+    total = max(blocks.inked(fixed, size, valid if part else None), 1)
     if good.sum() < LEAST_BLOCKS or good.sum() / total < LEAST_COVERAGE:
         raise _refused(False)
     left = left.where(good)
@@ -245,9 +281,19 @@ def _fine(
     j = warp.jacobian(middle)[0]
     turn = float(np.degrees(np.arctan2(j[1, 0] - j[0, 1], j[0, 0] + j[1, 1])))
     return Registration(
-        warp=warp, old_to_small=old_scale, new_to_small=new_scale, residual_px=residual * to_new, sigma_px=sigma * to_new,
-        coverage=float(good.sum() / total), blocks=int(good.sum()), scale=to_new * old_scale[0], turn_deg=turn,
-    )  # fmt: skip
+        warp=warp,
+        old_to_small=old_scale,
+        new_to_small=new_scale,
+        residual_px=residual * to_new,
+        sigma_px=sigma * to_new,
+        coverage=float(good.sum() / total),
+        blocks=int(good.sum()),
+        scale=to_new * old_scale[0],
+        turn_deg=turn,
+        here=_grown(left.centre, old_scale),
+        there=_grown(warp(left.centre + left.shift), new_scale),
+        white=_whitening(left, warp) * np.asarray(new_scale),
+    )
 
 
 def _rescaled(

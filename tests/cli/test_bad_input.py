@@ -280,17 +280,17 @@ def test_two_recipes_of_one_name_are_refused(tables, tmp_path):
 
 
 def test_a_full_disk_stops_one_result_not_the_next(tables, tmp_path, monkeypatch):
-    out, write = tmp_path / "out", Path.write_text
+    out, write = tmp_path / "out", Path.write_bytes
 
-    def full(self, text, **how):
-        write(self, text[:10], **how)
+    def full(self, data):
+        write(self, data[:10])
         if self.name.startswith("a."):
             raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
-        return write(self, text, **how)
+        return write(self, data)
 
     out.mkdir()
     (out / "a.result.json").write_text("the older result")
-    monkeypatch.setattr(Path, "write_text", full)
+    monkeypatch.setattr(Path, "write_bytes", full)
     done = run("digitise", *tables, "--out", out)
     assert done.exit_code == 1 and os.strerror(errno.ENOSPC) in done.output
     assert sorted(p.name for p in out.iterdir()) == ["a.result.json", "b.result.json"]
