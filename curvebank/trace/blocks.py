@@ -1,6 +1,6 @@
 """Readings along a curve: in each block of a few pixels of its length base, height and shift of the line's profile, all blocks at once.
 
-Gauss-Newton with robust weights (Tukey) on one matrix of readings a block, so that every sum is a sum over a row.
+Gauss-Newton with robust weights (Tukey) on matrices with a column for each block, so that every sum is a sum of rows.
 """
 
 from dataclasses import dataclass
@@ -11,6 +11,7 @@ import numpy.typing as npt
 from ..records import FloatArray
 from .pixels import Floats32, Pixels
 from .shape import Shape
+from .smooth import middle
 
 PER_PX = 128
 BACKGROUND_PX = 2.5
@@ -43,18 +44,18 @@ def read_blocks(pixels: Pixels, d: FloatArray | Floats32, shape: Shape, length: 
     block = block[near]
     seen = np.bincount(block, minlength=count)
     column = np.arange(len(block)) - (np.cumsum(seen) - seen)[block]
-    place = block * max(int(seen.max(initial=1)), 1) + column
+    place = column * count + block
 
-    def rows(values: FloatArray | Floats32, fill: float) -> Floats32:
+    def table(values: FloatArray | Floats32, fill: float) -> Floats32:
         out = np.full(count * max(int(seen.max(initial=1)), 1), fill, np.float32)
         out[place] = values[near]
-        return out.reshape(count, -1)
+        return out.reshape(-1, count)
 
     beside = np.minimum(*sides)
-    return read_rows(rows(d, 99.0), rows(pixels.ink, 0.0), rows(pixels.weight, 0.0), seen, beside, shape, length, rounds)
+    return read_table(table(d, 99.0), table(pixels.ink, 0.0), table(pixels.weight, 0.0), seen, beside, shape, length, rounds)
 
 
-def read_rows(
+def read_table(
     d: Floats32,
     ink: Floats32,
     given: Floats32,
@@ -65,12 +66,12 @@ def read_rows(
     rounds: int = 4,
     slack: float = 0.02,
 ) -> Blocks:
-    """Readings from matrices [blocks, n] of distances across, ink and weights.
+    """Readings from matrices [n, blocks] of distances across, ink and weights.
 
     ``seen`` counts the readings of each block, ``beside`` is the ink on the lighter of its flanks. A block is believed while its misfit
     is not above the usual one by much: more than 2.5 times and ``slack``.
     """
-    count = len(d)
+    count = d.shape[1]
     base, height, shift = np.zeros(count), np.full(count, shape.height), np.zeros(count)
     noise = max(shape.noise, 0.01)
     prior = 1.0 / np.array([0.15, 0.6 * shape.height, 1.5]) ** 2
@@ -83,15 +84,15 @@ def read_rows(
     miss = ink
     variance = np.ones(count)
     for turn in range(rounds):
-        local = d - shift.astype(np.float32)[:, None]
+        local = d - shift.astype(np.float32)
         far = np.abs(local)
         core = clear & (far < shape.half_extent)
         far *= np.float32(PER_PX)
         cell = np.minimum(far, last, out=far).astype(np.int32)
         g, dg = level[cell], tilt[cell]
         np.copysign(dg, local, out=dg)
-        miss = ink - height.astype(np.float32)[:, None] * g
-        miss -= base.astype(np.float32)[:, None]
+        miss = ink - height.astype(np.float32) * g
+        miss -= base.astype(np.float32)
         weight = given
         if turn:
             off = miss * root
@@ -100,10 +101,8 @@ def read_rows(
             weight = given * np.maximum(1 - off, 0) ** 2
         wg, wd, wm = weight * g, weight * dg, weight * miss
         scale = 1.0 / noise**2
-        total = weight.sum(axis=1) * scale
-        one_g, one_d, one_m = (w.sum(axis=1) * scale for w in (wg, wd, wm))
-        gg, g_d, dd = (np.einsum("ij,ij->i", a, b) * scale for a, b in ((wg, g), (wg, dg), (wd, dg)))
-        gm, dm = (np.einsum("ij,ij->i", wm, b) * scale for b in (g, dg))
+        total, one_g, one_d, one_m = (w.sum(axis=0) * scale for w in (weight, wg, wd, wm))
+        gg, g_d, dd, gm, dm = ((a * b).sum(axis=0) * scale for a, b in ((wg, g), (wg, dg), (wd, dg), (wm, g), (wm, dg)))
         step, variance = _step(
             (total + prior[0], one_g, one_d * height, gg + prior[1], g_d * height, dd * height**2 + prior[2]),
             (one_m - base * prior[0], gm - (height - shape.height) * prior[1], dm * height - shift * prior[2]),
@@ -111,15 +110,15 @@ def read_rows(
         base = base + step[0]
         height = np.clip(height + step[1], 0.02, 2.0)
         shift = np.clip(shift + np.clip(step[2], -1.0, 1.0), -4.0, 4.0)
-        spread = 1.4826 * float(np.median(np.abs(miss[core]))) if core.any() else noise
-        noise = min(max(spread, 0.01), 0.3)
-    total = given.sum(axis=1, dtype=np.float64)
-    chi = np.sqrt(np.einsum("ij,ij->i", given, np.minimum(miss**2, np.float32(0.25))) / np.maximum(total, 1e-9))
+        off = np.abs(miss[core])
+        noise = min(max(1.4826 * middle(off), 0.01), 0.3) if len(off) else noise
+    total = given.sum(axis=0, dtype=np.float64)
+    chi = np.sqrt((given * np.minimum(miss**2, np.float32(0.25))).sum(axis=0) / np.maximum(total, 1e-9))
     told = total > 0  # not wholly under a mask
     strong = told & (height > 0.3 * shape.height)
-    usual = float(np.median(height[strong])) if strong.any() else shape.height
+    usual = middle(height[strong]) if strong.any() else shape.height
     strong = told & (height > 0.4 * usual)
-    usual_chi = float(np.median(chi[strong])) if strong.any() else 0.1
+    usual_chi = middle(chi[strong]) if strong.any() else 0.1
     sigma = np.sqrt(variance)
     masked = total < 0.35 * np.maximum(seen, 1)
     good = (

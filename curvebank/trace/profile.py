@@ -15,7 +15,7 @@ from ..sheet.prepare import unit_of
 from . import smooth
 from .axis import Axis, from_polyline
 from .band import sample
-from .blocks import Blocks, read_blocks, read_rows
+from .blocks import Blocks, read_blocks, read_table
 from .pixels import Floats32, believed, pixels_near, trust
 from .shape import Shape, shape_of
 
@@ -23,6 +23,14 @@ __all__ = ["Blocks", "Refined", "Shape", "align", "pixels_near", "read_blocks", 
 BILINEAR = 1 / 6
 """Variance [px^2] that linear interpolation adds to a blur, the mean over all places between pixels."""
 Held = tuple[FloatArray | None, FloatArray | None]
+AGAIN_PX = 0.7
+"""A curve further than this (times the unit) from where its ink was read about is read once more."""
+STIFF_SHARE, SUPPLE = 4, 3
+"""A stiff curve has one piece for so many of a supple one; fewer where the path had to be moved far, as on sharp bends."""
+STIFF = 4.0
+"""Readings that count as one for a first, stiff curve through them: other strokes come in runs."""
+WANDER_PX = 0.15
+"""Scatter of a path about its line (times the unit) that is taken for granted."""
 ROWS = 3
 """Rows of the band that are averaged to one reading."""
 
@@ -45,28 +53,29 @@ def align(prepared: Prepared, axis: Axis, clicks: FloatArray) -> tuple[Axis, Sha
     count = max(int(round(axis.length / (3.0 * unit))), 4)
     ink, weight, across = _band(prepared, axis, count, half, step)
     keep = believed(weight)
-    d = np.broadcast_to(across, ink.shape)
+    d = np.broadcast_to(across[:, None], ink.shape)
     rough = shape_of(d[keep], ink[keep], prepared.width_px)
     unit = max(unit_of(rough.width), 0.6)
     flanks = [(sign * across > rough.half_extent + 0.5) & (sign * across < rough.half_extent + 6.0) for sign in (-1, 1)]
-    sides = [ink[:, f].mean(axis=1) if f.any() else np.zeros(count) for f in flanks]
+    sides = [ink[f].mean(axis=0) if f.any() else np.zeros(count) for f in flanks]
     near = np.abs(across) <= rough.half_extent + 2.5
     seen = np.full(count, int(near.sum()))
-    rows = (d[:, near], ink[:, near], weight[:, near])
+    rows = (d[near], ink[near], weight[near])
     # Averaged rows have little noise: what a neighbouring line adds to the misfit must not be held against it.
-    blocks = read_rows(*rows, seen, np.minimum(*sides), rough, axis.length, rounds=3, slack=0.1)
+    blocks = read_table(*rows, seen, np.minimum(*sides), rough, axis.length, rounds=3, slack=0.1)
     blocks = _with_clicks(blocks, axis, clicks, unit)
-    stiff = _stiff(blocks, axis, _weights(blocks), _pieces(axis, unit) // 4, 8.0)
-    fitted = _stiff(blocks, axis, _gated(blocks, stiff, axis), _pieces(axis, unit) // 2, 4.0)
+    # A path may wander a pixel or two to either side: that is followed here, and only what lies further off is some other stroke.
+    stiff = _stiff(blocks, axis, _weights(blocks), _pieces(axis, unit) // STIFF_SHARE, STIFF, WANDER_PX * unit)
+    fitted = _stiff(blocks, axis, _gated(blocks, stiff, axis, 5 * WANDER_PX * unit), _pieces(axis, unit) // 2, 2.0, WANDER_PX * unit)
     shift = fitted.value(axis.s / axis.length)
     moved = axis.points + axis.normals * shift
-    d = (across - fitted.value((np.arange(count) + 0.5) / count)).astype(np.float32)
+    d = (across[:, None] - fitted.value((np.arange(count) + 0.5) / count)[:, 0]).astype(np.float32)
     shape = shape_of(d[keep], ink[keep], rough.width, BILINEAR)
     return from_polyline(moved, axis.closed), shape, float(np.abs(shift).max())
 
 
 def _band(prepared: Prepared, axis: Axis, count: int, half: float, step: float) -> tuple[Floats32, Floats32, Floats32]:
-    """Ink and weight [count, n] of blocks along the axis, and the offsets [n] px across, from a band of a few rows a block."""
+    """Ink and weight [n, count] of blocks along the axis, and the offsets [n] px across, from a band of a few rows a block."""
     rows = (np.arange(count * ROWS, dtype=np.float64) + 0.5) * (axis.length / (count * ROWS))
     across = np.arange(-half, half + 0.5 * step, step, dtype=np.float64)
     ink = sample(prepared.clean, axis, rows, across, 1.0).reshape(count, ROWS, -1)
@@ -76,38 +85,46 @@ def _band(prepared: Prepared, axis: Axis, count: int, half: float, step: float) 
         hidden = under_mask(prepared, (points[:, None] + normals[:, None] * across[:, None]).reshape(-1, 2))
         weight = np.where(hidden.reshape(weight.shape), np.float32(0), weight)
     total = weight.sum(axis=1)
-    mean = np.einsum("ijk,ijk->ik", ink, weight) / np.maximum(total, np.float32(1e-9))
-    return mean, total * np.float32(1 / ROWS), across.astype(np.float32)
+    mean = (ink * weight).sum(axis=1) / np.maximum(total, np.float32(1e-9))
+    return np.ascontiguousarray(mean.T), np.ascontiguousarray(total.T) * np.float32(1 / ROWS), across.astype(np.float32)
 
 
 def refine(prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray, held: Held = (None, None)) -> Refined:
     """Move an aligned axis onto the middle of its ink, with uncertainties; ``held`` are pixels [n, 2] of the known line at its ends."""
+    fine, sharper, moved = _read(prepared, axis, shape, clicks, held)
+    # A shape measured about a wiggling axis is too broad, and ink far from the axis is read poorly: read again about the curve itself.
+    if abs(np.log(sharper.width / shape.width)) >= 0.2 or moved > AGAIN_PX * max(unit_of(shape.width), 0.6):
+        fine, _, _ = _read(prepared, fine.axis, sharper, clicks, held, SUPPLE)
+    return fine
+
+
+def _read(
+    prepared: Prepared, axis: Axis, shape: Shape, clicks: FloatArray, held: Held, share: int = STIFF_SHARE
+) -> tuple[Refined, Shape, float]:
+    """One reading about an axis: the curve, the line's shape as seen about the curve, and how far [px] the curve lies from the axis.
+
+    ``share``: the stiff reference has one piece for so many of the curve's own.
+    """
     unit = max(unit_of(shape.width), 0.6)
     pixels = pixels_near(prepared, axis, shape.half_extent + 6.0)
-    # The aligned axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
-    for turn in (0, 1):
-        blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
-        for end, known in enumerate(held):
-            if known is not None:
-                blocks = _with_known(blocks, axis, known, 3.0 * unit, end)
-        reference, off = _reference(axis, _pieces(axis, unit) // 4, _shown(blocks, axis))
-        whole = _with_clicks(blocks, axis, clicks, unit)
-        whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
-        fitted = _along(whole, axis, unit)
-        if turn:
-            break
-        # A shape measured about a wiggling axis is too broad: measured again about the curve itself, it may ask for another reading.
-        # The few values of each step of arc length are looked up, not computed for every pixel.
-        moved = pixels.d - np.interp(pixels.s, axis.s, fitted.value(axis.s / axis.length)[:, 0] - off).astype(np.float32)
-        keep = pixels.believed()
-        sharper = shape_of(moved[keep], pixels.ink[keep], shape.width)
-        if abs(np.log(sharper.width / shape.width)) < 0.2:
-            break
-        shape = sharper
+    blocks = read_blocks(pixels, pixels.d, shape, axis.length, 3.0 * unit)
+    for end, known in enumerate(held):
+        if known is not None:
+            blocks = _with_known(blocks, axis, known, 3.0 * unit, end)
+    # The axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
+    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
+    whole = _with_clicks(blocks, axis, clicks, unit)
+    whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
+    fitted = _along(whole, axis, unit, share)
     t = axis.s / axis.length
-    final = from_polyline(reference.points + reference.normals * fitted.value(t), axis.closed)
+    across = fitted.value(t)
+    moved = across[:, 0] - off
+    keep = pixels.believed()
+    about = pixels.d - np.interp(pixels.s, axis.s, moved).astype(np.float32)
+    seen = shape_of(about[keep], pixels.ink[keep], shape.width)
+    final = from_polyline(reference.points + reference.normals * across, axis.closed)
     sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
-    return Refined(final, sigma, blocks, shape, fitted.scale)
+    return Refined(final, sigma, blocks, shape, fitted.scale), seen, float(np.abs(moved).max())
 
 
 def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) -> Blocks:
@@ -179,30 +196,32 @@ def _weights(blocks: Blocks) -> FloatArray:
     return np.where(blocks.good, 1.0 / (blocks.sigma**2 + 0.01**2), 0.0)
 
 
-def _stiff(blocks: Blocks, axis: Axis, weight: FloatArray, pieces: int, correlation: float) -> smooth.Smooth:
+def _stiff(blocks: Blocks, axis: Axis, weight: FloatArray, pieces: int, correlation: float, floor: float = 0.0) -> smooth.Smooth:
     pieces = max(pieces, 6 if axis.closed else 3)
     t = blocks.s / axis.length
-    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=correlation)
+    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=correlation, floor=floor)
 
 
-def _gated(blocks: Blocks, stiff: smooth.Smooth, axis: Axis) -> FloatArray:
+def _gated(blocks: Blocks, stiff: smooth.Smooth, axis: Axis, least: float = 0.35) -> FloatArray:
     """Weights without readings far off a stiff curve (strokes of letters, other lines): a supple curve must not see them."""
     weight = _weights(blocks)
     if blocks.good.sum() < 8:
         return weight
     miss = np.abs(blocks.shift - stiff.value(blocks.s / axis.length)[:, 0])
-    return np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), 0.35), weight, 0.0)
+    return np.where(miss < max(5.0 * 1.4826 * float(np.median(miss[blocks.good])), least), weight, 0.0)
 
 
-def _along(blocks: Blocks, axis: Axis, unit: float) -> smooth.Smooth:
+def _along(blocks: Blocks, axis: Axis, unit: float, share: int) -> smooth.Smooth:
     """The shifts smoothed along the curve."""
     t = blocks.s / axis.length
     pieces = _pieces(axis, unit)
-    stiff = _stiff(blocks, axis, _weights(blocks), pieces // 4, 8.0)
+    stiff = _stiff(blocks, axis, _weights(blocks), pieces // share, STIFF)
     weight = _gated(blocks, stiff, axis)
     curve = smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=2.0, rounds=3)
     count = _correlation(blocks, curve, t)
-    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count, rounds=3, start=curve.robust)
+    # Where the line bends faster than the stiff curve can, its readings were left out: those that the supple one passes come back.
+    weight = _gated(blocks, curve, axis)
+    return smooth.fit(t, blocks.shift, weight, pieces=pieces, periodic=axis.closed, correlation=count, rounds=3, start=curve)
 
 
 def _correlation(blocks: Blocks, curve: smooth.Smooth, t: FloatArray) -> float:

@@ -14,6 +14,8 @@ BLURS = np.array([0.45, 0.65, 0.85, 1.1, 1.4, 1.8, 2.4])
 """Widths (in parts of a first guess) and blurs [px] tried for a line's cross profile."""
 
 
+ENOUGH = 8000
+"""So many readings measure a profile; of more, every so-manyth is taken."""
 Reals = npt.NDArray[np.floating[Any]]
 
 
@@ -53,6 +55,8 @@ def shape_of(d: Reals, ink: Reals, width_px: float, sampling: float = 0.0) -> Sh
 
     ``width_px`` is a first guess. ``sampling`` is the variance [px^2] that resampling has added to the blur.
     """
+    every = max(len(d) // ENOUGH, 1)
+    d, ink = d[::every], ink[::every]
     bins = np.rint(d * 3).astype(np.int64)
     low = int(bins.min())
     bins -= low

@@ -9,6 +9,7 @@ equations are banded and are solved by banded Cholesky factors; those of a perio
 
 import math
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -50,6 +51,12 @@ def _sum(coefficients: FloatArray, cell: npt.NDArray[np.intp], parts: FloatArray
     return out
 
 
+def middle(values: npt.NDArray[Any]) -> float:
+    """The upper median: the middle value of what is not empty, without the many checks of a general one."""
+    k = len(values) // 2
+    return float(np.partition(values, k)[k])
+
+
 def basis(t: FloatArray, pieces: int, periodic: bool) -> FloatArray:
     """Cubic B-splines on ``pieces`` even intervals of 0..1 at ``t``: [n, pieces + 3], or [n, pieces] when periodic."""
     cell, parts = _four(t, pieces, periodic)
@@ -82,6 +89,7 @@ class Smooth:
     spread: float
     weights: FloatArray
     robust: FloatArray
+    decade: float
 
     def value(self, t: FloatArray) -> FloatArray:
         """The spline at ``t``: [n, d]."""
@@ -243,38 +251,39 @@ def fit(
     cut: float = 4.7,
     correlation: float = 1.0,
     floor: float = 0.0,
-    start: FloatArray | None = None,
+    start: Smooth | None = None,
 ) -> Smooth:
     """Fit ``values`` [n] or [n, d] at ``t`` [n] in 0..1.
 
     ``weights`` are 1 / variance up to a factor. ``cut`` is Tukey's constant (0 turns robustness off), ``correlation`` the number of
-    readings that count as one, ``floor`` the least residual scale believed, ``start`` robust weights of an earlier fit to begin from.
+    readings that count as one, ``floor`` the least residual scale believed, ``start`` an earlier fit of the same
+    readings to begin from.
     """
     y = np.asarray(values, dtype=np.float64)
     y = y[:, None] if y.ndim == 1 else y
     given = np.ones(len(t)) if weights is None else np.asarray(weights, dtype=np.float64)
-    given = given / max(float(np.median(given[given > 0])) if (given > 0).any() else 1.0, 1e-300)
+    given = given / max(middle(given[given > 0]) if (given > 0).any() else 1.0, 1e-300)
     design = Design(t, pieces, periodic)
-    robust = np.ones(len(t)) if start is None else start
-    decade: float | None = None
+    robust = np.ones(len(t)) if start is None else start.robust
+    decade: float = math.nan if start is None else start.decade
     for turn in range(max(rounds, 1)):
         coefficients, system, variance, decade = _solve(design, y, given * robust, correlation, decade)
         if not cut or turn == rounds - 1:
             break
         miss = np.sqrt(((y - design.value(coefficients)) ** 2).sum(axis=1) * given)
         live = miss[given > 0]
-        scale = max(1.4826 * float(np.median(live)) / (1.0 if y.shape[1] == 1 else 1.2), floor, 1e-9)
+        scale = max(1.4826 * middle(live) / (1.0 if y.shape[1] == 1 else 1.2), floor, 1e-9)
         new = np.maximum(1 - (miss / (cut * scale)) ** 2, 0.0) ** 2
-        if np.abs(new - robust).max() < 0.02:
+        if np.abs(new - robust).max() < 0.1:
             break
         robust = new
-    return Smooth(coefficients, system, pieces, periodic, float(np.sqrt(variance)), variance * correlation, given * robust, robust)
+    return Smooth(coefficients, system, pieces, periodic, float(np.sqrt(variance)), variance * correlation, given * robust, robust, decade)
 
 
-def _solve(design: Design, y: FloatArray, w: FloatArray, correlation: float, near: float | None) -> tuple[FloatArray, System, float, float]:
+def _solve(design: Design, y: FloatArray, w: FloatArray, correlation: float, near: float) -> tuple[FloatArray, System, float, float]:
     """One weighted fit with its smoothness: coefficients, factored system, residual variance, and the decade of smoothness chosen.
 
-    ``near`` is the decade that a fit of almost the same weights chose.
+    ``near`` is the decade that a fit of almost the same weights chose, or nan.
     """
     columns = y.shape[1]
     null = 1 if design.periodic else 3
@@ -301,13 +310,13 @@ def _solve(design: Design, y: FloatArray, w: FloatArray, correlation: float, nea
             kept[decade] = (freedom_n * math.log(rss / freedom_n) + columns * (logdet - rank * math.log(lam)), c, rss)
         return kept[decade][0]
 
-    best = min(COARSE, key=score) if near is None else near
-    step = 2.0 if near is None else 0.5
+    best = min(COARSE, key=score) if math.isnan(near) else near
+    step = 2.0 if math.isnan(near) else 0.5
     while step >= 0.5:
         lower = [d for d in (best - step, best + step) if LEAST <= d <= MOST and score(d) < score(best)]
         if lower:
             best = min(lower, key=score)
-        if not lower or near is None:
+        if not lower or math.isnan(near):
             step *= 0.5
     a, b, c = (score(min(max(best + d, LEAST), MOST)) for d in (-0.5, 0.0, 0.5))
     decade = best + (0.25 * (a - c) / (a - 2 * b + c) if a - 2 * b + c > 1e-9 and LEAST < best < MOST else 0.0)

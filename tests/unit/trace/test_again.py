@@ -14,8 +14,14 @@ LOOP = np.stack([350 + 190 * np.cos(PHI) * (1 + 0.1 * np.cos(PHI)), 250 + 110 * 
 
 
 @pytest.fixture(scope="module")
-def fall(tools):
+def crossed(tools):
     pixels, (line, _) = tools["paint"]([FALL, OTHER])
+    return tools["prepared_of"](pixels), line
+
+
+@pytest.fixture(scope="module")
+def fall(tools):
+    pixels, (line,) = tools["paint"]([FALL])
     return tools["prepared_of"](pixels), line
 
 
@@ -84,8 +90,8 @@ def flip(trace):
     return flipped(trace)
 
 
-def test_a_click_moved_onto_the_right_line_mends_the_part_between_its_neighbours(fall, tools, box):
-    ready, line = fall
+def test_a_click_moved_onto_the_right_line_mends_the_part_between_its_neighbours(crossed, tools, box):
+    ready, line = crossed
     points = on(line, (0.02, 0.12, 0.32, 0.6, 0.98))
     wrong = points.copy()
     x = (points[2, 0] - 60) / 560
