@@ -21,12 +21,13 @@ FIELDS, A_FIELD = 20, 2
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Found:
-    """A line or tick: points ``at`` [n, 2] px with ``sigma_px`` [n], ``height`` of its ink."""
+    """A line or tick: points ``at`` [n, 2] px with ``sigma_px`` [n], ``height`` of its ink; ``side`` of the axis a tick is on."""
 
     at: FloatArray
     sigma_px: FloatArray
     height: float
     tick: bool = False
+    side: int = 0
 
     def meets(self, theta: FloatArray, layout: Layout, d: int, axis_at: float) -> float:
         """Own coordinate where the other one is ``axis_at``: straight on from the nearer half."""
@@ -124,7 +125,7 @@ def looked_for(
     e_range = (area.centre[e] - area.half[e], area.centre[e] + area.half[e])
     px = np.array([area.px[d], area.px[e]])
     line_width = min(width_px, 3.0)
-    guides, ticks = [], []
+    guides, ticks, sides = [], [], []
     es = np.linspace(e_range[0] + 2 / px[1], e_range[1] - 2 / px[1], 40)
     for c, _ in search.find_lines(to_pixels, c_range, e_range, px, ink, masked, line_width):
         guides.append(to_pixels(np.full(len(es), c), es))
@@ -134,8 +135,9 @@ def looked_for(
     for c, _, side in search.find_ticks(to_pixels, c_range, axis_e, px, ink, masked, width_px, unit):
         reach = np.array([width_px / 2 + 1.5, width_px / 2 + 1.5 + max(3.0, 4.0 * unit)]) / px[1] * side
         ticks.append(to_pixels(np.full(2, c), axis_e + reach))
+        sides.append(int(side))
     short = middles.measure(ticks, [width_px] * len(ticks), ink, masked, places=1, along_px=max(1, round(1.5 * unit)), reach_px=2.0)
-    out += [Found(m.at, m.sigma, m.height, tick=True) for m in short if len(m.at)]
+    out += [Found(m.at, m.sigma, m.height, True, side) for m, side in zip(short, sides, strict=True) if len(m.at)]
     return out
 
 

@@ -147,6 +147,13 @@ def _rescaled(theta: FloatArray, lines: FloatArray) -> FloatArray:
 
 
 def _read(d: int, family: list[Found], area: Area, layout: Layout) -> _Direction:
+    """The best reading of lines with the ticks of one side of the axis, or of both: curves that end at the axis look like ticks inside."""
+    sides = {f.side for f in family if f.tick}
+    ways = [family] + [[f for f in family if f.side in (0, side)] for side in sorted(sides) if len(sides) > 1]
+    return max((_read_all(d, way, area, layout) for way in ways), key=lambda r: -np.inf if r.best is None else r.best.score)
+
+
+def _read_all(d: int, family: list[Found], area: Area, layout: Layout) -> _Direction:
     """Lines in order, read by each axis of the direction; the first axis on whose round values they sit is the one that counts."""
     c = np.array([f.meets(area.theta, layout, d, area.axis_at[d]) for f in family])
     order = np.argsort(c, kind="stable")

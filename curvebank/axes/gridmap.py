@@ -112,7 +112,7 @@ def _place_scale(bend: Bend, c: FloatArray, z: FloatArray) -> tuple[np.ndarray, 
         # Snapped marks must agree with each other: ticks of this scale need not be lines of the grid.
         if not use.any() or np.all(miss[use] < 3 * SNAP_SIGMA_PX):
             break
-    return pair, np.linalg.inv(rows.T @ rows)
+    return pair, np.linalg.pinv(rows.T @ rows, hermitian=True)
 
 
 def mark_misses(

@@ -10,8 +10,10 @@ import numpy as np
 from ..records import FloatArray
 
 FEWEST = 3
+WAVE = 1.5e-3
+"""Waviness of a printed line as a share of the panel."""
 CONVERGE_SIGMAS = 3.0
-CONVERGE_PX = 0.4
+CONVERGE_PX = 0.12
 """Lines are taken as converging only where that is seen clearly and moves something by this much."""
 
 
@@ -71,9 +73,10 @@ def _pencil(family: list[FloatArray], along: int, everything: FloatArray) -> tup
         miss = np.abs(slope - m0 - m1 * place)
         scale = max(1.4826 * float(np.median(miss)), 1e-5)
         good = np.maximum(1 - (miss / (5 * scale)) ** 2, 1e-3) ** 2
-        sigma = scale / np.sqrt(max(float((good * (place - middle) ** 2).sum()), 1e-300))
+        # A printed line's own slope is known this well; the scatter of five slopes alone would say little.
+        sigma = min(scale, WAVE / float(np.ptp(everything[:, along]))) / np.sqrt(max(float((good * (place - middle) ** 2).sum()), 1e-300))
     reach, length = np.ptp(place), np.ptp(everything[:, along])
-    if len(family) < 4 or abs(m1) < CONVERGE_SIGMAS * sigma or abs(m1) * reach * length / 8 < CONVERGE_PX / 500:
+    if abs(m1) < CONVERGE_SIGMAS * sigma or abs(m1) * reach * length / 8 < CONVERGE_PX / 500:
         return float(np.average(slope, weights=weight * good)), 0.0
     return m0, m1
 

@@ -79,7 +79,9 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         # All marks agree with the lines, on a common step: any other reading costs a wrong mark more.
         if len(tried) == 1 and first is not None and first.score >= LEAST_LOG_ODDS and not first.wrong and _settled(first, log):
             return Readings(first)
-    found = [r for r in found if r.score >= LEAST_LOG_ODDS]
+    # Most marks are right: a reading that few of them share is none (of two marks one may be wrong, and is then asked about).
+    most = max(len(marks_c) // 3, 1)
+    found = [r for r in found if r.score >= LEAST_LOG_ODDS and len(r.wrong) <= most]
     if not found:
         return Readings(None)
     best = max(found, key=lambda r: r.score)
@@ -90,7 +92,7 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         return float(np.abs(other.level(ends) - best.level(ends)).max() / slope * px)
 
     rivals = [r for r in found if r.score > best.score - NEARLY_AS_GOOD and apart(r) > 3.0]
-    if not rivals and not log and len(marks_c) == 2 and roundness(best.step) >= 7.0:
+    if not rivals and len(marks_c) == 2 and (best.wrong or (not log and roundness(best.step) >= 7.0)):
         # Two marks fit any even grid; such a step says that the lines belong to something else, or that a mark does.
         return Readings(None)
     return Readings(best, max(rivals, key=lambda r: r.score) if rivals else None)
