@@ -84,6 +84,13 @@ class TestPreview:
         assert len(places) == 11 and np.allclose(places, 100 + 70 * np.arange(11), atol=0.1)
         assert all(line["sigma_px"] < 0.2 for line in found["level"] + found["upright"])
 
+    def test_a_mark_snaps_to_the_crossing_it_means(self, client, ready, is_problem):
+        """The crossing of flow 50 and head 25 was drawn at (450, 330)."""
+        near = client.get(f"/api/drafts/{ready['id']}/snap?x=453.1&y=327.4&radius=8").json["snap"]
+        assert near["kind"] == "crossing" and near["at"] == pytest.approx([450, 330], abs=0.15) and 0 < near["sigma_px"] < 0.2
+        assert client.get(f"/api/drafts/{ready['id']}/snap?x=485&y=355&radius=5").json["snap"] is None
+        is_problem(client.get(f"/api/drafts/{ready['id']}/snap?x=a&y=1"), 422, "validation")
+
     def test_what_cannot_be_calibrated_is_a_problem_with_its_path(self, client, ready, is_problem):
         axes = json.loads(json.dumps(ready["doc"]["panels"][0]["axes"]))
         axes["head"]["marks"] = axes["head"]["marks"][:1]

@@ -15,7 +15,7 @@ from ..problems import Problem
 from ..services import desk_db, services
 from ..starting import starting_point
 from .jobs import serialise
-from .models import DraftPath, Head, NewDraft, NewStep, PreviewQuestion, ResultQuery, SaveRequest
+from .models import DraftPath, Head, NewDraft, NewStep, PreviewQuestion, ResultQuery, SaveRequest, SnapQuery
 
 blueprint = APIBlueprint("drafts", __name__, url_prefix="/api/drafts", abp_tags=[Tag(name="drafts")])
 
@@ -103,6 +103,16 @@ def lines(path: DraftPath) -> tuple[dict[str, Any], int]:
     if isinstance(prepared, Job):
         return {"pending": True, "job": serialise(prepared)}, 202
     return found_lines.serialise(prepared), 200
+
+
+@blueprint.get("/<draft>/snap")
+def snap(path: DraftPath, query: SnapQuery) -> tuple[dict[str, Any], int]:
+    """What is printed near a place: ``snap`` is {at, kind: crossing | tick | line, sigma_px} or null; 202 while the sheet is prepared."""
+    doc, key = page_of(path.draft)
+    prepared = services().previews.ready(key)
+    if isinstance(prepared, Job):
+        return {"pending": True, "job": serialise(prepared)}, 202
+    return {"snap": found_lines.snap(prepared, documents.masks_of(doc), (query.x, query.y), query.radius)}, 200
 
 
 def page_of(draft_id: str) -> tuple[dict[str, Any], PageKey]:

@@ -162,6 +162,14 @@ class OutcomePath(DraftPath):
     job: Token
 
 
+class SnapQuery(BaseModel):
+    """A place on the page and how far what is printed may lie from it [px]."""
+
+    x: Number
+    y: Number
+    radius: Annotated[float, Field(gt=0, le=60, allow_inf_nan=False)] = 8
+
+
 class ResultQuery(BaseModel):
     """The step whose result is wanted; the head where left out."""
 

@@ -76,6 +76,7 @@ export const dropDraft = (id) => call("DELETE", `/api/drafts/${enc(id)}`);
 export const moveHead = (id, step) => call("POST", `/api/drafts/${enc(id)}/head`, { json: { step } });
 export const preview = (id, json, signal) => call("POST", `/api/drafts/${enc(id)}/preview`, { json, signal });
 export const lines = (id) => call("GET", `/api/drafts/${enc(id)}/lines`);
+export const snap = (id, [x, y], radius, signal) => call("GET", `/api/drafts/${enc(id)}/snap${query({ x, y, radius })}`, { signal });
 export const carry = (id, json) => call("POST", `/api/drafts/${enc(id)}/carry`, { json });
 export const join = (id, json) => call("POST", `/api/drafts/${enc(id)}/join`, { json });
 export const outcome = (url) => call("GET", url);

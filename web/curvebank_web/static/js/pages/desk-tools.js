@@ -1,4 +1,5 @@
 // The tools on the paper, and which of them is in the hand at each step.
+import * as api from "../net/api.js";
 import { nudge, toScreen, toSheet, zoomAt } from "../geometry/affine.js";
 import { hold } from "../geometry/lines.js";
 import { nearest } from "../geometry/polyline.js";
@@ -204,7 +205,7 @@ export class DeskTools {
       return;
     }
     this.last = handle.kind === "open" ? { ...action, held: held.held } : action;
-    this.held = held?.held;
+    this.marked = mark ? { sheet, e: { shiftKey: e.shiftKey, altKey: e.altKey } } : null;
     if (handle.kind === "line") desk.grabbed = { curve: handle.curve, part: "guides", index: (curveOf(desk.session.doc, handle).guides ?? []).length, kept: handle.kept };
     desk.drag = { doc: apply(desk.session.doc, this.last) };
     this.moved({ surface: "paper", screen });
@@ -213,27 +214,55 @@ export class DeskTools {
 
   drop(handle) {
     const { desk } = this;
+    const { last, marked } = this;
     const made = desk.grabbed;
-    desk.drag = null;
-    desk.grabbed = null;
-    this.told = false;
-    if (this.last) desk.act(this.last);
-    if (this.last && this.held) desk.say(heldWords(this.held));
-    this.held = null;
-    if (this.last && handle.kind === "line") {
-      if (handle.kept) desk.selected = handle.curve;
-      desk.focused = { kind: "point", ...made };
-    }
     this.last = null;
-    this.invalidate("all");
+    this.marked = null;
+    this.told = false;
+    const settle = (action, held) => {
+      desk.drag = null;
+      desk.grabbed = null;
+      if (action) desk.act(action);
+      if (action && held) desk.say(heldWords(held));
+      if (action && handle.kind === "line") {
+        if (handle.kept) desk.selected = handle.curve;
+        desk.focused = { kind: "point", ...made };
+      }
+      this.invalidate("all");
+    };
+    if (!last || !marked) return settle(last);
+    return this.land(marked.sheet, marked.e, ({ at, held }) => settle({ ...last, at, ...(handle.kind === "open" ? { held } : {}) }, held));
   }
 
   back() {
     this.desk.drag = null;
     this.desk.grabbed = null;
     this.last = null;
+    this.marked = null;
     this.told = false;
     this.invalidate("doc");
+  }
+
+  /**
+   * Where a mark lands: measured in the ink by the server, which knows ticks too, or as this page sees it where no answer comes in a
+   * moment or nothing is found. `then(landed)` is called once.
+   */
+  async land(sheet, e, then) {
+    const { desk } = this;
+    const here = this.snapped(sheet, e);
+    if (e?.shiftKey || e?.altKey || desk.session.outbox.away) return then(here);
+    const scale = desk.loupe ? desk.loupe.view.scale : desk.view.scale;
+    const patience = new AbortController();
+    const timer = setTimeout(() => patience.abort(), 400);
+    let got = null;
+    try {
+      got = (await api.snap(desk.session.id, sheet, Math.max(2.5, Math.min(14, 8 / scale)), patience.signal)).snap;
+    } catch {
+      // The page's own look is good enough to go on with.
+    }
+    clearTimeout(timer);
+    const far = got ? Math.hypot(got.at[0] - sheet[0], got.at[1] - sheet[1]) : 0;
+    return then(got && !(got.kind === "line" && here.held?.kind === "crossing") ? { at: round(got.at), held: { kind: got.kind, moved_px: far, sigma_px: got.sigma_px } } : here);
   }
 
   /** A place held to the printed crossing, line or tick within 8 screen px, unless Shift or Alt is down. {at, held: {kind, moved_px, sigma_px} | undefined} */
@@ -243,7 +272,7 @@ export class DeskTools {
     const scale = desk.loupe ? desk.loupe.view.scale : desk.view.scale;
     const reach = Math.max(2.5, Math.min(14, 8 / scale));
     const lines = desk.lines?.found;
-    const found = lines && hold(lines, sheet, reach);
+    const found = lines ? hold(lines, sheet, reach) : null;
     if (found?.kind === "crossing") return { at: round(found.at), held: { kind: found.kind, moved_px: found.moved_px, sigma_px: found.sigma_px } };
     const patch = this.tiles.patch(sheet, Math.ceil(reach) + 12);
     const got = patch && snap(patch, [sheet[0] - patch.origin[0], sheet[1] - patch.origin[1]], reach);
@@ -289,22 +318,26 @@ export class DeskTools {
 
   /** Open a mark at a sheet place that a finding names, held to the printed line there. */
   markHere(sheet) {
-    const { desk } = this;
-    const { at, held } = this.snapped(sheet);
-    desk.focusBlank = "mark";
-    desk.act({ type: "mark/open", panel: desk.panel.id, at, held });
+    this.#open(sheet);
   }
 
   #markAt(sheet, e) {
     const { desk } = this;
     if (!desk.panel) return;
-    const { at, held } = this.snapped(sheet, e);
-    if (held) desk.say(heldWords(held));
     const inOther = (desk.doc.panels ?? []).find((p) => p.id !== desk.panel.id && inside(desk, p, sheet) && !inside(desk, desk.panel, sheet));
     if (inOther && !desk.openMark) desk.panelId = inOther.id;
     desk.chosenMark = null;
-    desk.focusBlank = "mark";
-    desk.act({ type: "mark/open", panel: desk.panel.id, at, held });
+    this.#open(sheet, e);
+  }
+
+  #open(sheet, e) {
+    const { desk } = this;
+    const panel = desk.panel.id;
+    this.land(sheet, e, ({ at, held }) => {
+      if (held) desk.say(heldWords(held));
+      desk.focusBlank = "mark";
+      desk.act({ type: "mark/open", panel, at, held });
+    });
   }
 
   #curveAt(sheet, screen, e) {

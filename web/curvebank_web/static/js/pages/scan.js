@@ -49,13 +49,14 @@ function drawOne(svg, view) {
 function drawLines(svg, view) {
   for (const c of now.outcome.report.curves) {
     const on = c.id === now.chosen;
-    const line = (pixels, cls, width, dash) => {
+    const line = (pixels, cls, width, dash = null) => {
       if (!pixels?.length) return;
       const d = path(thin(pixels.map((p) => toScreen(view, p)), 1.2), 2);
-      svg.append(s("path", { d, class: "casing", "stroke-width": width + 2.6 }), s("path", { d, class: cls, "stroke-width": width, "stroke-dasharray": dash }));
+      if (!dash) svg.append(s("path", { d, class: "casing", "stroke-width": width + 2.6 }));
+      svg.append(s("path", { d, class: cls, "stroke-width": width, "stroke-dasharray": dash }));
     };
-    line(c.now_pixels, "k-trace", on ? 2.2 : 1.4, null);
-    line(c.before_pixels, "k-ink", on ? 2 : 1.2, "2 6");
+    line(c.now_pixels, "k-trace", on ? 2.6 : 1.8);
+    line(c.before_pixels, "k-ink", on ? 1.8 : 1.2, "2 6");
     if (on && c.at) {
       const [x, y] = toScreen(view, c.at);
       svg.append(s("circle", { cx: x, cy: y, r: 13, class: "casing", "stroke-width": 5 }), s("circle", { cx: x, cy: y, r: 13, class: "k-finding", "stroke-width": 1.8 }));
