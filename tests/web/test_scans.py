@@ -68,3 +68,39 @@ class TestBetterScan:
         is_problem(client.post(f"/api/drafts/{chart_draft['id']}/carry", json={"sheet": own}), 422, "same-sheet")
         is_problem(client.post(f"/api/drafts/{chart_draft['id']}/carry", json={"sheet": {"sha256": "0" * 64}}), 404, "no-such-sheet")
         is_problem(client.get(f"/api/drafts/{chart_draft['id']}/outcomes/none"), 404, "no-such-outcome")
+
+
+class TestTwoHalves:
+    """A sheet in two scans."""
+
+    def test_halves_that_overlap_become_one_sheet_and_marks_of_the_first_stay(self, client, chart, upload, finish):
+        picture = Image.open(io.BytesIO(chart[0]))
+        left, right = picture.crop((0, 0, 560, picture.height)), picture.crop((300, 0, picture.width, picture.height))
+        first = upload(as_png(left), "left.png").json["sha256"]
+        draft = client.post("/api/drafts", json={"sheet": {"sha256": first}}).json
+        started = client.post(f"/api/drafts/{draft['id']}/join", json={"sheet": sheet_of(upload, as_png(right), "right.png")})
+        seen = outcome_of(client, finish, started)
+        assert seen["sheet"]["file"] == "left + right.png" and seen["page"]["sha256"] == seen["sheet"]["sha256"]
+        assert seen["page"]["width"] == pytest.approx(picture.width, abs=2)
+        tile = client.get(f"/api/sheets/{seen['sheet']['sha256']}/1/tiles/{seen['page']['max_zoom']}/0/0.png")
+        assert np.array_equal(np.asarray(Image.open(io.BytesIO(tile.data)).convert("L")), np.asarray(left)[:256, :256])
+
+    def test_a_narrow_strip_of_grid_fits_in_many_ways_until_two_points_are_tied(self, client, chart, upload, finish):
+        picture = Image.open(io.BytesIO(chart[0]))
+        first = upload(as_png(picture.crop((0, 0, 560, picture.height))), "left.png").json["sha256"]
+        second = sheet_of(upload, as_png(picture.crop((420, 0, picture.width, picture.height))), "right.png")
+        draft = client.post("/api/drafts", json={"sheet": {"sha256": first}}).json
+        job = finish(client.post(f"/api/drafts/{draft['id']}/join", json={"sheet": second}).json)
+        assert job["problem"]["code"] == "no-overlap" and "ties" in job["problem"]["detail"]
+        ties = [[[450, 330], [30, 330]], [[520, 114], [100, 114]]]
+        seen = outcome_of(client, finish, client.post(f"/api/drafts/{draft['id']}/join", json={"sheet": second, "ties": ties}))
+        assert seen["report"]["found"] == "ties" and seen["page"]["width"] == picture.width
+
+    def test_halves_that_share_nothing_ask_for_ties(self, client, chart, upload, finish):
+        picture = Image.open(io.BytesIO(chart[0]))
+        first = upload(as_png(picture.crop((0, 0, 430, picture.height))), "left.png").json["sha256"]
+        draft = client.post("/api/drafts", json={"sheet": {"sha256": first}}).json
+        blank = Image.fromarray(np.full((700, 400), 245, np.uint8))
+        started = client.post(f"/api/drafts/{draft['id']}/join", json={"sheet": sheet_of(upload, as_png(blank), "blank.png")})
+        job = finish(started.json)
+        assert job["state"] == "failed" and job["problem"]["code"] == "no-overlap", job
