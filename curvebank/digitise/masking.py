@@ -1,29 +1,15 @@
-"""What masks cost: marks and clicks that lie under one, and curves that are mostly hidden. Each is said, none is refused."""
+"""What masks cost a curve: clicks that lie under one, and stretches that are mostly hidden. Each is said, none is refused."""
 
 from typing import Any
 
 import numpy as np
 
-from ..recipe import CurveModel, PanelModel
+from ..recipe import CurveModel
 from ..records import Notice, Trace
 from ..sheet import under_mask
 
 HIDDEN_SHARE = 1 / 3
 """A curve with more than this share of its length under masks rests on too little ink to be taken without a look."""
-
-
-def on_marks(panel: PanelModel, prepared: Any) -> tuple[Notice, ...]:
-    """A notice for each mark of the panel that a mask covers: it counts as clicked, but cannot be checked against its printed line."""
-    out = []
-    for name, axis in panel.axes.items():
-        covered = under_mask(prepared, [mark.at for mark in axis.marks])
-        for k in np.flatnonzero(covered):
-            text = (
-                f"A mask lies over mark {k + 1} of the {name} axis ({axis.marks[k].value:g}). The mark counts as clicked, "
-                "but it cannot be checked against its printed line. Move the mask or the mark."
-            )
-            out.append(Notice(code="mask-over-mark", message=text))
-    return tuple(out)
 
 
 def on_curve(curve: CurveModel, trace: Trace, prepared: Any) -> tuple[Notice, ...]:

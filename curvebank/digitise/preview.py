@@ -16,7 +16,7 @@ from . import curves as curve_maker
 from . import masking
 from .live import Before
 from .result import curve_json, panel_json
-from .run import clicks, placed, pump_info
+from .run import clicks, pump_info
 from .threads import one_thread
 
 KEPT = 16
@@ -102,7 +102,7 @@ def preview(
     prepared = _masked(prepared, masks)
     panel_map = _placed(area, json.dumps(panel, sort_keys=True), prepared)
     out: dict[str, Any] = {
-        "panel": panel_json(placed(area, panel_map, prepared))
+        "panel": panel_json(panel_map.panel_result())
         | {
             "mark_residuals": {k: [float(r) for r in v] for k, v in panel_map.mark_residuals.items()},
             "suspects": list(panel_map.suspects),

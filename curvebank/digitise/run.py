@@ -14,8 +14,8 @@ import scipy.linalg  # noqa: F401 - its BLAS must be loaded before threads are l
 
 from .. import axes, checks, recipe, sheet, trace
 from ..errors import CurvebankError, SheetError, TraceError
-from ..recipe import CurveModel, PanelModel, Recipe
-from ..records import Curve, Digitised, PageInfo, PanelResult, PumpInfo, frozen
+from ..recipe import CurveModel, Recipe
+from ..records import Curve, Digitised, PageInfo, PumpInfo, frozen
 from . import curves as curve_maker
 from . import masking
 from .threads import one_thread
@@ -164,7 +164,7 @@ def _run(
             made[c.id] = finish(doc, c, got, maps[panel.id], pump, prepared)
         done += len(wanted)
 
-    panels = tuple(placed(panel, maps[panel.id], prepared) for panel in doc.panels if panel.id in maps)
+    panels = tuple(maps[panel.id].panel_result() for panel in doc.panels if panel.id in maps)
     error = None
     if doc.panels and not maps and all(c.kind != "table" for c in doc.curves):
         error = next(iter(panel_errors.values())).to_dict()
@@ -193,12 +193,6 @@ def clicks(c: CurveModel) -> trace.Clicks:
         raise TraceError("A typed table is not traced.", code="table")
     locked = tuple(trace.Locked(pixels=frozen(part.pixels, (-1, 2)), sigma_px=part.sigma_px) for part in c.locked)
     return trace.Clicks(id=c.id, points=points, closed=c.closed, ends=c.ends, kind=c.kind, guides=c.guides, locked=locked)
-
-
-def placed(panel: PanelModel, panel_map: Any, prepared: Any) -> PanelResult:
-    """A calibrated panel with what its masks cost it."""
-    result: PanelResult = panel_map.panel_result()
-    return replace(result, warnings=result.warnings + masking.on_marks(panel, prepared))
 
 
 def finish(doc: Recipe, c: CurveModel, got: Any, panel_map: Any, pump: PumpInfo, prepared: Any) -> Curve:

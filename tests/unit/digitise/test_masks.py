@@ -46,9 +46,9 @@ def test_a_mask_over_a_mark_is_named_and_the_mark_still_counts():
     plain = run(doc)
     doc["sheet"]["masks"] = [{"brush": [[x, y]], "width_px": 24}]
     made = run(doc)
-    said = [w for w in made.panels[0].warnings if w.code == "mask-over-mark"]
-    assert len(said) == 1 and "mark 2 of the head axis (30)" in said[0].message
-    assert not [w for w in plain.panels[0].warnings if w.code == "mask-over-mark"]
+    said = [w for w in made.panels[0].warnings if w.code == "mark-masked"]
+    assert len(said) == 1 and "head mark typed 30" in said[0].message
+    assert not [w for w in plain.panels[0].warnings if w.code == "mark-masked"]
     assert np.allclose(made.panels[0].map_values["head"], plain.panels[0].map_values["head"], atol=0.05)
 
 
@@ -80,7 +80,7 @@ def test_a_preview_sees_the_masks():
     seen = digitise.preview(doc["panels"][0], doc["curves"][0], prepared, None, doc["pump"], masks=masks)
     bare = digitise.preview(doc["panels"][0], doc["curves"][0], prepared, None, doc["pump"])
     codes = [[w["code"] for w in s["panel"]["warnings"]] for s in (seen, bare)]
-    assert "mask-over-mark" in codes[0] and "mask-over-mark" not in codes[1]
+    assert "mark-masked" in codes[0] and "mark-masked" not in codes[1]
     assert seen["curve"]["error"] is None
 
 
