@@ -9,23 +9,25 @@ import numpy as np
 from ..records import FloatArray
 from .evidence import NAMES
 
-BIAS = -4.553
+BIAS = -4.69
 WEIGHTS = {
-    "unsupported": 0.462,
-    "longest_gap": 0.373,
-    "bare": 1.266,
-    "click_off": 0.705,
-    "misfit": 0.554,
-    "jump": 0.593,
-    "straight_on": 1.192,
-    "both_on": 1.353,
-    "goes_on": 4.846,
-    "merged": 3.868,
-    "cost": 2.93,
-    "scatter": 0.724,
-    "two_clicks": 0.29,
-    "colour_step": 1.366,
-    "shared": 4.359,
+    "unsupported": 0.324,
+    "longest_gap": 0.322,
+    "bare": 1.163,
+    "click_off": 0.601,
+    "clicks_off": 4.061,
+    "misfit": 1.015,
+    "jump": 0.741,
+    "straight_on": 0.744,
+    "both_on": 2.403,
+    "goes_on": 6.178,
+    "loose_end": 1.501,
+    "merged": 1.986,
+    "cost": 1.801,
+    "scatter": 0.0,
+    "two_clicks": 0.0,
+    "colour_step": 3.19,
+    "shared": 3.82,
 }
 """Log-odds of failure for each step of a number (`evidence.Evidence.vector`)."""
 FLAG_BELOW = 0.8

@@ -20,11 +20,13 @@ NAMES = (
     "longest_gap",
     "bare",
     "click_off",
+    "clicks_off",
     "misfit",
     "jump",
     "straight_on",
     "both_on",
     "goes_on",
+    "loose_end",
     "merged",
     "cost",
     "scatter",
@@ -38,11 +40,13 @@ unsupported  share of the length without ink of its own, beyond the line's own g
 longest_gap  the longest such stretch, as a share of the length
 bare         share of rows without ink on a line that is drawn solid
 click_off    distance of the farthest click from the trace [units], beyond what a hand's click is off
+clicks_off   share of the clicks that are farther off than that
 misfit       largest distance from a local cubic [units]: a smooth line has none, a change to another line has
 jump         the same where the line shows no ink: the bridge over a gap does not fit both its sides
 straight_on  share of ink straight ahead (or straight back) where the trace turns off
 both_on      the same both ways at one place: two lines cross and the trace went round the corner
-goes_on      share of ink straight on behind an end
+goes_on      share of ink straight on behind an end, against the line's own share
+loose_end    length of an end without ink [units]
 merged       share of the length with another line against it
 cost         the path search's cost a segment, above a fully inked line
 scatter      scatter of the readings across the line [units]
@@ -78,6 +82,7 @@ class Evidence:
             "unsupported": np.log1p(n["unsupported"] / 0.03),
             "longest_gap": np.log1p(n["longest_gap"] / 0.03),
             "click_off": np.log1p(n["click_off"] / 2.0),
+            "loose_end": np.log1p(n["loose_end"] / 2.0),
             "misfit": np.log1p(n["misfit"] / 0.03),
             "jump": np.log1p(n["jump"] / 0.03),
             "scatter": np.log1p(n["scatter"] / 0.1),
@@ -123,7 +128,7 @@ def gather(prepared: Prepared, fine: Refined, points: FloatArray, closed: bool, 
     _clicks(out, axis, points, unit)
     _turns(out, prepared, fine, own, unit)
     if on_ink and not closed:
-        _ends(out, prepared, fine, unit)
+        _ends(out, prepared, fine, own, unit)
     _beside(out, unit)
     if prepared.colour is not None:
         _colour(out, prepared.colour, fine)
@@ -136,7 +141,9 @@ def _clicks(out: Evidence, axis: Axis, points: FloatArray, unit: float) -> None:
     k = int(np.argmax(off))
     out.clicks_at = np.sort(gap.argmin(axis=1))
     # A careful click is up to some 4 px off, on a coarse sheet and on a fine one.
-    out.numbers["click_off"] = max(float(off[k]) - max(4.0 * unit, 4.5), 0.0) / max(unit, 0.75)
+    usual = max(4.0 * unit, 4.5)
+    out.numbers["click_off"] = max(float(off[k]) - usual, 0.0) / max(unit, 0.75)
+    out.numbers["clicks_off"] = float((off > usual + 2.0 * unit).mean())
     row = int(np.argmin(gap[k]))
     out.where["click_off"] = (max(row - 20, 0), min(row + 20, len(axis.s) - 1))
     if out.numbers["click_off"] > 0:
@@ -161,25 +168,44 @@ def _turns(out: Evidence, prepared: Prepared, fine: Refined, own: float, unit: f
         near = np.flatnonzero((around.s > first * step - reach) & (around.s < last * step + reach))
         if len(near) and off[near].max() > out.numbers["jump"]:
             out.numbers["jump"], out.where["jump"] = float(off[near].max()), (first, last)
-    on = local.straight_on(prepared, around, fine.shape, own, unit)
-    most = np.maximum(on.ahead, on.back)
+    width = 2 * max(int(0.7 * reach / (8.0 * unit)), 1) + 1
+    # Where the trace bends nowhere there is nothing it could have turned off from; looking is the dear part.
+    doubtful = np.flatnonzero(_widest(off, width) > 0.02)
+    if not len(doubtful):
+        return
+    on = local.straight_on(prepared, local.Windows(around.s[doubtful], reach, around.points[doubtful]), fine.shape, own, unit)
+    ahead, back = np.zeros(len(off)), np.zeros(len(off))
+    ahead[doubtful], back[doubtful] = on.ahead, on.back
+    most = np.maximum(ahead, back)
     k = int(np.argmax(most))
-    out.goes = 1 if on.ahead[k] >= on.back[k] else -1
+    out.goes = 1 if ahead[k] >= back[k] else -1
     out.numbers["straight_on"], out.where["straight_on"] = float(most[k]), rows(k, reach)
     # Both within a window of each other: the corner of a crossing lies between them.
-    width = 2 * max(int(0.7 * reach / (8.0 * unit)), 1) + 1
-    spread = [np.lib.stride_tricks.sliding_window_view(np.pad(v, width // 2), width).max(axis=1) for v in (on.ahead, on.back)]
-    both = np.minimum(*spread)
+    both = np.minimum(_widest(ahead, width), _widest(back, width))
     k = int(np.argmax(both))
     out.numbers["both_on"], out.where["both_on"] = float(both[k]), rows(k, reach)
 
 
-def _ends(out: Evidence, prepared: Prepared, fine: Refined, unit: float) -> None:
+def _widest(values: FloatArray, width: int) -> FloatArray:
+    """Largest value within an odd window round each one."""
+    return np.lib.stride_tricks.sliding_window_view(np.pad(values, width // 2), width).max(axis=1)
+
+
+def _ends(out: Evidence, prepared: Prepared, fine: Refined, own: float, unit: float) -> None:
     last = len(fine.axis.s) - 1
-    for way, where in ((-1, (0, min(30, last))), (1, (max(last - 30, 0), last))):
-        share = max(local.beyond(prepared, fine.axis, fine.shape, unit, way) - 0.4, 0.0)
+    held = out.seen.state == INKED
+    # Ink that holds an end: a run as long as a few line widths, in the line's own measure of dashes.
+    need = max(int(4 * unit), 3)
+    firm = np.flatnonzero(np.convolve(held, np.ones(need), "valid") >= need - 0.5)
+    bare = (int(firm[0]), int(last - firm[-1] - need + 1)) if len(firm) else (last, last)
+    for way, where, loose in ((-1, (0, min(30, last)), bare[0]), (1, (max(last - 30, 0), last), bare[1])):
+        share = max(local.beyond(prepared, fine.axis, fine.shape, unit, way) / max(own, 0.4) - 0.4, 0.0)
         if share > out.numbers["goes_on"]:
             out.numbers["goes_on"], out.where["goes_on"] = share, where
+        over = max(loose - (out.beat.gap_px if out.beat.dashed else 0.0) - 2.5 * unit, 0.0) / unit
+        if over > out.numbers["loose_end"]:
+            out.numbers["loose_end"] = over
+            out.where["loose_end"] = (0, loose) if way < 0 else (last - loose, last)
 
 
 def _beside(out: Evidence, unit: float) -> None:

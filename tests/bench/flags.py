@@ -115,7 +115,7 @@ class Vectors:
         return self.chance(vector)
 
 
-def fitted(rows: list[dict[str, Any]], ridge: float = 0.02) -> tuple[float, dict[str, float]]:
+def fitted(rows: list[dict[str, Any]], ridge: float = 0.004) -> tuple[float, dict[str, float]]:
     """Bias and weights, none below zero, of the penalised weighted logistic regression of failure on the evidence."""
     from scipy.optimize import minimize
 
