@@ -18,7 +18,7 @@ from .judge import Doubt, as_trace, doubt_of, pair_test, settle
 from .locked import trace_around
 from .meet import end_on_others
 from .profile import align, refine
-from .spread import sigma_of
+from .spread import beside_traces, sigma_of
 from .symbols import points_on_symbols
 
 FAR_PX = 1.2
@@ -66,6 +66,10 @@ def trace_panel(
         if trace is not None and on_ink[i]:
             others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
             traces[i] = end_on_others(trace, others, np.asarray(wanted[i].points, dtype=np.float64).reshape(-1, 2))
+    for i, trace in enumerate(traces):
+        if trace is not None and trace.source == "ink":
+            others = [t for j, t in enumerate(traced) if j != i and t is not None and t.source == "ink"] + list(fixed)
+            traces[i] = beside_traces(trace, others)
     pair_test([c.id for c in wanted], traces, doubts, list(fixed), prepared.unit)
     for i, notices in enumerate(same_clicks(wanted, prepared.unit)):
         trace, doubt = traces[i], doubts[i]
