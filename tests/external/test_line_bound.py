@@ -36,3 +36,15 @@ def test_bound_of_the_spline_space_is_the_one_row_bound_shared_out() -> None:
     a_row = (c.sigma / c.height) ** 2 / ((bound.profile_slope(d, c.width, c.blur) ** 2).sum() * (d[1] - d[0]))
     length = np.hypot(*np.diff(bound.true_line(np.zeros(2))[0], axis=0).T).sum()
     assert (bound.bound(c, at) ** 2).mean() == pytest.approx(bound.DOF * a_row / length, rel=0.1)
+
+
+@pytest.mark.parametrize("width", [3.0, 1.5])
+def test_tracer_is_near_the_bound(width: float, capsys: pytest.CaptureFixture[str]) -> None:
+    """Standard deviation within 1.5 of the bound and bias below 0.01 px, both printed; the benchmark has more conditions and seeds."""
+    found = bound.measure(bound.Condition(width, 0.7, 0.05), seeds=24)
+    words = f"sd / bound {found['ratio']:.2f}, bias {found['bias_px']:.4f} px, worst {found['bias_worst_px']:.4f} px"
+    with capsys.disabled():
+        print(f"\n  line {width} px wide: {words}")
+    assert found["lost"] == 0
+    assert found["ratio"] < 1.5
+    assert found["bias_px"] < 0.01
