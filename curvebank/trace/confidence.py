@@ -9,28 +9,28 @@ import numpy as np
 from ..records import FloatArray
 from .evidence import NAMES
 
-BIAS = -4.69
+BIAS = -4.803
 WEIGHTS = {
-    "unsupported": 0.324,
-    "longest_gap": 0.322,
-    "bare": 1.163,
-    "click_off": 0.601,
-    "clicks_off": 4.061,
-    "misfit": 1.015,
-    "jump": 0.741,
-    "straight_on": 0.744,
-    "both_on": 2.403,
-    "goes_on": 6.178,
-    "loose_end": 1.501,
-    "merged": 1.986,
-    "cost": 1.801,
+    "unsupported": 0.182,
+    "longest_gap": 0.088,
+    "bare": 1.741,
+    "click_off": 0.632,
+    "clicks_off": 3.902,
+    "misfit": 0.987,
+    "jump": 0.846,
+    "straight_on": 0.88,
+    "both_on": 1.188,
+    "goes_on": 7.374,
+    "loose_end": 1.517,
+    "merged": 1.974,
+    "cost": 3.474,
     "scatter": 0.0,
-    "two_clicks": 0.0,
-    "colour_step": 3.19,
-    "shared": 3.82,
+    "two_clicks": 0.18,
+    "colour_step": 4.838,
+    "shared": 5.133,
 }
 """Log-odds of failure for each step of a number (`evidence.Evidence.vector`)."""
-FLAG_BELOW = 0.8
+FLAG_BELOW = 0.7
 """A trace whose confidence is lower than this is flagged."""
 
 
