@@ -37,6 +37,7 @@ def pages(address: str, key: str) -> dict[str, str]:
     while job["state"] in ("queued", "running"):
         job = ask(address, f"/api/jobs/{job['id']}")
     listed = {"home": "/", "catalogue": "/pumps?flow=150&head=32", "pump": f"/pumps/{key}", "problem": "/nothing-here"}
+    listed |= {"scan": f"/desk/{draft}/scan"}
     return listed | {f"desk-{step}": f"/desk/{draft}#{step}" for step in STEPS}
 
 

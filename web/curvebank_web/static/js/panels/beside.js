@@ -49,13 +49,14 @@ function marksTable(root, desk) {
   const n = desk.lines?.found ? desk.lines.found.level.length + desk.lines.found.upright.length : 0;
   const toggle = desk.step === "marks" && n ? h("button", { type: "button", class: "link", "aria-pressed": String(shown), onclick: () => desk.toggleFound() }, shown ? `Hide the ${n} printed lines found` : `Show the ${n} printed lines found`) : null;
   const grid = answer?.grid;
-  const residual = grid && Number.isFinite(answer.residual_px) ? `Marks stand off by ${plain(answer.residual_px, 2)} px rms, worst ${plain(answer.worst_px, 2)} px. ` : "";
-  const head = grid ? h("b", {}, grid.used ? `The printed grid is used, ${grid.lines} ${grid.lines === 1 ? "line" : "lines"}. ` : "The printed grid is not used. ") : null;
-  put(root, grid ? h("p", { class: "small first" }, head, residual) : null,
+  const residual = grid && Number.isFinite(answer.residual_px) ? `The marks stand off the map by ${plain(answer.residual_px, 2)} px rms, worst ${plain(answer.worst_px, 2)} px. ` : "";
+  const head = grid ? h("b", {}, grid.used ? "The printed grid is used. " : "The printed grid is not used. ") : null;
+  put(root, grid ? h("p", { class: "small first" }, head, sentence(capital(grid.why))) : null,
     h("table", {}, h("thead", {}, h("tr", {}, h("th", { scope: "col" }, "axis"), h("th", { scope: "col", class: "num" }, "marks"), h("th", { scope: "col", class: "num" }, "worst, of the axis"), h("th", { scope: "col" }, "what they say"))), h("tbody", {}, rows)),
-    grid ? h("p", { class: "small" }, sentence(grid.why)) : null,
-    toggle || grid ? h("p", { class: "small" }, toggle, toggle && grid ? ". " : null, grid ? gridChoice(desk, panel) : null) : null);
+    toggle || grid ? h("p", { class: "small" }, residual, toggle, toggle && grid ? ". " : null, grid ? gridChoice(desk, panel) : null) : null);
 }
+
+const capital = (text) => `${text ?? ""}`.replace(/^./, (c) => c.toUpperCase());
 
 /** Length of an axis in sheet pixels: between the two marks furthest apart. */
 function spanOf(marks) {

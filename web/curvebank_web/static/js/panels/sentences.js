@@ -214,6 +214,6 @@ export function marksSentence(desk) {
       t("a grid crossing or a tick, anywhere and in any order, then type what it says."),
       donor && poor ? button(`Take the flow marks of panel ${doc.panels.indexOf(donor) + 1}`, { quiet: true, onClick: () => desk.act({ type: "marks/copy", from: donor.id, axisFrom: axisIds(donor).flow[0], panel: panel.id, axis: poor }) }) : null,
     ],
-    does: [hint("Z", "magnify"), hint("Shift", "no snap"), button("Go on to curves", { main: calibrated(panel), waiting: calibrated(panel) ? null : "needs two marks on each scale", onClick: () => (all ? desk.go("curves") : desk.choosePanel(doc.panels.find((p) => !calibrated(p)).id)) })],
+    does: [h("span", { class: "hint" }, h("kbd", {}, "F"), " lines found"), hint("Z", "magnify"), hint("Shift", "no snap"), button("Go on to curves", { main: calibrated(panel), waiting: calibrated(panel) ? null : "needs two marks on each scale", onClick: () => (all ? desk.go("curves") : desk.choosePanel(doc.panels.find((p) => !calibrated(p)).id)) })],
   };
 }
