@@ -19,10 +19,9 @@ CHOICES: tuple[tuple[Basis, float], ...] = (
     (Basis(1), 0.0),
     (Basis(2), 0.0),
     (Basis(3), 0.0),
-    (Basis(4), 0.0),
-    (Basis(0, 5), 0.5),
-    (Basis(0, 8), 0.5),
-    (Basis(0, 8), 2.0),
+    (Basis(0, 5), 0.3),
+    (Basis(0, 8), 0.2),
+    (Basis(0, 8), 1.0),
 )
 """Bends tried, stiff to soft; for a net the expected second difference from field to field [px]."""
 LEAST_GAIN = 0.85
@@ -36,7 +35,10 @@ LINE_SIGMA_PX = 0.05
 """First guess of how far lines are off as a whole, worth `LINE_DOF` lines."""
 LINE_DOF = 1.0
 BEND_PX = 8.0
+FEWEST_FOR_A_NET = 5
 BOW_PX = 0.05
+WAVY = 3.0
+"""Points that scatter so many times their own sigma about a line say that it is not as straight as the bend makes it."""
 ROUNDS = 5
 FOLDS = 12
 
@@ -105,14 +107,14 @@ def fit(
     best: tuple[float, _System] | None = None
     whole = sum(not line.tick for line in lines)
     for basis, soft in choices:
-        need = basis.cells + 3 if basis.cells else basis.degree + 2
+        need = FEWEST_FOR_A_NET if basis.cells else basis.degree + 2
         if best is not None and (len(lines) < need or (whole < need and basis.degree != 1)):
             continue
         system = _System(d, lines, marks, centre, half, px, basis, soft)
         score = system.left_out()
         if best is None or (score < LEAST_GAIN * best[0] and score < best[0] - LEAST_GAIN_PX):
             best = (score, system)
-        if best[0] < GOOD_PX or (basis.degree == 4 and not best[1].structured()):
+        if (best[0] < GOOD_PX or basis.degree == 3) and not best[1].structured():
             break
     if best is None:
         return None
@@ -226,7 +228,7 @@ class _System:
             kept = use & (self.line_weight > 0.3)
             freedom = max(kept.sum() - self._freedom(kept), 0.0)
             seen = float((mean[kept] ** 2 - self.scale2 / total[kept]).sum())
-            self.line_sigma = float(np.sqrt((max(seen, 0.0) + LINE_DOF * LINE_SIGMA_PX**2) / (freedom + LINE_DOF)))
+            self.line_sigma = min(float(np.sqrt((max(seen, 0.0) + LINE_DOF * LINE_SIGMA_PX**2) / (freedom + LINE_DOF))), WORST_RMS_PX)
 
     def _freedom(self, kept: np.ndarray) -> float:
         """Degrees of freedom that the line offsets lose to the bend: trace of the hat matrix over line means."""
@@ -235,6 +237,8 @@ class _System:
 
     def structured(self) -> bool:
         """Whether what is left has a shape: neighbouring lines off the same way, or lines bowed along themselves."""
+        if self.scale2 > WAVY**2 and float(np.median(self.line_miss_px)) > 0.5 * BOW_PX:
+            return True
         w = self.base_weight * self.point_weight
         off = (self.miss - self.rows @ self.coefficients) * self.there
         mean = (w * off).sum(axis=1) / np.maximum(w.sum(axis=1), 1e-12)

@@ -21,9 +21,11 @@ from .found import Area, Found, area_of
 from .layout import Layout, Slot
 from .solve import Solution
 
-ENOUGH_LINES = 6
-"""With so many lines of the sheet's own on round values nothing more is looked for."""
+ENOUGH_LINES, MANY_LINES = 6, 20
+"""With so many lines of the sheet's own on round values, and few gaps between them, nothing more is looked for."""
 SAME_LINE_PX = 3.0
+CLEARLY_PX = 6.0
+"""A mark nearer than this to its value's place, and not on another line, is a poor click and no wrong value."""
 COVER_SHARE = 1.2
 """Lines must reach over this share of the half panel, else they say too little about the rest."""
 
@@ -107,7 +109,7 @@ def place(layout: Layout, solution: Solution, prepared: Any, width_px: float, un
         fresh = False
         for d in (0, 1):
             bend = placed.bends.get(d)
-            if bend is not None and sum(not line.tick for line in bend.lines) >= ENOUGH_LINES:
+            if bend is not None and _enough(bend, read[d], layout):
                 continue
             more = finds.looked_for(d, base, layout, prepared, _to_pixels(d, base, layout, placed), read[1 - d].found, width_px, unit)
             union = _union(families[d], more, base, layout, d)
@@ -120,6 +122,16 @@ def place(layout: Layout, solution: Solution, prepared: Any, width_px: float, un
         read = [_read(d, families[d], area, layout) for d in (0, 1)]
     _judge_marks(layout, read, area, placed)
     return placed
+
+
+def _enough(bend: Bend, read: _Direction, layout: Layout) -> bool:
+    """Whether the lines found leave few gaps between the outer marks."""
+    whole = sum(not line.tick for line in bend.lines)
+    if whole >= MANY_LINES or read.best is None:
+        return True
+    level = layout.slots[str(read.axis)].marks.level
+    wanted = float(np.ptp(level)) / read.best.step + 1 if read.best.step else ENOUGH_LINES
+    return whole >= ENOUGH_LINES and whole >= 0.8 * wanted
 
 
 def _shape(families: tuple[list[Found], list[Found]], layout: Layout, start: Area) -> FloatArray:
@@ -163,9 +175,14 @@ def _read_all(d: int, family: list[Found], area: Area, layout: Layout) -> _Direc
     for name, slot in layout.slots.items():
         if slot.marks.direction != d or slot.twin is not None:
             continue
-        at = plane.coordinates(area.theta, (slot.marks.at - layout.shift) / layout.size)[:, d]
-        got = values.read(c[near], at, slot.marks.level, slot.marks.log, float(area.px[d]))
-        readings[name] = got
+        at = plane.coordinates(area.theta, (slot.marks.at - layout.shift) / layout.size)
+        # Lines are read where the marks of the axis stand: on warped paper the other side of the panel is another matter.
+        mine = c[near]
+        if slot.own is not None:
+            mine = np.array(
+                [f.meets(area.theta, layout, d, float(np.median(at[:, 1 - d]))) for f, k in zip(family, near, strict=True) if k]
+            )
+        readings[name] = values.read(mine, at[:, d], slot.marks.level, slot.marks.log, float(area.px[d]))
     sure = [n for n, r in readings.items() if r.best is not None]
     # An axis whose marks all agree with the lines comes before one whose marks do not.
     sure.sort(key=lambda n: (readings[n].rival is not None, len(readings[n].best.wrong) > 0))  # type: ignore[union-attr]
@@ -281,6 +298,8 @@ def _judge_marks(layout: Layout, read: list[_Direction], area: Area, placed: Pla
             per_px = abs(got.best.slope(float(area.centre[d]))) / area.px[d]
             for i in got.best.wrong:
                 fits = values.fitting(float(got.best.level(at[i])), got.best.step, per_px, slot.marks.log)
+                if got.best.marks_px[i] < CLEARLY_PX and abs(fits - float(slot.marks.typed[i])) < 0.7 * got.best.step:
+                    continue
                 placed.wrong.append(Wrong(name, i, float(slot.marks.typed[i]), fits))
 
 

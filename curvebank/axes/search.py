@@ -98,7 +98,9 @@ def _ridge(picture: FloatArray, width_px: float) -> FloatArray:
 
 def peaks(cs: FloatArray, strength: FloatArray, apart: int) -> list[tuple[float, float]]:
     middle = float(np.median(strength))
-    noise = max(1.4826 * float(np.median(np.abs(strength - middle))), 0.15)
+    # Where ticks stand close more than half of all columns are tick or flank; the quietest fifth still tells the noise.
+    spread = np.abs(strength - middle)
+    noise = max(min(1.4826 * float(np.median(spread)), float(np.percentile(spread, 20)) / 0.2533), 0.15)
     highest = cv2.dilate(strength[None, :], np.ones((1, 2 * apart + 1), np.uint8))[0]
     at = np.flatnonzero((strength >= highest) & (strength - middle > SIGNIFICANT * noise) & (strength > 0.8))
     out: list[tuple[float, float]] = []

@@ -6,7 +6,7 @@ all but one, from pairs, and from pairs in which one mark was read a line too fa
 fit, how round the step is, how rare a wrong mark is. The best is taken where no other comes near.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -64,7 +64,13 @@ class Readings:
 
 
 def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool, px: float) -> Readings:
-    """Read lines at ``c`` [n] (ascending) by marks at ``marks_c`` [k] that say ``marks_level`` [k]; ``px`` pixels are one unit of c."""
+    """Read lines at ``c`` [n] by marks at ``marks_c`` [k] that say ``marks_level`` [k]; ``px`` pixels are one unit of c."""
+    order = np.argsort(c, kind="stable")
+    if np.any(np.diff(order) < 0):
+        got = read(c[order], marks_c, marks_level, log, px)
+        back = np.argsort(order, kind="stable")
+        best, rival = (None if r is None else replace(r, levels=r.levels[back]) for r in (got.best, got.rival))
+        return Readings(best, rival)
     if len(c) < 2 or len(marks_c) < 2:
         return Readings(None)
     found: list[Reading] = []
