@@ -1,6 +1,6 @@
 """From clicks to a path within about a pixel: a wide band along a spline through the clicks, then narrower bands along the path."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import cv2
 import numpy as np
@@ -97,19 +97,24 @@ def _along_strokes(prepared: Prepared, clicks: FloatArray, closed: bool, grain: 
     way = find_way(prepared.clean, clicks, grain, cap, 4.0 * max(unit, 0.75), closed)
     if way is None or len(way) < 5:
         return []
-    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(way, axis=0).T))]
-    if closed:
-        way[-1] = way[0]
-    t = s / s[-1]
-    keep = slice(None, -1 if closed else None)
-    curve = smooth.fit(t[keep], way[keep], pieces=int(np.clip(len(way) // 3, 4, 40)), periodic=closed, floor=0.5 * grain, cut=6.0)
-    dense = curve.value(np.linspace(0, 1, max(int(s[-1]), 8) + 1))
-    axis = from_polyline(dense, closed)
-    axis, at = _begun_at(axis, clicks)
+    axis, at = _begun_at(_eased(way, closed, grain), clicks)
     if (np.diff(at) <= 2.0).any():
         return []
-    path, cost = _search(prepared, axis, at, clicks, _narrow(30.0, axis, unit, grain), max(grain / 3, 1.0), cap)
+    # Short segments: the axis may wind between the nodes of long ones, which would not see it.
+    how = replace(_narrow(30.0, axis, unit, grain), rows=6)
+    path, cost = _search(prepared, axis, at, clicks, how, max(grain / 3, 1.0), cap)
     return [(cost, path, axis, at)]
+
+
+def _eased(way: FloatArray, closed: bool, grain: float) -> Axis:
+    """A smooth axis along the points of a way."""
+    if closed:
+        way[-1] = way[0]
+    s = np.r_[0.0, np.cumsum(np.hypot(*np.diff(way, axis=0).T))]
+    keep = slice(None, -1 if closed else None)
+    pieces = int(np.clip(min(s[-1] / (16 * grain), len(way) // 2), 5, 40))
+    curve = smooth.fit((s / s[-1])[keep], way[keep], pieces=pieces, periodic=closed, floor=0.5 * grain, cut=6.0)
+    return from_polyline(curve.value(np.linspace(0, 1, max(int(s[-1]), 8) + 1)), closed)
 
 
 def _begun_at(axis: Axis, clicks: FloatArray) -> tuple[Axis, FloatArray]:

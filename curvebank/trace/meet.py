@@ -52,7 +52,9 @@ def _tail_to(points: FloatArray, trace: Trace, other: Trace, clicks: FloatArray)
     keep = len(points) - inside
     vouched = int(cKDTree(points).query(clicks)[1].max())
     # It may have run on along the other line after a meeting at a small angle: beyond the last click that ink is the other's.
-    runaway = len(points) - vouched > 25 * unit and (inside > 70 * unit or vouched > keep + 20 * unit)
+    together = not other.closed and min(float(np.hypot(*(other.pixels[k] - points[-1]).T)) for k in (0, -1)) < 15 * unit
+    together &= vouched - keep > 60 * unit
+    runaway = not together and len(points) - vouched > 25 * unit and (inside > 70 * unit or vouched > keep + 20 * unit)
     if (vouched > keep + 20 * unit or inside > 70 * unit) and not runaway:
         return None
     reach = int(min(60 * unit, keep - 2))

@@ -17,7 +17,7 @@ from .hand import by_hand
 from .judge import Doubt, as_trace, doubt_of, pair_test, settle
 from .locked import trace_around
 from .meet import end_on_others
-from .profile import align, refine
+from .profile import align, refine, runs_merged
 from .spread import beside_traces, sigma_of
 from .symbols import points_on_symbols
 
@@ -100,6 +100,9 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatA
     axis, shape, far = align(prepared, found.axis, points)
     if far > FAR_PX * max(prepared.unit, 0.7):
         axis, shape, far = align(prepared, axis, points)
+    if not clicks.closed and runs_merged(prepared, axis, shape):
+        # The ends are looked for along a path that lies on its own line within the stroke.
+        axis = refine(prepared, axis, shape, points).axis
     if not clicks.closed and clicks.ends == "ink":
         axis = to_ink(prepared, panel_map, axis, shape)
         if axis.length < STUB * np.hypot(*np.diff(points, axis=0).T).sum():

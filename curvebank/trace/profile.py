@@ -16,10 +16,11 @@ from . import smooth
 from .axis import Axis, from_polyline
 from .band import sample
 from .blocks import Blocks, read_blocks, read_table
+from .merged import merged_blocks, read_merged
 from .pixels import Floats32, believed, pixels_near, trust
 from .shape import Shape, shape_of
 
-__all__ = ["Blocks", "Refined", "Shape", "align", "pixels_near", "read_blocks", "refine"]
+__all__ = ["Blocks", "Refined", "Shape", "align", "pixels_near", "read_blocks", "refine", "runs_merged"]
 BILINEAR = 1 / 6
 """Variance [px^2] that linear interpolation adds to a blur, the mean over all places between pixels."""
 Held = tuple[FloatArray | None, FloatArray | None]
@@ -112,7 +113,7 @@ def _read(
         if known is not None:
             blocks = _with_known(blocks, axis, known, 3.0 * unit, end)
     # The axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
-    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
+    blocks, reference, off = _unmerged(prepared, axis, blocks, shape, unit, share)
     whole = _with_clicks(blocks, axis, clicks, unit)
     whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
     fitted = _along(whole, axis, unit, share)
@@ -125,6 +126,30 @@ def _read(
     final = from_polyline(reference.points + reference.normals * across, axis.closed)
     sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
     return Refined(final, sigma, blocks, shape, fitted.scale), seen, float(np.abs(moved).max())
+
+
+def runs_merged(prepared: Prepared, axis: Axis, shape: Shape) -> bool:
+    """Whether the path lies in a stroke wider than its line for longer than a crossing takes."""
+    unit = max(unit_of(shape.width), 0.6)
+    count = max(int(axis.length / (6.0 * unit)), 4)
+    half = 3.5 * shape.width + 4.0 * unit
+    across = np.arange(-half, half, 0.5 * max(unit, 0.8))
+    return merged_blocks(sample(prepared.clean, axis, (np.arange(count) + 0.5) * axis.length / count, across, 1.0), across, shape) > 6
+
+
+def _unmerged(prepared: Prepared, axis: Axis, blocks: Blocks, shape: Shape, unit: float, share: int) -> tuple[Blocks, Axis, FloatArray]:
+    """The blocks read from the edges of the stroke where lines run into one, a stiff curve, and the axis's distance from it."""
+    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
+    if axis.closed:
+        # Contours meet other lines at small angles and go on: their own bend bridges these best.
+        return blocks, reference, off
+    half, step = 3.5 * shape.width + 4.0 * unit, 0.5 * max(unit, 0.8)
+    ink, _, across = _band(prepared, axis, len(blocks.s), half, step)
+    read, wide = read_merged(blocks, np.interp(blocks.s, axis.s, off), ink, across, shape)
+    if not wide.any():
+        return blocks, reference, off
+    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(read, axis))
+    return read, reference, off
 
 
 def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) -> Blocks:

@@ -38,11 +38,12 @@ class Spots:
 
 
 def find_way(
-    clean: npt.NDArray[np.uint8], clicks: FloatArray, grain: float, cap: float, spread: float, closed: bool = False
+    clean: npt.NDArray[np.uint8], clicks: FloatArray, grain: float, cap: float, spread: float, closed: bool = False, *, again: bool = False
 ) -> FloatArray | None:
     """A polyline [m, 2] px along the ink through the clicks in their order, or None.
 
-    ``grain`` is the factor the page is reduced by, ``cap`` the ink that counts as full, ``spread`` [px] how far a click may be off.
+    ``grain`` is the factor the page is reduced by, ``cap`` the ink that counts as full, ``spread`` [px] how far a click may be off;
+    ``again`` says that this is the second, coarser try.
     """
     height, width = clean.shape
     span = np.ptp(clicks, axis=0)
@@ -55,6 +56,9 @@ def find_way(
     size = (max(int(round(part.shape[1] / grain)), 8), max(int(round(part.shape[0] / grain)), 8))
     scale = np.array([size[0] / part.shape[1], size[1] / part.shape[0]])
     spots = _spots(np.asarray(cv2.resize(part, size, interpolation=cv2.INTER_AREA), dtype=np.uint8), cap)
+    if len(spots.xy) > MOST_SPOTS and not again:
+        # Speckle: averaged further, noise fades and lines stay.
+        return find_way(clean, clicks, 1.7 * grain, 0.7 * cap, spread, closed, again=True)
     if not 2 <= len(spots.xy) <= MOST_SPOTS:
         return None
     local = (clicks - (x0, y0) + 0.5) * scale - 0.5

@@ -9,7 +9,7 @@ from curvebank.trace.strokes import find_way
 PHI = np.linspace(-0.9 * np.pi, 0.1 * np.pi, 400)
 U_SHAPE = np.stack([340 + 190 * np.cos(PHI), 330 + 260 * np.sin(PHI)], axis=1)
 V = np.linspace(0, 1, 300)
-S_SHAPE = np.stack([150 + 400 * V + 140 * np.sin(2 * np.pi * V), 420 - 340 * V], axis=1)
+S_SHAPE = np.stack([150 + 400 * V + 80 * np.sin(2 * np.pi * V), 420 - 340 * V], axis=1)
 CROSSING = [np.array([[60.0, 180.0], [640.0, 260.0]]), np.array([[60.0, 300.0], [640.0, 200.0]])]
 
 
