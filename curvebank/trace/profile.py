@@ -32,6 +32,8 @@ STIFF = 4.0
 """Readings that count as one for a first, stiff curve through them: other strokes come in runs."""
 WANDER_PX = 0.15
 """Scatter of a path about its line (times the unit) that is taken for granted."""
+ASTRAY_PX = 6.0
+"""A stiff curve through what shows may leave the path by this much where nothing shows."""
 ROWS = 3
 """Rows of the band that are averaged to one reading."""
 
@@ -140,12 +142,9 @@ def runs_merged(prepared: Prepared, axis: Axis, shape: Shape) -> bool:
 def _unmerged(prepared: Prepared, axis: Axis, blocks: Blocks, shape: Shape, unit: float, share: int) -> tuple[Blocks, Axis, FloatArray]:
     """The blocks read from the edges of the stroke where lines run into one, a stiff curve, and the axis's distance from it."""
     reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
-    if axis.closed:
-        # Contours meet other lines at small angles and go on: their own bend bridges these best.
-        return blocks, reference, off
     half, step = 3.5 * shape.width + 4.0 * unit, 0.5 * max(unit, 0.8)
     ink, _, across = _band(prepared, axis, len(blocks.s), half, step)
-    read, wide = read_merged(blocks, np.interp(blocks.s, axis.s, off), ink, across, shape)
+    read, wide = read_merged(blocks, np.interp(blocks.s, axis.s, off), ink.T, across, shape)
     if not wide.any():
         return blocks, reference, off
     reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(read, axis))
@@ -203,8 +202,13 @@ def _reference(axis: Axis, pieces: int, shown: FloatArray) -> tuple[Axis, FloatA
     """A curve of few pieces along the axis where the line shows, bridging gaps by its curvature, and the axis's distance from it."""
     t = axis.s / axis.length
     thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
-    curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=max(pieces, 6 if axis.closed else 3), periodic=axis.closed, cut=0)
+    least = max(pieces, 6 if axis.closed else 3)
+    curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=least, periodic=axis.closed, cut=0)
     points = curve.value(t)
+    if np.hypot(*(points - axis.points).T).max() > ASTRAY_PX:
+        # A long gap where the line bends much: the path found there is poor, but a bridge that leaves it by so much is worse.
+        curve = smooth.fit(t[thin], axis.points[thin], np.maximum(shown[thin], 0.02), pieces=2 * least, periodic=axis.closed, cut=0)
+        points = curve.value(t)
     tangents = curve.slope(t)
     tangents = tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
     reference = Axis(points, axis.s, tangents, axis.closed)
