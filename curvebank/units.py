@@ -74,6 +74,12 @@ CANONICAL = {
     "diameter": "mm",
     "speed": "1/min",
 }
+SHOWN = {
+    "m3/h": "m³/h", "m3/s": "m³/s", "m3/min": "m³/min", "m3/d": "m³/d", "ft3/s": "ft³/s", "ft3/min": "ft³/min",
+    "gal/min(US)": "US gal/min", "gal/min(imp)": "imperial gal/min", "Mgal/d(US)": "US Mgal/d", "Mgal/d(imp)": "imperial Mgal/d",
+    "hp(metric)": "metric hp", "kgf/cm2": "kgf/cm²", "1": "a fraction",
+}  # fmt: skip
+"""How a unit is written in a text, where that is not its code."""
 _PRESSURE_AS_HEAD = ("head", "npshr", "suction_lift")
 
 
@@ -134,6 +140,11 @@ def to_canonical(value, quantity, unit, *, density_kgm3=None):
 def from_canonical(value, quantity, unit, *, density_kgm3=None):
     """Convert a number or array from the canonical unit to a printed one."""
     return value / factor(quantity, unit, density_kgm3=density_kgm3)
+
+
+def shown(unit):
+    """A unit as texts write it: m³/h for the code m3/h."""
+    return SHOWN.get(unit, unit)
 
 
 _FRACTION = re.compile(r"(?:(?P<whole>\d+)[ -]+)?(?P<top>\d+)/(?P<bottom>\d+)")

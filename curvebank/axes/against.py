@@ -5,6 +5,7 @@ from typing import Any
 
 import numpy as np
 
+from .. import units
 from ..records import Notice
 from . import suspects as doubts
 from . import values
@@ -63,7 +64,7 @@ def doubted(placed: Placed | str, axes: dict[str, AxisMarks]) -> list[Notice]:
 
 
 def _doubt(d: Doubt, marks: AxisMarks) -> Notice:
-    unit = "" if marks.unit == "1" else f" {marks.unit}"
+    unit = "" if marks.unit == "1" else f" {units.shown(marks.unit)}"
     ways = []
     for reading in (d.best, d.rival):
         far = _fits(reading, d.far_c, d.per_px, marks)

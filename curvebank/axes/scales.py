@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from .. import units
 from ..records import FloatArray, Notice
 from .layout import Layout, Slot
 from .marks import AxisMarks
@@ -110,7 +111,7 @@ def _disagree(a: AxisMarks, b: AxisMarks, ratio: float, doubt: float) -> Notice:
     within = max(NAMED_WITHIN, doubt)
     named = next((what for r, what in RATIOS if ratio > 0 and min(abs(ratio / r - 1), abs(ratio * r - 1)) <= within), None)
     more, less, times = (b.id, a.id, ratio) if ratio > 1 else (a.id, b.id, 1 / ratio if ratio > 0 else ratio)
-    text = f"The scales {a.id} ({a.unit}) and {b.id} ({b.unit}) do not say the same: "
+    text = f"The scales {a.id} ({units.shown(a.unit)}) and {b.id} ({units.shown(b.unit)}) do not say the same: "
     text += f"{more} reads {times:.4f} times {less}. " if ratio > 0 else "they run opposite ways. "
     text += (
         f"That is the factor of {named}. Check both units against the print."

@@ -10,6 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from .. import units
 from ..records import FloatArray
 from .layout import Layout
 from .marks import AxisMarks
@@ -290,7 +291,7 @@ def describe(suspects: Sequence[Suspect], axes: dict[str, AxisMarks]) -> list[tu
     out: list[tuple[str, str]] = []
     for name in dict.fromkeys(s.axis for s in suspects):
         mine = [s for s in suspects if s.axis == name]
-        unit = "" if axes[name].unit == "1" else f" {axes[name].unit}"
+        unit = "" if axes[name].unit == "1" else f" {units.shown(axes[name].unit)}"
         if all(s.sure for s in mine):
             out += [_sure_message(s, name, unit) for s in mine]
         else:

@@ -3,6 +3,7 @@
 import math
 from collections.abc import Sequence
 
+from .. import units
 from ..records import Curve
 
 QUANTITY_WORDS = {
@@ -17,15 +18,6 @@ QUANTITY_WORDS = {
     "power_contour": "power line",
     "npshr_contour": "NPSH line",
 }
-UNIT_WORDS = {"m3/h": "m³/h", "m3/s": "m³/s", "m3/min": "m³/min", "m3/d": "m³/d", "ft3/s": "ft³/s", "ft3/min": "ft³/min"}
-UNIT_WORDS |= {
-    "gal/min(US)": "US gal/min",
-    "gal/min(imp)": "imperial gal/min",
-    "hp(metric)": "metric hp",
-    "1": "a fraction",
-    "kgf/cm2": "kgf/cm²",
-}
-UNIT_WORDS |= {"Mgal/d(US)": "US Mgal/d", "Mgal/d(imp)": "imperial Mgal/d"}
 
 
 def number(x: float, digits: int = 3) -> str:
@@ -45,7 +37,7 @@ def number(x: float, digits: int = 3) -> str:
 
 def unit_word(unit: str) -> str:
     """A unit as a person writes it."""
-    return UNIT_WORDS.get(unit, unit)
+    return units.shown(unit)
 
 
 def flows(lo: float, hi: float) -> str:

@@ -94,7 +94,7 @@ def fit_curve(
     plain, loss = _plain(scaled, mid, half, through_zero)
     if loss > PLAIN_LOSS_LIMIT * 10:
         raise FitError(
-            f"Order {order} over {q.min():g} to {q.max():g} m3/h cannot be written in powers of flow without loss. Choose a lower order.",
+            f"Order {order} over {q.min():g} to {q.max():g} m³/h cannot be written in powers of flow without loss. Choose a lower order.",
             code="plain-powers",
         )
     misfit = found.rss * (effective / len(q)) / max(effective - columns.shape[1], 1.0)
@@ -156,7 +156,7 @@ def _check_single_valued(q: FloatArray) -> None:
         return
     turn = q[int(np.argmax(q))] if forward >= backward else q[int(np.argmin(q))]
     raise FitError(
-        f"The line runs back in flow near {turn:.4g} m3/h, so a flow has two values and no polynomial stands for it. "
+        f"The line runs back in flow near {turn:.4g} m³/h, so a flow has two values and no polynomial stands for it. "
         "Trace the part on one side of the turn, or enter it as a contour.",
         code="not-single-valued",
     )

@@ -57,12 +57,12 @@ def load(data: bytes, *, page: int = 1, dpi: float = 300, turn: int = 0, limits:
     Raises SheetError with code ``not-an-image``, ``truncated``, ``too-large``, ``encrypted``, ``no-such-page`` or ``turn``.
     """
     if turn not in TURNS:
-        raise SheetError(f"turn is {turn}; it must be 0, 90, 180 or 270 degrees clockwise", code="turn")
+        raise SheetError(f"Turn is {turn}. It must be 0, 90, 180 or 270 degrees clockwise.", code="turn")
     if not data:
-        raise SheetError("the file is empty; add the scan again", code="not-an-image")
+        raise SheetError("The file is empty. Add the scan again.", code="not-an-image")
     if len(data) > limits.file_bytes:
         raise SheetError(
-            f"the file has {len(data) / 1e6:.0f} MB, the limit is {limits.file_bytes / 1e6:.0f} MB; save a single page of it",
+            f"The file has {len(data) / 1e6:.0f} MB, the limit is {limits.file_bytes / 1e6:.0f} MB. Save a single page of it.",
             code="too-large",
         )
     resolution: tuple[float | None, float | None]
@@ -90,20 +90,20 @@ def check_size(width: float, height: float, limits: Limits) -> None:
     """Refuse a page before it is decoded."""
     if width * height > limits.pixels or max(width, height) > limits.side_px:
         raise SheetError(
-            f"the page is {width:.0f} x {height:.0f} pixels; "
+            f"The page is {width:.0f} x {height:.0f} pixels; "
             f"at most {limits.pixels / 1e6:.0f} million pixels and {limits.side_px} a side are read. "
             "Scan at 300 dpi, or crop to the chart.",
             code="too-large",
         )
     if min(width, height) < limits.min_side_px:
-        raise SheetError(f"the page is only {width:.0f} x {height:.0f} pixels; scan the chart at 150 dpi or more", code="not-an-image")
+        raise SheetError(f"The page is only {width:.0f} x {height:.0f} pixels. Scan the chart at 150 dpi or more.", code="not-an-image")
 
 
 def check_page(page: int, pages: int) -> None:
     """Refuse a page number that the file does not have."""
     if not 1 <= page <= pages:
         has = "one page" if pages == 1 else f"{pages} pages"
-        raise SheetError(f"there is no page {page}: the file has {has}", code="no-such-page")
+        raise SheetError(f"There is no page {page}: the file has {has}.", code="no-such-page")
 
 
 def _image(data: bytes, page: int, limits: Limits) -> tuple[Any, int, str, tuple[float | None, float | None]]:
@@ -131,18 +131,18 @@ def _image(data: bytes, page: int, limits: Limits) -> tuple[Any, int, str, tuple
             raise
         except Image.DecompressionBombError:
             raise SheetError(
-                f"the page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). "
+                f"The page has more pixels than can be read (limit {limits.pixels / 1e6:.0f} million). "
                 "Scan at 300 dpi, or crop to the chart.",
                 code="too-large",
             ) from None
         except UnidentifiedImageError:
             if data.startswith(MAGIC):
-                raise SheetError("the file breaks off in its first part; copy or scan it again", code="truncated") from None
-            raise SheetError("this is not an image or a PDF; save the scan as PNG, TIFF, JPEG or PDF", code="not-an-image") from None
+                raise SheetError("The file breaks off in its first part. Copy or scan it again.", code="truncated") from None
+            raise SheetError("This is not an image or a PDF. Save the scan as PNG, TIFF, JPEG or PDF.", code="not-an-image") from None
         except MemoryError:
-            raise SheetError("the page does not fit into memory; scan at 300 dpi, or crop to the chart", code="too-large") from None
+            raise SheetError("The page does not fit into memory. Scan at 300 dpi, or crop to the chart.", code="too-large") from None
         except Exception as fault:  # decoders raise OSError, EOFError, SyntaxError, struct.error, zlib.error, ValueError
-            raise SheetError(f"the file is damaged or breaks off ({fault}); copy or scan it again", code="truncated") from None
+            raise SheetError(f"The file is damaged or breaks off ({fault}). Copy or scan it again.", code="truncated") from None
     return pixels, pages, media, resolution
 
 

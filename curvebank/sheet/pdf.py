@@ -18,7 +18,7 @@ def render_page(data: bytes, page: int, dpi: float, limits: Limits) -> tuple[npt
     """The page as uint8 grey or RGB on white paper, and the number of pages. ``dpi`` [1/inch]."""
     low, high = limits.dpi
     if not low <= dpi <= high:
-        raise SheetError(f"{dpi:g} dpi is outside {low:g} to {high:g}; 300 is usual", code="too-large")
+        raise SheetError(f"{dpi:g} dpi is outside {low:g} to {high:g}. 300 is usual.", code="too-large")
     with ONE_AT_A_TIME:
         document: Any = None
         try:
@@ -32,9 +32,9 @@ def render_page(data: bytes, page: int, dpi: float, limits: Limits) -> tuple[npt
             rgb = np.array(drawn[..., :3] if drawn.ndim == 3 and drawn.shape[2] >= 3 else drawn.reshape(drawn.shape[:2]))
         except pypdfium2.PdfiumError as fault:
             if "password" in str(fault).lower() or b"/Encrypt" in data:
-                raise SheetError("the PDF is encrypted; save a copy without a password and add that", code="encrypted") from None
+                raise SheetError("The PDF is encrypted. Save a copy without a password and add that.", code="encrypted") from None
             raise SheetError(
-                f"the PDF is damaged ({fault}); print it to a new PDF, or save the page as an image", code="truncated"
+                f"The PDF is damaged ({fault}). Print it to a new PDF, or save the page as an image.", code="truncated"
             ) from None
         finally:
             if document is not None:

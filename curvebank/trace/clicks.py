@@ -70,24 +70,26 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
     if clicks.closed and len(points) > 2 and np.hypot(*(points[0] - points[-1])) < 6 * prepared.unit:
         points = points[:-1]
     if clicks.kind == "points" and len(guides):
-        raise TraceError("Guides belong to a line, these clicks are single points; take the guides away", code="guides-of-points")
+        raise TraceError("Guides belong to a line, these clicks are single points. Take the guides away.", code="guides-of-points")
     need = 3 if clicks.closed else 6 if clicks.kind == "hand" else 2
     if clicks.kind == "points":
         need = 1
     if len(points) < need:
         what = "A closed line" if clicks.closed else "A line drawn by hand" if clicks.kind == "hand" else "A line"
+        what, where = ("A set of test points", "on its symbols") if clicks.kind == "points" else (what, "along it")
         raise TraceError(
-            f"{what} needs at least {need} clicks along it, there {'is one' if len(points) == 1 else f'are {len(points)}'}; add clicks",
+            f"{what} needs at least {need} click{'s' if need != 1 else ''} {where}, there "
+            f"{'is one' if len(points) == 1 else f'are {len(points)}'}. Add clicks.",
             code="too-few-clicks",
         )
     if not np.isfinite(points).all():
-        raise TraceError("A click is not a finite pair of numbers; set it again", code="bad-click")
+        raise TraceError("A click is not a finite pair of numbers. Set it again.", code="bad-click")
     if not np.isfinite(guides).all():
-        raise TraceError("A guide is not a finite pair of numbers; set it again", code="bad-click")
+        raise TraceError("A guide is not a finite pair of numbers. Set it again.", code="bad-click")
     gaps = np.hypot(*np.diff(points, axis=0).T)
     for i in np.flatnonzero(gaps < SAME_PLACE_PX):
         raise TraceError(
-            f"The {ordinal(int(i))} and {ordinal(int(i) + 1)} click are at one place; move one of them along the line",
+            f"The {ordinal(int(i))} and {ordinal(int(i) + 1)} click are at one place. Move one of them along the line.",
             code="coincident-clicks",
         )
     _on_panel(points, "click", prepared, panel)
@@ -96,7 +98,7 @@ def checked(clicks: Clicks, prepared: Prepared, panel: PanelMap) -> FloatArray:
         hidden = under_mask(prepared, points)
         for k, (x, y) in enumerate(points):
             if not hidden[k] and not _has_ink(prepared, x, y):
-                raise TraceError(f"The {ordinal(k)} click ({x:.0f}, {y:.0f}) is on blank paper; move it onto the line", code="off-ink")
+                raise TraceError(f"The {ordinal(k)} click ({x:.0f}, {y:.0f}) is on blank paper. Move it onto the line.", code="off-ink")
     return in_order(points, guides, clicks.closed, SAME_PLACE_PX)
 
 
@@ -113,7 +115,7 @@ def _on_panel(points: FloatArray, what: str, prepared: Prepared, panel: PanelMap
     for i in np.flatnonzero(~inside):
         x, y = points[i]
         raise TraceError(
-            f"The {ordinal(int(i))} {what} ({x:.0f}, {y:.0f}) is off the panel; move it onto the curve or widen the panel's outline",
+            f"The {ordinal(int(i))} {what} ({x:.0f}, {y:.0f}) is off the panel. Move it onto the curve or widen the panel's outline.",
             code="off-panel",
         )
 
@@ -129,7 +131,7 @@ def same_clicks(wanted: Sequence[Clicks], unit: float) -> list[tuple[Notice, ...
                 continue
             near = min(float(np.abs(mine - order).max()) for order in (theirs, theirs[::-1]))
             if near < SAME_PLACE_PX * max(unit, 0.75):
-                text = f"Has the same clicks as {wanted[j].id}: one line cannot be two curves; click one of them on its own line"
+                text = f"Has the same clicks as {wanted[j].id}: one line cannot be two curves. Click one of them on its own line."
                 found.append(Notice(code="same-clicks", message=text))
         out.append(tuple(found))
     return out

@@ -64,7 +64,7 @@ def doubt_of(prepared: Prepared, fine: Refined, points: FloatArray, closed: bool
     if change is not None:
         row, solid_first = change
         x, y = fine.axis.points[row]
-        text = f"The line is {'solid, then dashed' if solid_first else 'dashed, then solid'} from ({x:.0f}, {y:.0f}) on"
+        text = f"The line is {'solid, then dashed' if solid_first else 'dashed, then solid'} from ({x:.0f}, {y:.0f}) on."
         stretch = (row, len(fine.axis.s) - 1)
         doubt.notices.append(Notice(code="style-change", message=text, stretch=stretch))
     return doubt
@@ -98,7 +98,7 @@ def settle(trace: Trace, doubt: Doubt) -> Trace:
         said.add(code)
         where = evidence.where.get(name)
         text = words(evidence, where[1] - where[0] + 1 if where else 0)
-        notices.append(Notice(code=code, message=text, stretch=where))
+        notices.append(Notice(code=code, message=text + ".", stretch=where))
         if where is not None and name not in ("unsupported", "longest_gap", "merged"):
             stretches.append((*where, text[0].lower() + text[1:]))
     clip = lambda a, b: (min(a, last), min(b, last))  # noqa: E731
@@ -169,7 +169,7 @@ def pair_test(names: list[str], traces: list[Trace | None], doubts: list[Doubt |
             too = ", ".join(dict.fromkeys(f[2] for f in found[1:] if f[0] > SHARED and f[2] != name))
             also = f" (and less with {too})" if too else ""
             text = (
-                f"Shares {length} px of its length with {name}{also}: one of them may have left its line; one click there would settle it"
+                f"Shares {length} px of its length with {name}{also}: one of them may have left its line; one click there would settle it."
             )
             mine.stretches.append((*where, f"runs on the same ink as {name}"))
             mine.notices.append(Notice(code="shared-ink", message=text, stretch=where))

@@ -36,9 +36,9 @@ def spans_of(locked: Sequence[Any], prepared: Prepared) -> list[Span]:
         xy = np.array(pixels, dtype=np.float64).reshape(-1, 2)
         name = f"The {ordinal(k)} locked stretch"
         if len(xy) < 2 or not np.isfinite(xy).all() or (np.hypot(*np.diff(xy, axis=0).T) <= 0).any():
-            raise TraceError(f"{name} is not a run of two or more different pixels; lock it again", code="bad-locked")
+            raise TraceError(f"{name} is not a run of two or more different pixels. Lock it again.", code="bad-locked")
         if (xy < -0.5).any() or (xy > np.array([width, height]) - 0.5).any():
-            raise TraceError(f"{name} runs off the page; lock it again", code="bad-locked")
+            raise TraceError(f"{name} runs off the page. Lock it again.", code="bad-locked")
         usual = SIGMA_PX * max(prepared.unit, 0.7)
         spread = np.broadcast_to(np.asarray(usual if sigma is None else sigma, dtype=np.float64), len(xy)).copy()
         out.append(_filled(Span(xy, spread)))
@@ -96,7 +96,7 @@ def trace_around(prepared: Prepared, panel: PanelMap, clicks: Clicks, points: Fl
         near = found.axis.at(np.linspace(start, found.axis.length, max(int(found.axis.length - start), 2) + 1)[1:])[0]
         pieces.append(between(prepared, panel, spans[-1], ordered[-1], None, on_ink, near))
     if not any(isinstance(p, Part) for p in pieces):
-        raise TraceError("The locked stretches leave nothing to trace; draw the line by hand, or unlock a part of it", code="bad-locked")
+        raise TraceError("The locked stretches leave nothing to trace. Draw the line by hand, or unlock a part of it.", code="bad-locked")
     span, fine, _ = whole(pieces, clicks.closed)
     return span, fine, found.cost
 
@@ -117,8 +117,8 @@ def _in_places(points: FloatArray, spans: list[Span], closed: bool, unit: float)
         if off.max() > wander:
             x, y = thin[int(off.argmax())]
             raise TraceError(
-                f"The {ordinal(k)} locked stretch does not lie along the clicks (at ({x:.0f}, {y:.0f}) it is {off.max():.0f} px away);"
-                " unlock it, or add clicks along the line",
+                f"The {ordinal(k)} locked stretch does not lie along the clicks (at ({x:.0f}, {y:.0f}) it is {off.max():.0f} px away)."
+                " Unlock it, or add clicks along the line.",
                 code="locked-elsewhere",
             )
         first, last = _place(ring, at, axis.length, closed, span.pixels[0]), _place(ring, at, axis.length, closed, span.pixels[-1])
@@ -135,7 +135,7 @@ def _in_places(points: FloatArray, spans: list[Span], closed: bool, unit: float)
         at = (at - start) % axis.length
     for (_, last, _), (first, _, _) in zip(placed[:-1], placed[1:], strict=True):
         if last > first + 2.0:
-            raise TraceError("Two locked stretches lie on the same part of the line; unlock one of them", code="locked-overlap")
+            raise TraceError("Two locked stretches lie on the same part of the line. Unlock one of them.", code="locked-overlap")
     free: list[list[FloatArray]] = [[] for _ in range(len(placed) + (not closed))]
     for k in np.argsort(at, kind="stable"):
         point = points[k]
@@ -146,7 +146,7 @@ def _in_places(points: FloatArray, spans: list[Span], closed: bool, unit: float)
         if passing:
             x, y = point
             raise TraceError(
-                f"A locked stretch passes the click at ({x:.0f}, {y:.0f}) by {passing[0]:.0f} px; unlock it, or move the click",
+                f"A locked stretch passes the click at ({x:.0f}, {y:.0f}) by {passing[0]:.0f} px. Unlock it, or move the click.",
                 code="locked-elsewhere",
             )
         free[int(np.searchsorted([a for a, _, _ in placed], at[k])) % len(free)].append(point)

@@ -28,7 +28,7 @@ LOST = 0.25
 """Share of readings that must show the line; with fewer there is no line to speak of between the clicks."""
 STUB = 0.1
 """A trace cut back at the ends of its ink to less than this share of the way from click to click has found no line."""
-NOTHING = "No line was found between the clicks; check that they lie on one line, or add clicks along it"
+NOTHING = "No line was found between the clicks. Check that they lie on one line, or add clicks along it."
 
 
 def trace_panel(
@@ -56,7 +56,7 @@ def trace_panel(
             fault = refused
         except (ValueError, ArithmeticError, IndexError) as broken:
             # Numbers that no check foresaw must not cost the other curves of the sheet.
-            fault = TraceError(f"The line could not be followed ({broken}); add clicks along it", code="lost")
+            fault = TraceError(f"The line could not be followed ({broken}). Add clicks along it.", code="lost")
         traces.append(trace)
         doubts.append(doubt)
         faults.append(fault)
@@ -81,7 +81,7 @@ def trace_panel(
     out: list[Trace | TraceError] = []
     for trace, doubt, fault, turned in zip(traces, doubts, faults, as_clicked, strict=True):
         if trace is None:
-            out.append(fault or TraceError("The line could not be followed; add clicks along it", code="lost"))
+            out.append(fault or TraceError("The line could not be followed. Add clicks along it.", code="lost"))
         else:
             out.append(turned(trace if doubt is None else settle(trace, doubt)))
     return out

@@ -73,17 +73,17 @@ def points_on_symbols(prepared: Prepared, points: FloatArray) -> Trace:
     for i, (start, f) in enumerate(zip(points, found, strict=True)):
         if f is None:
             x, y = start
-            raise TraceError(f"The {ordinal(i)} click ({x:.0f}, {y:.0f}) has no symbol near it; move it onto the symbol", code="off-ink")
+            raise TraceError(f"The {ordinal(i)} click ({x:.0f}, {y:.0f}) has no symbol near it. Move it onto the symbol.", code="off-ink")
         if f.miss > 0.6 * FITS:
             x, y = f.at
-            text = f"The symbol of the {ordinal(i)} click ({x:.0f}, {y:.0f}) is hard to make out; look whether its middle is right"
+            text = f"The symbol of the {ordinal(i)} click ({x:.0f}, {y:.0f}) is hard to make out. Look whether its middle is right."
             notices.append(Notice(code="unclear-symbol", message=text, stretch=(i, i)))
     places = np.array([f.at for f in found if f is not None])
     for i in range(1, len(places)):
         near = np.hypot(*(places[:i] - places[i]).T)
         if near.min() < 1.0 * unit:
             j = int(np.argmin(near))
-            text = f"The {ordinal(j)} and {ordinal(i)} click are on one symbol; take one of them away or move it"
+            text = f"The {ordinal(j)} and {ordinal(i)} click are on one symbol. Take one of them away or move it."
             notices.append(Notice(code="same-symbol", message=text, stretch=(i, i)))
     return Trace(
         pixels=frozen(places),
