@@ -87,7 +87,7 @@ def _closer(prepared: Prepared, clicks: FloatArray, path: Path, axis: Axis, grai
 
 def _narrow(reach: float, axis: Axis, unit: float, grain: float) -> Pass:
     """A search close to an axis that lies about right."""
-    rows = 12 if axis.length > (700 if axis.closed else 300) * unit else 6
+    rows = 12 if axis.length > 300 * unit and not axis.closed else 6
     return Pass(reach * max(unit, 0.7), grain / 4, grain, rows, 0.35, 0.004, 7, 4.0 * max(unit, 0.75))
 
 
