@@ -31,7 +31,7 @@ LEAST_LOOSE_PX = 0.12
 """Lines off by five times this may still be good ones: few lines fit one another too well to judge by."""
 GOOD_PX = 0.06
 """Lines foretold this well need no softer bend."""
-LINE_SIGMA_PX = 0.05
+LINE_SIGMA_PX = 0.035
 """First guess of how far lines are off as a whole, worth `LINE_DOF` lines."""
 LINE_DOF = 1.0
 BEND_PX = 8.0

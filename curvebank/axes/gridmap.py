@@ -14,7 +14,7 @@ from .solve import CLICK_SIGMA_PX, Solution
 from .warp import Warp
 
 SNAP_PX = 3.0
-SNAP_SIGMA_PX = 0.15
+SNAP_SIGMA_PX = 0.05
 """A mark this near a line that is in use is a click on it; the line's place is then better than the click."""
 EXACT_PX = 1e-4
 DIRECTION_NAMES = ("flow", "value")
