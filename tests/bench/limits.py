@@ -51,13 +51,18 @@ def main() -> int:
         "bound": lambda: theory.Bound(asked.seeds),
     }
     parts = [makers[s]() for s in asked.sections]
-    for case in cases.find(asked.folders, asked.only):
+    breaks, sheets = 0, cases.find(asked.folders, asked.only)
+    for case in sheets:
         start = time.process_time()
         for part in parts:
             try:
                 part.visit(case)
             except CurvebankError as fault:
                 case.faults.append(f"{part.name}: {fault}")
+            except (ValueError, ArithmeticError, LookupError) as broken:
+                # One sheet that breaks the engine must not cost the figures of the others; it is counted.
+                case.faults.append(f"{part.name} BROKE: {type(broken).__name__}: {broken}")
+                breaks += 1
         if not asked.quiet:
             print(f"{case.name:20s} {time.process_time() - start:6.1f} s {'; '.join(dict.fromkeys(case.faults))}", flush=True)
     for part in parts:
@@ -68,6 +73,7 @@ def main() -> int:
                 print("\n".join(part.failures()))
     print(f"\n{'target':74s} {'measured':>10s} {'n':>6s}  {'limit':12s} reached")
     lines = [line for part in parts for line in part.lines()]
+    lines.append(cases.at_most("sheets and parts that broke the engine", float(breaks), len(sheets), 0))
     print("\n".join(line.words() for line in lines))
     if asked.json:
         kept = {part.name: part.rows for part in parts}
