@@ -38,37 +38,18 @@ def darkness(channel: Bytes) -> Floats:
 
 
 def ink_scale(dark: Floats) -> float:
-    """Darkness that counts as full ink: a high percentile of what is clearly darker than the paper, however little of it there is."""
+    """Darkness that counts as full ink: a high percentile of what is clearly darker than the paper, however little of it there is.
+
+    Most of what is inked may be a faint grid; the curves, a hundredth of it, must not be cut off at the grid's darkness.
+    """
     thin = dark[::3, ::3]
     noise = 1.4826 * float(np.median(np.abs(thin - np.median(thin))))
     inked = thin[thin > max(0.12, 6.0 * noise)]
     if len(inked) < 60:
         return 0.5
-    return float(np.clip(np.percentile(inked, 90), 0.15, 1.0))
+    return float(np.clip(np.percentile(inked, 99), 0.15, 1.0))
 
 
 def to_bytes(dark: Floats, scale: float) -> Bytes:
     """Darkness as ink 0..255; half a step of a grey level is far below the noise of any scan."""
     return np.asarray(cv2.convertScaleAbs(np.maximum(dark, 0.0, out=dark), alpha=255.0 / scale), dtype=np.uint8)
-
-
-def line_width(ink: Bytes, turned: Bytes) -> float:
-    """Typical width of a drawn line [px]: the commonest length of short runs of ink, across and down the page.
-
-    ``turned`` is the transpose of ``ink``. Text stems and grid lines count too: the figure sets search scales, it is not a measurement
-    of any one curve.
-    """
-    counts = np.zeros(64)
-    for rows in (ink[::2], turned[::2]):
-        dark = rows > 96
-        dark[:, 0] = dark[:, -1] = False
-        edges = np.flatnonzero(np.diff(dark.ravel().view(np.int8)))
-        runs = edges[1::2] - edges[: 2 * (len(edges) // 2) : 2]
-        counts += np.bincount(np.minimum(runs, 63), minlength=64)[:64]
-    counts[0] = counts[48:] = 0
-    smooth = np.convolve(counts, [0.25, 0.5, 0.25], "same")
-    if smooth.sum() < 50:
-        return 3.0
-    top = int(smooth.argmax())
-    near = slice(max(top - 1, 1), top + 2)
-    return float(np.clip((np.arange(64)[near] * counts[near]).sum() / max(counts[near].sum(), 1), 1.0, 20.0))

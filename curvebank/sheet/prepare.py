@@ -12,10 +12,13 @@ from . import ink as levels
 from .lines import PrintedLine, find_lines
 from .load import Sheet
 from .removal import remove_lines
+from .width import line_width
 
 ALGORITHM = "ribbon-3"
 """Name of the preparation; changes when its output would, so that cached arrays are never mixed."""
 
+DENSE = 0.6
+"""Share of the ink in printed lines from which the width of curves is measured once more without them."""
 Progress = Callable[[float, str], Any]
 Bytes = npt.NDArray[np.uint8]
 
@@ -109,12 +112,14 @@ def prepare(sheet: Sheet, *, progress: Progress | None = None) -> Prepared:
         if not _is_coloured(colour):
             colour = None
     turned = np.asarray(cv2.transpose(ink), dtype=np.uint8)
-    width = levels.line_width(ink, turned)
+    width = line_width(ink)
     unit = unit_of(width)
     tell(0.35, "Finding printed lines")
     lines = find_lines(ink, turned, unit)
     tell(0.75, "Taking printed lines out")
     clean, printed, measured = remove_lines(ink, turned, lines, unit)
+    if np.count_nonzero(printed[::4, ::4] > 26) > DENSE * np.count_nonzero(ink[::4, ::4] > 26):
+        width = line_width(np.where(printed > 26, 0, clean).astype(np.uint8))
     tell(1.0, "Prepared")
     for a in (ink, clean, printed, colour):
         if a is not None:
