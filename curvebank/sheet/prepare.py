@@ -119,7 +119,7 @@ def prepare(sheet: Sheet, *, progress: Progress | None = None) -> Prepared:
     tell(0.75, "Taking printed lines out")
     clean, printed, measured = remove_lines(ink, turned, lines, unit)
     if np.count_nonzero(printed[::4, ::4] > 26) > DENSE * np.count_nonzero(ink[::4, ::4] > 26):
-        width = line_width(np.where(printed > 26, 0, clean).astype(np.uint8))
+        width = line_width(clean)
     tell(1.0, "Prepared")
     for a in (ink, clean, printed, colour):
         if a is not None:
