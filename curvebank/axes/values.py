@@ -36,7 +36,7 @@ LOG_COST = np.array([0, 3.0, 3, 1, 3, 3, 0, 2, 0, 3, 0, 3, 0, 0, 0, 0, 0, 0])
 class Reading:
     """One way to read the lines: ``level = polynomial(c)``, the level of each line (NaN where it stands on none), misses of the marks.
 
-    ``wrong`` lists the marks that contradict it.
+    ``wrong`` lists the marks that contradict it; ``oddness`` is how rare a grid of this step is (`roundness`).
     """
 
     polynomial: FloatArray
@@ -46,6 +46,7 @@ class Reading:
     odds: float
     wrong: tuple[int, ...]
     marks_px: FloatArray
+    oddness: float = 0.0
 
     def level(self, c: FloatArray | float) -> FloatArray:
         return _value(np.asarray(c, dtype=np.float64), self.polynomial)
@@ -98,14 +99,14 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         return float(np.abs(other.level(ends) - best.level(ends)).max() / slope * px)
 
     rivals = [r for r in found if r.score > best.score - NEARLY_AS_GOOD and apart(r) > 3.0]
-    if not rivals and len(marks_c) == 2 and (best.wrong or (not log and roundness(best.step) >= 7.0)):
+    if not rivals and len(marks_c) == 2 and (best.wrong or (not log and best.oddness >= 7.0)):
         # Two marks fit any even grid; such a step says that the lines belong to something else, or that a mark does.
         return Readings(None)
     return Readings(best, max(rivals, key=lambda r: r.score) if rivals else None)
 
 
 def _settled(r: Reading, log: bool) -> bool:
-    return _cost(r.step, log) <= 1.0 and float(r.marks_px.max()) < 2.5 * MARK_SIGMA_PX
+    return r.oddness <= 1.0 and float(r.marks_px.max()) < 2.5 * MARK_SIGMA_PX
 
 
 def _scales(c: FloatArray, at: FloatArray, level: FloatArray, log: bool, px: float) -> list[tuple[float, float, tuple[float, float]]]:
@@ -206,16 +207,22 @@ def _valued(
         off = (values - tick) / per_px
         odds = _odds(off, pitch / per_px, FINE_SIGMA_PX)
         on = np.abs(off) < np.minimum(4 * FINE_SIGMA_PX, 0.35 * pitch / per_px)
+        cost = max(_cost(step, log), _cost(_every(tick[on], step), log)) if on.any() and not log else _cost(step, log)
         miss = (_value(at, poly) - level) / per_px
         marks = np.logaddexp(-0.5 * (miss / MARK_SIGMA_PX) ** 2, LOG_PRIOR_WRONG)
         wrong = tuple(int(i) for i in np.flatnonzero(0.5 * (miss / MARK_SIGMA_PX) ** 2 > -LOG_PRIOR_WRONG))
-        score = float(odds.sum() + marks.sum()) - _cost(step, log)
+        score = float(odds.sum() + marks.sum()) - cost
         if wrong:
             lines_off = np.array([abs(miss[i]) * per_px / step for i in wrong]) if step else np.ones(1)
             score -= float(np.log(np.clip(lines_off, 1.0, 7.0)).sum())
             score -= _odder(at, level, poly, step, wrong, per_px, log)
-        out.append(Reading(poly, np.where(on, tick, np.nan), step, score, float(odds.sum()), wrong, np.abs(miss)))
+        out.append(Reading(poly, np.where(on, tick, np.nan), step, score, float(odds.sum()), wrong, np.abs(miss), cost))
     return out
+
+
+def _every(tick: FloatArray, step: float) -> float:
+    """The step that the lines really have: where only each sixth multiple of 3 has a line, the grid is one of 18."""
+    return step * max(int(np.gcd.reduce(np.diff(np.rint(np.sort(tick) / step).astype(np.int64)))), 1) if len(tick) > 2 else step
 
 
 def _carried(
