@@ -26,6 +26,10 @@ BILINEAR = 1 / 6
 Held = tuple[FloatArray | None, FloatArray | None]
 AGAIN_PX = 0.7
 """A curve further than this (times the unit) from where its ink was read about is read once more."""
+FEW = (1, 2, 3, 5, 8, 12)
+"""Pieces of a reference, fewest first."""
+REACH_PX = 6.0
+"""How far (times the unit) the line may lie from its reference."""
 STIFF_SHARE, SUPPLE = 4, 3
 """A stiff curve has one piece for so many of a supple one; fewer where the path had to be moved far, as on sharp bends."""
 STIFF = 4.0
@@ -115,17 +119,20 @@ def _read(
         if known is not None:
             blocks = _with_known(blocks, axis, known, 3.0 * unit, end)
     # The axis may wiggle, so what is smoothed is not the shift from it but the whole distance from a stiff reference.
-    blocks, reference, off = _unmerged(prepared, axis, blocks, shape, unit, share)
+    blocks = _unmerged(prepared, axis, blocks, shape, unit, share)
+    reference, foot, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis), REACH_PX * unit)
+    start, way = (0.0, axis.length) if axis.closed else (foot[0], foot[-1] - foot[0])
     whole = _with_clicks(blocks, axis, clicks, unit)
-    whole = replace(whole, shift=whole.shift + np.interp(whole.s, axis.s, off))
+    place = (np.interp(whole.s, axis.s, foot) - start) * (axis.length / way)
+    whole = replace(whole, s=place, shift=whole.shift + np.interp(whole.s, axis.s, off))
     fitted = _along(whole, axis, unit, share)
     t = axis.s / axis.length
-    across = fitted.value(t)
-    moved = across[:, 0] - off
+    moved = fitted.value((foot - start) / way)[:, 0] - off
     keep = pixels.believed()
     about = pixels.d - np.interp(pixels.s, axis.s, moved).astype(np.float32)
     seen = shape_of(about[keep], pixels.ink[keep], shape.width)
-    final = from_polyline(reference.points + reference.normals * across, axis.closed)
+    base, normal = reference.at(start + t * way)
+    final = from_polyline(base + normal * fitted.value(t), axis.closed)
     sigma = np.interp(np.linspace(0, 1, len(final.s)), np.linspace(0, 1, len(t)), fitted.sigma(t))
     return Refined(final, sigma, blocks, shape, fitted.scale), seen, float(np.abs(moved).max())
 
@@ -139,16 +146,32 @@ def runs_merged(prepared: Prepared, axis: Axis, shape: Shape) -> bool:
     return merged_blocks(sample(prepared.clean, axis, (np.arange(count) + 0.5) * axis.length / count, across, 1.0), across, shape) > 6
 
 
-def _unmerged(prepared: Prepared, axis: Axis, blocks: Blocks, shape: Shape, unit: float, share: int) -> tuple[Blocks, Axis, FloatArray]:
-    """The blocks read from the edges of the stroke where lines run into one, a stiff curve, and the axis's distance from it."""
-    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
+def _unmerged(prepared: Prepared, axis: Axis, blocks: Blocks, shape: Shape, unit: float, share: int) -> Blocks:
+    """The blocks read from the edges of the stroke where lines run into one, told apart by their smoothness about a stiff curve."""
+    off = _off_stiff(axis, _pieces(axis, unit) // share, _shown(blocks, axis))
     half, step = 3.5 * shape.width + 4.0 * unit, 0.5 * max(unit, 0.8)
     ink, _, across = _band(prepared, axis, len(blocks.s), half, step)
     read, wide = read_merged(blocks, np.interp(blocks.s, axis.s, off), ink.T, across, shape)
-    if not wide.any():
-        return blocks, reference, off
-    reference, off = _reference(axis, _pieces(axis, unit) // share, _shown(read, axis))
-    return read, reference, off
+    return read if wide.any() else blocks
+
+
+def _off_stiff(axis: Axis, pieces: int, shown: FloatArray) -> FloatArray:
+    """The axis's distance from a stiff curve along it where the line shows."""
+    t = axis.s / axis.length
+    points, tangents = _stiff_curve(axis, max(pieces, 6 if axis.closed else 3), shown)
+    if np.hypot(*(points - axis.points).T).max() > ASTRAY_PX:
+        # A long gap where the line bends much: the path found there is poor, but a bridge that leaves it by so much is worse.
+        points, tangents = _stiff_curve(axis, 2 * max(pieces, 6 if axis.closed else 3), np.maximum(shown, 0.02))
+    return ((axis.points - points) * Axis(points, t, tangents, axis.closed).normals).sum(axis=1)
+
+
+def _stiff_curve(axis: Axis, pieces: int, shown: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Points and unit tangents, at each sample's share of the length, of a curve of so many pieces."""
+    t = axis.s / axis.length
+    thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
+    curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=pieces, periodic=axis.closed, cut=0)
+    tangents = curve.slope(t)
+    return curve.value(t), tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
 
 
 def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) -> Blocks:
@@ -198,21 +221,43 @@ def _shown(blocks: Blocks, axis: Axis) -> FloatArray:
     return (np.interp(axis.s, blocks.s, solid.astype(float)) > 0.5).astype(float)
 
 
-def _reference(axis: Axis, pieces: int, shown: FloatArray) -> tuple[Axis, FloatArray]:
-    """A curve of few pieces along the axis where the line shows, bridging gaps by its curvature, and the axis's distance from it."""
-    t = axis.s / axis.length
-    thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
-    least = max(pieces, 6 if axis.closed else 3)
-    curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=least, periodic=axis.closed, cut=0)
-    points = curve.value(t)
-    if np.hypot(*(points - axis.points).T).max() > ASTRAY_PX:
-        # A long gap where the line bends much: the path found there is poor, but a bridge that leaves it by so much is worse.
-        curve = smooth.fit(t[thin], axis.points[thin], np.maximum(shown[thin], 0.02), pieces=2 * least, periodic=axis.closed, cut=0)
-        points = curve.value(t)
-    tangents = curve.slope(t)
-    tangents = tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+def _reference(axis: Axis, pieces: int, shown: FloatArray, reach: float) -> tuple[Axis, FloatArray, FloatArray]:
+    """A curve of few pieces along the axis, bridging gaps by its curvature; for each sample of the axis its foot on it and its distance.
+
+    It rests on the axis, not on readings of the page, so it has no more freedom than it needs to stay within ``reach`` px of the axis:
+    what lies between the two is read and smoothed, what the reference itself follows is not.
+    """
+    most = max(pieces, 6 if axis.closed else 3)
+    for count in (most,) if axis.closed else [n for n in FEW if n < most] + [most]:
+        points, tangents = _stiff_curve(axis, count, shown)
+        if float(np.hypot(*(axis.points - points).T).max()) < reach:
+            break
+    else:
+        points, tangents = _stiff_curve(axis, 2 * most, np.maximum(shown, 0.02))
     reference = Axis(points, axis.s, tangents, axis.closed)
-    return reference, ((axis.points - points) * reference.normals).sum(axis=1)
+    # A sample of the axis is not opposite the reference's sample of the same share of the length: its foot lies a little beside it.
+    if not axis.closed:
+        reference, before = _longer(reference, 3.0 * reach)
+    else:
+        before = 0.0
+    foot = axis.s + before
+    for _ in range(3):
+        base, normal = reference.at(foot)
+        gap = axis.points - base
+        foot = foot + gap[:, 0] * normal[:, 1] - gap[:, 1] * normal[:, 0]
+    base, normal = reference.at(foot)
+    return reference, np.maximum.accumulate(foot), ((axis.points - base) * normal).sum(axis=1)
+
+
+def _longer(axis: Axis, by: float) -> tuple[Axis, float]:
+    """An open axis carried on straight at both ends, and how far [px] its old start lies from its new one."""
+    step = axis.length / (len(axis.s) - 1)
+    count = int(np.ceil(by / step))
+    far = step * np.arange(1, count + 1)[:, None]
+    first, last = axis.tangents[0], axis.tangents[-1]
+    points = np.vstack([axis.points[0] - far[::-1] * first, axis.points, axis.points[-1] + far * last])
+    tangents = np.vstack([np.tile(first, (count, 1)), axis.tangents, np.tile(last, (count, 1))])
+    return Axis(points, step * np.arange(len(points)), tangents, False), count * step
 
 
 def _pieces(axis: Axis, unit: float) -> int:
@@ -254,7 +299,10 @@ def _along(blocks: Blocks, axis: Axis, unit: float, share: int) -> smooth.Smooth
 
 
 def _correlation(blocks: Blocks, curve: smooth.Smooth, t: FloatArray) -> float:
-    """How many neighbouring readings count as one: 1 + 2 sum of the autocorrelation of the residuals, up to its first drop below 0.05."""
+    """How many neighbouring readings count as one: 1 + 2 sum of the autocorrelation of the residuals, up to its first drop below 0.05.
+
+    At least two: the likelihood alone spends twice the freedom on a line that the line has.
+    """
     use = curve.weights > 0.05
     if use.sum() < 20:
         return 2.0
@@ -269,4 +317,4 @@ def _correlation(blocks: Blocks, curve: smooth.Smooth, t: FloatArray) -> float:
         if rho < 0.05:
             break
         total += 2 * rho
-    return float(np.clip(total, 1.0, 8.0))
+    return float(np.clip(total, 2.0, 8.0))

@@ -70,7 +70,7 @@ def test_the_rest_leaves_a_hand_corrected_stretch_in_its_direction(fall, box):
     step = np.hypot(*np.diff(got.pixels, axis=0).T)
     assert step.max() < 1.5
     assert kink(got, at) < 0.1 and kink(got, at + 79) < 0.1
-    far = np.r_[0 : at - 80, at + 160 : len(got.pixels)]
+    far = np.r_[5 : at - 80, at + 160 : len(got.pixels) - 5]  # across the line: its ends are another matter
     gap = measures.distance(got.pixels[far], line)[0]
     assert gap.max() < 0.3 and np.median(gap) < 0.05
 
