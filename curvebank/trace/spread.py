@@ -17,8 +17,8 @@ from ..records import FloatArray, Trace, frozen
 from .presence import INKED, Presence
 from .profile import Refined
 
-OF_SPLINE = 2.0
-OF_SCATTER = 0.155
+OF_SPLINE = 0.85
+OF_SCATTER = 0.068
 FLOOR = 0.002
 """Floor [units]: a unit is 1 px where lines are 3 px wide."""
 BESIDE = 0.04
