@@ -171,7 +171,8 @@ def _stiff_curve(axis: Axis, pieces: int, shown: FloatArray) -> tuple[FloatArray
     thin = slice(None, -1 if axis.closed else None, max(len(t) // 400, 1))
     curve = smooth.fit(t[thin], axis.points[thin], shown[thin], pieces=pieces, periodic=axis.closed, cut=0)
     tangents = curve.slope(t)
-    return curve.value(t), tangents / np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+    tangents /= np.maximum(np.hypot(*tangents.T), 1e-12)[:, None]
+    return curve.value(t), tangents
 
 
 def _with_clicks(blocks: Blocks, axis: Axis, clicks: FloatArray, unit: float) -> Blocks:
@@ -257,7 +258,8 @@ def _longer(axis: Axis, by: float) -> tuple[Axis, float]:
     first, last = axis.tangents[0], axis.tangents[-1]
     points = np.vstack([axis.points[0] - far[::-1] * first, axis.points, axis.points[-1] + far * last])
     tangents = np.vstack([np.tile(first, (count, 1)), axis.tangents, np.tile(last, (count, 1))])
-    return Axis(points, step * np.arange(len(points)), tangents, False), count * step
+    s = np.arange(len(points), dtype=np.float64) * step
+    return Axis(points, s, tangents, False), count * step
 
 
 def _pieces(axis: Axis, unit: float) -> int:
