@@ -9,25 +9,25 @@ import numpy as np
 from ..records import FloatArray
 from .evidence import NAMES
 
-BIAS = -4.803
+BIAS = -5.079
 WEIGHTS = {
-    "unsupported": 0.182,
-    "longest_gap": 0.088,
-    "bare": 1.741,
-    "click_off": 0.632,
-    "clicks_off": 3.902,
-    "misfit": 0.987,
-    "jump": 0.846,
-    "straight_on": 0.88,
-    "both_on": 1.188,
-    "goes_on": 7.374,
-    "loose_end": 1.517,
-    "merged": 1.974,
-    "cost": 3.474,
+    "unsupported": 0.37,
+    "longest_gap": 0.216,
+    "bare": 1.274,
+    "click_off": 0.649,
+    "clicks_off": 4.205,
+    "misfit": 0.792,
+    "jump": 1.09,
+    "straight_on": 0.716,
+    "both_on": 0.0,
+    "goes_on": 8.313,
+    "loose_end": 1.583,
+    "merged": 12.295,
+    "cost": 2.236,
     "scatter": 0.0,
-    "two_clicks": 0.18,
-    "colour_step": 4.838,
-    "shared": 5.133,
+    "two_clicks": 0.22,
+    "colour_step": 5.629,
+    "shared": 2.595,
 }
 """Log-odds of failure for each step of a number (`evidence.Evidence.vector`)."""
 FLAG_BELOW = 0.7

@@ -16,6 +16,8 @@ from .profile import Refined
 
 SHARED = 0.12
 """Share of a trace's length that may run on another trace of the panel (crossings, a common end) before both say so."""
+ONE_LINE = 0.9
+"""Share from which two traces are one line."""
 USUAL_SHARED = 0.09
 """Share that lines of a family have in common without any being wrong."""
 SAYS = 0.8
@@ -86,6 +88,8 @@ def settle(trace: Trace, doubt: Doubt) -> Trace:
     evidence, last = doubt.evidence, len(trace.pixels) - 1
     vector = evidence.vector()
     confidence = chance(vector)
+    if evidence.numbers["shared"] > ONE_LINE - USUAL_SHARED or any(n.code == "same-clicks" for n in doubt.notices):
+        confidence = min(confidence, 0.5)  # one line cannot be two curves: at most one of the two is right
     flagged = confidence < FLAG_BELOW
     weights = dict(zip(NAMES, doubts(vector), strict=True))
     ranked = sorted((name for name in REASONS if weights[name] > 0), key=lambda name: -weights[name])
