@@ -34,7 +34,7 @@ REASONS: dict[str, tuple[str, Words]] = {
     "jump": ("turns-off", lambda e, n: f"The trace has no ink over {n} px, and what lies before and behind does not make one smooth line"),
     "straight_on": ("straight-on", lambda e, n: f"A line goes straight on where the trace turns off, within {n} px"),
     "both_on": ("straight-on", lambda e, n: f"Two lines cross and both go straight on where the trace turns, within {n} px"),
-    "goes_on": ("goes-on", lambda e, n: f"Ink goes on behind the {_which_end(e)} end of the trace"),
+    "goes_on": ("goes-on", lambda e, n: "Ink goes on behind an end of the trace"),
     "loose_end": ("loose-end", lambda e, n: f"The last {n} px at an end have no ink; the click there may lie off the line"),
     "merged": ("merged", lambda e, n: f"Another line lies against {100 * e.numbers['merged']:.0f} % of its length"),
     "cost": ("weak-path", lambda e, n: "Much of the way shows little that looks like a line"),
@@ -77,10 +77,6 @@ def _of_click(evidence: Evidence) -> str:
         return "A click lies off the trace"
     x, y = evidence.click
     return f"The click at ({x:.0f}, {y:.0f}) is not on the trace; move it onto the line that is meant, or take it away"
-
-
-def _which_end(evidence: Evidence) -> str:
-    return "first" if evidence.where.get("goes_on", (1, 0))[0] == 0 else "last"
 
 
 def settle(trace: Trace, doubt: Doubt) -> Trace:

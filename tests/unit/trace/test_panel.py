@@ -144,7 +144,7 @@ def test_points_snap_to_their_symbols(tools, box):
     ("points", "options", "code", "says"),
     [
         ([[100, 100]], {}, "too-few-clicks", "at least 2"),
-        ([], {}, "too-few-clicks", "add clicks"),
+        ([], {}, "too-few-clicks", "Add clicks"),
         ([[100, 100], [300, 200]], {"closed": True}, "too-few-clicks", "closed"),
         ([[100, 100], [300, 200], [400, 300]], {"kind": "hand"}, "too-few-clicks", "6"),
         ([[63, 91], [63, 91.5], [500, 250]], {}, "coincident-clicks", "first and second"),
