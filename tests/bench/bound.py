@@ -29,8 +29,8 @@ HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 sys.path.insert(0, str(HERE.parents[1]))
 
-from drawing.paint import project, stroke  # noqa: E402
-from drawing.scene import Stroke, arc  # noqa: E402
+from papers.paint import project, stroke  # noqa: E402
+from papers.scene import Stroke, arc  # noqa: E402
 
 from curvebank import sheet, trace  # noqa: E402
 from curvebank.errors import TraceError  # noqa: E402

@@ -9,8 +9,8 @@ from typing import Any
 
 import cv2
 import numpy as np
-from drawing.paint import project
-from drawing.scene import arc, resample
+from papers.paint import project
+from papers.scene import arc, resample
 from scipy.special import ndtr
 
 KINDS = (

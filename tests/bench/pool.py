@@ -17,8 +17,8 @@ from PIL import Image
 HERE = Path(__file__).resolve().parent
 sys.path.insert(0, str(HERE))
 
-from drawing.kinds import BETTER, KINDS, sheet_of  # noqa: E402
-from drawing.record import recipe_of  # noqa: E402
+from papers.kinds import BETTER, KINDS, sheet_of  # noqa: E402
+from papers.record import recipe_of  # noqa: E402
 
 
 def write(out: Path, kind: str, seed: int, again: bool = False) -> Path:

@@ -9,9 +9,9 @@ import pytest
 sys.path.insert(0, str(Path(__file__).resolve().parents[1] / "bench"))
 
 pytest.importorskip("matplotlib")
-from drawing import agg, paint  # noqa: E402
-from drawing.kinds import sheet_of  # noqa: E402
-from drawing.scene import Scene, Stroke  # noqa: E402
+from papers import agg, paint  # noqa: E402
+from papers.kinds import sheet_of  # noqa: E402
+from papers.scene import Scene, Stroke  # noqa: E402
 
 ENGINES = {"distance to every pixel": paint.render, "area coverage": agg.render}
 
