@@ -96,6 +96,7 @@ def _family(ink: Bytes, unit: float, horizontal: bool) -> list[PrintedLine]:
     if not len(fitted.scatter):
         return []
     fitted = fitted.keep(_with_field(fitted, height, unit))
+    fitted = fitted.keep(~_bends_away(fitted, height, unit))
     return _extended(fitted, height, unit, horizontal)
 
 
@@ -170,6 +171,34 @@ def _with_field(fitted: Fitted, height: int, unit: float) -> Mask:
     off -= _masked_median(off, seen)[:, None]
     first, last = fitted.span()
     return 1.4826 * _masked_median(np.abs(off), seen) <= 1.0 * max(unit, 0.7) + 0.0012 * (xs[last] - xs[first])
+
+
+def _bends_away(fitted: Fitted, height: int, unit: float) -> Mask:
+    """Tracks that are the level part of a curve: beyond an end their ink goes on and leaves the straight way faster and faster.
+
+    A parabola is 9/4 times as far off in the third strip as in the second, then 16/9 times; letters behind a line's end stand in one
+    strip, or at one height.
+    """
+    tracks, xs = fitted.tracks, fitted.tracks.x
+    guess = np.rint(fitted.place(xs)).astype(np.intp)
+    ends = fitted.span()
+    reach = max(round(14 * unit), 6)
+    out = np.zeros(len(fitted.scatter), bool)
+    for k in range(len(out)):
+        nodes = np.flatnonzero(fitted.seen[k])
+        usual = float(np.median(tracks.response[np.rint(tracks.y[k, nodes]).astype(np.intp), nodes]))
+        for end, way in ((int(ends[0][k]), -1), (int(ends[1][k]), 1)):
+            off = []
+            for column in range(end + 2 * way, end + 5 * way, way):
+                if not 0 <= column < len(xs) or not reach <= guess[k, column] < height - reach:
+                    break
+                window = tracks.response[guess[k, column] - reach : guess[k, column] + reach + 1, column]
+                if window.max() < 0.5 * usual:
+                    break
+                off.append(float(np.argmax(window) - reach))
+            for near, far, growth in zip(off[:-1], off[1:], (9 / 4, 16 / 9), strict=False):
+                out[k] |= abs(near) > 1.2 * unit and 0.65 * growth < far / near < 1.45 * growth
+    return out
 
 
 def _extended(fitted: Fitted, height: int, unit: float, horizontal: bool) -> list[PrintedLine]:
