@@ -9,6 +9,7 @@ import numpy as np
 from ..errors import TraceError
 from ..records import FloatArray, Trace
 from ..sheet import Prepared
+from .apart import Found, tell_apart
 from .clicks import Clicks, PanelMap, checked, same_clicks
 from .direction import one_way
 from .ends import to_ink
@@ -44,13 +45,16 @@ def trace_panel(
     doubts: list[Doubt | None] = []
     faults: list[TraceError | None] = []
     as_clicked: list[Callable[[Trace], Trace]] = [lambda trace: trace] * len(wanted)
+    ways: list[FloatArray] = []
     for i, clicks in enumerate(wanted):
         tell(i / len(wanted), f"Tracing {clicks.id}")
         trace, doubt, fault = None, None, None
+        ways.append(np.zeros((0, 2)))
         try:
             points = checked(clicks, prepared, panel_map)
             if clicks.kind == "line":
                 points, as_clicked[i] = one_way(points, clicks.closed)
+            ways[i] = points
             trace, doubt = _one(prepared, panel_map, clicks, points)
         except TraceError as refused:
             fault = refused
@@ -60,6 +64,16 @@ def trace_panel(
         traces.append(trace)
         doubts.append(doubt)
         faults.append(fault)
+
+    def anew(i: int, page: Prepared) -> Found | None:
+        tell(1.0 - 0.5 / len(wanted), f"Tracing {wanted[i].id} apart from its neighbours")
+        trace, doubt = _one(prepared, panel_map, wanted[i], ways[i], page)
+        return None if doubt is None else (trace, doubt)
+
+    judged = [None if t is None or d is None else (t, d) for t, d in zip(traces, doubts, strict=True)]
+    for i, better in enumerate(tell_apart(prepared, judged, [not c.locked for c in wanted], fixed, anew)):
+        if better is not None:
+            traces[i], doubts[i] = better
     on_ink = [c.kind == "line" and c.ends == "ink" and not c.closed for c in wanted]
     traced = list(traces)
     for i, trace in enumerate(traced):
@@ -87,7 +101,11 @@ def trace_panel(
     return out
 
 
-def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatArray) -> tuple[Trace, Doubt | None]:
+def _one(
+    prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatArray, page: Prepared | None = None
+) -> tuple[Trace, Doubt | None]:
+    """One curve's trace; its path and ends are looked for on ``page`` (the sheet, or a copy with other lines hidden)."""
+    page = page or prepared
     if clicks.kind == "hand":
         return by_hand(points, clicks.closed), None
     if clicks.kind == "points":
@@ -96,15 +114,15 @@ def _one(prepared: Prepared, panel_map: PanelMap, clicks: Clicks, points: FloatA
         span, fine, cost = trace_around(prepared, panel_map, clicks, points)
         trace = as_trace(fine.axis, span.sigma, clicks.closed, fine.shape.width)
         return trace, doubt_of(prepared, fine, points, clicks.closed, clicks.ends == "ink", cost)
-    found = follow(prepared, points, clicks.closed)
-    axis, shape, far = align(prepared, found.axis, points)
+    found = follow(page, points, clicks.closed)
+    axis, shape, far = align(page, found.axis, points)
     if far > FAR_PX * max(prepared.unit, 0.7):
-        axis, shape, far = align(prepared, axis, points)
-    if not clicks.closed and runs_merged(prepared, axis, shape):
+        axis, shape, far = align(page, axis, points)
+    if not clicks.closed and runs_merged(page, axis, shape):
         # The ends are looked for along a path that lies on its own line within the stroke.
-        axis = refine(prepared, axis, shape, points).axis
+        axis = refine(page, axis, shape, points).axis
     if not clicks.closed and clicks.ends == "ink":
-        axis = to_ink(prepared, panel_map, axis, shape)
+        axis = to_ink(page, panel_map, axis, shape)
         if axis.length < STUB * np.hypot(*np.diff(points, axis=0).T).sum():
             raise TraceError(NOTHING, code="lost")
     fine = refine(prepared, axis, shape, points)
