@@ -11,6 +11,7 @@ from ..records import FloatArray, Trace
 from ..sheet import Prepared
 from .apart import Found, tell_apart
 from .clicks import Clicks, PanelMap, checked, same_clicks
+from .colour import own_ink
 from .direction import one_way
 from .ends import to_ink
 from .follow import follow
@@ -114,10 +115,11 @@ def _one(
         span, fine, cost = trace_around(prepared, panel_map, clicks, points)
         trace = as_trace(fine.axis, span.sigma, clicks.closed, fine.shape.width)
         return trace, doubt_of(prepared, fine, points, clicks.closed, clicks.ends == "ink", cost)
-    found = follow(page, points, clicks.closed)
-    axis, shape, far = align(page, found.axis, points)
+    search, near = own_ink(page, points)
+    found = follow(search, points, clicks.closed)
+    axis, shape, far = align(near, found.axis, points)
     if far > FAR_PX * max(prepared.unit, 0.7):
-        axis, shape, far = align(page, axis, points)
+        axis, shape, far = align(near, axis, points)
     if not clicks.closed and runs_merged(page, axis, shape):
         # The ends are looked for along a path that lies on its own line within the stroke.
         axis = refine(page, axis, shape, points).axis
