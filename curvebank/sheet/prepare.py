@@ -14,7 +14,7 @@ from .load import Sheet
 from .removal import remove_lines
 from .width import line_width
 
-ALGORITHM = "ribbon-3"
+ALGORITHM = "ribbon-4"
 """Name of the preparation; changes when its output would, so that cached arrays are never mixed."""
 
 DENSE = 0.6
