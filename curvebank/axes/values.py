@@ -84,7 +84,7 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
         found += _valued(c, a, b, base, marks_c, marks_level, log, px)
         first = max(found, key=lambda r: r.score, default=None)
         # All marks agree with the lines, on a common step: any other reading costs a wrong mark more.
-        if len(tried) == 1 and first is not None and first.score >= LEAST_LOG_ODDS and not first.wrong and _settled(first, log):
+        if len(tried) == 1 and first is not None and first.score >= LEAST_LOG_ODDS and not first.wrong and _settled(first):
             return Readings(first)
     # Most marks are right: a reading that few of them share is none (of two marks one may be wrong, and is then asked about).
     most = max(len(marks_c) // 3, 1)
@@ -105,7 +105,7 @@ def read(c: FloatArray, marks_c: FloatArray, marks_level: FloatArray, log: bool,
     return Readings(best, max(rivals, key=lambda r: r.score) if rivals else None)
 
 
-def _settled(r: Reading, log: bool) -> bool:
+def _settled(r: Reading) -> bool:
     return r.oddness <= 1.0 and float(r.marks_px.max()) < 2.5 * MARK_SIGMA_PX
 
 

@@ -62,7 +62,7 @@ def doubt_of(prepared: Prepared, fine: Refined, points: FloatArray, closed: bool
         doubt.stretches.append((first, last, f"no line to see over {last - first + 1} px: a label, or the line is broken"))
     for first, last in evidence.merged:
         doubt.stretches.append((first, last, f"another line lies against it over {last - first + 1} px"))
-    change = style_change(evidence.seen, evidence.beat, max(prepared.unit, 0.6))
+    change = style_change(evidence.seen, max(prepared.unit, 0.6))
     if change is not None:
         row, solid_first = change
         x, y = fine.axis.points[row]

@@ -102,7 +102,7 @@ def read_merged(
     bridge = _bridge(value, sound, blocks.sigma)
     settled = np.zeros(len(top), bool)
     for a, b in runs:
-        chosen = _follow(value, blocks.sigma, sound, sides, int(a), int(b), scatter, bridge)
+        chosen = _follow(value, sound, sides, int(a), int(b), scatter, bridge)
         if chosen is None or (chosen >= 0).mean() < 0.5:
             continue  # nothing tells which edge is whose: the readings stay as they were
         chosen[~np.isfinite(sides[np.maximum(chosen, 0), np.arange(a, b)])] = -1
@@ -158,17 +158,17 @@ def _grown(mask: Bools, by: int) -> Bools:
 
 
 def _follow(
-    value: FloatArray, sigma: FloatArray, sound: Bools, sides: FloatArray, a: int, b: int, scatter: float, bridge: FloatArray
+    value: FloatArray, sound: Bools, sides: FloatArray, a: int, b: int, scatter: float, bridge: FloatArray
 ) -> npt.NDArray[np.intp] | None:
     """Which side (0, 1 or -1 for neither) each block of the stretch a..b takes, or None where nothing leads into it."""
     ways = []
     for back in (False, True):
         if back:
             n = len(value)
-            way = _one_way(value[::-1], sigma[::-1], sound[::-1], sides[:, ::-1], n - b, n - a, scatter)
+            way = _one_way(value[::-1], sound[::-1], sides[:, ::-1], n - b, n - a, scatter)
             ways.append(None if way is None else (way[0][::-1], way[1]))
         else:
-            ways.append(_one_way(value, sigma, sound, sides, a, b, scatter))
+            ways.append(_one_way(value, sound, sides, a, b, scatter))
     known = [w for w in ways if w is not None]
     if not known:
         return None
@@ -198,7 +198,7 @@ def _bridge(value: FloatArray, sound: Bools, sigma: FloatArray) -> FloatArray:
 
 
 def _one_way(
-    value: FloatArray, sigma: FloatArray, sound: Bools, sides: FloatArray, a: int, b: int, scatter: float
+    value: FloatArray, sound: Bools, sides: FloatArray, a: int, b: int, scatter: float
 ) -> tuple[npt.NDArray[np.intp], float] | None:
     """Sides taken from a to b - 1, and how badly the way joins what lies behind b."""
     before = np.flatnonzero(sound[max(a - 3 * MEMORY, 0) : a]) + max(a - 3 * MEMORY, 0)

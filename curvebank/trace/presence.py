@@ -87,7 +87,7 @@ def rhythm(seen: Presence, unit: float) -> Rhythm:
     return Rhythm(False, 10.0 * unit, 14.0 * unit)
 
 
-def style_change(seen: Presence, beat: Rhythm, unit: float) -> tuple[int, bool] | None:
+def style_change(seen: Presence, unit: float) -> tuple[int, bool] | None:
     """Where a line printed solid goes over into dashes, or the other way round: (row, solid first). None where it has one style.
 
     Both parts must be long and clear: the dashed one has at least four gaps of one kind, the solid one none of them.

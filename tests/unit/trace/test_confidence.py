@@ -8,7 +8,7 @@ from curvebank.trace.confidence import FLAG_BELOW, WEIGHTS, chance
 from curvebank.trace.evidence import NAMES
 from curvebank.trace.judge import overlap
 from curvebank.trace.local import misfit, windows
-from curvebank.trace.presence import EMPTY, INKED, Presence, Rhythm, style_change
+from curvebank.trace.presence import EMPTY, INKED, Presence, style_change
 
 X = np.linspace(0, 1, 300)
 FALL = np.stack([60 + 560 * X, 90 + 280 * X**2], 1)
@@ -94,12 +94,12 @@ def test_style_change_on_rows():
     row = np.array([INKED] * 200 + ([EMPTY] * 8 + [INKED] * 14) * 6, np.int8)
     flat = np.zeros(len(row))
     seen = Presence(np.arange(len(row), dtype=float), row, flat, flat, flat, flat)
-    assert style_change(seen, Rhythm(True, 14.0, 8.0), 1.0) == (200, True)
+    assert style_change(seen, 1.0) == (200, True)
     turned = Presence(seen.s, row[::-1].copy(), flat, flat, flat, flat)
-    assert style_change(turned, Rhythm(True, 14.0, 8.0), 1.0) == (len(row) - 200, False)
+    assert style_change(turned, 1.0) == (len(row) - 200, False)
     even = np.array(([INKED] * 14 + [EMPTY] * 8) * 15, np.int8)
     flat = np.zeros(len(even))
-    assert style_change(Presence(np.arange(len(even), dtype=float), even, flat, flat, flat, flat), Rhythm(True, 14.0, 8.0), 1.0) is None
+    assert style_change(Presence(np.arange(len(even), dtype=float), even, flat, flat, flat, flat), 1.0) is None
 
 
 def test_a_smooth_line_fits_its_windows_and_a_step_does_not():
